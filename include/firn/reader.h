@@ -1,0 +1,108 @@
+/*
+ * firn/reader.h - reading a container: its layout, its items, their content, repaired on the way
+ *
+ * Room: container. Nothing is handed out as good unless a 128-bit hash of exactly those bytes says so. Damaged blocks are
+ * mended from themselves, else rebuilt from their sheet, else told of as lost. The container is never written to. Memory is
+ * bounded by one sheet and a few segments.
+ *
+ * SPDX-License-Identifier: BSD-2-Clause
+ */
+#ifndef FIRN_READER_H
+#define FIRN_READER_H
+
+#include "firn/item.h"
+#include "firn/sheet.h"
+#include "firn/store.h"
+
+struct firn_reader;
+
+struct firn_reader_options {
+    struct firn_store *store;          /* lent until free */
+    const struct firn_memory *memory;
+    unsigned threads;
+    bool (*stop)(void *self);          /* may be NULL */
+    void *stop_self;
+};
+
+struct firn_reader_layout {
+    struct firn_sheet_geometry geometry;
+    uint8_t id[8];
+    uint64_t file_bytes;
+    uint64_t blocks;              /* that the container has, as far as its tags tell */
+    uint64_t blocks_missing;      /* of these, beyond the end of the file */
+    uint64_t foreign_bytes;       /* behind the last block, or a broken piece of a block */
+    uint64_t data_blocks;
+    uint64_t sheets;
+    struct firn_sheet_shape last_sheet;
+    bool end_known;               /* false: the last sheets are gone, so nobody knows how much there was */
+    bool title_sound;             /* page 0 is as the TITLE record has it */
+    bool colophon_found, index_whole;
+    /* from the colophon; 0 when it is gone */
+    uint64_t items, withdrawn, content_bytes, stored_bytes, coded_bytes, segments;
+    uint8_t catalogue_sha256[FIRN_ITEM_SHA256_BYTES];
+};
+
+/* What became of the blocks that were read so far; each block counts once. */
+struct firn_reader_damage {
+    uint64_t blocks_read;
+    uint64_t mended;              /* by their own lanes */
+    uint64_t rebuilt;             /* from the reserve */
+    uint64_t lost;
+    uint64_t unreadable;          /* of all these: the medium gave an error or the file ended */
+};
+
+/* FIRN_OK, FIRN_NOT_CONTAINER, FIRN_FOREIGN_FORMAT, FIRN_NO_MEMORY, FIRN_IO, FIRN_STOPPED, FIRN_BUSY. */
+FIRN_API enum firn_status firn_reader_open(const struct firn_reader_options *options, struct firn_fault *fault,
+                                           struct firn_reader **out);
+FIRN_API void firn_reader_free(struct firn_reader *reader);      /* takes NULL */
+
+FIRN_API const struct firn_reader_layout *firn_reader_layout_of(const struct firn_reader *reader);
+FIRN_API void firn_reader_damage_so_far(const struct firn_reader *reader, struct firn_reader_damage *damage);
+
+/* The title page (4096 bytes) from its protected copy, else from page 0. FIRN_OK, or FIRN_LOST when only page 0 is there. */
+FIRN_API enum firn_status firn_reader_title_page(struct firn_reader *reader, uint8_t page[4096]);
+
+/* Why a stretch of an item is missing. */
+enum firn_reader_loss {
+    FIRN_READER_LOSS_BLOCKS,      /* blocks of its segment are lost */
+    FIRN_READER_LOSS_WITHDRAWN,   /* never written: the source could not be read when the container was made */
+    FIRN_READER_LOSS_CONTENT      /* the segment's bytes do not satisfy its hash, or cannot be decoded */
+};
+
+/* How an item came out. */
+struct firn_reader_outcome {
+    uint64_t lost_bytes;          /* of its stored bytes */
+    bool sum_known, sum_right;    /* SHA-256 of the whole against the catalogue; right is meaningful when lost_bytes is 0 */
+    uint8_t sha256[FIRN_ITEM_SHA256_BYTES];     /* of the bytes handed out, when lost_bytes is 0 */
+};
+
+/*
+ * What firn_reader_walk calls, in the order of the catalogue. The item lent to a call lives for that call only, but its
+ * number identifies it. Any status but FIRN_OK from begin, bytes, gap or end ends the walk with that status.
+ */
+struct firn_reader_visitor {
+    void *self;
+    /* Whether begin .. end shall be called for this item. NULL: for all. */
+    bool (*wants)(void *self, const struct firn_item *item);
+    enum firn_status (*begin)(void *self, const struct firn_item *item);
+    /* Good bytes at `at` of the file; ascending; holes are not called for. NULL: content is not needed, nor read. */
+    enum firn_status (*bytes)(void *self, const struct firn_item *item, uint64_t at, const uint8_t *bytes, size_t count);
+    /* Bytes at `at` of the file that are lost, and where on the medium: the file offset of the first block concerned. */
+    enum firn_status (*gap)(void *self, const struct firn_item *item, uint64_t at, uint64_t count,
+                            enum firn_reader_loss why, uint64_t container_at);
+    enum firn_status (*end)(void *self, const struct firn_item *item, const struct firn_reader_outcome *outcome);
+    /* Asks to know before begin whether all content can be had: an item with a gap is then handed over with begin, gap for
+       all of its stored bytes, end, and no bytes. For outputs that cannot take a beginning back. */
+    bool foresight;
+};
+
+struct firn_reader_walk_report {
+    uint64_t items;               /* met in the catalogue */
+    uint64_t items_unknown;       /* the colophon counts them, but their catalogue entries are gone */
+};
+
+/* Goes through the catalogue from the start. FIRN_OK also when items are damaged or unknown: the visitor and report tell. */
+FIRN_API enum firn_status firn_reader_walk(struct firn_reader *reader, const struct firn_reader_visitor *visitor,
+                                           struct firn_fault *fault, struct firn_reader_walk_report *report);
+
+#endif

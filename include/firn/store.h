@@ -1,0 +1,73 @@
+/*
+ * firn/store.h - the one place that opens, reads, writes and syncs a container
+ *
+ * Room: container. A store is a few calls over something with numbered bytes. The library brings files, pipes, temporary
+ * files and memory; a test brings stores that fail. Calls of one store are for one thread at a time.
+ *
+ * SPDX-License-Identifier: BSD-2-Clause
+ */
+#ifndef FIRN_STORE_H
+#define FIRN_STORE_H
+
+#include "firn/memory.h"
+
+#include <stdbool.h>
+
+struct firn_store {
+    void *self;
+    /* Reads at `at`; *got is less than count only at the end. FIRN_OK, or FIRN_IO with *os_error: then *got bytes are good. */
+    enum firn_status (*read_at)(void *self, uint64_t at, void *bytes, size_t count, size_t *got, int *os_error);
+    /* Writes all of it. FIRN_OK, FIRN_IO, FIRN_READ_ONLY. A pipe takes bytes only where the last call ended. */
+    enum firn_status (*write_at)(void *self, uint64_t at, const void *bytes, size_t count, int *os_error);
+    enum firn_status (*size)(void *self, uint64_t *bytes, int *os_error);
+    enum firn_status (*resize)(void *self, uint64_t bytes, int *os_error);
+    /* What was written is on the medium when this returns FIRN_OK. */
+    enum firn_status (*sync)(void *self, int *os_error);
+    /* Tells that what was read or written is not needed again soon, so that a later read comes from the medium. */
+    void (*forget)(void *self, uint64_t at, uint64_t bytes);
+    void (*close)(void *self);
+};
+
+enum firn_store_use { FIRN_STORE_READ, FIRN_STORE_MEND };
+
+/* Opens a file or device. FIRN_OK, FIRN_NO_INPUT, FIRN_READ_ONLY (for MEND), FIRN_NO_MEMORY. The caller closes it. */
+FIRN_API enum firn_status firn_store_open(const char *path, enum firn_store_use use, const struct firn_memory *memory,
+                                          struct firn_store *store, struct firn_fault *fault);
+
+/* Keeps every other run that asks too from working on this file until it is closed. FIRN_OK, FIRN_BUSY, FIRN_IO. */
+FIRN_API enum firn_status firn_store_lock(struct firn_store *store, struct firn_fault *fault);
+
+/* Writes to a descriptor that cannot be searched, such as standard output; close does not close it. */
+FIRN_API enum firn_status firn_store_pipe(int descriptor, const struct firn_memory *memory, struct firn_store *store);
+
+/* A nameless temporary file, gone when closed, in folder (NULL: TMPDIR, else /tmp). FIRN_OK, FIRN_CANNOT_CREATE, ... */
+FIRN_API enum firn_status firn_store_temporary(const char *folder, const struct firn_memory *memory,
+                                               struct firn_store *store, struct firn_fault *fault);
+
+/* Copies a descriptor to its end into a temporary file, so that it can be searched. */
+FIRN_API enum firn_status firn_store_spool(int descriptor, const struct firn_memory *memory, struct firn_store *store,
+                                           struct firn_fault *fault);
+
+/* `capacity` bytes lent by the caller, holding `*used`; writing grows *used up to capacity, then fails with FIRN_IO. */
+struct firn_store_buffer { uint8_t *bytes; size_t capacity, used; };
+FIRN_API void firn_store_memory(struct firn_store_buffer *buffer, struct firn_store *store);
+
+/*
+ * A file that appears under its name only when it is whole. Nameless until kept where the system can do that; else under
+ * a temporary name beside it.
+ */
+struct firn_store_stage;
+
+/* replace  an existing file may be taken over when the stage is kept; without it FIRN_EXISTS, now or then. */
+FIRN_API enum firn_status firn_store_stage_open(const char *path, bool replace, const struct firn_memory *memory,
+                                                struct firn_store_stage **out, struct firn_fault *fault);
+FIRN_API struct firn_store *firn_store_stage_store(struct firn_store_stage *stage);
+/* Syncs, gives it its name, syncs the folder. */
+FIRN_API enum firn_status firn_store_stage_keep(struct firn_store_stage *stage, struct firn_fault *fault);
+/* Takes NULL. Closes; what was not kept is gone without a trace. */
+FIRN_API void firn_store_stage_close(struct firn_store_stage *stage);
+
+/* Removes a file and syncs its folder; a file that is not there is FIRN_OK. */
+FIRN_API enum firn_status firn_store_remove(const char *path, struct firn_fault *fault);
+
+#endif
