@@ -84,15 +84,16 @@ struct firn_reader_visitor {
     void *self;
     /* Whether begin .. end shall be called for this item. NULL: for all. */
     bool (*wants)(void *self, const struct firn_item *item);
-    enum firn_status (*begin)(void *self, const struct firn_item *item);
+    /* foreseen_lost_bytes  with foresight: how much of the content cannot be had; else 0 */
+    enum firn_status (*begin)(void *self, const struct firn_item *item, uint64_t foreseen_lost_bytes);
     /* Good bytes at `at` of the file; ascending; holes are not called for. NULL: content is not needed, nor read. */
     enum firn_status (*bytes)(void *self, const struct firn_item *item, uint64_t at, const uint8_t *bytes, size_t count);
     /* Bytes at `at` of the file that are lost, and where on the medium: the file offset of the first block concerned. */
     enum firn_status (*gap)(void *self, const struct firn_item *item, uint64_t at, uint64_t count,
                             enum firn_reader_loss why, uint64_t container_at);
     enum firn_status (*end)(void *self, const struct firn_item *item, const struct firn_reader_outcome *outcome);
-    /* Asks to know before begin whether all content can be had: an item with a gap is then handed over with begin, gap for
-       all of its stored bytes, end, and no bytes. For outputs that cannot take a beginning back. */
+    /* Asks to know at begin whether all content can be had, at the price of reading it twice: for outputs that cannot take
+       a beginning back. */
     bool foresight;
 };
 
