@@ -40,7 +40,8 @@ FIRN_API enum firn_status firn_prefix_lengths(const uint32_t *weights, size_t sy
 
 /*
  * The canonical words of the lengths, most significant bit first.
- * FIRN_OK; FIRN_BAD_LENGTHS when the lengths are over-full, or under-full (but one symbol of length 1 is allowed).
+ * FIRN_OK; FIRN_BAD_LENGTHS when the lengths are over-full, or under-full (but no symbol at all, and a lone symbol of length
+ * 1, are allowed).
  */
 FIRN_API enum firn_status firn_prefix_assign(const uint8_t *lengths, size_t symbols, uint16_t *words);
 

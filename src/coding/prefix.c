@@ -21,29 +21,37 @@
 
 enum { SYMBOL_BITS = 10, DIGIT_BITS = 8, DIGITS = 1 << DIGIT_BITS };
 
-/* The lent work space, cut up. All arrays hold used + 1 or 2 * used + 1 elements: one for a sentinel. */
+/* The lent work space, cut up for so many symbols. */
 struct bench {
     uint64_t *keys, *spare;            /* weight << SYMBOL_BITS | symbol */
-    uint64_t *leaves;                  /* weights in ascending order */
-    uint64_t *merged, *previous;       /* the list of one level and of the level below it; or the nodes of the tree */
-    uint8_t *is_leaf;                  /* per level, 2 * symbols flags; or the parents of the nodes */
+    uint64_t *leaves;                  /* weights in ascending order, a sentinel before and behind */
+    uint64_t *packages;                /* of the level below, a sentinel before and behind; or the nodes of the tree */
+    uint64_t *list;                    /* of one level */
+    uint16_t *leaves_in;               /* a row of `stride` for each level; or parents and depths of the nodes */
+    size_t stride;
 };
 
 size_t firn_prefix_work_bytes(size_t symbols)
 {
-    return sizeof(uint64_t) * (3 * (symbols + 1) + 2 * (2 * symbols + 2)) + FIRN_PREFIX_LENGTH_MAX * 2 * symbols + 8;
+    size_t n = symbols < 2 ? 2 : symbols;
+
+    return sizeof(uint64_t) * (n + n + (n + 2) + (n + 2) + 2 * n) + sizeof(uint16_t) * FIRN_PREFIX_LENGTH_MAX * 2 * n;
 }
 
 static struct bench cut(void *work, size_t symbols)
 {
+    size_t n = symbols < 2 ? 2 : symbols;
     struct bench b;
 
     b.keys = work;
-    b.spare = b.keys + symbols + 1;
-    b.leaves = b.spare + symbols + 1;
-    b.merged = b.leaves + symbols + 1;
-    b.previous = b.merged + 2 * symbols + 2;
-    b.is_leaf = (uint8_t *)(b.previous + 2 * symbols + 2);
+    b.spare = b.keys + n;
+    b.leaves = b.spare + n + 1;
+    b.packages = b.leaves + n + 2;
+    b.list = b.packages + n + 1;
+    b.leaves_in = (uint16_t *)(b.list + 2 * n);
+    b.stride = 2 * n;
+    *(b.leaves - 1) = 0;
+    *(b.packages - 1) = 0;
     return b;
 }
 
@@ -78,9 +86,8 @@ static uint64_t *sort(uint64_t *keys, uint64_t *spare, size_t count, uint32_t gr
  */
 static bool huffman(const struct bench *b, size_t used, unsigned limit, uint16_t *how_many)
 {
-    uint64_t *nodes = b->merged;
-    uint16_t *parents = (uint16_t *)b->previous;
-    uint8_t *depths = b->is_leaf;
+    uint64_t *nodes = b->packages;
+    uint16_t *parents = b->leaves_in, *depths = parents + used;
     size_t leaf = 0, node = 0;
     unsigned inner[FIRN_PREFIX_LENGTH_MAX + 1] = { 0 };
 
@@ -105,7 +112,7 @@ static bool huffman(const struct bench *b, size_t used, unsigned limit, uint16_t
 
         if (depth >= limit)
             return false;
-        depths[i] = (uint8_t)depth;
+        depths[i] = (uint16_t)depth;
         inner[depth]++;
     }
     for (unsigned d = 1; d <= limit; d++)
@@ -114,82 +121,106 @@ static bool huffman(const struct bench *b, size_t used, unsigned limit, uint16_t
 }
 
 /*
- * Package-merge on sorted leaves. Level `limit` is the list of leaves alone; each level above merges the leaves with the
- * packages (pairs) of the level below. Of the topmost list the first 2 * used - 2 are taken, and so on down; a leaf
- * taken on a level makes its symbol one longer, and leaves are always taken from the light end.
+ * Merges the leaves with the packages of the level below, leaf before package on equal weights. leaves_in[i] becomes the
+ * number of leaves among the first i of the list. Works from both ends at once, so that two chains of comparisons are
+ * under way: the sentinels in front weigh 0 and those behind more than anything real, and 0 < every weight.
+ */
+static void merge(const uint64_t *leaves, size_t used, const uint64_t *packages, size_t package_count, uint64_t *list,
+                  uint16_t *leaves_in)
+{
+    size_t low = 0, high = used + package_count, low_leaf = 0, high_leaf = used;
+
+    leaves_in[high] = (uint16_t)used;
+    while (low + 1 < high) {
+        uint64_t low_own = leaves[low_leaf], low_package = packages[low - low_leaf];
+        uint64_t high_own = *(leaves + high_leaf - 1), high_package = *(packages + (high - high_leaf) - 1);
+        bool take_low = low_own <= low_package, take_high = high_own > high_package;
+
+        leaves_in[low] = (uint16_t)low_leaf;
+        list[low++] = take_low ? low_own : low_package;
+        low_leaf += take_low;
+        list[--high] = take_high ? high_own : high_package;
+        high_leaf -= take_high;
+        leaves_in[high] = (uint16_t)high_leaf;
+    }
+    if (low < high) {
+        leaves_in[low] = (uint16_t)low_leaf;
+        list[low] = low_leaf < high_leaf ? leaves[low_leaf] : packages[low - low_leaf];
+    }
+}
+
+/*
+ * Package-merge on sorted leaves. The list of level `limit` holds the leaves alone; each level above merges the leaves with
+ * the packages (pairs) of the level below. Of the topmost list the first 2 * used - 2 are taken, all leaves among
+ * them; of the level below twice as many as packages were taken, and so on; a leaf taken on a level makes its symbol one
+ * longer, and leaves are always taken from the light end. So the topmost list need not be made.
  * how_many[d]: as above. 2 <= used <= 2^limit.
  */
 static void package_merge(const struct bench *b, size_t used, unsigned limit, uint16_t *how_many)
 {
-    uint64_t *list = b->merged, *below = b->previous;
-    size_t below_count = used, wanted = 2 * used - 2, deeper = 0;
+    size_t count = used, wanted = 2 * (used - 2), deeper = used;
 
-    memcpy(below, b->leaves, used * sizeof *below);
-    memset(b->is_leaf + (limit - 1) * 2 * used, 1, used);
-    for (unsigned level = limit - 1; level > 0; level--) {
-        uint8_t *flags = b->is_leaf + (level - 1) * 2 * used;
-        size_t packages = below_count / 2, count = used + packages, leaf = 0, package = 0;
-        uint64_t *swap = below;
+    memcpy(b->list, b->leaves, used * sizeof *b->list);
+    for (size_t i = 0; i <= used; i++)
+        b->leaves_in[(limit - 1) * b->stride + i] = (uint16_t)i;
+    for (unsigned level = limit - 1; level > 1; level--) {
+        size_t packages = count / 2;
 
-        below[2 * packages] = UINT64_MAX / 2;       /* a sentinel pair, heavier than any leaf */
-        below[2 * packages + 1] = UINT64_MAX / 2;
-        for (size_t i = 0; i < count; i++) {
-            uint64_t weight = below[2 * package] + below[2 * package + 1], own = b->leaves[leaf];
-            bool take_leaf = own <= weight;
-
-            list[i] = take_leaf ? own : weight;
-            flags[i] = take_leaf;
-            leaf += take_leaf;
-            package += !take_leaf;
-        }
-        below_count = count;
-        below = list;
-        list = swap;
+        for (size_t k = 0; k < packages; k++)
+            b->packages[k] = b->list[2 * k] + b->list[2 * k + 1];
+        b->packages[packages] = UINT64_MAX - 1;
+        merge(b->leaves, used, b->packages, packages, b->list, b->leaves_in + (level - 1) * b->stride);
+        count = used + packages;
     }
-    memset(how_many, 0, (limit + 1) * sizeof *how_many);
-    for (unsigned level = 1; level <= limit; level++) {
-        const uint8_t *flags = b->is_leaf + (level - 1) * 2 * used;
-        size_t leaves = 0;
+    for (unsigned level = 2; level <= limit; level++) {
+        size_t leaves = b->leaves_in[(level - 1) * b->stride + wanted];
 
-        for (size_t i = 0; i < wanted; i++)
-            leaves += flags[i];
-        if (level > 1)
-            how_many[level - 1] = (uint16_t)(deeper - leaves);
+        how_many[level - 1] = (uint16_t)(deeper - leaves);
         deeper = leaves;
         wanted = 2 * (wanted - leaves);
     }
     how_many[limit] = (uint16_t)deeper;
 }
 
+/* Collects the symbols that occur and sorts them by weight into b->keys and b->leaves; returns how many there are. */
+static size_t gather(struct bench *b, const uint32_t *weights, size_t symbols, uint64_t *total)
+{
+    uint32_t greatest = 0;
+    size_t used = 0;
+
+    *total = 0;
+    for (size_t s = 0; s < symbols; s++) {
+        if (weights[s] == 0)
+            continue;
+        b->keys[used++] = (uint64_t)weights[s] << SYMBOL_BITS | s;
+        *total += weights[s];
+        greatest = weights[s] > greatest ? weights[s] : greatest;
+    }
+    b->keys = sort(b->keys, b->spare, used, greatest);
+    for (size_t i = 0; i < used; i++)
+        b->leaves[i] = b->keys[i] >> SYMBOL_BITS;
+    b->leaves[used] = UINT64_MAX;
+    return used;
+}
+
 enum firn_status firn_prefix_lengths(const uint32_t *weights, size_t symbols, unsigned limit, uint8_t *lengths, void *work)
 {
     uint16_t how_many[FIRN_PREFIX_LENGTH_MAX + 1] = { 0 };
     struct bench b;
-    uint32_t greatest = 0;
-    size_t used = 0, at = 0;
+    uint64_t total;
+    size_t used, at = 0;
 
     if (symbols > FIRN_PREFIX_SYMBOLS_MAX || limit < 1 || limit > FIRN_PREFIX_LENGTH_MAX)
         return FIRN_BAD_ARGUMENT;
     b = cut(work, symbols);
-    for (size_t s = 0; s < symbols; s++) {
-        b.keys[used] = (uint64_t)weights[s] << SYMBOL_BITS | s;
-        used += weights[s] != 0;
-        greatest = weights[s] > greatest ? weights[s] : greatest;
-    }
+    used = gather(&b, weights, symbols, &total);
     if (used > (size_t)1 << limit)
         return FIRN_BAD_ARGUMENT;
     memset(lengths, 0, symbols);
-    if (used < 2) {
-        if (used == 1)
-            lengths[b.keys[0] & ((1 << SYMBOL_BITS) - 1)] = 1;
-        return FIRN_OK;
-    }
-    b.keys = sort(b.keys, b.spare, used, greatest);
-    for (size_t i = 0; i < used; i++)
-        b.leaves[i] = b.keys[i] >> SYMBOL_BITS;
-    b.leaves[used] = UINT64_MAX;
-    if (!huffman(&b, used, limit, how_many))
-        package_merge(&b, used, limit, how_many);
+    if (used == 1)
+        how_many[1] = 1;
+    else if (used > 1 && (b.leaves[0] + b.leaves[1] < total >> limit || !huffman(&b, used, limit, how_many)))
+        package_merge(&b, used, limit, how_many);       /* straight away when Huffman's code is sure to be too long, nearly */
     for (unsigned length = limit; length > 0; length--)
         for (unsigned k = how_many[length]; k > 0; k--)
             lengths[b.keys[at++] & ((1 << SYMBOL_BITS) - 1)] = (uint8_t)length;

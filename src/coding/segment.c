@@ -21,6 +21,7 @@
 
 enum {
     HEAD_BYTES = 2,
+    NUMBER_MAX_BYTES = 3,              /* of a number below 2^21 */
     KIND_METHOD = 3,                   /* bits of a stretch's first byte */
     KIND_SIX = 4,
     KIND_LAST = 8,
@@ -100,42 +101,54 @@ static size_t fold(size_t value, size_t expected)
     return value >= expected ? 2 * (value - expected) : 2 * (expected - value) - 1;
 }
 
-/* Bytes of the stream of these bytes under w->lengths. */
-static size_t stream_bytes(struct encode_work *w, const uint8_t *raw, size_t raw_bytes)
+/*
+ * Stream lengths and streams. The streams are written first, as far behind as the lengths may take, and then moved up: that is
+ * cheaper than counting each of them beforehand.
+ */
+static void put_streams(struct sink *sink, struct encode_work *w, const uint8_t *raw, size_t raw_bytes, unsigned streams,
+                        bool last)
 {
-    firn_histogram_count(raw, raw_bytes, w->counts);
-    return (size_t)((firn_prefix_cost_bits(w->counts, w->lengths, FIRN_TABLE_SYMBOLS) + 7) / 8);
+    uint64_t bits = firn_prefix_cost_bits(w->counts, w->lengths, FIRN_TABLE_SYMBOLS);
+    size_t each = raw_bytes / streams, reserve = (size_t)streams * NUMBER_MAX_BYTES, expected = 0, left;
+    size_t sizes[FIRN_STREAMS_MAX];
+    uint8_t *first, *to;
+
+    if (streams == 1) {
+        if (!last)
+            put_number(sink, (size_t)((bits + 7) / 8));
+        reserve = 0;
+    }
+    if (sink->full || (bits + 7) / 8 + streams + reserve > (size_t)(sink->limit - sink->at) + 1) {
+        sink->full = true;
+        return;
+    }
+    first = to = sink->at + reserve;
+    for (unsigned s = 0; s < streams; s++) {
+        left = s + 1 == streams ? raw_bytes - s * each : each;
+        sizes[s] = firn_streams_write(raw + s * each, left, w->lengths, w->words, to, (size_t)(sink->limit - to));
+        to += sizes[s];
+    }
+    for (unsigned s = 0; streams > 1 && s < streams - last; s++) {
+        put_number(sink, s == 0 ? sizes[s] : fold(sizes[s], expected));
+        expected = sizes[s];
+    }
+    memmove(sink->at, first, (size_t)(to - first));
+    sink->at += to - first;
 }
 
-/* Table, stream lengths and streams; the stretch has at least two different bytes. */
+/* Table and streams; the stretch has at least two different bytes. */
 static void put_prefix(struct sink *sink, struct encode_work *w, const uint8_t *raw, size_t raw_bytes, unsigned streams,
                        bool last)
 {
     uint8_t table[(FIRN_TABLE_COST_MAX_BITS + 7) / 8];
     struct firn_bits_writer writer = { table, 0 };
-    size_t sizes[FIRN_STREAMS_MAX], each = raw_bytes / streams, total = 0, expected = 0;
 
     firn_histogram_count(raw, raw_bytes, w->counts);
     firn_prefix_lengths(w->counts, FIRN_TABLE_SYMBOLS, FIRN_TABLE_LENGTH_LIMIT, w->lengths, w->split.prefix_work);
     firn_prefix_assign(w->lengths, FIRN_TABLE_SYMBOLS, w->words);
     firn_table_write(&writer, w->lengths);
     put_bytes(sink, table, firn_bits_end(&writer));
-    for (unsigned s = 0; s < streams; s++) {
-        bool to_end = s + 1 == streams;
-
-        sizes[s] = stream_bytes(w, raw + s * each, to_end ? raw_bytes - s * each : each);
-        if (!(last && to_end))
-            put_number(sink, s == 0 ? sizes[s] : fold(sizes[s], expected));
-        expected = sizes[s];
-        total += sizes[s];
-    }
-    if (sink->full || total > (size_t)(sink->limit - sink->at)) {
-        sink->full = true;
-        return;
-    }
-    for (unsigned s = 0; s < streams; s++)
-        sink->at += firn_streams_write(raw + s * each, s + 1 == streams ? raw_bytes - s * each : each, w->lengths, w->words,
-                                       sink->at, (size_t)(sink->limit - sink->at));
+    put_streams(sink, w, raw, raw_bytes, streams, last);
 }
 
 static void put_stretch(struct sink *sink, struct encode_work *w, const struct firn_split_stretch *stretch,
@@ -165,7 +178,7 @@ static void put_stored(const uint8_t *raw, size_t raw_bytes, uint8_t *coded, siz
 
 static size_t cell_bytes_of(enum firn_segment_effort effort)
 {
-    return effort == FIRN_SEGMENT_EFFORT_QUICK ? 65536 : effort == FIRN_SEGMENT_EFFORT_NORMAL ? 16384 : 4096;
+    return effort == FIRN_SEGMENT_EFFORT_QUICK ? 32768 : effort == FIRN_SEGMENT_EFFORT_NORMAL ? 16384 : 4096;
 }
 
 enum firn_status firn_segment_encode(const uint8_t *raw, size_t raw_bytes, enum firn_segment_effort effort,

@@ -21,7 +21,7 @@ enum {
     FIRN_SPLIT_CELLS_MAX = 256,
     FIRN_SPLIT_CELL_MIN_BYTES = FIRN_SEGMENT_RAW_MAX / FIRN_SPLIT_CELLS_MAX,
     FIRN_SPLIT_LOG_BITS = 24,
-    FIRN_SPLIT_PREFIX_WORK_BYTES = 24576     /* firn_prefix_work_bytes(256), rounded up */
+    FIRN_SPLIT_PREFIX_WORK_BYTES = 28672     /* firn_prefix_work_bytes(256), rounded up */
 };
 
 struct firn_split_stretch {

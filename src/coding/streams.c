@@ -6,6 +6,8 @@
 
 #include "base/bytes.h"
 
+#include <string.h>
+
 enum {
     PER_REFILL = 5,                    /* 5 words of at most 11 bits fit the 56 bits that a refill always gives */
     REFILL_ADVANCE_BYTES = 7           /* 5 * 11 + 7 bits already used of the first byte: 62 bits, so 7 whole bytes */
@@ -66,92 +68,135 @@ size_t firn_streams_write(const uint8_t *raw, size_t raw_bytes, const uint8_t le
     return (size_t)(to - room);
 }
 
+/* Writes the entry span times; span is 1, 2 or a multiple of 4. */
+static inline uint16_t *spread(uint16_t *to, unsigned entry, size_t span)
+{
+    uint64_t four = entry * UINT64_C(0x0001000100010001);
+
+    if (span < 4)
+        memcpy(to, &four, span * sizeof *to);
+    else
+        for (size_t k = 0; k < span; k += 4)
+            memcpy(to + k, &four, sizeof four);
+    return to + span;
+}
+
+/* Symbols are sorted by length first, so that the long loops are of one kind each; canonical order is the order of entries. */
 void firn_streams_prepare(const uint8_t lengths[FIRN_TABLE_SYMBOLS], uint16_t entries[FIRN_STREAMS_ENTRIES])
 {
-    unsigned at[FIRN_TABLE_LENGTH_LIMIT + 2] = { 0 };
+    uint16_t places[FIRN_TABLE_LENGTH_LIMIT + 2] = { 0 };
+    uint8_t sorted[FIRN_TABLE_SYMBOLS];
+    size_t at;
 
     for (size_t s = 0; s < FIRN_TABLE_SYMBOLS; s++)
-        at[lengths[s] + 1]++;
-    at[1] = 0;                         /* absent symbols take no place */
+        places[lengths[s] + 1]++;
     for (unsigned l = 1; l <= FIRN_TABLE_LENGTH_LIMIT; l++)
-        at[l + 1] = at[l] + (at[l + 1] << (FIRN_TABLE_LENGTH_LIMIT - l));
-    for (size_t s = 0; s < FIRN_TABLE_SYMBOLS; s++) {
-        unsigned length = lengths[s], span = length == 0 ? 0 : 1u << (FIRN_TABLE_LENGTH_LIMIT - length);
-
-        for (unsigned k = 0; k < span; k++)
-            entries[at[length] + k] = (uint16_t)(s << 8 | length);
-        at[length] += span;
-    }
+        places[l] = (uint16_t)(places[l] + places[l - 1]);
+    at = places[1];
+    for (size_t s = 0; s < FIRN_TABLE_SYMBOLS; s++)
+        sorted[places[lengths[s]]++] = (uint8_t)s;
+    for (unsigned l = 1; l < FIRN_TABLE_LENGTH_LIMIT - 1; l++)
+        for (; at < places[l]; at++)
+            entries = spread(entries, (unsigned)sorted[at] << 8 | l, (size_t)1 << (FIRN_TABLE_LENGTH_LIMIT - l));
+    for (; at < places[FIRN_TABLE_LENGTH_LIMIT - 1]; at++)
+        entries = spread(entries, (unsigned)sorted[at] << 8 | (FIRN_TABLE_LENGTH_LIMIT - 1), 2);
+    for (; at < places[FIRN_TABLE_LENGTH_LIMIT]; at++)
+        entries = spread(entries, (unsigned)sorted[at] << 8 | FIRN_TABLE_LENGTH_LIMIT, 1);
 }
 
-/* One stream under way. used_bits < 8 of the byte `at` are taken already. */
+/*
+ * One stream under way: `bits` is a refill, the 8 bytes at `at` with the lowest bit set to 1, less the bits that are taken
+ * already. The 1 takes no part in any of the five look-ups after a refill (of 64 - 7 bits the last is never among the first 55),
+ * and its place tells how many bits are taken: so the lengths need not be added up. To begin with, bits is 1 and
+ * nothing was read yet.
+ */
 struct stream {
     const uint8_t *at;
-    unsigned used_bits;
+    uint64_t bits;
 };
 
-/*
- * Five symbols after one refill. Reads 8 bytes at stream->at. The 1 put in as the lowest bit of the refill takes no part in
- * any look-up (of 64 - 7 bits the last is never among the first 55), and tells at the end by how much the word was
- * shifted: so the lengths need not be added up.
- */
-static inline void five(struct stream *stream, const uint16_t *entries, uint8_t *to)
+static inline void refill(struct stream *s)
 {
-    uint64_t bits = (swap64(firn_bytes_get64(stream->at)) | 1) << stream->used_bits;
-    unsigned shifted;
+    unsigned taken = trailing_zeros(s->bits);
 
-    for (unsigned k = 0; k < PER_REFILL; k++) {
-        unsigned entry = entries[bits >> (64 - FIRN_TABLE_LENGTH_LIMIT)];
+    s->at += taken / 8;
+    s->bits = (swap64(firn_bytes_get64(s->at)) | 1) << taken % 8;
+}
 
-        bits <<= entry & 63;           /* the mask costs nothing; the symbol's low bits must not count */
-        to[k] = (uint8_t)(entry >> 8);
-    }
-    shifted = trailing_zeros(bits);
-    stream->at += shifted / 8;
-    stream->used_bits = shifted % 8;
+static inline void step(struct stream *s, const uint16_t *entries, uint8_t *to)
+{
+    unsigned entry = entries[s->bits >> (64 - FIRN_TABLE_LENGTH_LIMIT)];
+
+    s->bits <<= entry & 63;            /* the mask costs nothing, but the symbol's bits must not count */
+    *to = (uint8_t)(entry >> 8);
 }
 
 /*
- * How many times five() may be called for a stream before its place has to be looked at again: call r (from 0) reads the 8
- * bytes from at + 7 r at most on, which lie in coded as long as 7 r <= end - 8 - at.
+ * How many rounds (a refill and five look-ups) a stream can go before its place has to be looked at again: round r (from 0) reads
+ * 8 bytes from b + 7 r at most on, where b is its place now, and they lie in front of end as long as 7 r <= end - 8 - b.
  */
-static size_t rounds_safe(const struct stream *stream, const uint8_t *end)
+static size_t rounds_safe(const struct stream *s, const uint8_t *end)
 {
-    return end - stream->at < 8 ? 0 : (size_t)(end - stream->at - 8) / REFILL_ADVANCE_BYTES + 1;
+    ptrdiff_t left = end - s->at - trailing_zeros(s->bits) / 8;
+
+    return left < 8 ? 0 : (size_t)(left - 8) / REFILL_ADVANCE_BYTES + 1;
 }
 
 /*
- * The fast part: whole rounds of five symbols of every stream, as long as every refill lies within coded. Returns how many
- * symbols of each stream are done.
+ * The fast part: whole rounds of all streams, as long as every refill lies in front of end. Returns how many symbols of each
+ * stream are done.
  *
- * Bounds. Reads: rounds is at most rounds_safe() of every stream, taken anew for each batch. Writes: round r of a stream
- * writes five bytes at done + 5 r of its part, and rounds is at most (each - done) / 5, so they end at `each` or before;
- * a part has at least `each` bytes. Look-ups: the index has 11 bits.
+ * Bounds. Reads: a batch has at most rounds_safe() rounds of every stream. Writes: round r writes five bytes of each stream
+ * from done + 5 r of its part on, and a batch has at most (each - done) / 5 rounds, so they end at `each` or before, and
+ * no part is shorter than that. Look-ups: the index has 11 bits.
  */
-static inline size_t hurry(struct stream *stream, unsigned streams, const uint8_t *end, const uint16_t *entries,
-                           uint8_t *raw, size_t each)
+static size_t hurry_six(struct stream *streams, const uint8_t *end, const uint16_t *entries, uint8_t *raw, size_t each)
 {
-    struct stream s[FIRN_STREAMS_MAX];
-    size_t done = 0, rounds;
+    struct stream a = streams[0], b = streams[1], c = streams[2], d = streams[3], e = streams[4], f = streams[5];
+    size_t done = 0;
 
-    for (unsigned k = 0; k < streams; k++)
-        s[k] = stream[k];
     for (;;) {
-        rounds = (each - done) / PER_REFILL;
-        for (unsigned k = 0; k < streams; k++) {
-            size_t safe = rounds_safe(&s[k], end);
+        size_t rounds = (each - done) / PER_REFILL, stop;
+
+        streams[0] = a, streams[1] = b, streams[2] = c, streams[3] = d, streams[4] = e, streams[5] = f;
+        for (unsigned k = 0; k < FIRN_STREAMS_MAX; k++) {
+            size_t safe = rounds_safe(&streams[k], end);
 
             rounds = safe < rounds ? safe : rounds;
         }
         if (rounds == 0)
-            break;
-        for (size_t stop = done + rounds * PER_REFILL; done < stop; done += PER_REFILL)
-            for (unsigned k = 0; k < streams; k++)
-                five(&s[k], entries, raw + k * each + done);
+            return done;
+        for (stop = done + rounds * PER_REFILL; done < stop; done += PER_REFILL) {
+            refill(&a), refill(&b), refill(&c), refill(&d), refill(&e), refill(&f);
+            for (unsigned k = 0; k < PER_REFILL; k++) {
+                step(&a, entries, raw + done + k);
+                step(&b, entries, raw + each + done + k);
+                step(&c, entries, raw + 2 * each + done + k);
+                step(&d, entries, raw + 3 * each + done + k);
+                step(&e, entries, raw + 4 * each + done + k);
+                step(&f, entries, raw + 5 * each + done + k);
+            }
+        }
     }
-    for (unsigned k = 0; k < streams; k++)
-        stream[k] = s[k];
-    return done;
+}
+
+/* The same for one stream. */
+static size_t hurry_one(struct stream *s, const uint8_t *end, const uint16_t *entries, uint8_t *raw, size_t each)
+{
+    size_t done = 0;
+
+    for (;;) {
+        size_t rounds = (each - done) / PER_REFILL, safe = rounds_safe(s, end), stop;
+
+        rounds = safe < rounds ? safe : rounds;
+        if (rounds == 0)
+            return done;
+        for (stop = done + rounds * PER_REFILL; done < stop; done += PER_REFILL) {
+            refill(s);
+            for (unsigned k = 0; k < PER_REFILL; k++)
+                step(s, entries, raw + done + k);
+        }
+    }
 }
 
 /* The last symbols of a stream, with no byte read past its end; then the stream must be used up. */
@@ -173,14 +218,13 @@ enum firn_status firn_streams_read(const uint8_t *coded, size_t coded_bytes, con
     size_t each = raw_bytes / streams, done;
 
     for (unsigned k = 0; k < streams; k++)
-        stream[k] = (struct stream){ coded + starts[k], 0 };
-    done = streams == 1 ? hurry(stream, 1, coded + coded_bytes, entries, raw, each)
-                        : hurry(stream, FIRN_STREAMS_MAX, coded + coded_bytes, entries, raw, each);
+        stream[k] = (struct stream){ coded + starts[k], 1 };
+    done = (streams == 1 ? hurry_one : hurry_six)(stream, coded + coded_bytes, entries, raw, each);
     for (unsigned k = 0; k < streams; k++) {
-        size_t part = k + 1 < streams ? each : raw_bytes - k * each, start = starts[k], end = starts[k + 1];
-        struct firn_bits_reader reader = { coded + start, end - start, 0 };
+        struct firn_bits_reader reader = { coded + starts[k], starts[k + 1] - starts[k], 0 };
+        size_t part = k + 1 < streams ? each : raw_bytes - k * each;
 
-        reader.at_bits = 8 * (size_t)(stream[k].at - reader.bytes) + stream[k].used_bits;
+        reader.at_bits = 8 * (size_t)(stream[k].at - reader.bytes) + trailing_zeros(stream[k].bits);
         if (finish(&reader, entries, raw + k * each + done, part - done) != FIRN_OK)
             return FIRN_BAD_DATA;
     }
