@@ -36,7 +36,7 @@ struct firn_reader_layout {
     struct firn_sheet_shape last_sheet;
     bool end_known;               /* false: the last sheets are gone, so nobody knows how much there was */
     bool title_sound;             /* page 0 is as the TITLE record has it */
-    bool colophon_found, index_whole;
+    bool colophon_found;
     /* from the colophon; 0 when it is gone */
     uint64_t items, withdrawn, content_bytes, stored_bytes, coded_bytes, segments;
     uint8_t catalogue_sha256[FIRN_ITEM_SHA256_BYTES];
@@ -100,6 +100,8 @@ struct firn_reader_visitor {
 struct firn_reader_walk_report {
     uint64_t items;               /* met in the catalogue */
     uint64_t items_unknown;       /* the colophon counts them, but their catalogue entries are gone */
+    uint64_t index_parts_lost;    /* parts of the catalogue that were put together from the stream instead */
+    bool cut_short;               /* the end of the container is gone, so there may have been more items */
 };
 
 /* Goes through the catalogue from the start. FIRN_OK also when items are damaged or unknown: the visitor and report tell. */

@@ -23,18 +23,29 @@ struct firn_store {
     enum firn_status (*resize)(void *self, uint64_t bytes, int *os_error);
     /* What was written is on the medium when this returns FIRN_OK. */
     enum firn_status (*sync)(void *self, int *os_error);
-    /* Tells that what was read or written is not needed again soon, so that a later read comes from the medium. */
+    /* Tells that what was read or written is not needed again soon, so that a later read comes from the medium. What was
+       written must have been synced before. */
     void (*forget)(void *self, uint64_t at, uint64_t bytes);
     void (*close)(void *self);
 };
 
 enum firn_store_use { FIRN_STORE_READ, FIRN_STORE_MEND };
 
-/* Opens a file or device. FIRN_OK, FIRN_NO_INPUT, FIRN_READ_ONLY (for MEND), FIRN_NO_MEMORY. The caller closes it. */
+/*
+ * Opens a file or a block device; the caller closes it.
+ *
+ * FIRN_OK
+ * FIRN_NO_INPUT   cannot be opened; os_error is EISDIR for a folder, ESPIPE for what cannot be searched (firn_store_spool)
+ * FIRN_READ_ONLY  for MEND: it can be read, but not written
+ * FIRN_NO_MEMORY
+ */
 FIRN_API enum firn_status firn_store_open(const char *path, enum firn_store_use use, const struct firn_memory *memory,
                                           struct firn_store *store, struct firn_fault *fault);
 
-/* Keeps every other run that asks too from working on this file until it is closed. FIRN_OK, FIRN_BUSY, FIRN_IO. */
+/*
+ * Keeps every other run that asks too from working on this file until it is closed. FIRN_OK, FIRN_BUSY, FIRN_IO. A store that
+ * is no file needs no lock: FIRN_OK.
+ */
 FIRN_API enum firn_status firn_store_lock(struct firn_store *store, struct firn_fault *fault);
 
 /* Writes to a descriptor that cannot be searched, such as standard output; close does not close it. */
@@ -44,11 +55,14 @@ FIRN_API enum firn_status firn_store_pipe(int descriptor, const struct firn_memo
 FIRN_API enum firn_status firn_store_temporary(const char *folder, const struct firn_memory *memory,
                                                struct firn_store *store, struct firn_fault *fault);
 
-/* Copies a descriptor to its end into a temporary file, so that it can be searched. */
+/*
+ * Copies a descriptor to its end into a temporary file, so that it can be searched. A file at its start is not copied, but
+ * used as it is. The descriptor stays the caller's. FIRN_OK, FIRN_IO, FIRN_CANNOT_CREATE, FIRN_NO_MEMORY.
+ */
 FIRN_API enum firn_status firn_store_spool(int descriptor, const struct firn_memory *memory, struct firn_store *store,
                                            struct firn_fault *fault);
 
-/* `capacity` bytes lent by the caller, holding `*used`; writing grows *used up to capacity, then fails with FIRN_IO. */
+/* `capacity` bytes lent by the caller, holding `used`; writing grows used up to capacity, then fails with FIRN_IO (ENOSPC). */
 struct firn_store_buffer { uint8_t *bytes; size_t capacity, used; };
 FIRN_API void firn_store_memory(struct firn_store_buffer *buffer, struct firn_store *store);
 
@@ -58,11 +72,16 @@ FIRN_API void firn_store_memory(struct firn_store_buffer *buffer, struct firn_st
  */
 struct firn_store_stage;
 
-/* replace  an existing file may be taken over when the stage is kept; without it FIRN_EXISTS, now or then. */
+/*
+ * replace  an existing file may be taken over when the stage is kept; without it FIRN_EXISTS, now or then. Folders and
+ *          devices are never taken over.
+ * FIRN_OK, FIRN_EXISTS, FIRN_CANNOT_CREATE, FIRN_NO_MEMORY.
+ */
 FIRN_API enum firn_status firn_store_stage_open(const char *path, bool replace, const struct firn_memory *memory,
                                                 struct firn_store_stage **out, struct firn_fault *fault);
+/* The stage's to close, not the caller's. */
 FIRN_API struct firn_store *firn_store_stage_store(struct firn_store_stage *stage);
-/* Syncs, gives it its name, syncs the folder. */
+/* Syncs, gives it its name, syncs the folder. Called once. FIRN_OK, FIRN_EXISTS, FIRN_CANNOT_CREATE, FIRN_IO. */
 FIRN_API enum firn_status firn_store_stage_keep(struct firn_store_stage *stage, struct firn_fault *fault);
 /* Takes NULL. Closes; what was not kept is gone without a trace. */
 FIRN_API void firn_store_stage_close(struct firn_store_stage *stage);

@@ -13,6 +13,7 @@ enum {
     FIRN_LIMIT_BATCH_RAW_BYTES = 1 << 23,        /* format-spec/stream.md: catalogue entries of one BATCH, before coding */
     FIRN_LIMIT_ENTRY_BYTES = 1 << 21,            /* one catalogue entry: pax header and extents */
     FIRN_LIMIT_PART_SEGMENTS = 1 << 12,          /* segments told of by one part of the catalogue */
+    FIRN_LIMIT_PART_SUMS = 1 << 16,              /* sums told of by one part of the catalogue */
     FIRN_LIMIT_TEXT_BYTES = 1 << 24,             /* SPEC, READER, COLOPHON bodies */
     FIRN_LIMIT_THREADS = 256
 };
