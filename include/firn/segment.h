@@ -1,9 +1,9 @@
 /*
  * firn/segment.h - coding a stretch of at most 1 MiB so that it stands alone
  *
- * Room: coding. Methods: stored, run, prefix (and what the format adds later). The decoding tables stand inside the coded
- * bytes; nothing outside them is needed. Layout: format-spec/segment.md. The coded bytes carry no digest: whoever keeps
- * them must (the container does).
+ * Room: coding. Methods: stored, run, prefix (and what the format adds later). The decoding tables stand inside the
+ * coded bytes; nothing outside them is needed. Layout: format-spec/segment.md. The coded bytes carry no digest:
+ * whoever keeps them must (the container does).
  *
  * SPDX-License-Identifier: BSD-2-Clause
  */
@@ -49,7 +49,8 @@ FIRN_API enum firn_status firn_segment_encode(const uint8_t *raw, size_t raw_byt
                                               uint8_t *coded, size_t *coded_bytes, void *work);
 
 /*
- * coded, coded_bytes  untrusted: whatever they hold, nothing outside raw[0 .. raw_bytes) and work is written, and the time
+ * coded, coded_bytes  untrusted: whatever they hold, nothing outside raw[0 .. raw_bytes) and work is written, and the
+ * time
  *                     is bounded by a constant multiple of raw_bytes + coded_bytes
  * raw_bytes           as known from the segment's record
  *

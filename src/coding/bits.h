@@ -1,8 +1,9 @@
 /*
  * coding/bits.h - bit strings, most significant bit first, for headers and tables
  *
- * Room: coding. Pure. Bit k of a string is bit 7 - k % 8 of its byte k / 8. A string ends on a byte boundary; the bits between
- * are zero, and a reader refuses anything else. The streams of coding/streams.c have the same order and their own loops.
+ * Room: coding. Pure. Bit k of a string is bit 7 - k % 8 of its byte k / 8. A string ends on a byte boundary; the
+ * bits between are zero, and a reader refuses anything else. The streams of coding/streams.c have the same order and
+ * their own loops.
  *
  * SPDX-License-Identifier: BSD-2-Clause
  */

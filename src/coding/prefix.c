@@ -1,16 +1,17 @@
 /*
  * coding/prefix.c - code lengths by package-merge, words by the canonical rule
  *
- * Why the least variance comes out. Write the cost of a symbol of weight w at length l as the pair (w l, w l^2), compared
- * in that order: the second number decides between codes of equal cost, and for equal cost the variance is least when it
- * is. The coin of a symbol at depth d then costs (w, w (2d - 1)), which grows with d, so package-merge finds the least
- * sum of pairs. A package that weighs as much as a coin of depth d is made of coins deeper than d, so its second number
- * is greater: taking the coin first on equal weights IS the order of the pairs, and packages made in that order stay in
- * it. So the second number never has to be computed.
+ * Why the least variance comes out. Write the cost of a symbol of weight w at length l as the pair (w l, w l^2),
+ * compared in that order: the second number decides between codes of equal cost, and for equal cost the variance is
+ * least when it is. The coin of a symbol at depth d then costs (w, w (2d - 1)), which grows with d, so package-merge
+ * finds the least sum of pairs. A package that weighs as much as a coin of depth d is made of coins deeper than d, so
+ * its second number is greater: taking the coin first on equal weights IS the order of the pairs, and packages made
+ * in that order stay in it. So the second number never has to be computed.
  *
- * Without a limit the same rule is Huffman's own algorithm with two queues, leaf before node on equal weights. Its code has
- * the least greatest length of all optimal codes (E. S. Schwartz, Information and Control 7, 1964, pp. 37-44), so it is
- * kept when it meets the limit; when it does not, no optimal code does, and package-merge finds the best that does.
+ * Without a limit the same rule is Huffman's own algorithm with two queues, leaf before node on equal weights. Its
+ * code has the least greatest length of all optimal codes (E. S. Schwartz, Information and Control 7, 1964, pp.
+ * 37-44), so it is kept when it meets the limit; when it does not, no optimal code does, and package-merge finds the
+ * best that does.
  *
  * SPDX-License-Identifier: BSD-2-Clause
  */
@@ -55,7 +56,7 @@ static struct bench cut(void *work, size_t symbols)
     return b;
 }
 
-/* Stable, by weight; equal weights stay in symbol order. Returns where the sorted keys are. */
+/* Stable, by weight. Returns where the sorted keys are. */
 static uint64_t *sort(uint64_t *keys, uint64_t *spare, size_t count, uint32_t greatest)
 {
     for (unsigned shift = SYMBOL_BITS; shift < SYMBOL_BITS + 32 && (uint64_t)greatest >> (shift - SYMBOL_BITS) != 0;
@@ -81,8 +82,8 @@ static uint64_t *sort(uint64_t *keys, uint64_t *spare, size_t count, uint32_t gr
 }
 
 /*
- * Huffman's algorithm on sorted leaves. how_many[d] becomes the number of symbols of length d; false when a length would
- * pass the limit. `used` is at least 2.
+ * Huffman's algorithm on sorted leaves. how_many[d] becomes the number of symbols of length d; false when a length
+ * would pass the limit. `used` is at least 2.
  */
 static bool huffman(const struct bench *b, size_t used, unsigned limit, uint16_t *how_many)
 {
@@ -121,9 +122,9 @@ static bool huffman(const struct bench *b, size_t used, unsigned limit, uint16_t
 }
 
 /*
- * Merges the leaves with the packages of the level below, leaf before package on equal weights. leaves_in[i] becomes the
- * number of leaves among the first i of the list. Works from both ends at once, so that two chains of comparisons are
- * under way: the sentinels in front weigh 0 and those behind more than anything real, and 0 < every weight.
+ * Merges the leaves with the packages of the level below, leaf before package on equal weights. leaves_in[i] becomes
+ * the number of leaves among the first i of the list. Works from both ends at once, so that two chains of comparisons
+ * are under way: the sentinels in front weigh 0 and those behind more than anything real, and 0 < every weight.
  */
 static void merge(const uint64_t *leaves, size_t used, const uint64_t *packages, size_t package_count, uint64_t *list,
                   uint16_t *leaves_in)
@@ -150,10 +151,10 @@ static void merge(const uint64_t *leaves, size_t used, const uint64_t *packages,
 }
 
 /*
- * Package-merge on sorted leaves. The list of level `limit` holds the leaves alone; each level above merges the leaves with
- * the packages (pairs) of the level below. Of the topmost list the first 2 * used - 2 are taken, all leaves among
- * them; of the level below twice as many as packages were taken, and so on; a leaf taken on a level makes its symbol one
- * longer, and leaves are always taken from the light end. So the topmost list need not be made.
+ * Package-merge on sorted leaves. The list of level `limit` holds the leaves alone; each level above merges the
+ * leaves with the packages (pairs) of the level below. Of the topmost list the first 2 * used - 2 are taken, all
+ * leaves among them; of the level below twice as many as packages were taken, and so on; a leaf taken on a level
+ * makes its symbol one longer, and leaves are always taken from the light end. So the topmost list need not be made.
  * how_many[d]: as above. 2 <= used <= 2^limit.
  */
 static void package_merge(const struct bench *b, size_t used, unsigned limit, uint16_t *how_many)
@@ -182,14 +183,17 @@ static void package_merge(const struct bench *b, size_t used, unsigned limit, ui
     how_many[limit] = (uint16_t)deeper;
 }
 
-/* Collects the symbols that occur and sorts them by weight into b->keys and b->leaves; returns how many there are. */
+/*
+ * Collects the symbols that occur and sorts them by weight into b->keys and b->leaves, of equal ones the last symbol
+ * first, so that the first gets the shorter word; returns how many there are.
+ */
 static size_t gather(struct bench *b, const uint32_t *weights, size_t symbols, uint64_t *total)
 {
     uint32_t greatest = 0;
     size_t used = 0;
 
     *total = 0;
-    for (size_t s = 0; s < symbols; s++) {
+    for (size_t s = symbols; s-- > 0;) {
         if (weights[s] == 0)
             continue;
         b->keys[used++] = (uint64_t)weights[s] << SYMBOL_BITS | s;
@@ -203,7 +207,8 @@ static size_t gather(struct bench *b, const uint32_t *weights, size_t symbols, u
     return used;
 }
 
-enum firn_status firn_prefix_lengths(const uint32_t *weights, size_t symbols, unsigned limit, uint8_t *lengths, void *work)
+enum firn_status firn_prefix_lengths(const uint32_t *weights, size_t symbols, unsigned limit, uint8_t *lengths,
+                                     void *work)
 {
     uint16_t how_many[FIRN_PREFIX_LENGTH_MAX + 1] = { 0 };
     struct bench b;
@@ -219,8 +224,9 @@ enum firn_status firn_prefix_lengths(const uint32_t *weights, size_t symbols, un
     memset(lengths, 0, symbols);
     if (used == 1)
         how_many[1] = 1;
+    /* straight to package-merge where Huffman's code is almost sure to be too long */
     else if (used > 1 && (b.leaves[0] + b.leaves[1] < total >> limit || !huffman(&b, used, limit, how_many)))
-        package_merge(&b, used, limit, how_many);       /* straight away when Huffman's code is sure to be too long, nearly */
+        package_merge(&b, used, limit, how_many);
     for (unsigned length = limit; length > 0; length--)
         for (unsigned k = how_many[length]; k > 0; k--)
             lengths[b.keys[at++] & ((1 << SYMBOL_BITS) - 1)] = (uint8_t)length;

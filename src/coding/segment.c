@@ -1,14 +1,15 @@
 /*
  * coding/segment.c - a segment: how it is laid out, who codes what
  *
- * Layout: format-spec/segment.md. Byte 0 is the method, byte 1 the transform (none is defined yet, 0). A prefix segment is a
- * row of stretches, each with its own head, table and streams.
+ * Layout: format-spec/segment.md. Byte 0 is the method, byte 1 the transform (none is defined yet, 0). A prefix
+ * segment is a row of stretches, each with its own head, table and streams.
  *
  * SPDX-License-Identifier: BSD-2-Clause
  */
 #include "firn/segment.h"
 
 #include "coding/histogram.h"
+#include "coding/sample.h"
 #include "coding/split.h"
 #include "coding/streams.h"
 #include "coding/table.h"
@@ -26,8 +27,8 @@ enum {
     KIND_SIX = 4,
     KIND_LAST = 8,
     KIND_KNOWN = 15,
-    STRETCH_MIN_BYTES = 256,           /* every stretch but the last: bounds the tables per byte that a reader can be made to build */
-    SIX_MIN_BYTES = 2048               /* writer: below, the padding and lengths of six streams cost more than they are worth */
+    STRETCH_MIN_BYTES = 256,           /* all stretches but the last: bounds the tables a reader can be made to build */
+    SIX_MIN_BYTES = 2048               /* writer: shorter ones do not earn what the ends of six streams cost */
 };
 
 _Static_assert((int)FIRN_SEGMENT_RAW_MAX == (int)FIRN_LIMIT_SEGMENT_RAW_BYTES, "one limit, two names");
@@ -102,11 +103,11 @@ static size_t fold(size_t value, size_t expected)
 }
 
 /*
- * Stream lengths and streams. The streams are written first, as far behind as the lengths may take, and then moved up: that is
- * cheaper than counting each of them beforehand.
+ * Stream lengths and streams. The streams are written first, as far behind as the lengths may take, and then moved
+ * up: that is cheaper than counting each of them beforehand.
  */
-static void put_streams(struct sink *sink, struct encode_work *w, const uint8_t *raw, size_t raw_bytes, unsigned streams,
-                        bool last)
+static void put_streams(struct sink *sink, struct encode_work *w, const uint8_t *raw, size_t raw_bytes,
+                        unsigned streams, bool last)
 {
     uint64_t bits = firn_prefix_cost_bits(w->counts, w->lengths, FIRN_TABLE_SYMBOLS);
     size_t each = raw_bytes / streams, reserve = (size_t)streams * NUMBER_MAX_BYTES, expected = 0, left;
@@ -189,7 +190,7 @@ enum firn_status firn_segment_encode(const uint8_t *raw, size_t raw_bytes, enum 
 
     if (raw_bytes < 1 || raw_bytes > FIRN_SEGMENT_RAW_MAX || (unsigned)effort > FIRN_SEGMENT_EFFORT_THOROUGH)
         return FIRN_BAD_ARGUMENT;
-    if (effort == FIRN_SEGMENT_EFFORT_NONE) {
+    if (effort == FIRN_SEGMENT_EFFORT_NONE || firn_sample_is_even(raw, raw_bytes)) {
         put_stored(raw, raw_bytes, coded, coded_bytes);
         return FIRN_OK;
     }
@@ -197,7 +198,7 @@ enum firn_status firn_segment_encode(const uint8_t *raw, size_t raw_bytes, enum 
     if (w->split.stretch_count == 1 && w->split.stretches[0].method != FIRN_SEGMENT_PREFIX) {
         bool run = w->split.stretches[0].method == FIRN_SEGMENT_RUN;
 
-        put_stored(raw, run ? 1 : raw_bytes, coded, coded_bytes);       /* a run holds its byte where stored holds all */
+        put_stored(raw, run ? 1 : raw_bytes, coded, coded_bytes);   /* a run holds one byte where stored holds all */
         coded[0] = run ? FIRN_SEGMENT_RUN : FIRN_SEGMENT_STORED;
         return FIRN_OK;
     }
@@ -331,7 +332,8 @@ static bool take_head(struct source *source, struct decode_work *w, size_t raw_l
     return !head->last || source->at == source->coded_bytes;
 }
 
-static enum firn_status read_stretch(const struct source *source, struct decode_work *w, const struct head *head, uint8_t *raw)
+static enum firn_status read_stretch(const struct source *source, struct decode_work *w, const struct head *head,
+                                     uint8_t *raw)
 {
     switch (head->method) {
     case FIRN_SEGMENT_STORED:
@@ -361,7 +363,8 @@ static bool is_known(const uint8_t *coded, size_t coded_bytes, size_t raw_bytes)
            (coded[0] == FIRN_SEGMENT_PREFIX || is_solid(coded, coded_bytes, raw_bytes));
 }
 
-enum firn_status firn_segment_decode(const uint8_t *coded, size_t coded_bytes, uint8_t *raw, size_t raw_bytes, void *work)
+enum firn_status firn_segment_decode(const uint8_t *coded, size_t coded_bytes, uint8_t *raw, size_t raw_bytes,
+                                     void *work)
 {
     struct source source = { coded, coded_bytes, HEAD_BYTES };
     struct decode_work *w = work;

@@ -1,10 +1,11 @@
 /*
  * coding/split.c - the search for the cheapest cuts
  *
- * best[j] = min over i < j of best[i] + price(i, j). Pricing a stretch exactly takes an optimal code, so candidates are looked
- * at in the order of a lower bound and the search for a j ends when no bound is below the best price found: the
- * result is the same as without bounds. Two facts give the bound for the words of stretch i .. j: they take no fewer bits than
- * the entropy says, and no fewer than the words of i .. j - 1 and of the last cell under codes of their own.
+ * best[j] = min over i < j of best[i] + price(i, j). Pricing a stretch exactly takes an optimal code, so candidates
+ * are looked at in the order of a lower bound and the search for a j ends when no bound is below the best price
+ * found: the result is the same as without bounds. Two facts give the bound for the words of stretch i .. j: they
+ * take no fewer bits than the entropy says, and no fewer than the words of i .. j - 1 and of the last cell under
+ * codes of their own.
  *
  * Whole numbers only, so that every machine makes the same cuts.
  * SPDX-License-Identifier: BSD-2-Clause
@@ -22,7 +23,7 @@ enum {
     SOLID_FRAMING_BITS = 8 * 4,        /* kind and length of a stretch */
     PREFIX_FRAMING_BITS = 8 * 12 + 24, /* also six stream lengths, and half a byte for the end of each */
     LOG_BITS = FIRN_SPLIT_LOG_BITS,
-    LOG_SLACK = 48                     /* log_table and the straight lines between its entries are low by less: 2 + 46.2 */
+    LOG_SLACK = 49                     /* log_table and straight lines between its entries are low by less: 2 + 46.2 */
 };
 
 /* 2^24 * log2(1 + k / 256), rounded down; tests/coding/test_split.c computes it again. */
@@ -65,7 +66,8 @@ uint32_t firn_split_log2(uint32_t n)
             exponent += shift;
     part = (uint32_t)(((uint64_t)n << 32 >> exponent) & UINT32_MAX);        /* the part after the leading 1 */
     step = log_table[(part >> 24) + 1] - log_table[part >> 24];
-    return ((uint32_t)exponent << LOG_BITS) + log_table[part >> 24] + (uint32_t)((uint64_t)step * (part & 0xFFFFFF) >> 24);
+    return ((uint32_t)exponent << LOG_BITS) + log_table[part >> 24] +
+           (uint32_t)((uint64_t)step * (part & 0xFFFFFF) >> 24);
 }
 
 uint64_t firn_split_entropy_bits(const uint32_t counts[256])

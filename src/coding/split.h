@@ -1,10 +1,10 @@
 /*
  * coding/split.h - where the statistics change: cutting a segment into stretches of least total cost
  *
- * Room: coding. Pure. Cuts may be made on a grid of cells. Dynamic programming over the grid finds the stretches whose costs,
- * in bits and with all tables included, add up to the least; every stretch is priced as the cheapest of stored, run and
- * prefix. The framing of a prefix stretch is priced at a fixed sum, since the exact one (stream lengths, filled-up bytes) is
- * known only when the streams are.
+ * Room: coding. Pure. Cuts may be made on a grid of cells. Dynamic programming over the grid finds the stretches
+ * whose costs, in bits and with all tables included, add up to the least; every stretch is priced as the cheapest of
+ * stored, run and prefix. The framing of a prefix stretch is priced at a fixed sum, since the exact one (stream
+ * lengths, filled-up bytes) is known only when the streams are.
  *
  * SPDX-License-Identifier: BSD-2-Clause
  */

@@ -81,7 +81,10 @@ static inline uint16_t *spread(uint16_t *to, unsigned entry, size_t span)
     return to + span;
 }
 
-/* Symbols are sorted by length first, so that the long loops are of one kind each; canonical order is the order of entries. */
+/*
+ * Symbols are sorted by length first, so that the long loops are of one kind each; canonical order is the order of
+ * entries.
+ */
 void firn_streams_prepare(const uint8_t lengths[FIRN_TABLE_SYMBOLS], uint16_t entries[FIRN_STREAMS_ENTRIES])
 {
     uint16_t places[FIRN_TABLE_LENGTH_LIMIT + 2] = { 0 };
@@ -105,10 +108,10 @@ void firn_streams_prepare(const uint8_t lengths[FIRN_TABLE_SYMBOLS], uint16_t en
 }
 
 /*
- * One stream under way: `bits` is a refill, the 8 bytes at `at` with the lowest bit set to 1, less the bits that are taken
- * already. The 1 takes no part in any of the five look-ups after a refill (of 64 - 7 bits the last is never among the first 55),
- * and its place tells how many bits are taken: so the lengths need not be added up. To begin with, bits is 1 and
- * nothing was read yet.
+ * One stream under way: `bits` is a refill, the 8 bytes at `at` with the lowest bit set to 1, less the bits that are
+ * taken already. The 1 takes no part in any of the five look-ups after a refill (of 64 - 7 bits the last is never
+ * among the first 55), and its place tells how many bits are taken: so the lengths need not be added up. To begin
+ * with, bits is 1 and nothing was read yet.
  */
 struct stream {
     const uint8_t *at;
@@ -132,8 +135,9 @@ static inline void step(struct stream *s, const uint16_t *entries, uint8_t *to)
 }
 
 /*
- * How many rounds (a refill and five look-ups) a stream can go before its place has to be looked at again: round r (from 0) reads
- * 8 bytes from b + 7 r at most on, where b is its place now, and they lie in front of end as long as 7 r <= end - 8 - b.
+ * How many rounds (a refill and five look-ups) a stream can go before its place has to be looked at again: round r
+ * (from 0) reads 8 bytes from b + 7 r at most on, where b is its place now, and they lie in front of end as long as 7
+ * r <= end - 8 - b.
  */
 static size_t rounds_safe(const struct stream *s, const uint8_t *end)
 {
@@ -143,12 +147,12 @@ static size_t rounds_safe(const struct stream *s, const uint8_t *end)
 }
 
 /*
- * The fast part: whole rounds of all streams, as long as every refill lies in front of end. Returns how many symbols of each
- * stream are done.
+ * The fast part: whole rounds of all streams, as long as every refill lies in front of end. Returns how many symbols
+ * of each stream are done.
  *
- * Bounds. Reads: a batch has at most rounds_safe() rounds of every stream. Writes: round r writes five bytes of each stream
- * from done + 5 r of its part on, and a batch has at most (each - done) / 5 rounds, so they end at `each` or before, and
- * no part is shorter than that. Look-ups: the index has 11 bits.
+ * Bounds. Reads: a batch has at most rounds_safe() rounds of every stream. Writes: round r writes five bytes of each
+ * stream from done + 5 r of its part on, and a batch has at most (each - done) / 5 rounds, so they end at `each` or
+ * before, and no part is shorter than that. Look-ups: the index has 11 bits.
  */
 static size_t hurry_six(struct stream *streams, const uint8_t *end, const uint16_t *entries, uint8_t *raw, size_t each)
 {

@@ -22,7 +22,7 @@ enum {
     FIRN_TABLE_LENGTH_LIMIT = 11,
     FIRN_TABLE_TOKENS = 14,            /* lengths 0 .. 11, absent run, repetition */
     FIRN_TABLE_TOKEN_LIMIT = 7,
-    FIRN_TABLE_COST_MIN_BITS = 3 * FIRN_TABLE_TOKENS + 2,  /* no table is shorter: two symbols need two tokens, or one and a run */
+    FIRN_TABLE_COST_MIN_BITS = 3 * FIRN_TABLE_TOKENS + 2,      /* of two symbols, the first two of all */
     FIRN_TABLE_COST_MAX_BITS = 3 * FIRN_TABLE_TOKENS + FIRN_TABLE_SYMBOLS * FIRN_TABLE_TOKEN_LIMIT
 };
 
