@@ -9,7 +9,6 @@
 #include "guard/lanes_engine.h"
 
 #include <immintrin.h>
-#include <string.h>
 
 enum { OCTETS = 16, GUARD_AT = 8 * FIRN_LANES_DATA_WORDS };
 
@@ -34,6 +33,11 @@ static inline __m256i fold_octet(const __m256i v[8], __m256i bits[3])
     return v01 ^ v23 ^ (v45 ^ v67);
 }
 
+static inline __m256i put_first(__m256i v, const uint8_t *word)
+{
+    return _mm256_blend_epi32(v, _mm256_castsi128_si256(_mm_loadl_epi64((const __m128i *)(const void *)word)), 3);
+}
+
 /* The octet whose labels stand in a row from `at` on; its first word is replaced when `head` is not NULL. */
 static inline __m256i fold_run(const uint8_t *at, const uint8_t *head, __m256i bits[3])
 {
@@ -42,7 +46,7 @@ static inline __m256i fold_run(const uint8_t *at, const uint8_t *head, __m256i b
     for (unsigned i = 0; i < 8; i++)
         v[i] = load(at + 32 * i);
     if (head != NULL)
-        v[0] = _mm256_blend_epi32(v[0], _mm256_castsi128_si256(_mm_loadl_epi64((const __m128i *)(const void *)head)), 3);
+        v[0] = put_first(v[0], head);
     return fold_octet(v, bits);
 }
 
@@ -50,16 +54,15 @@ static inline __m256i fold_run(const uint8_t *at, const uint8_t *head, __m256i b
 static inline __m256i fold_first(const uint8_t *block, __m256i bits[3])
 {
     const uint8_t *guard = block + GUARD_AT;
-    uint64_t words[32];
-    __m256i v[8];
+    const __m128i low = _mm_loadu_si128((const __m128i *)(const void *)guard);           /* labels 1 and 2 */
+    const __m128i all = _mm_loadl_epi64((const __m128i *)(const void *)(guard + 72));    /* label 0 */
+    const __m128i third = _mm_loadl_epi64((const __m128i *)(const void *)block);
+    const __m256i v[8] = {
+        _mm256_set_m128i(_mm_unpacklo_epi64(_mm_unpackhi_epi64(low, low), third), _mm_unpacklo_epi64(all, low)),
+        put_first(load(block), guard + 16), put_first(load(block + 24), guard + 24), load(block + 56),
+        put_first(load(block + 80), guard + 32), load(block + 112), load(block + 144), load(block + 176),
+    };
 
-    memcpy(&words[0], guard + 72, 8);
-    for (unsigned j = 0; j < 5; j++) {
-        memcpy(&words[1U << j], guard + 8 * j, 8);
-        memcpy(&words[(1U << j) + 1], block + 8 * ((1U << j) - 1 - j), 8 * ((1U << j) - 1));
-    }
-    for (unsigned i = 0; i < 8; i++)
-        v[i] = load((const uint8_t *)&words[4 * i]);
     return fold_octet(v, bits);
 }
 

@@ -27,9 +27,9 @@ enum {
     POINTS = 256,
     LEVELS = 8,
     MOST_M = 128,
-    LINE = 64,                    /* bytes between the runs of a tile, so that they do not all fall into one cache set */
-    TILE_MOST = 512,              /* bytes taken of each payload at a time; even */
-    TILE_ALL = 1 << 14,           /* and of m payloads together, so that three tiles stay in the nearest caches */
+    LINE = 64,                    /* bytes between the runs of a tile, lest they all fall into one cache set */
+    TILE_MOST = 4096,             /* bytes taken of each payload at a time: all of a block, so that prefetching by page works */
+    TILE_ALL = 1 << 17,           /* and of m payloads together, so that two tiles stay in a second-level cache */
     TILE_ROOM = MOST_M * (TILE_ALL / MOST_M + LINE)
 };
 
@@ -49,7 +49,9 @@ struct job {
     struct work *work;
     unsigned k, m, levels;
     size_t stride;
-    size_t at, bytes;            /* of the tile at hand, in every payload */
+    size_t at, bytes;                 /* of the tile at hand, in every payload */
+    const uint8_t *const *ahead;      /* the runs of the coset after the one at hand, m of them; NULL when there is none */
+    unsigned ahead_asked;             /* how many of them an engine was told of */
 };
 
 const struct firn_reserve_engine *const firn_reserve_engines[] = {
@@ -145,14 +147,24 @@ static void pass2(const struct job *job, firn_reserve_step *step, unsigned level
             const uint8_t *from[2] = { in[i], in[i + apart] };
             uint8_t *to[2] = { out[i], out[i + apart] };
 
-            step(from, to, tables, job->bytes);
+            step(from, to, tables, job->bytes, from);
         }
     }
 }
 
+/* The next two runs of the coset after the one at hand, or two that will do no harm. */
+static void look_ahead(struct job *job, const uint8_t *const *harmless, const uint8_t *ahead[2])
+{
+    for (unsigned i = 0; i < 2; i++) {
+        ahead[i] = harmless[i];
+        if (job->ahead != NULL && job->ahead_asked < job->m)
+            ahead[i] = job->ahead[job->ahead_asked++];
+    }
+}
+
 /* Two levels at once, `level` and `level` + 1. */
-static void pass4(const struct job *job, firn_reserve_step *step, unsigned level, unsigned offset,
-                  const uint8_t *const *in, uint8_t *const *out)
+static void pass4(struct job *job, firn_reserve_step *step, unsigned level, unsigned offset, const uint8_t *const *in,
+                  uint8_t *const *out)
 {
     const unsigned apart = 1U << level;
 
@@ -164,8 +176,10 @@ static void pass4(const struct job *job, firn_reserve_step *step, unsigned level
         for (unsigned i = start; i < start + apart; i++) {
             const uint8_t *from[4] = { in[i], in[i + apart], in[i + 2 * apart], in[i + 3 * apart] };
             uint8_t *to[4] = { out[i], out[i + apart], out[i + 2 * apart], out[i + 3 * apart] };
+            const uint8_t *ahead[2];
 
-            step(from, to, tables, job->bytes);
+            look_ahead(job, from, ahead);
+            step(from, to, tables, job->bytes, ahead);
         }
     }
 }
@@ -178,7 +192,7 @@ static void copy_or_add(const struct job *job, const uint8_t *const *in, uint8_t
 }
 
 /* The inverse transform of the coset that starts at the point `offset`, into sum or added to it. */
-static void inverse_transform(const struct job *job, unsigned offset, const uint8_t *const *in, uint8_t *const *coset,
+static void inverse_transform(struct job *job, unsigned offset, const uint8_t *const *in, uint8_t *const *coset,
                               uint8_t *const *sum)
 {
     const bool adding = offset > job->m;
@@ -200,7 +214,7 @@ static void inverse_transform(const struct job *job, unsigned offset, const uint
 }
 
 /* The transform at the points 0 .. m - 1; what stands in `sum` is used up. */
-static void forward_transform(const struct job *job, uint8_t *const *sum, uint8_t *const *out)
+static void forward_transform(struct job *job, uint8_t *const *sum, uint8_t *const *out)
 {
     const uint8_t *const *in = (const uint8_t *const *)sum;
     unsigned level = job->levels;
@@ -219,22 +233,33 @@ static void make_rows(const struct job *job, uint8_t *tile, uint8_t **rows)
         rows[i] = tile + i * job->stride;
 }
 
-/* The reserve of one tile: data are the whole payloads, out is where the tile goes. */
-static void encode_tile(const struct job *job, const uint8_t *const *data, uint8_t *const *out)
+/* Where the runs of the coset are whose first data payload is `first`. */
+static void find_runs(const struct job *job, const uint8_t *const *data, unsigned first, const uint8_t **runs)
 {
-    const uint8_t *in[MOST_M];
+    for (unsigned i = 0; i < job->m; i++) {
+        const uint8_t *payload = first + i < job->k ? data[first + i] : NULL;
+
+        runs[i] = payload != NULL ? payload + job->at : job->work->zeros;
+    }
+}
+
+/* The reserve of one tile: data are the whole payloads, out is where the tile goes. */
+static void encode_tile(struct job *job, const uint8_t *const *data, uint8_t *const *out)
+{
+    const uint8_t *runs[2][MOST_M];
     uint8_t *coset[MOST_M], *sum[MOST_M];
+    unsigned turn = 0;
 
     make_rows(job, job->work->coset, coset);
     make_rows(job, job->work->sum, sum);
-    for (unsigned first = 0; first < job->k; first += job->m) {
-        for (unsigned i = 0; i < job->m; i++) {
-            const uint8_t *payload = first + i < job->k ? data[first + i] : NULL;
-
-            in[i] = payload != NULL ? payload + job->at : job->work->zeros;
-        }
-        inverse_transform(job, job->m + first, in, coset, sum);
+    find_runs(job, data, 0, runs[0]);
+    for (unsigned first = 0; first < job->k; first += job->m, turn ^= 1) {
+        find_runs(job, data, first + job->m, runs[turn ^ 1]);
+        job->ahead = runs[turn ^ 1];
+        job->ahead_asked = 0;
+        inverse_transform(job, job->m + first, runs[turn], coset, sum);
     }
+    job->ahead = NULL;
     forward_transform(job, sum, out);
 }
 
@@ -359,7 +384,7 @@ static void add_run(uint8_t *restrict to, const uint8_t *restrict from, size_t b
         to[i] ^= from[i];
 }
 
-static void rebuild_tile(const struct job *job, const struct loss *loss)
+static void rebuild_tile(struct job *job, const struct loss *loss)
 {
     const uint8_t *differences[MOST_M];
     uint8_t *again[MOST_M];

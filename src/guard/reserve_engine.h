@@ -16,8 +16,12 @@
 
 enum { FIRN_RESERVE_TABLE_BYTES = 32, FIRN_RESERVE_TOGETHER = 4, FIRN_RESERVE_SOURCES = 128 };
 
-/* A step of a transform on two runs of bytes, u and v, with one factor, or two levels of steps on four with three. */
-typedef void firn_reserve_step(const uint8_t *const *from, uint8_t *const *to, const uint8_t *const *tables, size_t bytes);
+/*
+ * A step of a transform on two runs of bytes, u and v, with one factor, or two levels of steps on four with three. `ahead` is
+ * two runs of as many bytes that will be wanted soon: an engine may ask for them, and need not.
+ */
+typedef void firn_reserve_step(const uint8_t *const *from, uint8_t *const *to, const uint8_t *const *tables, size_t bytes,
+                               const uint8_t *const ahead[2]);
 
 struct firn_reserve_engine {
     const char *name;

@@ -70,10 +70,12 @@ static void store(uint8_t chunk[][CHUNK], unsigned count, uint8_t *const *to, si
         memcpy(to[i] + at, chunk[i], least(CHUNK, bytes - at));
 }
 
-static void inverse2(const uint8_t *const *from, uint8_t *const *to, const uint8_t *const *tables, size_t bytes)
+static void inverse2(const uint8_t *const *from, uint8_t *const *to, const uint8_t *const *tables, size_t bytes,
+                     const uint8_t *const ahead[2])
 {
     uint8_t c[2][CHUNK] = { { 0 } };
 
+    (void)ahead;
     for (size_t at = 0; at < bytes; at += CHUNK) {
         fetch(c, 2, from, at, bytes);
         inverse(c[0], c[1], tables[0]);
@@ -81,10 +83,12 @@ static void inverse2(const uint8_t *const *from, uint8_t *const *to, const uint8
     }
 }
 
-static void forward2(const uint8_t *const *from, uint8_t *const *to, const uint8_t *const *tables, size_t bytes)
+static void forward2(const uint8_t *const *from, uint8_t *const *to, const uint8_t *const *tables, size_t bytes,
+                     const uint8_t *const ahead[2])
 {
     uint8_t c[2][CHUNK] = { { 0 } };
 
+    (void)ahead;
     for (size_t at = 0; at < bytes; at += CHUNK) {
         fetch(c, 2, from, at, bytes);
         forward(c[0], c[1], tables[0]);
@@ -100,10 +104,12 @@ static void inverse_levels(uint8_t c[4][CHUNK], const uint8_t *const *tables)
     inverse(c[1], c[3], tables[2]);
 }
 
-static void inverse4(const uint8_t *const *from, uint8_t *const *to, const uint8_t *const *tables, size_t bytes)
+static void inverse4(const uint8_t *const *from, uint8_t *const *to, const uint8_t *const *tables, size_t bytes,
+                     const uint8_t *const ahead[2])
 {
     uint8_t c[4][CHUNK] = { { 0 } };
 
+    (void)ahead;
     for (size_t at = 0; at < bytes; at += CHUNK) {
         fetch(c, 4, from, at, bytes);
         inverse_levels(c, tables);
@@ -111,10 +117,12 @@ static void inverse4(const uint8_t *const *from, uint8_t *const *to, const uint8
     }
 }
 
-static void inverse4_add(const uint8_t *const *from, uint8_t *const *to, const uint8_t *const *tables, size_t bytes)
+static void inverse4_add(const uint8_t *const *from, uint8_t *const *to, const uint8_t *const *tables, size_t bytes,
+                         const uint8_t *const ahead[2])
 {
     uint8_t c[4][CHUNK] = { { 0 } }, sum[CHUNK] = { 0 };
 
+    (void)ahead;
     for (size_t at = 0; at < bytes; at += CHUNK) {
         fetch(c, 4, from, at, bytes);
         inverse_levels(c, tables);
@@ -126,10 +134,12 @@ static void inverse4_add(const uint8_t *const *from, uint8_t *const *to, const u
     }
 }
 
-static void forward4(const uint8_t *const *from, uint8_t *const *to, const uint8_t *const *tables, size_t bytes)
+static void forward4(const uint8_t *const *from, uint8_t *const *to, const uint8_t *const *tables, size_t bytes,
+                     const uint8_t *const ahead[2])
 {
     uint8_t c[4][CHUNK] = { { 0 } };
 
+    (void)ahead;
     for (size_t at = 0; at < bytes; at += CHUNK) {
         fetch(c, 4, from, at, bytes);
         forward(c[0], c[2], tables[2]);
