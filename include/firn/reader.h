@@ -108,4 +108,18 @@ struct firn_reader_walk_report {
 FIRN_API enum firn_status firn_reader_walk(struct firn_reader *reader, const struct firn_reader_visitor *visitor,
                                            struct firn_fault *fault, struct firn_reader_walk_report *report);
 
+/* A coded stretch of content; pointers are lent for the call. */
+struct firn_reader_segment {
+    uint64_t content_at;          /* in content space */
+    uint64_t stream_at;           /* of its record */
+    const uint8_t *raw, *coded;   /* NULL when it is lost */
+    size_t raw_bytes, coded_bytes;
+};
+
+typedef enum firn_status (firn_reader_segment_teller)(void *self, const struct firn_reader_segment *segment);
+
+/* Goes through all segments in order, for those who want to see the codes. Any status but FIRN_OK from tell ends it. */
+FIRN_API enum firn_status firn_reader_segments(struct firn_reader *reader, firn_reader_segment_teller *tell, void *self,
+                                               struct firn_fault *fault);
+
 #endif

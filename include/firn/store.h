@@ -81,6 +81,8 @@ FIRN_API enum firn_status firn_store_stage_open(const char *path, bool replace, 
                                                 struct firn_store_stage **out, struct firn_fault *fault);
 /* The stage's to close, not the caller's. */
 FIRN_API struct firn_store *firn_store_stage_store(struct firn_store_stage *stage);
+/* Its descriptor, for those who write one byte after another; the stage's own. */
+FIRN_API int firn_store_stage_descriptor(struct firn_store_stage *stage);
 /* Syncs, gives it its name, syncs the folder. Called once. FIRN_OK, FIRN_EXISTS, FIRN_CANNOT_CREATE, FIRN_IO. */
 FIRN_API enum firn_status firn_store_stage_keep(struct firn_store_stage *stage, struct firn_fault *fault);
 /* Takes NULL. Closes; what was not kept is gone without a trace. */

@@ -145,7 +145,7 @@ static enum firn_status load(struct firn_decoder *decoder, const struct firn_cat
 }
 
 enum firn_status firn_decoder_get(struct firn_decoder *decoder, const struct firn_catalogue_place *places, size_t count,
-                                  size_t index, const uint8_t **raw, uint64_t *container_at)
+                                  size_t index, struct firn_decoder_segment *segment)
 {
     const struct slot *slot;
 
@@ -156,7 +156,9 @@ enum firn_status firn_decoder_get(struct firn_decoder *decoder, const struct fir
             return status;
     }
     slot = &decoder->slots[index - decoder->first];
-    *raw = slot->raw;
-    *container_at = slot->container_at;
+    *segment = (struct firn_decoder_segment){
+        .raw = slot->raw, .coded = slot->body + FIRN_CATALOGUE_SEGMENT_HEAD_BYTES,
+        .coded_bytes = slot->place.body_bytes - FIRN_CATALOGUE_SEGMENT_HEAD_BYTES, .container_at = slot->container_at
+    };
     return slot->status;
 }

@@ -21,15 +21,23 @@ void firn_decoder_free(struct firn_decoder *decoder);      /* takes NULL */
 /* Forgets what was read ahead: the places belong to another part now. */
 void firn_decoder_forget(struct firn_decoder *decoder);
 
+/* A segment; lent until the next call. */
+struct firn_decoder_segment {
+    const uint8_t *raw;            /* place.raw_bytes, verified */
+    const uint8_t *coded;          /* what it was decoded from */
+    size_t coded_bytes;
+    uint64_t container_at;         /* on FIRN_LOST: file offset of the first block that is lost */
+};
+
 /*
- * The raw bytes of places[index], verified; lent until the next call.
+ * Decodes places[index].
  *
  * FIRN_OK
- * FIRN_LOST      blocks of it are lost; *container_at is the file offset of the first
+ * FIRN_LOST      blocks of it are lost
  * FIRN_MISMATCH  its bytes are no segment, or do not satisfy its hash
  * else           FIRN_NO_MEMORY, FIRN_STOPPED
  */
 enum firn_status firn_decoder_get(struct firn_decoder *decoder, const struct firn_catalogue_place *places, size_t count,
-                                  size_t index, const uint8_t **raw, uint64_t *container_at);
+                                  size_t index, struct firn_decoder_segment *segment);
 
 #endif

@@ -230,3 +230,44 @@ enum firn_status firn_reader_walk(struct firn_reader *reader, const struct firn_
     report->cut_short = !layout->colophon_found;
     return status == FIRN_OK ? FIRN_OK : firn_fault_tell(fault, status, 0, 0, "");
 }
+
+static enum firn_status tell_segments(struct firn_reader *reader, const struct firn_parts_part *part,
+                                      firn_reader_segment_teller *tell, void *self)
+{
+    enum firn_status status = FIRN_OK;
+
+    firn_decoder_forget(reader->decoder);
+    for (size_t i = 0; i < part->place_count && status == FIRN_OK; i++) {
+        const struct firn_catalogue_place *place = &part->places[i];
+        struct firn_decoder_segment found;
+        struct firn_reader_segment segment = {
+            .content_at = place->content_at, .stream_at = place->at, .raw_bytes = place->raw_bytes,
+            .coded_bytes = place->body_bytes - FIRN_CATALOGUE_SEGMENT_HEAD_BYTES
+        };
+
+        status = firn_decoder_get(reader->decoder, part->places, part->place_count, i, &found);
+        if (status == FIRN_OK) {
+            segment.raw = found.raw;
+            segment.coded = found.coded;
+        } else if (status == FIRN_NO_MEMORY || status == FIRN_STOPPED) {
+            return status;
+        }
+        status = tell(self, &segment);
+    }
+    return status;
+}
+
+enum firn_status firn_reader_segments(struct firn_reader *reader, firn_reader_segment_teller *tell, void *self,
+                                      struct firn_fault *fault)
+{
+    struct firn_parts_part part;
+    enum firn_status status;
+
+    firn_parts_rewind(reader->parts);
+    while ((status = firn_parts_next(reader->parts, &part)) == FIRN_OK) {
+        status = tell_segments(reader, &part, tell, self);
+        if (status != FIRN_OK)
+            break;
+    }
+    return status == FIRN_END ? FIRN_OK : firn_fault_tell(fault, status, 0, 0, "");
+}

@@ -136,6 +136,11 @@ struct firn_store *firn_store_stage_store(struct firn_store_stage *stage)
     return &stage->store;
 }
 
+int firn_store_stage_descriptor(struct firn_store_stage *stage)
+{
+    return firn_store_file_descriptor(&stage->store);
+}
+
 /* Links the nameless file as `name`. Returns 0 or an errno. */
 static int link_nameless(const struct firn_store_stage *stage, const char *name)
 {

@@ -148,16 +148,16 @@ static enum firn_status hand_out_segment(struct walk *walk)
 {
     const struct firn_catalogue_place *place = &walk->part.places[walk->place];
     uint64_t at = walk->item.content_at + walk->stored_at, inside = at - place->content_at;
-    uint64_t count = place->raw_bytes - inside, left = walk->item.stored_bytes - walk->stored_at, container_at;
-    const uint8_t *raw;
-    enum firn_status status = firn_decoder_get(walk->decoder, walk->part.places, walk->part.place_count, walk->place, &raw,
-                                               &container_at);
+    uint64_t count = place->raw_bytes - inside, left = walk->item.stored_bytes - walk->stored_at;
+    struct firn_decoder_segment segment;
+    enum firn_status status = firn_decoder_get(walk->decoder, walk->part.places, walk->part.place_count, walk->place,
+                                               &segment);
 
     count = count < left ? count : left;
     if (status == FIRN_OK)
-        return hand_out(walk, raw + inside, count, FIRN_READER_LOSS_BLOCKS, 0);
+        return hand_out(walk, segment.raw + inside, count, FIRN_READER_LOSS_BLOCKS, 0);
     if (status == FIRN_LOST)
-        return hand_out(walk, NULL, count, FIRN_READER_LOSS_BLOCKS, container_at);
+        return hand_out(walk, NULL, count, FIRN_READER_LOSS_BLOCKS, segment.container_at);
     if (status == FIRN_MISMATCH)
         return hand_out(walk, NULL, count, FIRN_READER_LOSS_CONTENT, 0);
     return status;

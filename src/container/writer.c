@@ -72,6 +72,8 @@ static enum firn_status put_record(struct firn_writer *writer, enum firn_record_
 {
     enum firn_status status = put_header(writer, type, body_bytes);
 
+    if (type == FIRN_RECORD_BATCH || type == FIRN_RECORD_SUMS)
+        writer->totals.catalogue_bytes += firn_record_span(body_bytes);
     if (status == FIRN_OK)
         status = firn_press_put(writer->press, body, body_bytes, writer->fault);
     return status == FIRN_OK ? put_padding(writer, body_bytes) : status;
@@ -504,6 +506,7 @@ static enum firn_status put_index(struct firn_writer *writer)
             return firn_fault_tell(writer->fault, FIRN_IO, os_error, from, "the temporary file of the catalogue");
         from += sizeof length;
         bytes = left = firn_bytes_get64(length);
+        writer->totals.catalogue_bytes += firn_record_span(bytes);
         status = put_header(writer, FIRN_RECORD_INDEX, bytes);
         while (left > 0 && status == FIRN_OK) {
             uint8_t copy[COPY_BYTES];
