@@ -50,8 +50,7 @@ FIRN_API enum firn_status firn_segment_encode(const uint8_t *raw, size_t raw_byt
 
 /*
  * coded, coded_bytes  untrusted: whatever they hold, nothing outside raw[0 .. raw_bytes) and work is written, and the
- * time
- *                     is bounded by a constant multiple of raw_bytes + coded_bytes
+ *                     time is bounded by a constant multiple of raw_bytes + coded_bytes
  * raw_bytes           as known from the segment's record
  *
  * FIRN_OK: raw holds raw_bytes bytes. FIRN_BAD_DATA: contents of raw are undefined.

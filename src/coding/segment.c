@@ -138,18 +138,18 @@ static void put_streams(struct sink *sink, struct encode_work *w, const uint8_t 
 }
 
 /* Table and streams; the stretch has at least two different bytes. */
-static void put_prefix(struct sink *sink, struct encode_work *w, const uint8_t *raw, size_t raw_bytes, unsigned streams,
-                       bool last)
+static void put_prefix(struct sink *sink, struct encode_work *w, const struct firn_split_stretch *stretch,
+                       const uint8_t *raw, unsigned streams, bool last)
 {
     uint8_t table[(FIRN_TABLE_COST_MAX_BITS + 7) / 8];
     struct firn_bits_writer writer = { table, 0 };
 
-    firn_histogram_count(raw, raw_bytes, w->counts);
+    firn_split_counts(&w->split, stretch->first_cell, stretch->end_cell, w->counts);
     firn_prefix_lengths(w->counts, FIRN_TABLE_SYMBOLS, FIRN_TABLE_LENGTH_LIMIT, w->lengths, w->split.prefix_work);
     firn_prefix_assign(w->lengths, FIRN_TABLE_SYMBOLS, w->words);
     firn_table_write(&writer, w->lengths);
     put_bytes(sink, table, firn_bits_end(&writer));
-    put_streams(sink, w, raw, raw_bytes, streams, last);
+    put_streams(sink, w, raw, stretch->raw_bytes, streams, last);
 }
 
 static void put_stretch(struct sink *sink, struct encode_work *w, const struct firn_split_stretch *stretch,
@@ -166,7 +166,7 @@ static void put_stretch(struct sink *sink, struct encode_work *w, const struct f
     else if (stretch->method == FIRN_SEGMENT_RUN)
         put_byte(sink, raw[0]);
     else
-        put_prefix(sink, w, raw, stretch->raw_bytes, six ? FIRN_STREAMS_MAX : 1, last);
+        put_prefix(sink, w, stretch, raw, six ? FIRN_STREAMS_MAX : 1, last);
 }
 
 static void put_stored(const uint8_t *raw, size_t raw_bytes, uint8_t *coded, size_t *coded_bytes)
@@ -179,7 +179,7 @@ static void put_stored(const uint8_t *raw, size_t raw_bytes, uint8_t *coded, siz
 
 static size_t cell_bytes_of(enum firn_segment_effort effort)
 {
-    return effort == FIRN_SEGMENT_EFFORT_QUICK ? 32768 : effort == FIRN_SEGMENT_EFFORT_NORMAL ? 16384 : 4096;
+    return effort == FIRN_SEGMENT_EFFORT_QUICK ? 16384 : effort == FIRN_SEGMENT_EFFORT_NORMAL ? 8192 : 4096;
 }
 
 enum firn_status firn_segment_encode(const uint8_t *raw, size_t raw_bytes, enum firn_segment_effort effort,

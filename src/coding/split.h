@@ -20,16 +20,16 @@
 enum {
     FIRN_SPLIT_CELLS_MAX = 256,
     FIRN_SPLIT_CELL_MIN_BYTES = FIRN_SEGMENT_RAW_MAX / FIRN_SPLIT_CELLS_MAX,
-    FIRN_SPLIT_LOG_BITS = 24,
     FIRN_SPLIT_PREFIX_WORK_BYTES = 28672     /* firn_prefix_work_bytes(256), rounded up */
 };
 
 struct firn_split_stretch {
     size_t raw_at, raw_bytes;
+    size_t first_cell, end_cell;
     enum firn_segment_method method;
 };
 
-/* What the search leaves behind; all of it is scratch but stretches[0 .. stretch_count). */
+/* What the search leaves behind; all of it is scratch but stretches[0 .. stretch_count) and before. */
 struct firn_split_work {
     struct firn_split_stretch stretches[FIRN_SPLIT_CELLS_MAX];
     size_t stretch_count;
@@ -51,10 +51,14 @@ struct firn_split_work {
  */
 void firn_split(const uint8_t *raw, size_t raw_bytes, size_t cell_bytes, bool prune, struct firn_split_work *work);
 
-/* 2^24 * binary logarithm of n >= 1: never more than the true value, and less than 49 below it. */
-uint32_t firn_split_log2(uint32_t n);
+/*
+ * A lower bound, in bits, for the words of any code of at most FIRN_TABLE_LENGTH_LIMIT bits a word over the counts,
+ * which add up to at most FIRN_SEGMENT_RAW_MAX and are of two symbols at least. Sharper than the entropy, and faster:
+ * some 0.1 percent below the optimum. Stops early when the bound has reached `enough`.
+ */
+uint64_t firn_split_floor_bits(const uint32_t counts[256], uint64_t enough);
 
-/* A lower bound, in bits, for the words of any prefix code over the counts: their entropy, rounded down. */
-uint64_t firn_split_entropy_bits(const uint32_t counts[256]);
+/* The bytes of cells first .. end - 1, counted by a search before; returns how many different ones there are. */
+unsigned firn_split_counts(const struct firn_split_work *work, size_t first, size_t end, uint32_t counts[256]);
 
 #endif
