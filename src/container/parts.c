@@ -65,7 +65,7 @@ static enum firn_status read_body(struct firn_parts *parts, const struct firn_re
     struct firn_sheets_gap gap;
     enum firn_status status;
 
-    if (record->body_bytes > limit)
+    if (record->body_bytes == 0 || record->body_bytes > limit)
         return FIRN_OVER_LIMIT;
     status = firn_memory_grow(parts->memory, &body, &parts->body_capacity, (size_t)record->body_bytes, 1);
     parts->body = body;
@@ -149,7 +149,7 @@ static enum firn_status find_colophon(struct firn_parts *parts)
         if (status != FIRN_OK)
             return fatal(status) ? status : FIRN_OK;
         from = record.at + FIRN_RECORD_ALIGNMENT;
-        if (record.type != FIRN_RECORD_COLOPHON || record.body_bytes >= sizeof words)
+        if (record.type != FIRN_RECORD_COLOPHON || record.body_bytes == 0 || record.body_bytes >= sizeof words)
             continue;
         status = read_body(parts, &record, sizeof words - 1);
         if (fatal(status))

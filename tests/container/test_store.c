@@ -713,18 +713,15 @@ static int feed(int into)
 {
     uint8_t *bytes = malloc(SPOOL_BYTES);
     size_t given = 0;
+    ssize_t done = 1;
 
     if (bytes == NULL)
         return 1;
     fill(bytes, SPOOL_BYTES);
-    while (given < SPOOL_BYTES) {
-        ssize_t done = write(into, bytes + given, SPOOL_BYTES - given);
-
-        if (done <= 0)
-            return 1;
-        given += (size_t)done;
-    }
-    return 0;
+    for (; given < SPOOL_BYTES && done > 0; given += (size_t)done)
+        done = write(into, bytes + given, SPOOL_BYTES - given);
+    free(bytes);
+    return done > 0 ? 0 : 1;
 }
 
 static void expect_spooled(struct firn_store *store)
