@@ -65,33 +65,40 @@ bool firn_lanes_check(const uint8_t *block)
     return any == 0;
 }
 
-static void flip(uint8_t *block, unsigned label, unsigned lane)
+static unsigned count_bits(uint64_t word)
 {
-    uint8_t *at = block + 8 * (size_t)firn_lanes_word_of(label);
+    unsigned count = 0;
 
+    for (; word != 0; word &= word - 1)
+        count++;
+    return count;
+}
+
+/* Flips the bit of one lane in the word whose label is the lane's syndrome. */
+static void mend_lane(uint8_t *block, unsigned lane, const uint64_t syndrome[FIRN_LANES_SYNDROME_WORDS])
+{
+    unsigned label = 0;
+    uint8_t *at;
+
+    for (unsigned j = 0; j < FIRN_LANES_PARITY_WORDS; j++)
+        label |= (unsigned)(syndrome[j] >> lane & 1) << j;
+    at = block + 8 * (size_t)firn_lanes_word_of(label);
     firn_bytes_put64(at, firn_bytes_get64(at) ^ UINT64_C(1) << lane);
 }
 
 enum firn_status firn_lanes_mend(uint8_t *block, struct firn_lanes_report *report)
 {
-    uint64_t syndrome[FIRN_LANES_SYNDROME_WORDS];
+    uint64_t syndrome[FIRN_LANES_SYNDROME_WORDS], odd, wrong;
 
-    *report = (struct firn_lanes_report){ 0, 0, 0 };
     firn_lanes_engine_here()->syndrome(block, syndrome);
-    for (unsigned lane = 0; lane < FIRN_LANES; lane++) {
-        bool odd = (syndrome[OVERALL] >> lane & 1) != 0;
-        unsigned label = 0;
-
-        for (unsigned j = 0; j < FIRN_LANES_PARITY_WORDS; j++)
-            label |= (unsigned)(syndrome[j] >> lane & 1) << j;
-        if (odd) {
-            flip(block, label, lane);
-            report->mended++;
-        } else if (label != 0) {
-            report->beyond++;
-        } else {
-            report->clean++;
-        }
-    }
+    odd = wrong = syndrome[OVERALL];
+    for (unsigned j = 0; j < FIRN_LANES_PARITY_WORDS; j++)
+        wrong |= syndrome[j];
+    for (unsigned lane = 0; lane < FIRN_LANES; lane++)
+        if ((odd >> lane & 1) != 0)
+            mend_lane(block, lane, syndrome);
+    *report = (struct firn_lanes_report){
+        .clean = FIRN_LANES - count_bits(wrong), .mended = count_bits(odd), .beyond = count_bits(wrong & ~odd),
+    };
     return report->beyond == 0 ? FIRN_OK : FIRN_BEYOND_REPAIR;
 }

@@ -15,9 +15,9 @@ static bool usable(void)
     return true;
 }
 
-static inline uint8_t chosen(uint8_t byte, unsigned bit, uint8_t product)
+static inline uint8_t chosen(uint8_t byte, uint8_t bit, uint8_t product)
 {
-    return (uint8_t)(-(byte >> bit & 1) & product);
+    return (byte & bit) == 0 ? 0 : product;
 }
 
 /* to += factor from. The table's entries at powers of two are all that is needed. */
@@ -28,8 +28,8 @@ static void multiply_add(uint8_t *restrict to, const uint8_t *restrict from, con
 
     for (unsigned i = 0; i < CHUNK; i++) {
         uint8_t v = from[i];
-        uint8_t low = (uint8_t)(chosen(v, 0, p0) ^ chosen(v, 1, p1) ^ chosen(v, 2, p2) ^ chosen(v, 3, p3));
-        uint8_t high = (uint8_t)(chosen(v, 4, p4) ^ chosen(v, 5, p5) ^ chosen(v, 6, p6) ^ chosen(v, 7, p7));
+        uint8_t low = chosen(v, 1, p0) ^ chosen(v, 2, p1) ^ chosen(v, 4, p2) ^ chosen(v, 8, p3);
+        uint8_t high = chosen(v, 16, p4) ^ chosen(v, 32, p5) ^ chosen(v, 64, p6) ^ chosen(v, 128, p7);
 
         to[i] = (uint8_t)(to[i] ^ low ^ high);
     }

@@ -99,12 +99,14 @@ enum firn_status firn_sheet_geometry_for(double percent, uint64_t sheet_bytes, s
     return FIRN_OK;
 }
 
+/* Rows go on being counted through from data to reserve, so a run of lost blocks is fair to all rows across that border too. */
 uint32_t firn_sheet_index(const struct firn_sheet_shape *shape, uint32_t row, unsigned column)
 {
+    const uint32_t rows = shape->rows, first_row = shape->data_blocks % rows;      /* of the first reserve block */
     uint32_t index;
 
     if (column >= shape->k)
-        return shape->data_blocks + (column - shape->k) * shape->rows + row;
-    index = column * shape->rows + row;
+        return shape->data_blocks + (column - shape->k) * rows + (row + rows - first_row) % rows;
+    index = column * rows + row;
     return index < shape->data_blocks ? index : UINT32_MAX;
 }
