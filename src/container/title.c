@@ -81,17 +81,17 @@ static void put_layout(struct firn_text *text, const struct firn_sheet_geometry 
         "HOW IT IS LAID OUT\n"
         "\n"
         "Behind this page the file is a sequence of blocks of 4096 bytes; numbers are\n"
-        "little-endian. A block is 3968 bytes of payload, 48 bytes of tag and 80 bytes of\n"
-        "guard. The tag: \"FIRN\"; version (1 byte); kind, 1 data, 2 reserve (1); k (1);\n"
-        "m (1); id of the container (8); number of the block from 0 (8); t, data blocks in\n"
-        "its sheet (4); D, rows of a full sheet (2); zero (2); XXH3-128 of the first 4000\n"
-        "bytes, low half first (16).\n"
+        "little-endian. A block is 3968 bytes of payload, 48 bytes of tag and 80 bytes\n"
+        "of guard. The tag: \"FIRN\"; version (1 byte); kind, 1 data, 2 reserve (1);\n"
+        "k (1); m (1); id of the container (8); number of the block from 0 (8); t, data\n"
+        "blocks in its sheet (4); D, rows of a full sheet (2); zero (2); XXH3-128 of the\n"
+        "first 4000 bytes, low half first (16).\n"
         "\n"
         "Guard: see a block as 512 words of 64 bits. Each of the first 502 words has as\n"
-        "its label the next integer from 3 on that is no power of two; the next nine words\n"
-        "have 1, 2, 4 .. 256 and make the XOR of all words whose label has that bit zero;\n"
-        "the last word makes the XOR of all 512 zero. So one flipped bit in each of the 64\n"
-        "bit positions is found and mended (extended Hamming code).\n"
+        "its label the next integer from 3 on that is no power of two; the next nine\n"
+        "words have 1, 2, 4 .. 256 and make the XOR of all words whose label has that\n"
+        "bit zero; the last word makes the XOR of all 512 zero. So one flipped bit in\n"
+        "each of the 64 bit positions is found and mended (extended Hamming code).\n"
         "\n");
     if (g->m > 0)
         firn_text_add(text,
@@ -110,12 +110,12 @@ static void put_layout(struct firn_text *text, const struct firn_sheet_geometry 
     firn_text_add(text,
         "\n"
         "The payloads of the data blocks, end to end, are the stream: records that begin\n"
-        "at multiples of 32. A record header is \"FREC\"; type (2 bytes); zero (2); length\n"
-        "of the body (8); place of the header in the stream (8); low half of the XXH3-128\n"
-        "of these 24 bytes (8). Types: 1 this page; 2 format specification and 3 source of\n"
-        "a reader, as text; 4 catalogue entries (pax headers, POSIX.1-2001); 5 a coded\n"
-        "stretch of content; 6 SHA-256 of items; 7 the catalogue again; 8 colophon, text,\n"
-        "the last record, with the totals.\n");
+        "at multiples of 32. A record header is \"FREC\"; type (2 bytes); zero (2);\n"
+        "length of the body (8); place of the header in the stream (8); low half of the\n"
+        "XXH3-128 of these 24 bytes (8). Types: 1 this page; 2 format specification and\n"
+        "3 source of a reader, as text; 4 catalogue entries (pax headers, POSIX.1-2001);\n"
+        "5 a coded stretch of content; 6 SHA-256 of items; 7 the catalogue again;\n"
+        "8 colophon, text, the last record, with the totals.\n");
 }
 
 enum firn_status firn_title_write(const struct firn_writer_title *title, const struct firn_sheet_geometry *geometry,
