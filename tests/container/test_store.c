@@ -8,6 +8,7 @@
 #include "firn/store.h"
 
 #include "container/store_beside.h"
+#include "help/fault_memory.h"
 #include "help/scratch.h"
 
 #include <errno.h>
@@ -946,21 +947,6 @@ static void removes(void **state)
 
 /* --- memory that runs out -------------------------------------------------------------------------------------------------------- */
 
-struct meagre { unsigned left; };
-
-static void *meagre_get(void *self, size_t size)
-{
-    struct meagre *meagre = self;
-
-    return meagre->left == 0 ? NULL : (meagre->left--, malloc(size));
-}
-
-static void meagre_put(void *self, void *block)
-{
-    (void)self;
-    free(block);
-}
-
 static unsigned open_descriptors(void)
 {
     unsigned open_ones = 0;
@@ -972,8 +958,7 @@ static unsigned open_descriptors(void)
 
 static void gives_back_all_when_memory_is_out(void **state)
 {
-    struct meagre meagre = { 0 };
-    const struct firn_memory scarce = { &meagre, meagre_get, meagre_put };
+    struct fault_memory scarce;
     unsigned before = open_descriptors(), names = scratch_entries();
     struct firn_store_stage *stage;
     struct firn_fault fault;
@@ -981,17 +966,23 @@ static void gives_back_all_when_memory_is_out(void **state)
     int ends[2];
 
     (void)state;
-    assert_int_equal(firn_store_open("/etc/passwd", FIRN_STORE_READ, &scarce, &store, &fault), FIRN_NO_MEMORY);
-    assert_int_equal(firn_store_pipe(1, &scarce, &store), FIRN_NO_MEMORY);
-    assert_int_equal(firn_store_temporary(scratch_path(""), &scarce, &store, &fault), FIRN_NO_MEMORY);
-    assert_int_equal(firn_store_beside_make(scratch_path("scarce"), &scarce, &store, &fault), FIRN_NO_MEMORY);
-    for (unsigned left = 0; left < 2; left++) {
-        meagre.left = left;
-        assert_int_equal(firn_store_stage_open(scratch_path("scarce"), false, &scarce, &stage, &fault), FIRN_NO_MEMORY);
+    fault_memory_make(&scarce, 1);
+    assert_int_equal(firn_store_open("/etc/passwd", FIRN_STORE_READ, &scarce.memory, &store, &fault), FIRN_NO_MEMORY);
+    fault_memory_make(&scarce, 1);
+    assert_int_equal(firn_store_pipe(1, &scarce.memory, &store), FIRN_NO_MEMORY);
+    fault_memory_make(&scarce, 1);
+    assert_int_equal(firn_store_temporary(scratch_path(""), &scarce.memory, &store, &fault), FIRN_NO_MEMORY);
+    fault_memory_make(&scarce, 1);
+    assert_int_equal(firn_store_beside_make(scratch_path("scarce"), &scarce.memory, &store, &fault), FIRN_NO_MEMORY);
+    for (unsigned nth = 1; nth <= 2; nth++) {
+        fault_memory_make(&scarce, nth);
+        assert_int_equal(firn_store_stage_open(scratch_path("scarce"), false, &scarce.memory, &stage, &fault), FIRN_NO_MEMORY);
         assert_null(stage);
-        meagre.left = left;
+        assert_int_equal(scarce.outstanding, 0);
+        fault_memory_make(&scarce, nth);
         assert_int_equal(pipe(ends), 0);
-        assert_int_equal(firn_store_spool(ends[0], &scarce, &store, &fault), FIRN_NO_MEMORY);
+        assert_int_equal(firn_store_spool(ends[0], &scarce.memory, &store, &fault), FIRN_NO_MEMORY);
+        assert_int_equal(scarce.outstanding, 0);
         close(ends[0]);
         close(ends[1]);
     }
