@@ -27,6 +27,13 @@ struct firn_store {
        written must have been synced before. */
     void (*forget)(void *self, uint64_t at, uint64_t bytes);
     void (*close)(void *self);
+    /*
+     * Lends bytes[at .. at + count), to look at and to write on without a trace, until the next call of lend or close. NULL
+     * where the store cannot. Anything but FIRN_OK: not now, not there, or not all of it readable; read_at tells more.
+     * Saves the copy of read_at, which costs as much as judging what was read. A file that somebody else cuts short meanwhile
+     * ends the process (SIGBUS): whoever cuts containers short while they are read has other troubles.
+     */
+    enum firn_status (*lend)(void *self, uint64_t at, size_t count, uint8_t **bytes);
 };
 
 enum firn_store_use { FIRN_STORE_READ, FIRN_STORE_MEND };

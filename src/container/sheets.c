@@ -10,6 +10,7 @@
 
 enum {
     CHUNK_BLOCKS = 64,           /* 256 KiB: in the second-level cache while it is judged */
+    LEND_BLOCKS = 512,           /* 2 MiB: what mapping costs is spread over enough blocks */
     MEND_READ_BLOCKS = 256,
     MEND_JOB_BLOCKS = 64
 };
@@ -302,28 +303,46 @@ static enum firn_sheets_finding judge(uint8_t *block, const struct firn_block_ta
     return state == FIRN_BLOCK_MENDED ? FIRN_SHEETS_MENDED : FIRN_SHEETS_SOUND;
 }
 
+/* Whether all of count blocks from `at` on are sound, of those that stand at bytes; absent: NULL when all are there. */
+static bool all_sound(const struct firn_sheets *sheets, const struct firn_sheet_shape *shape, uint64_t first, uint32_t at,
+                      uint32_t count, uint8_t *bytes, const bool *absent)
+{
+    for (uint32_t i = 0; i < count; i++) {
+        struct firn_block_tag expected = expected_tag(sheets, shape, first, at + i);
+
+        if ((absent != NULL && absent[i]) ||
+            judge(bytes + (size_t)i * FIRN_BLOCK_BYTES, &expected, true) != FIRN_SHEETS_SOUND)
+            return false;
+    }
+    return true;
+}
+
 enum firn_status firn_sheets_check(struct firn_sheets *sheets, uint64_t index, bool *clean)
 {
+    struct firn_store *store = sheets->store;
     struct firn_sheet_shape shape;
     bool absent[CHUNK_BLOCKS];
     uint64_t first;
-    uint32_t blocks;
+    uint32_t blocks, count;
 
     firn_sheets_shape(sheets, index, &shape, &first);
     blocks = shape.data_blocks + shape.reserve_blocks;
     sheets->chunk_count = 0;
     *clean = false;
-    for (uint32_t at = 0; at < blocks; at += CHUNK_BLOCKS) {
-        uint32_t count = blocks - at < CHUNK_BLOCKS ? blocks - at : CHUNK_BLOCKS;
+    for (uint32_t at = 0; at < blocks; at += count) {
+        uint8_t *lent;
 
         if (should_stop(sheets))
             return FIRN_STOPPED;
-        read_raw(sheets, first + at, count, sheets->chunk, absent);
-        for (uint32_t i = 0; i < count; i++) {
-            struct firn_block_tag expected = expected_tag(sheets, &shape, first, at + i);
-
-            if (absent[i] ||
-                judge(sheets->chunk + (size_t)i * FIRN_BLOCK_BYTES, &expected, true) != FIRN_SHEETS_SOUND)
+        count = blocks - at < LEND_BLOCKS ? blocks - at : LEND_BLOCKS;
+        if (store->lend != NULL && store->lend(store->self, firn_sheets_place(first + at),
+                                               (size_t)count * FIRN_BLOCK_BYTES, &lent) == FIRN_OK) {
+            if (!all_sound(sheets, &shape, first, at, count, lent, NULL))
+                return FIRN_OK;
+        } else {
+            count = count < CHUNK_BLOCKS ? count : CHUNK_BLOCKS;
+            read_raw(sheets, first + at, count, sheets->chunk, absent);
+            if (!all_sound(sheets, &shape, first, at, count, sheets->chunk, absent))
                 return FIRN_OK;
         }
         sheets->damage.blocks_read += count;

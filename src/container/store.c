@@ -1,5 +1,6 @@
 /* container/store.c - files and devices as stores: opened, read, written, synced, locked */
 /* SPDX-License-Identifier: BSD-2-Clause */
+#define _GNU_SOURCE     /* MADV_POPULATE_READ */
 #include "firn/store.h"
 
 #include "base/fault.h"
@@ -10,6 +11,7 @@
 #include <poll.h>
 #include <string.h>
 #include <sys/file.h>
+#include <sys/mman.h>
 #include <sys/stat.h>
 #include <unistd.h>
 
@@ -19,6 +21,8 @@ struct file {
     const struct firn_memory *memory;
     int descriptor;
     bool writable;
+    void *lent;              /* a mapping, or NULL */
+    size_t lent_bytes;
     char path[];
 };
 
@@ -128,10 +132,51 @@ static void file_forget(void *self, uint64_t at, uint64_t bytes)
         (void)posix_fadvise(file->descriptor, (off_t)at, (off_t)bytes, POSIX_FADV_DONTNEED);
 }
 
+static void take_back(struct file *file)
+{
+    if (file->lent != NULL)
+        (void)munmap(file->lent, file->lent_bytes);
+    file->lent = NULL;
+}
+
+/*
+ * A private mapping: writing on it makes a copy of the page. Populating first turns a sector that cannot be read into an
+ * error here instead of a signal later.
+ */
+static enum firn_status file_lend(void *self, uint64_t at, size_t count, uint8_t **bytes)
+{
+#ifdef MADV_POPULATE_READ
+    struct file *file = self;
+    size_t inside = (size_t)(at % 4096);
+    struct stat facts;
+    void *mapping;
+
+    take_back(file);
+    if (!in_reach(at, count) || count == 0 || fstat(file->descriptor, &facts) != 0 || !S_ISREG(facts.st_mode) ||
+        at + count > (uint64_t)facts.st_size)
+        return FIRN_END;
+    mapping = mmap(NULL, count + inside, PROT_READ | PROT_WRITE, MAP_PRIVATE, file->descriptor, (off_t)(at - inside));
+    if (mapping == MAP_FAILED)
+        return FIRN_NO_MEMORY;
+    file->lent = mapping;
+    file->lent_bytes = count + inside;
+    if (madvise(mapping, file->lent_bytes, MADV_POPULATE_READ) != 0) {
+        take_back(file);
+        return FIRN_IO;
+    }
+    *bytes = (uint8_t *)mapping + inside;
+    return FIRN_OK;
+#else
+    (void)self, (void)at, (void)count, (void)bytes;
+    return FIRN_END;
+#endif
+}
+
 static void file_close(void *self)
 {
     struct file *file = self;
 
+    take_back(file);
     close(file->descriptor);
     file->memory->put(file->memory->self, file);
 }
@@ -147,7 +192,7 @@ enum firn_status firn_store_file_make(int descriptor, bool writable, const char 
     *file = (struct file){ .memory = memory, .descriptor = descriptor, .writable = writable };
     memcpy(file->path, path, path_bytes);
     *store = (struct firn_store){ file, file_read_at, file_write_at, file_size, file_resize, file_sync, file_forget,
-                                  file_close };
+                                  file_close, file_lend };
     return FIRN_OK;
 }
 

@@ -71,5 +71,5 @@ static void memory_close(void *self)
 void firn_store_memory(struct firn_store_buffer *buffer, struct firn_store *store)
 {
     *store = (struct firn_store){ buffer, memory_read_at, memory_write_at, memory_size, memory_resize, memory_sync,
-                                  memory_forget, memory_close };
+                                  memory_forget, memory_close, NULL };
 }

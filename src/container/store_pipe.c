@@ -93,6 +93,6 @@ enum firn_status firn_store_pipe(int descriptor, const struct firn_memory *memor
         return FIRN_NO_MEMORY;
     *pipe = (struct pipe){ .memory = memory, .descriptor = descriptor };
     *store = (struct firn_store){ pipe, pipe_read_at, pipe_write_at, pipe_size, pipe_resize, pipe_sync, pipe_forget,
-                                  pipe_close };
+                                  pipe_close, NULL };
     return FIRN_OK;
 }
