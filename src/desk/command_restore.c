@@ -78,7 +78,7 @@ static void tell_ranges(struct restoring *r, const struct firn_outlet_finding *f
     FILE *out = r->view->out;
 
     fprintf(out, ",\"bytes\":%" PRIu64 ",\"lost-bytes\":%" PRIu64 ",\"ranges\":[", finding->bytes, finding->lost_bytes);
-    for (uint64_t i = 0; i < finding->range_count && i < FIRN_OUTLET_RANGES_MAX; i++)
+    for (uint64_t i = 0; i < finding->range_count; i++)
         fprintf(out, "%s{\"at\":%" PRIu64 ",\"bytes\":%" PRIu64 ",\"why\":\"%s\",\"container-at\":%" PRIu64 "}",
                 i > 0 ? "," : "", finding->ranges[i].at, finding->ranges[i].bytes, loss_words(finding->ranges[i].why),
                 finding->ranges[i].container_at);

@@ -126,6 +126,14 @@ void firn_view_end(struct firn_view *view)
     view->open = false;
 }
 
+void firn_view_line(struct firn_view *view, const char *path, const char *words)
+{
+    if (view->json)
+        return;
+    put_name(view->out, path);
+    fprintf(view->out, ": %s\n", words);
+}
+
 static void say(struct firn_view *view, const char *kind, const char *path, const char *words, const char *report)
 {
     if (view->json) {

@@ -41,6 +41,9 @@ void firn_view_end(struct firn_view *view);
  */
 void firn_view_finding(struct firn_view *view, const char *kind, const char *path, const char *words);
 
+/* A line of a report for people, "PATH: WORDS"; nothing as JSON. */
+void firn_view_line(struct firn_view *view, const char *path, const char *words);
+
 /* A remark that is not worth waking anybody for; nothing with --quiet. */
 void firn_view_note(struct firn_view *view, const char *kind, const char *path, const char *words);
 
