@@ -45,13 +45,15 @@ FIRN_API enum firn_status firn_sheet_shape_of(const struct firn_sheet_geometry *
 
 /*
  * The geometry for a reserve of `percent` of the data, 0 .. 100 (fractions allowed), and sheets of at most sheet_bytes
- * bytes (the default is 128 MiB). FIRN_OK or FIRN_BAD_ARGUMENT.
+ * bytes (the default is 128 MiB), though never less than one row. The least reserve there is, 4 for 252, is taken for
+ * anything between 0 and that. FIRN_OK or FIRN_BAD_ARGUMENT.
  */
 FIRN_API enum firn_status firn_sheet_geometry_for(double percent, uint64_t sheet_bytes,
                                                   struct firn_sheet_geometry *geometry);
 
 /*
- * The index within its sheet of column `column` of row `row`: columns 0 .. k-1 are data, k .. k+m-1 reserve.
+ * The index within its sheet of column `column` of row `row`: columns 0 .. k-1 are data, k .. k+m-1 reserve. The index
+ * mod D is the row for both, so reserve does not begin in row 0 when t is no multiple of D.
  * Returns UINT32_MAX for a data column that this row does not have (zeros that are not stored).
  */
 FIRN_API uint32_t firn_sheet_index(const struct firn_sheet_shape *shape, uint32_t row, unsigned column);

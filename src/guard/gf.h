@@ -1,8 +1,8 @@
 /*
  * guard/gf.h - arithmetic in GF(2^8) with the field polynomial x^8 + x^4 + x^3 + x^2 + 1 (0x11D)
  *
- * Room: guard. Pure. Used by guard/reserve.c. The integer 0..255 stands for the field element with that bit pattern; addition is XOR. For single
- * values; long runs of bytes are the affair of guard/reserve_engine.h.
+ * Room: guard. Pure. Used by guard/reserve.c. The integer 0..255 stands for the field element with that bit pattern;
+ * addition is XOR. For single values; long runs of bytes are the affair of guard/reserve_engine.h.
  *
  * SPDX-License-Identifier: BSD-2-Clause
  */

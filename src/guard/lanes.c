@@ -1,8 +1,9 @@
 /*
  * guard/lanes.c - 64 words of the extended Hamming code [512, 502, 4] side by side in every block
  *
- * The syndrome of a lane is the label of its flipped bit (labels: format-spec/block.md), and the overall parity tells one
- * flip from two. SPDX-License-Identifier: BSD-2-Clause
+ * The syndrome of a lane is the label of its flipped bit (labels: format-spec/block.md), and the overall parity tells
+ * one flip from two.
+ * SPDX-License-Identifier: BSD-2-Clause
  */
 #include "firn/lanes.h"
 

@@ -16,8 +16,8 @@ struct firn_lanes_engine {
     bool (*usable)(void);      /* asks the processor */
 
     /*
-     * syndrome[j], j < 9: the XOR of the words whose label has bit j; syndrome[9]: the XOR of all 512 words. Bit b of the
-     * ten speaks of lane b.
+     * syndrome[j], j < 9: the XOR of the words whose label has bit j; syndrome[9]: the XOR of all 512 words. Bit b of
+     * the ten speaks of lane b.
      */
     void (*syndrome)(const uint8_t *block, uint64_t syndrome[FIRN_LANES_SYNDROME_WORDS]);
 };

@@ -2,9 +2,9 @@
  * guard/lanes_plain.c - the syndrome of all 64 lanes in plain C; every other engine is checked against it
  *
  * Lay the words out by label. The words with the highest label bit set are the upper half: their XOR is the syndrome's
- * highest bit. XOR the upper half onto the lower, and what is left is the same question with one bit less. That is about
- * two XORs a word for all ten syndrome words, where taking them one by one would need nearly six. Here it is done for
- * eight rows of sixteen words at a time, so that little goes back to memory on the way.
+ * highest bit. XOR the upper half onto the lower, and what is left is the same question with one bit less. That is
+ * about two XORs a word for all ten syndrome words, where taking them one by one would need nearly six. Here it is done
+ * for eight rows of sixteen words at a time, so that little goes back to memory on the way.
  *
  * SPDX-License-Identifier: BSD-2-Clause
  */
@@ -80,8 +80,8 @@ static void gather_first(const uint8_t *block, uint64_t first[COLUMNS])
 }
 
 /*
- * Where the 16 words from label 16 * row on stand: labels 2^j + 1 .. 2^(j+1) - 1 are words label - 2 - j. In the place of
- * label 2^j this gives the word before it, for which the caller makes amends.
+ * Where the 16 words from label 16 * row on stand: labels 2^j + 1 .. 2^(j+1) - 1 are words label - 2 - j. In the place
+ * of label 2^j this gives the word before it, for which the caller makes amends.
  */
 static const uint8_t *row_at(const uint8_t *block, unsigned row)
 {

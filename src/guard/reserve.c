@@ -1,18 +1,18 @@
 /*
  * guard/reserve.c - the Reed-Solomon reserve of a row, by additive transforms, and lost payloads by Lagrange's formula
  *
- * Encoding. Polynomials are written in the basis X_i = the product of S_j over the bits j of i, where S_j is the polynomial
- * that is 0 on the points 0 .. 2^j - 1 and 1 at the point 2^j. S_j is additive, and 1 more on the second half of an aligned
- * run of 2^(j+1) points than on the first. So a transform between the m coefficients and the values on an aligned run of m
- * points (a coset) is log2(m) levels of butterflies, with the value of S_j on the first half as factor.
- * A word f has degree < 256 - m: f = the sum over c < 256/m - 1 of X_cm times g_c, deg g_c < m, and X_cm is constant on a
- * coset. Inverse transforms of all 256/m cosets, added up, give each g_c times the sum of X_cm over the cosets, which is
- * 0 as c is not the last. So the inverse transform of the reserve (coset 0) is the sum of those of the data, and one
- * forward transform makes the reserve of it.
+ * Encoding. Polynomials are written in the basis X_i = the product of S_j over the bits j of i, where S_j is the
+ * polynomial that is 0 on the points 0 .. 2^j - 1 and 1 at the point 2^j. S_j is additive, and 1 more on the second
+ * half of an aligned run of 2^(j+1) points than on the first. So a transform between the m coefficients and the values
+ * on an aligned run of m points (a coset) is log2(m) levels of butterflies, with the value of S_j on the first half as
+ * factor. A word f has degree < 256 - m: f = the sum over c < 256/m - 1 of X_cm times g_c, deg g_c < m, and X_cm is
+ * constant on a coset. Inverse transforms of all 256/m cosets, added up, give each g_c times the sum of X_cm over the
+ * cosets, which is 0 as c is not the last. So the inverse transform of the reserve (coset 0) is the sum of those of the
+ * data, and one forward transform makes the reserve of it.
  *
  * Rebuilding. With the lost payloads taken as zeros, the recomputed reserve differs from the received one by a word g
- * that is 0 on all data that is there; so the sum in Lagrange's formula runs over reserve payloads only. As many of them
- * are used as data payloads are lost, the others count as lost too: fewer sources, the same result.
+ * that is 0 on all data that is there; so the sum in Lagrange's formula runs over reserve payloads only. As many of
+ * them are used as data payloads are lost, the others count as lost too: fewer sources, the same result.
  *
  * SPDX-License-Identifier: BSD-2-Clause
  */
@@ -28,7 +28,7 @@ enum {
     LEVELS = 8,
     MOST_M = 128,
     LINE = 64,                    /* bytes between the runs of a tile, lest they all fall into one cache set */
-    TILE_MOST = 4096,             /* bytes taken of each payload at a time: all of a block, so that prefetching by page works */
+    TILE_MOST = 4096,             /* bytes taken of each payload at a time: all that a block has */
     TILE_ALL = 1 << 17,           /* and of m payloads together, so that two tiles stay in a second-level cache */
     TILE_ROOM = MOST_M * (TILE_ALL / MOST_M + LINE)
 };
@@ -50,7 +50,7 @@ struct job {
     unsigned k, m, levels;
     size_t stride;
     size_t at, bytes;                 /* of the tile at hand, in every payload */
-    const uint8_t *const *ahead;      /* the runs of the coset after the one at hand, m of them; NULL when there is none */
+    const uint8_t *const *ahead;      /* m runs that are wanted after the coset at hand, NULL when there are none */
     unsigned ahead_asked;             /* how many of them an engine was told of */
 };
 
@@ -152,7 +152,7 @@ static void pass2(const struct job *job, firn_reserve_step *step, unsigned level
     }
 }
 
-/* The next two runs of the coset after the one at hand, or two that will do no harm. */
+/* Two runs that will be wanted soon, or two that will do no harm. */
 static void look_ahead(struct job *job, const uint8_t *const *harmless, const uint8_t *ahead[2])
 {
     for (unsigned i = 0; i < 2; i++) {
@@ -255,7 +255,7 @@ static void encode_tile(struct job *job, const uint8_t *const *data, uint8_t *co
     find_runs(job, data, 0, runs[0]);
     for (unsigned first = 0; first < job->k; first += job->m, turn ^= 1) {
         find_runs(job, data, first + job->m, runs[turn ^ 1]);
-        job->ahead = runs[turn ^ 1];
+        job->ahead = first + job->m < job->k ? runs[turn ^ 1] : (const uint8_t *const *)out;
         job->ahead_asked = 0;
         inverse_transform(job, job->m + first, runs[turn], coset, sum);
     }
@@ -269,7 +269,8 @@ static bool valid(unsigned k, unsigned m)
 }
 
 enum firn_status firn_reserve_encode_by(const struct firn_reserve_engine *engine, unsigned k, unsigned m,
-                                        const uint8_t *const *data, uint8_t *const *reserve, size_t bytes, uint8_t *work)
+                                        const uint8_t *const *data, uint8_t *const *reserve, size_t bytes,
+                                        uint8_t *work)
 {
     uint8_t *out[MOST_M];
     struct job job;
@@ -327,8 +328,8 @@ static bool find_losses(const struct job *job, struct loss *loss, uint8_t *const
 }
 
 /*
- * Lagrange's formula: with E the lost points, those of unused reserve payloads included, and L(x) the product of x + e over
- * E, the value at e is the sum over the sources s of the value at s times L(s) / (L'(e) (e + s)).
+ * Lagrange's formula: with E the lost points, those of unused reserve payloads included, and L(x) the product of x + e
+ * over E, the value at e is the sum over the sources s of the value at s times L(s) / (L'(e) (e + s)).
  */
 static void make_factors(const struct job *job, const struct loss *loss)
 {
@@ -363,7 +364,8 @@ static void make_factors(const struct job *job, const struct loss *loss)
 }
 
 /* Rebuilds lost payloads `first` and up to three after it, from the differences at the sources. */
-static void combine_tile(const struct job *job, const struct loss *loss, unsigned first, const uint8_t *const *differences)
+static void combine_tile(const struct job *job, const struct loss *loss, unsigned first,
+                         const uint8_t *const *differences)
 {
     const uint8_t *tables[FIRN_RESERVE_TOGETHER * MOST_M];
     uint8_t *to[FIRN_RESERVE_TOGETHER];

@@ -1,7 +1,8 @@
 /*
  * guard/reserve_plain.c - the hot loops of the reserve in plain C; every other engine is checked against it
  *
- * Bytes pass through short arrays of the loop's own, so that a compiler sees that nothing overlaps and makes vectors of it.
+ * Bytes pass through short arrays of the loop's own, so that a compiler sees that nothing overlaps and makes vectors of
+ * it.
  * SPDX-License-Identifier: BSD-2-Clause
  */
 #include "guard/reserve_engine.h"

@@ -99,7 +99,10 @@ enum firn_status firn_sheet_geometry_for(double percent, uint64_t sheet_bytes, s
     return FIRN_OK;
 }
 
-/* Rows go on being counted through from data to reserve, so a run of lost blocks is fair to all rows across that border too. */
+/*
+ * Rows go on being counted through from data to reserve, so a run of lost blocks is fair to all rows across that border
+ * too.
+ */
 uint32_t firn_sheet_index(const struct firn_sheet_shape *shape, uint32_t row, unsigned column)
 {
     const uint32_t rows = shape->rows, first_row = shape->data_blocks % rows;      /* of the first reserve block */

@@ -6,10 +6,10 @@
  */
 #include "firn/block.h"
 #include "firn/reserve.h"
+#include "guard/gf.h"
 #include "guard/hash.h"
 #include "guard/lanes_engine.h"
 #include "guard/reserve_engine.h"
-#include "guard/gf.h"
 
 #include <isa-l/erasure_code.h>
 #include <stdio.h>
@@ -17,7 +17,7 @@
 #include <string.h>
 #include <time.h>
 
-enum { K = 224, M = 32, DEPTH = 128, ROWS = 8, RUNS = 21, CACHED_BLOCKS = 4, STREAM_BLOCKS = 16384, MOST_RUNS = 64 };
+enum { K = 224, M = 32, DEPTH = 128, ROWS = 8, RUNS = 21, CACHED_BLOCKS = 4, STREAM_BLOCKS = 16384 };
 
 static const size_t sheet_bytes = (size_t)(K + M) * DEPTH * FIRN_BLOCK_BYTES;
 
@@ -57,8 +57,8 @@ static double once(struct bench *bench, measured *call, unsigned repeats)
 }
 
 /* Runs call and its memcpy by turns, and prints the medians. */
-static void compare(struct bench *bench, const char *name, const char *engine, measured *call, measured *copy, size_t bytes,
-                    unsigned repeats)
+static void compare(struct bench *bench, const char *name, const char *engine, measured *call, measured *copy,
+                    size_t bytes, unsigned repeats)
 {
     double calls[RUNS], copies[RUNS], speed, copy_speed;
 
@@ -77,7 +77,8 @@ static void compare(struct bench *bench, const char *name, const char *engine, m
 static void copy_cached(struct bench *bench)
 {
     for (unsigned i = 0; i < CACHED_BLOCKS; i++)
-        memcpy(bench->copy + (size_t)i * FIRN_BLOCK_BYTES, bench->sheet + (size_t)i * FIRN_BLOCK_BYTES, FIRN_BLOCK_BYTES);
+        memcpy(bench->copy + (size_t)i * FIRN_BLOCK_BYTES, bench->sheet + (size_t)i * FIRN_BLOCK_BYTES,
+               FIRN_BLOCK_BYTES);
     bench->sink += bench->copy[bench->sink % FIRN_BLOCK_BYTES];
 }
 
@@ -194,7 +195,8 @@ static void copy_rows(struct bench *bench)
     for (unsigned row = 0; row < ROWS; row++) {
         pick_row(bench, row, payloads);
         for (unsigned i = 0; i < K; i++)
-            memcpy(bench->copy + ((size_t)row * K + i) * FIRN_BLOCK_PAYLOAD_BYTES, payloads[i], FIRN_BLOCK_PAYLOAD_BYTES);
+            memcpy(bench->copy + ((size_t)row * K + i) * FIRN_BLOCK_PAYLOAD_BYTES, payloads[i],
+                   FIRN_BLOCK_PAYLOAD_BYTES);
     }
 }
 
@@ -232,7 +234,9 @@ static void measure_blocks(struct bench *bench)
     compare(bench, "XXH3-128 a block, in cache", "", hash_blocks, copy_cached, cached, 2000);
     compare(bench, "block: seal, in cache", here, seal_blocks, copy_cached, cached, 2000);
     for (unsigned i = 0; i < STREAM_BLOCKS; i++) {
-        struct firn_block_tag tag = { FIRN_BLOCK_FORMAT_VERSION, FIRN_BLOCK_DATA, { K, M, DEPTH }, "bench", i, K * DEPTH };
+        struct firn_block_tag tag = {
+            FIRN_BLOCK_FORMAT_VERSION, FIRN_BLOCK_DATA, { K, M, DEPTH }, "bench", i, K * DEPTH,
+        };
 
         firn_block_seal(bench->sheet + (size_t)i * FIRN_BLOCK_BYTES, &tag);
     }

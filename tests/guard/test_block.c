@@ -1,6 +1,6 @@
 /*
- * tests/guard/test_block.c - a block is sealed as the specification prints it, mends what it promises, and is never taken for
- * good when it is not
+ * tests/guard/test_block.c - a block is sealed as the specification prints it, mends what it promises, and is never
+ * taken for good when it is not
  * SPDX-License-Identifier: BSD-2-Clause
  */
 #include "firn/block.h"
@@ -16,8 +16,8 @@
 #include <cmocka.h>
 
 static const struct firn_block_tag usual_tag = {
-    .version = 1, .kind = FIRN_BLOCK_DATA, .geometry = { 224, 32, 128 }, .id = { 1, 2, 3, 4, 5, 6, 7, 8 }, .number = 70000,
-    .data_blocks = 28672,
+    .version = 1, .kind = FIRN_BLOCK_DATA, .geometry = { 224, 32, 128 }, .id = { 1, 2, 3, 4, 5, 6, 7, 8 },
+    .number = 70000, .data_blocks = 28672,
 };
 
 static void flip(uint8_t *block, unsigned bit)
@@ -43,7 +43,10 @@ static void make_block(struct random *random, uint8_t *block)
     firn_block_seal(block, &usual_tag);
 }
 
-/* The block that format-spec/block.md works through; its tag is in the vectors file, made by another program, in Python. */
+/*
+ * The block that format-spec/block.md works through; its tag is in the vectors file, made by another program, in
+ * Python.
+ */
 static void seals_as_the_specification_prints(void **state)
 {
     const struct firn_block_tag tag = {
@@ -220,7 +223,9 @@ static void judges_a_tag(void **state)
     assert_true((memcmp(copy, block, sizeof copy) == 0) == (c->state == FIRN_BLOCK_FOREIGN));
 }
 
-/* The last reserve block of a short sheet is the last block there is: 1000 data blocks have 160 (format-spec/sheet.md). */
+/*
+ * The last reserve block of a short sheet is the last block there is: 1000 data blocks have 160 (format-spec/sheet.md).
+ */
 static void a_short_sheet_ends_where_its_reserve_ends(void **state)
 {
     struct firn_block_tag tag = usual_tag, found;

@@ -54,10 +54,13 @@ static void multiplies_and_inverts(void **state)
 /* Recomputed from the definition by another program, in Python, when this project was planned. */
 static void agrees_with_another_program(void **state)
 {
-    static const uint8_t powers[][2] = { { 8, 29 }, { 16, 76 }, { 25, 3 }, { 50, 5 }, { 85, 214 }, { 100, 17 }, { 127, 204 },
-                                         { 128, 133 }, { 170, 215 }, { 200, 28 }, { 223, 9 }, { 240, 44 }, { 254, 142 } };
-    static const uint8_t inverses[17] = { 0, 1, 142, 244, 71, 167, 122, 186, 173, 157, 221, 152, 61, 170, 93, 150, 216 };
-    static const uint8_t products[][3] = { { 0x80, 2, 0x1D }, { 0x53, 0xCA, 0x8F }, { 0x57, 0x83, 0x31 }, { 0xFF, 0xFF, 0xE2 } };
+    static const uint8_t powers[][2] = { { 8, 29 }, { 16, 76 }, { 25, 3 }, { 50, 5 }, { 85, 214 }, { 100, 17 },
+                                         { 127, 204 }, { 128, 133 }, { 170, 215 }, { 200, 28 }, { 223, 9 }, { 240, 44 },
+                                         { 254, 142 } };
+    static const uint8_t inverses[17] = { 0, 1, 142, 244, 71, 167, 122, 186, 173, 157, 221, 152, 61, 170, 93, 150,
+                                          216 };
+    static const uint8_t products[][3] = { { 0x80, 2, 0x1D }, { 0x53, 0xCA, 0x8F }, { 0x57, 0x83, 0x31 },
+                                           { 0xFF, 0xFF, 0xE2 } };
     static const uint8_t power_digest[] = "\xbd\xc3\x36\xe3\xf0\x40\xe4\xde\xac\x02\xd4\xee\x34\x52\x34\xa3"
                                           "\xae\xec\xd6\x36\xb8\xc9\x44\xc2\x29\xdd\x29\xb0\xa1\x85\x29\x87";
     static const uint8_t inverse_digest[] = "\xb6\x3b\x19\xb9\x4e\xa0\x73\x26\x2a\x0c\xef\x46\x20\x32\x27\x4b"
@@ -90,8 +93,8 @@ static void make_generator(unsigned degree, uint8_t generator[32])
 }
 
 /*
- * ISO/IEC 18004, Annex I ("01234567", version 1-M): six independent public test files give these words and name the annex.
- * "HELLO WORLD", 1-M: as widely published. Both recomputed by another program.
+ * ISO/IEC 18004, Annex I ("01234567", version 1-M): six independent public test files give these words and name the
+ * annex. "HELLO WORLD", 1-M: as widely published. Both recomputed by another program.
  */
 static const struct word_case {
     const char *name;

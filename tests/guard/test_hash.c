@@ -1,12 +1,14 @@
 /*
  * tests/guard/test_hash.c - XXH3-128 against the xxHash repository's own check values
  *
- * Source: xxHash, cli/xsum_sanity_check.c, commit b2e9dbb0 of 15 October 2024; length 2099 recomputed with Debian's libxxhash
- * 0.8.1 only. SPDX-License-Identifier: BSD-2-Clause
+ * Source: xxHash, cli/xsum_sanity_check.c, commit b2e9dbb0 of 15 October 2024; length 2099 recomputed with Debian's
+ * libxxhash 0.8.1 only.
+ * SPDX-License-Identifier: BSD-2-Clause
  */
 #include "guard/hash.h"
 
 #include "base/bytes.h"
+#include "vectors.h"
 
 #include <setjmp.h>
 #include <stdarg.h>
@@ -37,7 +39,10 @@ static const struct hash_case {
     { "2367", 2367, 0xE89C0F6FF369B427, 0xCB37AEB9E5D361ED },
 };
 
-/* The repository's generator. Its multiplier ends in CA8D; it is not the library's first 64-bit prime, which ends in CA87. */
+/*
+ * The repository's generator. Its multiplier ends in CA8D; it is not the library's first 64-bit prime, which ends in
+ * CA87.
+ */
 static int make_buffer(void **state)
 {
     uint64_t generator = 2654435761U;
@@ -80,12 +85,32 @@ static void stands_low_half_first(void **state)
     assert_memory_equal(hash, expected, sizeof expected);
 }
 
+/* Made by a program that knows nothing but format-spec/hash.md. */
+static void hashes_as_the_specification_prints(void **state)
+{
+    static const size_t lengths[] = { 0, 1, 2, 3, 4, 8, 9, 16, 17, 32, 33, 64, 96, 128, 129, 160, 240, 241, 1024, 1025,
+                                      1088, 1089, 2048, 4000 };
+    uint8_t bytes[4000], hash[FIRN_HASH_BYTES], expected[FIRN_HASH_BYTES];
+    char name[40];
+
+    (void)state;
+    for (size_t i = 0; i < sizeof bytes; i++)
+        bytes[i] = (uint8_t)(i * 7);
+    for (size_t i = 0; i < sizeof lengths / sizeof lengths[0]; i++) {
+        snprintf(name, sizeof name, "length %zu", lengths[i]);
+        assert_int_equal(vectors_read("hash.txt", name, expected, sizeof expected), sizeof expected);
+        firn_hash_put(bytes, lengths[i], hash);
+        assert_memory_equal(hash, expected, sizeof expected);
+    }
+}
+
 int main(void)
 {
     enum { CASES = sizeof cases / sizeof cases[0] };
-    struct CMUnitTest tests[CASES + 1] = { cmocka_unit_test(stands_low_half_first) };
+    struct CMUnitTest tests[CASES + 2] = { cmocka_unit_test(stands_low_half_first),
+                                           cmocka_unit_test(hashes_as_the_specification_prints) };
 
     for (size_t i = 0; i < CASES; i++)
-        tests[i + 1] = (struct CMUnitTest){ cases[i].name, hashes, NULL, NULL, (void *)&cases[i] };
+        tests[i + 2] = (struct CMUnitTest){ cases[i].name, hashes, NULL, NULL, (void *)&cases[i] };
     return cmocka_run_group_tests_name("hash", tests, make_buffer, NULL);
 }

@@ -1,9 +1,10 @@
 /*
  * tests/guard/test_lanes.c - the lanes against Hamming's code at textbook size, and every error they promise to see
  *
- * Textbook words: [7,4], [12,8], [11,7], [15,11] with data in the positions that are no powers of two, as in Hamming (1950);
- * recomputed by another program, the [12,8] example 10011010 as remembered from textbooks. Weight-4 counts: A4 = n(n-1)(n-2)/24
- * for the extended code of length n. SPDX-License-Identifier: BSD-2-Clause
+ * Textbook words: [7,4], [12,8], [11,7], [15,11] with data in the positions that are no powers of two, as in Hamming
+ * (1950); recomputed by another program, the [12,8] example 10011010 as remembered from textbooks. Weight-4 counts: A4
+ * = n(n-1)(n-2)/24 for the extended code of length n.
+ * SPDX-License-Identifier: BSD-2-Clause
  */
 #include "firn/lanes.h"
 
@@ -318,7 +319,8 @@ int main(void)
     struct CMUnitTest tests[WORD_CASES + OTHERS];
 
     for (size_t i = 0; i < WORD_CASES; i++)
-        tests[i] = (struct CMUnitTest){ word_cases[i].name, guards_as_the_textbook_does, NULL, NULL, (void *)&word_cases[i] };
+        tests[i] = (struct CMUnitTest){ word_cases[i].name, guards_as_the_textbook_does, NULL, NULL,
+                                        (void *)&word_cases[i] };
     memcpy(tests + WORD_CASES, others, sizeof others);
     return cmocka_run_group_tests_name("lanes", tests, NULL, NULL);
 }

@@ -121,8 +121,9 @@ static void same_as_isal(struct random *random, unsigned k, unsigned m, size_t b
 
 static void agrees_with_isal(void **state)
 {
-    static const unsigned sizes[][2] = { { 224, 32 }, { 160, 32 }, { 64, 32 }, { 160, 8 }, { 128, 128 }, { 252, 4 }, { 255, 1 },
-                                         { 254, 2 }, { 240, 16 }, { 192, 64 }, { 32, 32 }, { 1, 1 }, { 1, 128 }, { 33, 32 } };
+    static const unsigned sizes[][2] = { { 224, 32 }, { 160, 32 }, { 64, 32 }, { 160, 8 }, { 128, 128 }, { 252, 4 },
+                                         { 255, 1 }, { 254, 2 }, { 240, 16 }, { 192, 64 }, { 32, 32 }, { 1, 1 },
+                                         { 1, 128 }, { 33, 32 } };
     struct random random = random_start("ISA-L");
 
     (void)state;
@@ -157,7 +158,7 @@ static void every_small_minor_is_regular(void **state)
                 }
             if (n != n_columns)
                 continue;
-            for (unsigned c = 0; c < n; c++) {                   /* elimination; a missing pivot is a zero determinant */
+            for (unsigned c = 0; c < n; c++) {      /* elimination; a missing pivot is a zero determinant */
                 unsigned pivot = c;
 
                 while (pivot < n && a[pivot][c] == 0)
@@ -189,8 +190,8 @@ static void make_row(struct random *random, unsigned k, unsigned m, size_t bytes
 }
 
 /* Spoils the lost payloads, rebuilds, and wants every byte of every room as it was. */
-static void comes_back(struct random *random, const struct firn_reserve_engine *engine, unsigned k, unsigned m, size_t bytes,
-                       uint8_t *const payloads[POINTS], const unsigned *lost, unsigned lost_count)
+static void comes_back(struct random *random, const struct firn_reserve_engine *engine, unsigned k, unsigned m,
+                       size_t bytes, uint8_t *const payloads[POINTS], const unsigned *lost, unsigned lost_count)
 {
     for (unsigned i = 0; i < lost_count; i++)
         random_fill(random, payloads[lost[i]], bytes);
@@ -266,21 +267,22 @@ static void engines_agree(void **state)
             unsigned m = 1U << round % 8, k = 1 + random_below(&random, POINTS - m);
             size_t bytes = round % 7 == 0 ? MOST_BYTES : random_below(&random, 400);
             uint8_t *payloads[POINTS];
+            const uint8_t *const *data = (const uint8_t *const *)payloads;
 
             place(&random, payloads);
             for (unsigned i = 0; i < k + m; i++)
                 random_fill(&random, rooms[i], sizeof rooms[i]);
             memcpy(kept, rooms, sizeof rooms);
-            assert_int_equal(firn_reserve_encode_by(engine, k, m, (const uint8_t *const *)payloads, payloads + k, bytes, work),
-                             FIRN_OK);
-            for (unsigned i = 0; i < k + m; i++) {      /* swap: the engine's row is kept, the plain one's stands in rooms */
+            assert_int_equal(firn_reserve_encode_by(engine, k, m, data, payloads + k, bytes, work), FIRN_OK);
+            for (unsigned i = 0; i < k + m; i++) {      /* swap: what the engine made is kept */
                 static uint8_t swap[MOST_BYTES + 2 * EDGE];
 
                 memcpy(swap, rooms[i], sizeof swap);
                 memcpy(rooms[i], kept[i], sizeof swap);
                 memcpy(kept[i], swap, sizeof swap);
             }
-            firn_reserve_encode_by(&firn_reserve_plain, k, m, (const uint8_t *const *)payloads, payloads + k, bytes, work);
+            assert_int_equal(firn_reserve_encode_by(&firn_reserve_plain, k, m, data, payloads + k, bytes, work),
+                             FIRN_OK);
             assert_memory_equal(rooms, kept, sizeof rooms[0] * (k + m));
         }
         printf("engine %s: agrees\n", engine->name);
@@ -290,8 +292,8 @@ static void engines_agree(void **state)
 enum { SHEET_BLOCKS = 200, SHEET_BYTES = 8 };
 
 /* A row of a small sheet; returns how many of its blocks lie in the lost run, and puts their columns into lost. */
-static unsigned pick_row(const struct firn_sheet_shape *shape, uint32_t row, uint8_t sheet[][SHEET_BYTES], uint32_t start,
-                         uint32_t length, uint8_t *payloads[POINTS], unsigned lost[POINTS])
+static unsigned pick_row(const struct firn_sheet_shape *shape, uint32_t row, uint8_t sheet[][SHEET_BYTES],
+                         uint32_t start, uint32_t length, uint8_t *payloads[POINTS], unsigned lost[POINTS])
 {
     unsigned count = 0;
 
@@ -319,7 +321,10 @@ static void make_sheet(struct random *random, const struct firn_sheet_shape *sha
     }
 }
 
-/* Every run of `length` lost blocks, at every start: it all comes back, or some row says that it cannot, and writes nothing. */
+/*
+ * Every run of `length` lost blocks, at every start: it all comes back, or some row says that it cannot, and writes
+ * nothing.
+ */
 static void lose_runs(struct random *random, const struct firn_sheet_shape *shape, uint32_t length, bool bearable)
 {
     uint8_t whole[SHEET_BLOCKS][SHEET_BYTES], sheet[SHEET_BLOCKS][SHEET_BYTES], before[SHEET_BLOCKS][SHEET_BYTES];

@@ -214,7 +214,8 @@ int main(void)
     for (size_t i = 0; i < SHAPE_CASES; i++)
         *test++ = (struct CMUnitTest){ shape_cases[i].name, has_the_shape, NULL, NULL, (void *)&shape_cases[i] };
     for (size_t i = 0; i < GEOMETRY_CASES; i++)
-        *test++ = (struct CMUnitTest){ geometry_cases[i].name, chooses_a_geometry, NULL, NULL, (void *)&geometry_cases[i] };
+        *test++ = (struct CMUnitTest){ geometry_cases[i].name, chooses_a_geometry, NULL, NULL,
+                                       (void *)&geometry_cases[i] };
     memcpy(test, others, sizeof others);
     return cmocka_run_group_tests_name("sheet", tests, NULL, NULL);
 }

@@ -1,5 +1,6 @@
 /*
- * tests/guard/vectors.h - reads the worked examples of format-spec/vectors: lines "name: hex", blanks in the hex ignored
+ * tests/guard/vectors.h - reads the worked examples of format-spec/vectors: lines "name: hex", blanks in the hex
+ * ignored
  * SPDX-License-Identifier: BSD-2-Clause
  */
 #ifndef FIRN_TESTS_GUARD_VECTORS_H
@@ -10,7 +11,9 @@
 #include <stdio.h>
 #include <string.h>
 
-/* The bytes of the vector `name` of format-spec/vectors/FILE, at most `room`; returns their count, 0 if there is none. */
+/*
+ * The bytes of the vector `name` of format-spec/vectors/FILE, at most `room`; returns their count, 0 if there is none.
+ */
 static inline size_t vectors_read(const char *file, const char *name, uint8_t *bytes, size_t room)
 {
     static char line[20000];
