@@ -2,12 +2,12 @@
  * firn/reserve.h - the Reed-Solomon reserve of a row: any m of its k + m payloads can be lost and come back
  *
  * Room: guard. At every byte offset take the one polynomial over GF(2^8) (field polynomial 0x11D) of degree < 256 - m
- * whose value at the point m + i is the byte of data payload i, and 0 at the points from m + k on. Reserve payload j is its
- * value at the point j, j < m. The integer i stands for the field element with that bit pattern.
+ * whose value at the point m + i is the byte of data payload i, and 0 at the points from m + k on. Reserve payload j is
+ * its value at the point j, j < m. The integer i stands for the field element with that bit pattern.
  *
  * Method: I. S. Reed and G. Solomon, "Polynomial Codes over Certain Finite Fields", J. SIAM 8(2), 1960, pp. 300-304;
- * transforms by S.-J. Lin, W.-H. Chung and Y. S. Han, "Novel Polynomial Basis and Its Application to Reed-Solomon Erasure
- * Codes", FOCS 2014. Lost payloads come back by Lagrange's formula (format-spec/sheet.md).
+ * transforms by S.-J. Lin, W.-H. Chung and Y. S. Han, "Novel Polynomial Basis and Its Application to Reed-Solomon
+ * Erasure Codes", FOCS 2014. Lost payloads come back by Lagrange's formula (format-spec/sheet.md).
  *
  * SPDX-License-Identifier: BSD-2-Clause
  */

@@ -1,12 +1,13 @@
 /*
  * firn/sheet.h - how blocks are laid out in sheets, and sheets in rows
  *
- * Room: guard. A sheet is t data blocks in stream order followed by its reserve blocks. The block with index q belongs to
- * row q mod D; a row is one Reed-Solomon code word of at most k data and exactly m reserve payloads, so any m blocks of a
- * row can be lost. Neighbours lie in different rows: a run of up to m * D lost blocks costs each row at most m.
+ * Room: guard. A sheet is t data blocks in stream order followed by its reserve blocks. The block with index q belongs
+ * to row q mod D; a row is one Reed-Solomon code word of at most k data and exactly m reserve payloads, so any m blocks
+ * of a row can be lost. Neighbours lie in different rows: a run of up to m * D lost blocks costs each row at most m.
  *
- * Every full sheet has the same geometry {k, m, depth}, told by every tag. Only the last sheet may be short; its k, m and
- * D follow from the geometry and its t by the rule in format-spec/sheet.md, which keeps the overhead that was asked for.
+ * Every full sheet has the same geometry {k, m, depth}, told by every tag. Only the last sheet may be short; its k, m
+ * and D follow from the geometry and its t by the rule in format-spec/sheet.md, which keeps the overhead that was asked
+ * for.
  *
  * SPDX-License-Identifier: BSD-2-Clause
  */
