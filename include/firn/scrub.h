@@ -64,7 +64,7 @@ struct firn_scrub_report {
     uint64_t written;                  /* blocks, title page included, that were repaired in place and read back */
     uint64_t refused;                  /* that the medium did not take; status FIRN_IO */
     uint64_t extended_bytes;           /* the file was cut short, and has grown by so much */
-    uint64_t foreign_bytes;            /* behind the end of the container, or a broken piece of a block; left alone */
+    uint64_t foreign_bytes;            /* behind the end of the container; left alone */
 };
 
 /*

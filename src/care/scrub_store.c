@@ -189,7 +189,7 @@ static enum firn_status heal_title(struct run *run, const uint8_t *page, struct 
     return conclude(run, status, &outcome, fault);
 }
 
-/* Page 0 has no tag; the stream, which is as good by now as it will get, tells what it should be. */
+/* Page 0 has no tag; the stream, which is as good by now as it will get, tells what it should be, and where it ends. */
 static enum firn_status scrub_title(struct run *run, struct firn_fault *fault)
 {
     struct firn_reader_options options = {
@@ -202,6 +202,7 @@ static enum firn_status scrub_title(struct run *run, struct firn_fault *fault)
 
     if (status != FIRN_OK)
         return status;
+    run->report->end_known = firn_reader_layout_of(reader)->end_known;      /* blocks alone cannot tell a last sheet that is full */
     if (firn_reader_layout_of(reader)->title_sound)
         run->report->title = FIRN_SCRUB_TITLE_SOUND;
     else if (firn_reader_title_page(reader, page) == FIRN_OK)
@@ -226,7 +227,7 @@ static enum firn_status open_sheets(struct run *run, struct firn_fault *fault)
     run->report->geometry = layout->geometry;
     run->report->blocks = layout->blocks;
     run->report->end_known = layout->end_known;
-    run->report->foreign_bytes = layout->foreign_bytes;
+    run->report->foreign_bytes = layout->blocks_missing == 0 ? layout->foreign_bytes : 0;      /* else a piece of its own */
     return FIRN_OK;
 }
 

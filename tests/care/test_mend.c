@@ -533,7 +533,7 @@ static void tells_what_the_medium_does_not_take(void **state)
 
     (void)state;
     bench_make(&bench, bad, FILE_BYTES);
-    bench.container.ranges[0] = (struct fault_range){ 22 * 4096 + 512, 4096, true };      /* pages 22 and 23 */
+    bench.container.ranges[0] = (struct fault_range){ 22 * 4096 + 512, 4096, .writes_too = true };      /* pages 22 and 23 */
     bench.container.range_count = 1;
     assert_int_equal(repair(&bench, &outcome, &fault), FIRN_OK);
     assert_int_equal(outcome.refused, 2);
@@ -542,6 +542,17 @@ static void tells_what_the_medium_does_not_take(void **state)
     assert_int_equal(outcome.refused_at, 22 * 4096);
     assert_false(bench.journal.there);
     assert_memory_equal(bench.container.now.bytes + 24 * 4096, good + 24 * 4096, FILE_BYTES - 24 * 4096);
+    bench_free(&bench);
+
+    bench_make(&bench, bad, FILE_BYTES);
+    bench.container.ranges[0] = (struct fault_range){ 50 * 4096, 1, .swallows = true };      /* one that lies about a byte */
+    bench.container.range_count = 1;
+    bench.container.now.bytes[50 * 4096] = (uint8_t)~good[50 * 4096];
+    assert_int_equal(repair(&bench, &outcome, &fault), FIRN_OK);
+    assert_int_equal(outcome.refused, 1);
+    assert_int_equal(outcome.os_error, 0);
+    assert_int_equal(outcome.refused_at, 50 * 4096);
+    assert_false(bench.journal.there);
     bench_free(&bench);
 
     bench_make(&bench, bad, 100 * 4096);

@@ -59,7 +59,8 @@ static size_t judge(struct fault_store *fault, enum fault_deed deed, uint64_t at
     for (size_t i = 0; i < fault->range_count && deed != FAULT_SYNC; i++) {
         const struct fault_range *range = &fault->ranges[i];
 
-        if ((deed == FAULT_WRITE && !range->writes_too) || at + count <= range->at || at >= range->at + range->bytes)
+        if (range->swallows || (deed == FAULT_WRITE && !range->writes_too) || at + count <= range->at
+            || at >= range->at + range->bytes)
             continue;
         *os_error = EIO;
         count = at >= range->at ? 0 : (size_t)(range->at - at);
@@ -78,6 +79,15 @@ static enum firn_status fault_read_at(void *self, uint64_t at, void *bytes, size
     return *os_error == 0 ? FIRN_OK : FIRN_IO;
 }
 
+/* What lands of one byte that is written. */
+static uint8_t landing(const struct fault_store *fault, uint64_t at, uint8_t written)
+{
+    for (size_t i = 0; i < fault->range_count; i++)
+        if (fault->ranges[i].swallows && at - fault->ranges[i].at < fault->ranges[i].bytes)
+            return fault->now.bytes[at];
+    return written;
+}
+
 static enum firn_status fault_write_at(void *self, uint64_t at, const void *bytes, size_t count, int *os_error)
 {
     struct fault_store *fault = self;
@@ -91,7 +101,8 @@ static enum firn_status fault_write_at(void *self, uint64_t at, const void *byte
     if (moved > 0) {
         if (at + moved > fault->now.used)
             set_size(&fault->now, (size_t)at + moved);
-        memcpy(fault->now.bytes + at, bytes, moved);
+        for (size_t i = 0; i < moved; i++)
+            fault->now.bytes[at + i] = landing(fault, at + i, ((const uint8_t *)bytes)[i]);
     }
     return *os_error == 0 ? FIRN_OK : *os_error == EROFS ? FIRN_READ_ONLY : FIRN_IO;
 }

@@ -31,8 +31,11 @@ enum fault_deed { FAULT_READ, FAULT_WRITE, FAULT_SYNC, FAULT_DEEDS };
 /* From call `from` on (1 is the first, 0 never), `times` calls fail with os_error (0: EIO). Halfway: after half their bytes. */
 struct fault_rule { uint64_t from, times; int os_error; bool halfway; };
 
-/* Reads (and, if so told, writes) that touch these bytes fail with EIO once they get there. */
-struct fault_range { uint64_t at, bytes; bool writes_too; };
+/*
+ * Reads (and, if so told, writes) that touch these bytes fail with EIO once they get there. Or, if they swallow, reads and
+ * writes succeed, but nothing that is written lands.
+ */
+struct fault_range { uint64_t at, bytes; bool writes_too, swallows; };
 
 struct fault_picture { uint8_t *bytes; size_t used, room; };
 
