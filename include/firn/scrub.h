@@ -1,9 +1,9 @@
 /*
  * firn/scrub.h - looking after a container: every block checked, what can be mended is mended in place
  *
- * Room: care. Damage is a finding and stands in the report. Only blocks whose right bytes are known (by their own lanes and
- * hash, or from the reserve) are written, through a journal beside the container, so that a power cut never leaves it worse.
- * Memory is bounded by one sheet.
+ * Room: care. Damage is a finding and stands in the report. Only blocks whose right bytes are known (by their own lanes
+ * and hash, or from the reserve) are written, through a journal beside the container, so that a power cut never leaves
+ * it worse. Memory is bounded by one sheet.
  *
  * SPDX-License-Identifier: BSD-2-Clause
  */
@@ -40,7 +40,7 @@ enum firn_scrub_title {
 enum firn_scrub_journal {
     FIRN_SCRUB_JOURNAL_NONE,
     FIRN_SCRUB_JOURNAL_WAITS,          /* report only: a repair was cut off and waits to be finished */
-    FIRN_SCRUB_JOURNAL_DROPPED,        /* a repair was cut off before it touched the container; its journal was removed */
+    FIRN_SCRUB_JOURNAL_DROPPED,        /* a repair was cut off before it touched the container; its journal is gone */
     FIRN_SCRUB_JOURNAL_REPLAYED,       /* a repair was cut off half-way and has been finished */
     FIRN_SCRUB_JOURNAL_STRANGE         /* report only: something there is not this container's; a repair would refuse */
 };
@@ -57,7 +57,7 @@ struct firn_scrub_report {
     uint64_t mended_bits;              /* how many bits that were */
     uint64_t rebuilt;                  /* come from the reserve */
     uint64_t lost;
-    uint64_t unreadable;               /* of the rebuilt and the lost: the medium gave an error, or the file ended before them */
+    uint64_t unreadable;               /* of the rebuilt and lost: the medium gave an error, or the file ended before */
     enum firn_scrub_title title;
     enum firn_scrub_journal journal;
     uint64_t replayed;                 /* blocks put in place by finishing a repair that was cut off */
@@ -68,14 +68,18 @@ struct firn_scrub_report {
 };
 
 /*
- * Checks a container and repairs it in place. Keeps a second scrub of it out by a lock. report is always filled in with what
- * was found so far.
+ * Checks a container and repairs it in place. Keeps a second scrub of it out by a lock. report is always filled in with
+ * what was found so far.
  *
- * FIRN_OK              all of it was checked, and whatever could be repaired was (or, report only, would be); see the report
+ * FIRN_OK              all of it was checked, and whatever could be repaired was (or, report only, would be); see the
+ *                      report
  * FIRN_READ_ONLY       the file cannot be written, and report_only was not asked for; nothing was checked
- * FIRN_CANNOT_CREATE   all of it was checked, but there was something to repair and no journal could be made: nothing written
- * FIRN_BAD_DATA        all of it was checked, but something is in the journal's place that must not be touched: nothing written
- * FIRN_IO              all of it was checked, but writing failed: what could be written was. Or reading failed from the start.
+ * FIRN_CANNOT_CREATE   all of it was checked, but there was something to repair and no journal could be made: nothing
+ *                      written
+ * FIRN_BAD_DATA        all of it was checked, but something is in the journal's place that must not be touched: nothing
+ *                      written
+ * FIRN_IO              all of it was checked, but writing failed: what could be written was. Or reading failed from the
+ *                      start.
  * FIRN_BUSY            another scrub is at it
  * FIRN_NO_INPUT, FIRN_NOT_CONTAINER, FIRN_FOREIGN_FORMAT, FIRN_NO_MEMORY, FIRN_STOPPED
  */

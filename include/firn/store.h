@@ -1,8 +1,8 @@
 /*
  * firn/store.h - the one place that opens, reads, writes and syncs a container
  *
- * Room: container. A store is a few calls over something with numbered bytes. The library brings files, pipes, temporary
- * files and memory; a test brings stores that fail. Calls of one store are for one thread at a time.
+ * Room: container. A store is a few calls over something with numbered bytes. The library brings files, pipes,
+ * temporary files and memory; a test brings stores that fail. Calls of one store are for one thread at a time.
  *
  * SPDX-License-Identifier: BSD-2-Clause
  */
@@ -15,7 +15,7 @@
 
 struct firn_store {
     void *self;
-    /* Reads at `at`; *got is less than count only at the end. FIRN_OK, or FIRN_IO with *os_error: then *got bytes are good. */
+    /* Reads at `at`; *got is less than count only at the end. FIRN_OK; FIRN_IO with *os_error, *got bytes are good. */
     enum firn_status (*read_at)(void *self, uint64_t at, void *bytes, size_t count, size_t *got, int *os_error);
     /* Writes all of it. FIRN_OK, FIRN_IO, FIRN_READ_ONLY. A pipe takes bytes only where the last call ended. */
     enum firn_status (*write_at)(void *self, uint64_t at, const void *bytes, size_t count, int *os_error);
@@ -23,15 +23,14 @@ struct firn_store {
     enum firn_status (*resize)(void *self, uint64_t bytes, int *os_error);
     /* What was written is on the medium when this returns FIRN_OK. */
     enum firn_status (*sync)(void *self, int *os_error);
-    /* Tells that what was read or written is not needed again soon, so that a later read comes from the medium. What was
-       written must have been synced before. */
+    /* Tells that what was read, or written and synced, is not needed again soon: a later read comes from the medium. */
     void (*forget)(void *self, uint64_t at, uint64_t bytes);
     void (*close)(void *self);
     /*
-     * Lends bytes[at .. at + count), to look at and to write on without a trace, until the next call of lend or close. NULL
-     * where the store cannot. Anything but FIRN_OK: not now, not there, or not all of it readable; read_at tells more.
-     * Saves the copy of read_at, which costs as much as judging what was read. A file that somebody else cuts short meanwhile
-     * ends the process (SIGBUS): whoever cuts containers short while they are read has other troubles.
+     * Lends bytes[at .. at + count), to look at and to write on without a trace, until the next call of lend or close.
+     * NULL where the store cannot. Anything but FIRN_OK: not now, not there, or not all of it readable; read_at tells
+     * more. Saves the copy of read_at, which costs as much as judging what was read. A file that somebody else cuts
+     * short meanwhile ends the process (SIGBUS): whoever cuts containers short while they are read has other troubles.
      */
     enum firn_status (*lend)(void *self, uint64_t at, size_t count, uint8_t **bytes);
 };
@@ -42,7 +41,8 @@ enum firn_store_use { FIRN_STORE_READ, FIRN_STORE_MEND };
  * Opens a file or a block device; the caller closes it.
  *
  * FIRN_OK
- * FIRN_NO_INPUT   cannot be opened; os_error is EISDIR for a folder, ESPIPE for what cannot be searched (firn_store_spool)
+ * FIRN_NO_INPUT   cannot be opened; os_error is EISDIR for a folder, ESPIPE for what cannot be searched
+ *                 (firn_store_spool)
  * FIRN_READ_ONLY  for MEND: it can be read, but not written
  * FIRN_NO_MEMORY
  */
@@ -50,8 +50,8 @@ FIRN_API enum firn_status firn_store_open(const char *path, enum firn_store_use 
                                           struct firn_store *store, struct firn_fault *fault);
 
 /*
- * Keeps every other run that asks too from working on this file until it is closed. FIRN_OK, FIRN_BUSY, FIRN_IO. A store that
- * is no file needs no lock: FIRN_OK.
+ * Keeps every other run that asks too from working on this file until it is closed. FIRN_OK, FIRN_BUSY, FIRN_IO. A
+ * store that is no file needs no lock: FIRN_OK.
  */
 FIRN_API enum firn_status firn_store_lock(struct firn_store *store, struct firn_fault *fault);
 
@@ -63,19 +63,19 @@ FIRN_API enum firn_status firn_store_temporary(const char *folder, const struct 
                                                struct firn_store *store, struct firn_fault *fault);
 
 /*
- * Copies a descriptor to its end into a temporary file, so that it can be searched. A file at its start is not copied, but
- * used as it is. The descriptor stays the caller's. FIRN_OK, FIRN_IO, FIRN_CANNOT_CREATE, FIRN_NO_MEMORY.
+ * Copies a descriptor to its end into a temporary file, so that it can be searched. A file at its start is not copied,
+ * but used as it is. The descriptor stays the caller's. FIRN_OK, FIRN_IO, FIRN_CANNOT_CREATE, FIRN_NO_MEMORY.
  */
 FIRN_API enum firn_status firn_store_spool(int descriptor, const struct firn_memory *memory, struct firn_store *store,
                                            struct firn_fault *fault);
 
-/* `capacity` bytes lent by the caller, holding `used`; writing grows used up to capacity, then fails with FIRN_IO (ENOSPC). */
+/* `capacity` bytes lent by the caller, holding `used`; writing grows used up to capacity, then fails with ENOSPC. */
 struct firn_store_buffer { uint8_t *bytes; size_t capacity, used; };
 FIRN_API void firn_store_memory(struct firn_store_buffer *buffer, struct firn_store *store);
 
 /*
- * A file that appears under its name only when it is whole. Nameless until kept where the system can do that; else under
- * a temporary name beside it.
+ * A file that appears under its name only when it is whole. Nameless until kept where the system can do that; else
+ * under a temporary name beside it.
  */
 struct firn_store_stage;
 

@@ -11,7 +11,7 @@
 #include <errno.h>
 
 /* format-spec/mend.md, table 1: the head of the journal */
-enum { MAGIC_AT = 0, VERSION_AT = 8, ZERO_AT = 12, ID_AT = 16, SIZE_AT = 24, HEAD_HASH_AT = 32, HEAD_BYTES = 48, VERSION = 1 };
+enum { MAGIC_AT = 0, VERSION_AT = 8, ID_AT = 16, SIZE_AT = 24, HEAD_HASH_AT = 32, HEAD_BYTES = 48, VERSION = 1 };
 
 /* table 2: an entry; the seal is one of no bytes. In memory the hash of what comes before stands in front of it. */
 enum {
@@ -61,7 +61,7 @@ static enum firn_status tell(const struct firn_mend_subject *subject, struct fir
     return firn_fault_tell(fault, status, why, 0, what);
 }
 
-/* --- writing ------------------------------------------------------------------------------------------------------- */
+/* --- writing --- */
 
 static enum firn_status append(struct firn_mend *mend, const uint8_t *bytes, size_t count, struct firn_fault *fault)
 {
@@ -74,7 +74,7 @@ static enum firn_status append(struct firn_mend *mend, const uint8_t *bytes, siz
     return FIRN_OK;
 }
 
-/* Puts head and hash around the bytes that stand in piece, and appends them. `word` is the place, or the count in a seal. */
+/* Puts head and hash around the bytes that stand in piece, and appends them. word: the place; in a seal the count. */
 static enum firn_status append_piece(struct firn_mend *mend, uint64_t word, size_t length, struct firn_fault *fault)
 {
     uint8_t *entry = mend->piece + PIECE_ENTRY_AT, *hash = mend->piece + PIECE_BYTES_AT + length;
@@ -186,7 +186,7 @@ void firn_mend_free(struct firn_mend *mend)
     memory->put(memory->self, mend);
 }
 
-/* --- reading ------------------------------------------------------------------------------------------------------- */
+/* --- reading --- */
 
 /* Reads count bytes. FIRN_END when so many are not there. */
 static enum firn_status fetch(struct walk *walk, uint8_t *bytes, size_t count, struct firn_fault *fault)
@@ -276,7 +276,8 @@ static bool vouched(struct walk *walk)
 }
 
 /* Reads all of it and says what it is; a sealed one can be played then. */
-static enum firn_status classify(struct walk *walk, const uint8_t *id, enum firn_mend_state *state, struct firn_fault *fault)
+static enum firn_status classify(struct walk *walk, const uint8_t *id, enum firn_mend_state *state,
+                                 struct firn_fault *fault)
 {
     enum firn_status status = start(walk, state, fault);
     bool fine = true;
@@ -296,7 +297,7 @@ static enum firn_status classify(struct walk *walk, const uint8_t *id, enum firn
     return FIRN_OK;
 }
 
-/* --- playing ------------------------------------------------------------------------------------------------------- */
+/* --- playing --- */
 
 /* Calls deed for every entry of a journal that was found sealed. */
 static enum firn_status for_all(struct walk *walk, void (*deed)(struct walk *walk, void *self), void *self,
@@ -445,7 +446,8 @@ static enum firn_status deal_with(struct walk *walk, enum firn_mend_state state,
         return tell(walk->subject, fault, FIRN_BAD_DATA, 0,
                     ", the mend journal of another container: put it beside that one, or remove it");
     case FIRN_MEND_STRANGE:
-        return tell(walk->subject, fault, FIRN_BAD_DATA, 0, ", which is no mend journal that can be used: move it elsewhere");
+        return tell(walk->subject, fault, FIRN_BAD_DATA, 0,
+                    ", which is no mend journal that can be used: move it elsewhere");
     default:
         return FIRN_OK;
     }

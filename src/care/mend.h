@@ -2,8 +2,8 @@
  * care/mend.h - repairing a container in place so that a power cut never leaves it worse
  *
  * Room: care. Good blocks go to a journal first, which is sealed and synced; then to their places; then the journal is
- * removed. A journal found sealed is played again, which does no harm however often; one found unsealed has had no effect
- * and is dropped. Only blocks that vouch for themselves (hash, guard words, container, place) are ever written.
+ * removed. A journal found sealed is played again, which does no harm however often; one found unsealed has had no
+ * effect and is dropped. Only blocks that vouch for themselves (hash, guard words, container, place) are ever written.
  * Layout and rule: format-spec/mend.md.
  *
  * SPDX-License-Identifier: BSD-2-Clause
@@ -21,7 +21,7 @@ struct firn_mend_place {
     enum firn_status (*make)(void *self, struct firn_store *journal, struct firn_fault *fault);
     /* The name of the journal is on the medium when this returns FIRN_OK; else FIRN_IO. */
     enum firn_status (*settle)(void *self, struct firn_fault *fault);
-    /* Opens the journal that is there. FIRN_OK, FIRN_END when none is, FIRN_BAD_DATA when it is no business of ours, ... */
+    /* Opens the journal that is there. FIRN_OK, FIRN_END: none is, FIRN_BAD_DATA: it is not ours, FIRN_IO. */
     enum firn_status (*open)(void *self, struct firn_store *journal, struct firn_fault *fault);
     /* Removes the journal for good. FIRN_OK or FIRN_IO. */
     enum firn_status (*remove)(void *self, struct firn_fault *fault);
@@ -53,7 +53,7 @@ struct firn_mend;
 enum firn_status firn_mend_begin(const struct firn_mend_subject *subject, const uint8_t id[FIRN_BLOCK_ID_BYTES],
                                  struct firn_fault *fault, struct firn_mend **out);
 
-/* Adds a good block that belongs at `at` of the container; FIRN_BLOCK_BYTES bytes, the title page at 0. FIRN_OK, FIRN_IO. */
+/* Adds a good block (FIRN_BLOCK_BYTES) that belongs at `at` of the container; the title page at 0. FIRN_OK, FIRN_IO. */
 enum firn_status firn_mend_add(struct firn_mend *mend, uint64_t at, const uint8_t *block, struct firn_fault *fault);
 
 /*
@@ -61,8 +61,8 @@ enum firn_status firn_mend_add(struct firn_mend *mend, uint64_t at, const uint8_
  *
  * FIRN_OK        done; the outcome tells whether the medium took every block
  * FIRN_BAD_DATA  a block that was added does not vouch for itself; nothing was written
- * FIRN_IO        the journal could not be written whole: the container is untouched; or the container could not be synced:
- *                the journal stays for the next scrub
+ * FIRN_IO        the journal could not be written whole: the container is untouched; or the container could not be
+ *                synced: the journal stays for the next scrub
  */
 enum firn_status firn_mend_finish(struct firn_mend *mend, struct firn_mend_outcome *outcome, struct firn_fault *fault);
 

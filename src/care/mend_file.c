@@ -36,8 +36,9 @@ static enum firn_status remove_journal(void *self, struct firn_fault *fault)
     return firn_store_remove(((struct firn_mend_file *)self)->path, fault);
 }
 
-enum firn_status firn_mend_file_make(const char *path, const struct firn_store *container, const struct firn_memory *memory,
-                                     struct firn_mend_file **out, struct firn_fault *fault)
+enum firn_status firn_mend_file_make(const char *path, const struct firn_store *container,
+                                     const struct firn_memory *memory, struct firn_mend_file **out,
+                                     struct firn_fault *fault)
 {
     size_t path_bytes = strlen(path) + 1;
     struct firn_mend_file *file = memory->get(memory->self, sizeof *file + path_bytes);

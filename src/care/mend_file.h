@@ -18,8 +18,9 @@ struct firn_mend_file {
 };
 
 /* The place beside the file that path leads to, links followed. FIRN_OK, FIRN_NO_INPUT, FIRN_NO_MEMORY. */
-enum firn_status firn_mend_file_make(const char *path, const struct firn_store *container, const struct firn_memory *memory,
-                                     struct firn_mend_file **out, struct firn_fault *fault);
+enum firn_status firn_mend_file_make(const char *path, const struct firn_store *container,
+                                     const struct firn_memory *memory, struct firn_mend_file **out,
+                                     struct firn_fault *fault);
 void firn_mend_file_free(struct firn_mend_file *file);      /* takes NULL */
 
 #endif

@@ -33,7 +33,7 @@ static void note_trouble(struct run *run, enum firn_status status, const struct 
     run->trouble_fault = *fault;
 }
 
-/* --- repairs --------------------------------------------------------------------------------------------------------- */
+/* --- repairs --- */
 
 /* Takes in what a repair has come to. Returns only what is fatal. */
 static enum firn_status conclude(struct run *run, enum firn_status status, const struct firn_mend_outcome *outcome,
@@ -80,7 +80,7 @@ static enum firn_status repair_sheet(struct run *run, const uint8_t *blocks, con
     return conclude(run, status, &outcome, fault);
 }
 
-/* --- findings -------------------------------------------------------------------------------------------------------- */
+/* --- findings --- */
 
 static void tell_lost(struct run *run)
 {
@@ -171,7 +171,7 @@ static enum firn_status scrub_sheet(struct run *run, uint64_t index, struct firn
     return FIRN_OK;
 }
 
-/* --- the title page ---------------------------------------------------------------------------------------------------- */
+/* --- the title page --- */
 
 static enum firn_status heal_title(struct run *run, const uint8_t *page, struct firn_fault *fault)
 {
@@ -202,7 +202,7 @@ static enum firn_status scrub_title(struct run *run, struct firn_fault *fault)
 
     if (status != FIRN_OK)
         return status;
-    run->report->end_known = firn_reader_layout_of(reader)->end_known;      /* blocks alone cannot tell a last sheet that is full */
+    run->report->end_known = firn_reader_layout_of(reader)->end_known;      /* a last sheet that is full cannot tell */
     if (firn_reader_layout_of(reader)->title_sound)
         run->report->title = FIRN_SCRUB_TITLE_SOUND;
     else if (firn_reader_title_page(reader, page) == FIRN_OK)
@@ -213,7 +213,7 @@ static enum firn_status scrub_title(struct run *run, struct firn_fault *fault)
     return FIRN_OK;
 }
 
-/* --- the whole --------------------------------------------------------------------------------------------------------- */
+/* --- the whole --- */
 
 static enum firn_status open_sheets(struct run *run, struct firn_fault *fault)
 {
@@ -227,7 +227,8 @@ static enum firn_status open_sheets(struct run *run, struct firn_fault *fault)
     run->report->geometry = layout->geometry;
     run->report->blocks = layout->blocks;
     run->report->end_known = layout->end_known;
-    run->report->foreign_bytes = layout->blocks_missing == 0 ? layout->foreign_bytes : 0;      /* else a piece of its own */
+    if (layout->blocks_missing == 0)      /* else it is a piece of its own */
+        run->report->foreign_bytes = layout->foreign_bytes;
     return FIRN_OK;
 }
 

@@ -140,8 +140,8 @@ static void take_back(struct file *file)
 }
 
 /*
- * A private mapping: writing on it makes a copy of the page. Populating first turns a sector that cannot be read into an
- * error here instead of a signal later.
+ * A private mapping: writing on it makes a copy of the page. Populating first turns a sector that cannot be read into
+ * an error here instead of a signal later.
  */
 static enum firn_status file_lend(void *self, uint64_t at, size_t count, uint8_t **bytes)
 {

@@ -1,8 +1,8 @@
 /*
  * container/store_beside.h - a file beside a container that belongs to it: made anew, opened with suspicion
  *
- * Room: container. Used by care for the mend journal. Whoever may write into the folder could have put something there, so
- * neither links nor special files nor strangers' files are opened.
+ * Room: container. Used by care for the mend journal. Whoever may write into the folder could have put something there,
+ * so neither links nor special files nor strangers' files are opened.
  *
  * SPDX-License-Identifier: BSD-2-Clause
  */
@@ -33,7 +33,8 @@ enum firn_status firn_store_beside_settle(const char *beside, struct firn_fault 
  *
  * FIRN_OK
  * FIRN_END         there is none
- * FIRN_BAD_DATA    something else is in its place, or others than this user, root and the container's owner could write it
+ * FIRN_BAD_DATA    something else is in its place, or others than this user, root and the container's owner could write
+ *                  it
  * FIRN_IO, FIRN_NO_MEMORY
  */
 enum firn_status firn_store_beside_open(const char *beside, const struct firn_store *container,

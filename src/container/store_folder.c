@@ -1,4 +1,4 @@
-/* container/store_folder.c - folders: opened for naming things in them, synced, rid of a file, host to nameless files */
+/* container/store_folder.c - folders: opened to name things in, synced, rid of a file, host to nameless files */
 /* SPDX-License-Identifier: BSD-2-Clause */
 #define _GNU_SOURCE     /* O_PATH, O_TMPFILE, syncfs */
 #include "container/store_file.h"

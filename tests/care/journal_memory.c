@@ -12,7 +12,8 @@ static enum firn_status make(void *self, struct firn_store *store, struct firn_f
     struct journal_memory *journal = self;
 
     if (journal->make_fails != FIRN_OK || journal->there)
-        return firn_fault_tell(fault, journal->there ? FIRN_EXISTS : journal->make_fails, EACCES, 0, journal->place.name);
+        return firn_fault_tell(fault, journal->there ? FIRN_EXISTS : journal->make_fails, EACCES, 0,
+                               journal->place.name);
     if (!fault_power_step(journal->power))
         return firn_fault_tell(fault, FIRN_CANNOT_CREATE, EIO, 0, journal->place.name);
     journal_memory_plant(journal, NULL, 0);

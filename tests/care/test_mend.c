@@ -73,7 +73,8 @@ static int make_containers(void **state)
         seal_block(good + (n + 1) * FIRN_BLOCK_BYTES, n, id);
     memcpy(bad, good, sizeof bad);
     for (unsigned page = 0; page <= BLOCKS; page++) {
-        damaged[page] = page == 0 || page == 3 || (page >= 20 && page < 26) || (page >= 40 && page < 110) || page == BLOCKS;
+        damaged[page] = page == 0 || page == 3 || (page >= 20 && page < 26) || (page >= 40 && page < 110)
+                     || page == BLOCKS;
         for (unsigned i = 0; damaged[page] && i < FIRN_BLOCK_BYTES; i++)
             bad[page * FIRN_BLOCK_BYTES + i] ^= (uint8_t)fault_random(&random);
         damaged_pages += damaged[page];
@@ -158,7 +159,7 @@ static void repairs(void **state)
     bench_free(&bench);
 }
 
-/* --- the bytes of a journal ------------------------------------------------------------------------------------------ */
+/* --- the bytes of a journal --- */
 
 static void xxh3(const uint8_t *bytes, size_t count, uint8_t hash[16])
 {
@@ -232,7 +233,8 @@ static void agrees_with_the_worked_example(void **state)
     struct firn_mend *mend;
     uint8_t wanted[256];
     struct bench bench;
-    size_t count = vectors_read("mend.txt", "journal-id-0011223344556677-size-4096000-no-entries", wanted, sizeof wanted);
+    size_t count = vectors_read("mend.txt", "journal-id-0011223344556677-size-4096000-no-entries", wanted,
+                                sizeof wanted);
 
     (void)state;
     assert_int_equal(count, 80);
@@ -247,7 +249,7 @@ static void agrees_with_the_worked_example(void **state)
     bench_free(&bench);
 }
 
-/* --- power cuts ------------------------------------------------------------------------------------------------------ */
+/* --- power cuts --- */
 
 static const uint64_t seeds[] = { 0, UINT64_MAX, 1, 2, 3 };
 enum { SEEDS = sizeof seeds / sizeof seeds[0] };
@@ -272,7 +274,7 @@ static void expect_no_worse(const struct bench *bench, size_t bytes_before)
     }
 }
 
-/* After a cut during a repair, and another one after `second` steps of what follows (0: none), all is well or as before. */
+/* A cut during a repair, and another after `second` steps of what follows (0: none): then all is well or as before. */
 static bool survive(size_t bytes, uint64_t first, uint64_t second, uint64_t seed, bool *as_before)
 {
     struct firn_mend_outcome outcome;
@@ -334,11 +336,11 @@ static void survives_every_power_cut_while_growing(void **state)
     survives_power_cuts_of(50 * FIRN_BLOCK_BYTES + 100);
 }
 
-/* --- what may be found in the journal's place ------------------------------------------------------------------------- */
+/* --- what may be found in the journal's place --- */
 
 enum plan {
-    EMPTY, ZEROS, HALF_A_MAGIC, HALF_A_HEAD, NO_SEAL, TEXT, SHORT_TEXT, VERSION_2, ANOTHERS, FINE, FINE_AND_A_BYTE, WRONG_COUNT,
-    DAMAGED_BLOCK, ELSEWHERE, ASKEW, FAR_AWAY, ODD_LENGTH, TOO_LONG, OF_ANOTHER, TITLE_ONLY, NO_ENTRIES
+    EMPTY, ZEROS, HALF_A_MAGIC, HALF_A_HEAD, NO_SEAL, TEXT, SHORT_TEXT, VERSION_2, ANOTHERS, FINE, FINE_AND_A_BYTE,
+    WRONG_COUNT, DAMAGED_BLOCK, ELSEWHERE, ASKEW, FAR_AWAY, ODD_LENGTH, TOO_LONG, OF_ANOTHER, TITLE_ONLY, NO_ENTRIES
 };
 
 static const struct found_case { const char *name; enum plan plan; enum firn_mend_state state; } found_cases[] = {
@@ -438,7 +440,7 @@ static void deals_with_what_it_finds(void **state)
     bench_free(&bench);
 }
 
-/* However long what was written of a journal, and whichever of its bits is wrong: without a right seal it has no effect. */
+/* However much of a journal was written, and whichever of its bits is wrong: without a right seal it has no effect. */
 static void believes_only_the_seal(void **state)
 {
     struct firn_mend_outcome outcome;
@@ -470,7 +472,7 @@ static void believes_only_the_seal(void **state)
     bench_free(&bench);
 }
 
-/* --- faults on the way -------------------------------------------------------------------------------------------------- */
+/* --- faults on the way --- */
 
 static void leaves_the_container_alone_when_the_journal_fails(void **state)
 {
@@ -533,7 +535,7 @@ static void tells_what_the_medium_does_not_take(void **state)
 
     (void)state;
     bench_make(&bench, bad, FILE_BYTES);
-    bench.container.ranges[0] = (struct fault_range){ 22 * 4096 + 512, 4096, .writes_too = true };      /* pages 22 and 23 */
+    bench.container.ranges[0] = (struct fault_range){ 22 * 4096 + 512, 4096, true, false };      /* pages 22 and 23 */
     bench.container.range_count = 1;
     assert_int_equal(repair(&bench, &outcome, &fault), FIRN_OK);
     assert_int_equal(outcome.refused, 2);
@@ -545,7 +547,7 @@ static void tells_what_the_medium_does_not_take(void **state)
     bench_free(&bench);
 
     bench_make(&bench, bad, FILE_BYTES);
-    bench.container.ranges[0] = (struct fault_range){ 50 * 4096, 1, .swallows = true };      /* one that lies about a byte */
+    bench.container.ranges[0] = (struct fault_range){ 50 * 4096, 1, false, true };      /* it lies about a byte */
     bench.container.range_count = 1;
     bench.container.now.bytes[50 * 4096] = (uint8_t)~good[50 * 4096];
     assert_int_equal(repair(&bench, &outcome, &fault), FIRN_OK);
@@ -620,7 +622,7 @@ static void tells_a_journal_that_cannot_be_read_or_removed(void **state)
     bench_free(&bench);
 }
 
-/* --- memory that runs out -------------------------------------------------------------------------------------------------- */
+/* --- memory that runs out --- */
 
 static void leaves_all_alone_when_memory_is_out(void **state)
 {
@@ -649,7 +651,7 @@ static void leaves_all_alone_when_memory_is_out(void **state)
     bench_free(&bench);
 }
 
-/* --- real files --------------------------------------------------------------------------------------------------------------- */
+/* --- real files --- */
 
 static void lies_beside_its_container(void **state)
 {
@@ -697,7 +699,6 @@ static void lies_beside_its_container(void **state)
     free(bytes);
 }
 
-/* ------------------------------------------------------------------------------------------------------------------------------ */
 
 int main(void)
 {

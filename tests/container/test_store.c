@@ -36,12 +36,12 @@
 static const struct firn_memory *memory;
 
 /* A child's way to say where it failed. */
-#define CHILD_NEEDS(fact)                                                                                                  \
-    do {                                                                                                                   \
-        if (!(fact)) {                                                                                                     \
-            fprintf(stderr, "child, line %d: %s\n", __LINE__, #fact);                                                      \
-            return 1;                                                                                                      \
-        }                                                                                                                  \
+#define CHILD_NEEDS(fact)                                                                                     \
+    do {                                                                                                      \
+        if (!(fact)) {                                                                                        \
+            fprintf(stderr, "child, line %d: %s\n", __LINE__, #fact);                                         \
+            return 1;                                                                                         \
+        }                                                                                                     \
     } while (0)
 
 static void expect_file(const char *name, const char *text)
@@ -62,7 +62,7 @@ static enum firn_status put(struct firn_store *store, uint64_t at, const char *t
     return store->write_at(store->self, at, text, strlen(text), &why);
 }
 
-/* --- opening --------------------------------------------------------------------------------------------------------- */
+/* --- opening --- */
 
 static const struct open_case {
     const char *name, *path;      /* path within the scratch folder unless it starts with a slash */
@@ -84,14 +84,14 @@ static const struct open_case {
 static void opens(void **state)
 {
     const struct open_case *c = *state;
+    const char *path = c->path[0] == '/' ? c->path : scratch_path(c->path);
     struct firn_fault fault = { 0 };
     struct firn_store store;
 
     scratch_write("plain", "abc", 3, 0644);
     assert_true(symlink("plain", scratch_path("link")) == 0 || errno == EEXIST);
     assert_true(mkfifo(scratch_path("fifo"), 0600) == 0 || errno == EEXIST);
-    assert_int_equal(firn_store_open(c->path[0] == '/' ? c->path : scratch_path(c->path), c->use, memory, &store, &fault),
-                     c->status);
+    assert_int_equal(firn_store_open(path, c->use, memory, &store, &fault), c->status);
     if (c->status == FIRN_OK) {
         store.close(store.self);
         return;
@@ -131,7 +131,7 @@ static void tells_read_only_from_absent(void **state)
     assert_int_equal(outcome, 0);
 }
 
-/* --- reading and writing --------------------------------------------------------------------------------------------- */
+/* --- reading and writing --- */
 
 static void reads_and_writes_a_file(void **state)
 {
@@ -266,7 +266,7 @@ static void forgets(void **state)
     free(bytes);
 }
 
-/* --- locks ------------------------------------------------------------------------------------------------------------ */
+/* --- locks --- */
 
 static int lock_status(void *self)
 {
@@ -301,11 +301,11 @@ static void locks_others_out(void **state)
     assert_int_equal(scratch_in_child(lock_status, NULL), FIRN_OK);
 }
 
-/* --- stages ----------------------------------------------------------------------------------------------------------- */
+/* --- stages --- */
 
 /*
- * One story of a stage. Before it starts, `before` stands at the place (NULL: nothing), `meanwhile` comes there while the
- * stage is open. At the end `after` stands there, and nothing else is in the folder.
+ * One story of a stage. Before it starts, `before` stands at the place (NULL: nothing), `meanwhile` comes there while
+ * the stage is open. At the end `after` stands there, and nothing else is in the folder.
  */
 static const struct stage_case {
     const char *name, *before, *meanwhile;
@@ -388,7 +388,7 @@ static void stages(void **state)
     stages_with(*state, live_stage);
 }
 
-/* A file system that knows no nameless files, and perhaps no RENAME_NOREPLACE either, played by a filter of system calls. */
+/* A file system without nameless files, and perhaps without RENAME_NOREPLACE, played by a filter of system calls. */
 static bool be_poor(bool poorer)
 {
     const unsigned tmpfile_bit = O_TMPFILE & ~(unsigned)O_DIRECTORY;
@@ -447,7 +447,12 @@ static void stages_a_long_name(void **state)
     assert_int_equal(scratch_in_child(name_long, &poor), 0);
 }
 
-static const struct refused_case { const char *name, *path; bool replace; enum firn_status status; int os_error; } refused_cases[] = {
+static const struct refused_case {
+    const char *name, *path;
+    bool replace;
+    enum firn_status status;
+    int os_error;
+} refused_cases[] = {
     { "stage: no such folder", "nowhere/staged", false, FIRN_CANNOT_CREATE, ENOENT },
     { "stage: a folder in its place", "", true, FIRN_CANNOT_CREATE, EISDIR },
     { "stage: a device in its place", "/dev/null", true, FIRN_CANNOT_CREATE, EEXIST },
@@ -508,7 +513,7 @@ static void leaves_no_trace_when_killed(void **state)
     assert_int_equal(scratch_entries(), before);
 }
 
-/* --- full --------------------------------------------------------------------------------------------------------------- */
+/* --- full --- */
 
 static int fill_up(void *self)
 {
@@ -542,7 +547,7 @@ static void tells_when_full(void **state)
     assert_int_equal(scratch_entries(), before);
 }
 
-/* --- pipes ---------------------------------------------------------------------------------------------------------------- */
+/* --- pipes --- */
 
 static void writes_a_pipe_in_order(void **state)
 {
@@ -634,7 +639,7 @@ static void tells_when_a_device_is_full(void **state)
     close(full);
 }
 
-/* --- memory ----------------------------------------------------------------------------------------------------------------- */
+/* --- memory --- */
 
 static void keeps_memory_within_bounds(void **state)
 {
@@ -670,7 +675,7 @@ static void keeps_memory_within_bounds(void **state)
     store.close(store.self);
 }
 
-/* --- temporary files and spools ----------------------------------------------------------------------------------------------- */
+/* --- temporary files and spools --- */
 
 static int use_temporary(void *self)
 {
@@ -799,7 +804,7 @@ static void tells_a_spool_that_fails(void **state)
     close(folder);
 }
 
-/* --- beside a container -------------------------------------------------------------------------------------------------------- */
+/* --- beside a container --- */
 
 static void finds_its_place_through_links(void **state)
 {
@@ -819,8 +824,11 @@ static void finds_its_place_through_links(void **state)
 }
 
 /* What stands in the place of "core.mend", and what opening it says. */
-static const struct beside_case { const char *name; enum { NOTHING, PLAIN, LINK, FIFO, FOLDER, LINKED_TWICE, SHARED } kind;
-                                  enum firn_status status; } beside_cases[] = {
+static const struct beside_case {
+    const char *name;
+    enum { NOTHING, PLAIN, LINK, FIFO, FOLDER, LINKED_TWICE, SHARED } kind;
+    enum firn_status status;
+} beside_cases[] = {
     { "beside: nothing", NOTHING, FIRN_END },
     { "beside: a file", PLAIN, FIRN_OK },
     { "beside: a symbolic link", LINK, FIRN_BAD_DATA },
@@ -945,7 +953,7 @@ static void removes(void **state)
     assert_int_equal(fault.os_error, EISDIR);
 }
 
-/* --- memory that runs out -------------------------------------------------------------------------------------------------------- */
+/* --- memory that runs out --- */
 
 static unsigned open_descriptors(void)
 {
@@ -976,7 +984,8 @@ static void gives_back_all_when_memory_is_out(void **state)
     assert_int_equal(firn_store_beside_make(scratch_path("scarce"), &scarce.memory, &store, &fault), FIRN_NO_MEMORY);
     for (unsigned nth = 1; nth <= 2; nth++) {
         fault_memory_make(&scarce, nth);
-        assert_int_equal(firn_store_stage_open(scratch_path("scarce"), false, &scarce.memory, &stage, &fault), FIRN_NO_MEMORY);
+        assert_int_equal(firn_store_stage_open(scratch_path("scarce"), false, &scarce.memory, &stage, &fault),
+                         FIRN_NO_MEMORY);
         assert_null(stage);
         assert_int_equal(scarce.outstanding, 0);
         fault_memory_make(&scarce, nth);
@@ -990,7 +999,6 @@ static void gives_back_all_when_memory_is_out(void **state)
     assert_int_equal(scratch_entries(), names);
 }
 
-/* --------------------------------------------------------------------------------------------------------------------------------- */
 
 static int start(void **state)
 {
@@ -1005,6 +1013,11 @@ static int end(void **state)
     (void)state;
     scratch_remove();
     return 0;
+}
+
+static struct CMUnitTest row(const char *name, CMUnitTestFunction test, const void *state)
+{
+    return (struct CMUnitTest){ name, test, NULL, NULL, (void *)(uintptr_t)state };
 }
 
 #define ROWS(table) (sizeof table / sizeof table[0])
@@ -1024,22 +1037,20 @@ int main(void)
         cmocka_unit_test(tells_a_folder_that_cannot_be_written), cmocka_unit_test(removes),
         cmocka_unit_test(gives_back_all_when_memory_is_out),
     };
-    struct CMUnitTest tests[ROWS(singles) + ROWS(open_cases) + 2 * ROWS(stage_cases) + ROWS(refused_cases) + ROWS(beside_cases)];
+    struct CMUnitTest tests[ROWS(singles) + ROWS(open_cases) + 2 * ROWS(stage_cases) + ROWS(refused_cases)
+                            + ROWS(beside_cases)];
     size_t count = ROWS(singles);
 
     memcpy(tests, singles, sizeof singles);
     for (size_t i = 0; i < ROWS(open_cases); i++)
-        tests[count++] = (struct CMUnitTest){ open_cases[i].name, opens, NULL, NULL, (void *)(uintptr_t)&open_cases[i] };
+        tests[count++] = row(open_cases[i].name, opens, &open_cases[i]);
     for (size_t i = 0; i < ROWS(stage_cases); i++) {
-        tests[count++] = (struct CMUnitTest){ stage_cases[i].name, stages, NULL, NULL, (void *)(uintptr_t)&stage_cases[i] };
-        tests[count++] = (struct CMUnitTest){ stage_cases[i].name, stages_with_temporary_names, NULL, NULL,
-                                              (void *)(uintptr_t)&stage_cases[i] };
+        tests[count++] = row(stage_cases[i].name, stages, &stage_cases[i]);
+        tests[count++] = row(stage_cases[i].name, stages_with_temporary_names, &stage_cases[i]);
     }
     for (size_t i = 0; i < ROWS(refused_cases); i++)
-        tests[count++] = (struct CMUnitTest){ refused_cases[i].name, refuses_a_stage, NULL, NULL,
-                                              (void *)(uintptr_t)&refused_cases[i] };
+        tests[count++] = row(refused_cases[i].name, refuses_a_stage, &refused_cases[i]);
     for (size_t i = 0; i < ROWS(beside_cases); i++)
-        tests[count++] = (struct CMUnitTest){ beside_cases[i].name, opens_beside, NULL, NULL,
-                                              (void *)(uintptr_t)&beside_cases[i] };
+        tests[count++] = row(beside_cases[i].name, opens_beside, &beside_cases[i]);
     return cmocka_run_group_tests_name("store", tests, start, end);
 }

@@ -150,8 +150,9 @@ static void fault_close(void *self)
 
 void fault_store_make(struct fault_store *fault, const uint8_t *bytes, size_t count)
 {
-    *fault = (struct fault_store){ .store = { fault, fault_read_at, fault_write_at, fault_size, fault_resize, fault_sync,
-                                              fault_forget, fault_close } };
+    *fault = (struct fault_store){ .store = { .self = fault, .read_at = fault_read_at, .write_at = fault_write_at,
+                                              .size = fault_size, .resize = fault_resize, .sync = fault_sync,
+                                              .forget = fault_forget, .close = fault_close } };
     set_size(&fault->now, count);
     set_size(&fault->kept, count);
     if (count > 0) {

@@ -1,8 +1,8 @@
 /*
  * tests/help/fault_store.h - a store over memory that fails when it is told to, and forgets what a power cut takes
  *
- * It keeps two pictures of its bytes: what a read gives now, and what is on the medium, which sync makes equal. A power cut
- * leaves of the difference, sector by sector, none, all or some.
+ * It keeps two pictures of its bytes: what a read gives now, and what is on the medium, which sync makes equal. A power
+ * cut leaves of the difference, sector by sector, none, all or some.
  *
  * SPDX-License-Identifier: BSD-2-Clause
  */
@@ -28,12 +28,12 @@ bool fault_power_step(struct fault_power *power);
 
 enum fault_deed { FAULT_READ, FAULT_WRITE, FAULT_SYNC, FAULT_DEEDS };
 
-/* From call `from` on (1 is the first, 0 never), `times` calls fail with os_error (0: EIO). Halfway: after half their bytes. */
+/* From call `from` on (1: the first, 0: never) `times` calls fail with os_error (0: EIO); halfway: after half of it. */
 struct fault_rule { uint64_t from, times; int os_error; bool halfway; };
 
 /*
- * Reads (and, if so told, writes) that touch these bytes fail with EIO once they get there. Or, if they swallow, reads and
- * writes succeed, but nothing that is written lands.
+ * Reads (and, if so told, writes) that touch these bytes fail with EIO once they get there. Or, if they swallow, reads
+ * and writes succeed, but nothing that is written lands.
  */
 struct fault_range { uint64_t at, bytes; bool writes_too, swallows; };
 
@@ -63,7 +63,7 @@ void fault_store_calm(struct fault_store *fault);
  */
 void fault_store_power_back(struct fault_store *fault, uint64_t seed);
 
-/* The next number of a reproducible sequence: linear congruential modulo 2^64, the high half folded onto the low one. */
+/* The next number of a reproducible sequence: linear congruential modulo 2^64, high half folded onto the low one. */
 uint64_t fault_random(uint64_t *state);
 
 #endif

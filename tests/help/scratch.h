@@ -13,7 +13,7 @@
 
 enum { SCRATCH_PATH_ROOM = 512 };
 
-/* Makes a folder below TMPDIR (else /tmp) for the whole program; scratch_remove takes it away with all that is in it. */
+/* Makes a folder below TMPDIR (else /tmp) for the program; scratch_remove takes it away with all that is in it */
 void scratch_make(void);
 void scratch_remove(void);
 
