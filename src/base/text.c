@@ -181,9 +181,10 @@ void firn_text_add_name(struct firn_text *text, const char *name)
     }
 }
 
-void firn_text_add_json(struct firn_text *text, const char *string)
+bool firn_text_add_json(struct firn_text *text, const char *string)
 {
     size_t left = strlen(string);
+    bool exact = true;
 
     firn_text_add_bytes(text, "\"", 1);
     while (left > 0) {
@@ -191,18 +192,20 @@ void firn_text_add_json(struct firn_text *text, const char *string)
         uint8_t byte = (uint8_t)*string;
 
         if (length == 0)
-            firn_text_add(text, "\\udc%02x", (unsigned)byte);
+            firn_text_add(text, "\\ufffd");
         else if (byte == '"' || byte == '\\')
             firn_text_add(text, "\\%c", *string);
         else if (byte < 0x20)
             firn_text_add(text, "\\u%04x", (unsigned)byte);
         else
             firn_text_add_bytes(text, string, length);
+        exact = exact && length > 0;
         length = length == 0 ? 1 : length;
         string += length;
         left -= length;
     }
     firn_text_add_bytes(text, "\"", 1);
+    return exact;
 }
 
 void firn_text_add_hex(struct firn_text *text, const uint8_t *bytes, size_t count)

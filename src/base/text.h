@@ -54,8 +54,11 @@ size_t firn_text_utf8(const char *bytes, size_t count);
  */
 void firn_text_add_name(struct firn_text *text, const char *name);
 
-/* A JSON string with its quotes (RFC 8259). Bytes that are no UTF-8 become \udc80 .. \udcff (one low surrogate a byte). */
-void firn_text_add_json(struct firn_text *text, const char *string);
+/*
+ * A JSON string with its quotes (RFC 8259). A byte that is no UTF-8 becomes U+FFFD, since JSON has no way to say it; then the
+ * result is false, and whoever needs the bytes must tell them apart.
+ */
+bool firn_text_add_json(struct firn_text *text, const char *string);
 
 void firn_text_add_hex(struct firn_text *text, const uint8_t *bytes, size_t count);
 

@@ -33,7 +33,7 @@ static const struct firn_args_option options[] = {
     [CUSTODIAN] = { "custodian", '\0', "TEXT", "who answers for it" },
     [NOTE] = { "note", '\0', "TEXT", "anything a later reader should know" },
     [RESERVE] = { "reserve", '\0', "PERCENT", "reserve on top of the data, 0 to 100 (default 14.3)" },
-    [SHEET] = { "sheet", '\0', "SIZE", "size of a sheet, up to 256MiB (default 128MiB)" },
+    [SHEET] = { "sheet", '\0', "SIZE", "size of a sheet, 1MiB to 256MiB (default 128MiB)" },
     [EFFORT] = { "effort", '\0', "WORD", "none, quick, normal or thorough (default normal)" },
     [REPLACE] = { "replace", '\0', NULL, "FILE may be overwritten" },
     [NO_READ_BACK] = { "no-read-back", '\0', NULL, "do not read the container back when it is written" },
@@ -80,6 +80,8 @@ static int read_reserve(struct packing *p)
         return firn_trouble_usage(p->view, sheet, "is no size such as 128MiB");
     if (firn_sheet_geometry_for(percent, sheet_bytes, &p->writing.geometry) != FIRN_OK)
         return firn_trouble_usage(p->view, sheet != NULL ? sheet : words, "makes no sheet; it is too small or too large");
+    if (sheet_bytes < (UINT64_C(1) << 20) || sheet_bytes > (UINT64_C(256) << 20))
+        return firn_trouble_usage(p->view, sheet, "is no size of a sheet: 1MiB to 256MiB");
     if (p->writing.geometry.m == 0)
         firn_view_finding(p->view, "no-reserve", p->output, "packed WITHOUT a reserve: a lost block will stay lost");
     return FIRN_EXIT_SOUND;

@@ -90,7 +90,8 @@ static void say(struct scrubbing *s, const char *path, const struct firn_scrub_r
                       s->ranges[i].first + s->ranges[i].count - 1);
     if (s->range_count > 0)
         firn_text_add(&text, s->range_count > 4 ? ", ...)" : ")");
-    add_part(&text, r->title == FIRN_SCRUB_TITLE_DAMAGED || r->title == FIRN_SCRUB_TITLE_HEALED, "title page damaged", "");
+    if (r->title == FIRN_SCRUB_TITLE_DAMAGED || r->title == FIRN_SCRUB_TITLE_HEALED)
+        firn_text_add(&text, "%stitle page damaged", text.used > 0 ? ", " : "");
     add_part(&text, r->extended_bytes, "byte put back at its end", "bytes put back at its end");
     if (!r->end_known)
         firn_text_add(&text, "%sits end is MISSING", text.used > 0 ? ", " : "");

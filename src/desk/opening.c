@@ -91,6 +91,11 @@ int firn_opening_remark(struct firn_view *view, const char *path, const struct f
         firn_view_finding(view, "cut-short", path, words);
         worst = FIRN_EXIT_SAFE;
     }
+    if (layout->end_known && !layout->colophon_found) {
+        firn_view_finding(view, "no-colophon", path, "its last record is lost, so there may have been more items than can be "
+                                                     "seen; take another copy");
+        worst = FIRN_EXIT_LOST;
+    }
     if (layout->foreign_bytes > 0 && layout->blocks_missing == 0) {
         firn_text_start(&text, words, sizeof words);
         firn_text_add(&text, "%" PRIu64 " bytes behind its end are not part of it; left alone", layout->foreign_bytes);

@@ -3,6 +3,7 @@
 #include "desk/view.h"
 
 #include <inttypes.h>
+#include <string.h>
 
 enum { LABEL_COLUMNS = 14, WORDS_ROOM = 32768 };      /* a name of 4095 bytes can become six times as long in JSON */
 
@@ -21,19 +22,27 @@ static bool shown(const struct firn_view *view)
     return view->json || !view->quiet;
 }
 
-static void put_json(struct firn_view *view, const char *words)
-{
-    char buffer[WORDS_ROOM];
-    struct firn_text text;
-
-    firn_text_start(&text, buffer, sizeof buffer);
-    firn_text_add_json(&text, words);
-    fputs(buffer, view->out);
-}
-
 static void put_field(struct firn_view *view, const char *field)
 {
     fprintf(view->out, ",\"%s\":", field);
+}
+
+/* Bytes that JSON cannot say stand in a field of their own, "FIELD-hex". */
+static void put_json(struct firn_view *view, const char *field, const char *words)
+{
+    char buffer[WORDS_ROOM];
+    struct firn_text text;
+    bool exact;
+
+    put_field(view, field);
+    firn_text_start(&text, buffer, sizeof buffer);
+    exact = firn_text_add_json(&text, words);
+    fputs(buffer, view->out);
+    if (exact)
+        return;
+    firn_text_start(&text, buffer, sizeof buffer);
+    firn_text_add_hex(&text, (const uint8_t *)words, strlen(words));
+    fprintf(view->out, ",\"%s-hex\":\"%s\"", field, buffer);
 }
 
 static void put_name(FILE *out, const char *name)
@@ -60,8 +69,7 @@ void firn_view_begin(struct firn_view *view, const char *report, const char *hea
 void firn_view_words(struct firn_view *view, const char *field, const char *label, const char *words)
 {
     if (view->json) {
-        put_field(view, field);
-        put_json(view, words);
+        put_json(view, field, words);
     } else if (shown(view) && label != NULL) {
         fprintf(view->out, "  %-*s ", LABEL_COLUMNS, label);
         put_name(view->out, words);

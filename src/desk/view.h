@@ -2,8 +2,8 @@
  * desk/view.h - how reports look: lines for people, JSON Lines for programs
  *
  * Room: desk. A report is a name and fields. For people each field is a line with a label; for programs the report is one
- * JSON object on one line (RFC 8259), field names in kebab-case. Findings are reports of their own; for people they go to
- * standard error as one line.
+ * JSON object on one line (RFC 8259), field names in kebab-case; a name that is no UTF-8 stands in FIELD-hex too. Findings are
+ * reports of their own; for people they go to standard error as one line.
  * SPDX-License-Identifier: BSD-2-Clause
  */
 #ifndef FIRN_DESK_VIEW_H
