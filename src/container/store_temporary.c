@@ -15,19 +15,20 @@
 #include <sys/stat.h>
 #include <unistd.h>
 
-enum { PORTION_BYTES = 1 << 20 };
+enum { PORTION_BYTES = 1 << 20, UNIQUE_CHARACTERS = 6 /* that mkstemp wants to replace */ };
 
 /* Where the system has no nameless files: a name of its own, taken away at once. */
 static int open_unlinked(const char *folder)
 {
     char path[PATH_MAX];
     int descriptor;
-    int length = snprintf(path, sizeof path, "%s/firn-XXXXXX", folder);
+    int length = snprintf(path, sizeof path, "%s/firn-%0*d", folder, UNIQUE_CHARACTERS, 0);
 
     if (length < 0 || (size_t)length >= sizeof path) {
         errno = ENAMETOOLONG;
         return -1;
     }
+    memset(path + length - UNIQUE_CHARACTERS, 'X', UNIQUE_CHARACTERS);
     descriptor = mkstemp(path);
     if (descriptor < 0)
         return -1;

@@ -27,7 +27,8 @@ void scratch_make(void)
 {
     const char *above = getenv("TMPDIR");
 
-    (void)snprintf(folder, sizeof folder, "%s/firn-test-XXXXXX", above != NULL && above[0] != '\0' ? above : "/tmp");
+    (void)snprintf(folder, sizeof folder, "%s/firn-test-000000", above != NULL && above[0] != '\0' ? above : "/tmp");
+    memset(folder + strlen(folder) - 6, 'X', 6);      /* what mkdtemp replaces */
     need(mkdtemp(folder) != NULL, folder);
     need(chmod(folder, 0777) == 0, folder);      /* for children without root's rights */
 }
