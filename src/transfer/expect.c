@@ -1,0 +1,343 @@
+/* transfer/expect.c - holding what is taken in against the donor's SHA-256 manifest */
+/* SPDX-License-Identifier: BSD-2-Clause */
+#include "firn/expect.h"
+
+#include "base/fault.h"
+#include "base/memory.h"
+#include "base/text.h"
+#include "transfer/names.h"
+#include "transfer/stored_name.h"
+
+#include <errno.h>
+#include <fcntl.h>
+#include <unistd.h>
+
+enum { DIGEST_DIGITS = 2 * FIRN_ITEM_SHA256_BYTES, PORTION_BYTES = 1 << 16, LINE_MAX_BYTES = 1 << 16 };
+
+/* A path as the manifest means it. */
+struct listed {
+    uint8_t sha256[FIRN_ITEM_SHA256_BYTES];
+    bool seen;
+    bool matched;                /* the last time it was seen */
+};
+
+/* Another way to read a path: as it stands. */
+struct alias {
+    struct listed *listed;
+};
+
+struct firn_expect {
+    const struct firn_memory *memory;
+    struct firn_names *listed;
+    struct firn_names *aliases;
+};
+
+static enum firn_status make(const struct firn_memory *memory, struct firn_expect **out)
+{
+    struct firn_expect *expect = firn_memory_get_zeroed(memory, 1, sizeof *expect);
+    enum firn_status status;
+
+    *out = NULL;
+    if (expect == NULL)
+        return FIRN_NO_MEMORY;
+    expect->memory = memory;
+    status = firn_names_make(memory, sizeof(struct listed), &expect->listed);
+    if (status == FIRN_OK)
+        status = firn_names_make(memory, sizeof(struct alias), &expect->aliases);
+    if (status != FIRN_OK) {
+        firn_expect_free(expect);
+        return status;
+    }
+    *out = expect;
+    return FIRN_OK;
+}
+
+void firn_expect_free(struct firn_expect *expect)
+{
+    if (expect == NULL)
+        return;
+    firn_names_free(expect->listed);
+    firn_names_free(expect->aliases);
+    expect->memory->put(expect->memory->self, expect);
+}
+
+/* ---- one line ---- */
+
+/* Turns what a line says for LF, CR, % or \ into the byte it stands for, in place. */
+static void decode(char *path, bool backslashes)
+{
+    static const struct { const char *written; char meant; } percents[] = {
+        { "%0A", '\n' }, { "%0a", '\n' }, { "%0D", '\r' }, { "%0d", '\r' }, { "%25", '%' },
+    }, slashes[] = { { "\\n", '\n' }, { "\\r", '\r' }, { "\\\\", '\\' } };
+    char *to = path;
+
+    while (*path != '\0') {
+        char meant = *path;
+        size_t bytes = 1;
+
+        for (size_t i = 0; !backslashes && i < sizeof percents / sizeof percents[0]; i++)
+            if (strncmp(path, percents[i].written, 3) == 0) {
+                meant = percents[i].meant;
+                bytes = 3;
+            }
+        for (size_t i = 0; backslashes && i < sizeof slashes / sizeof slashes[0]; i++)
+            if (strncmp(path, slashes[i].written, 2) == 0) {
+                meant = slashes[i].meant;
+                bytes = 2;
+            }
+        *to++ = meant;
+        path += bytes;
+    }
+    *to = '\0';
+}
+
+/* Enters a path with its digest; a path that is there already must have the same. */
+static enum firn_status enter(struct firn_expect *expect, const char *path, const uint8_t *sha256, struct listed **out,
+                              const char **fault)
+{
+    char stored[FIRN_STORED_NAME_ROOM];
+    void *record;
+    bool fresh;
+    enum firn_status status = firn_stored_name_make(path, stored, NULL);
+
+    if (status != FIRN_OK || stored[0] == '\0') {
+        *fault = "a path that is no path";
+        return FIRN_BAD_DATA;
+    }
+    status = firn_names_add(expect->listed, stored, strlen(stored), &record, &fresh);
+    if (status != FIRN_OK)
+        return status;
+    *out = record;
+    if (fresh) {
+        memcpy((*out)->sha256, sha256, FIRN_ITEM_SHA256_BYTES);
+        return FIRN_OK;
+    }
+    if (memcmp((*out)->sha256, sha256, FIRN_ITEM_SHA256_BYTES) != 0) {
+        *fault = "a path named twice with different digests";
+        return FIRN_BAD_DATA;
+    }
+    return FIRN_OK;
+}
+
+/* The path as it stands leads to the same, unless it is listed itself. */
+static enum firn_status enter_alias(struct firn_expect *expect, const char *path, struct listed *listed)
+{
+    char stored[FIRN_STORED_NAME_ROOM];
+    void *record;
+    enum firn_status status;
+
+    if (firn_stored_name_make(path, stored, NULL) != FIRN_OK)
+        return FIRN_OK;
+    status = firn_names_add(expect->aliases, stored, strlen(stored), &record, NULL);
+    if (status == FIRN_OK)
+        ((struct alias *)record)->listed = listed;
+    return status;
+}
+
+/* One line without its end, which may be changed. */
+static enum firn_status take_line(struct firn_expect *expect, char *line, const char **fault)
+{
+    uint8_t sha256[FIRN_ITEM_SHA256_BYTES];
+    bool backslashes = line[0] == '\\';
+    struct listed *listed = NULL;
+    size_t digits, blanks;
+    enum firn_status status;
+    char *path;
+    char raw[FIRN_STORED_NAME_ROOM];
+
+    line += backslashes;
+    digits = strcspn(line, " \t");
+    if (digits != DIGEST_DIGITS || firn_text_parse_hex(line, FIRN_ITEM_SHA256_BYTES, sha256) != FIRN_OK) {
+        *fault = "no SHA-256 at the start of a line";
+        return FIRN_BAD_DATA;
+    }
+    blanks = strspn(line + digits, " \t");
+    path = line + digits + blanks;
+    if (blanks == 0 || path[0] == '\0') {
+        *fault = "a digest without a path";
+        return FIRN_BAD_DATA;
+    }
+    raw[0] = '\0';
+    if (strlen(path) < sizeof raw && (path[0] == '*' || strchr(path, '%') != NULL))
+        memcpy(raw, path, strlen(path) + 1);
+    path += path[0] == '*';
+    decode(path, backslashes);
+    status = enter(expect, path, sha256, &listed, fault);
+    return status == FIRN_OK && raw[0] != '\0' ? enter_alias(expect, raw, listed) : status;
+}
+
+/* ---- all lines ---- */
+
+/* What of a line has come so far. */
+struct reading {
+    struct firn_expect *expect;
+    char *line;                  /* LINE_MAX_BYTES */
+    size_t used;
+    uint64_t number;             /* of the line, from 1 */
+    bool after_cr;
+    const char *fault;
+};
+
+static enum firn_status end_line(struct reading *reading)
+{
+    enum firn_status status = FIRN_OK;
+
+    reading->line[reading->used] = '\0';
+    if (memchr(reading->line, '\0', reading->used) != NULL) {
+        reading->fault = "a NUL in a line";
+        return FIRN_BAD_DATA;
+    }
+    if (reading->used > 0)
+        status = take_line(reading->expect, reading->line, &reading->fault);
+    reading->used = 0;
+    reading->number += status == FIRN_OK;
+    return status;
+}
+
+static enum firn_status take_byte(struct reading *reading, char byte)
+{
+    bool half_end = byte == '\n' && reading->after_cr;
+
+    reading->after_cr = byte == '\r';
+    if (half_end)
+        return FIRN_OK;
+    if (byte == '\n' || byte == '\r')
+        return end_line(reading);
+    if (reading->used == LINE_MAX_BYTES - 1) {
+        reading->fault = "a line that is too long";
+        return FIRN_BAD_DATA;
+    }
+    reading->line[reading->used++] = byte;
+    return FIRN_OK;
+}
+
+static enum firn_status read_all(struct reading *reading, int descriptor, char *portion, int *os_error)
+{
+    enum firn_status status = FIRN_OK;
+    ssize_t got = 1;
+
+    while (got != 0 && status == FIRN_OK) {
+        got = read(descriptor, portion, PORTION_BYTES);
+        if (got < 0 && errno == EINTR)
+            continue;
+        if (got < 0) {
+            *os_error = errno;
+            return FIRN_IO;
+        }
+        for (ssize_t i = 0; i < got && status == FIRN_OK; i++)
+            status = take_byte(reading, portion[i]);
+    }
+    return status == FIRN_OK ? end_line(reading) : status;
+}
+
+enum firn_status firn_expect_load(int descriptor, const struct firn_memory *memory, struct firn_fault *fault,
+                                  struct firn_expect **out)
+{
+    char *room = memory->get(memory->self, PORTION_BYTES + LINE_MAX_BYTES);
+    struct reading reading = { .number = 1, .fault = "" };
+    enum firn_status status = FIRN_NO_MEMORY;
+    int os_error = 0;
+
+    *out = NULL;
+    if (room != NULL)
+        status = make(memory, &reading.expect);
+    if (status == FIRN_OK) {
+        reading.line = room + PORTION_BYTES;
+        status = read_all(&reading, descriptor, room, &os_error);
+    }
+    memory->put(memory->self, room);
+    if (status != FIRN_OK) {
+        firn_expect_free(reading.expect);
+        return firn_fault_tell(fault, status, os_error, reading.number, reading.fault);
+    }
+    *out = reading.expect;
+    return FIRN_OK;
+}
+
+enum firn_status firn_expect_open(const char *path, const struct firn_memory *memory, struct firn_fault *fault,
+                                  struct firn_expect **out)
+{
+    enum firn_status status;
+    int descriptor;
+
+    if (strcmp(path, "-") == 0)
+        return firn_expect_load(STDIN_FILENO, memory, fault, out);
+    *out = NULL;
+    descriptor = open(path, O_RDONLY | O_CLOEXEC);
+    if (descriptor < 0)
+        return firn_fault_tell(fault, FIRN_NO_INPUT, errno, 0, path);
+    status = firn_expect_load(descriptor, memory, fault, out);
+    close(descriptor);
+    return status;
+}
+
+/* ---- asking ---- */
+
+uint64_t firn_expect_count(const struct firn_expect *expect)
+{
+    return firn_names_count(expect->listed);
+}
+
+static struct listed *look_up(const struct firn_expect *expect, const char *path)
+{
+    size_t bytes = strlen(path);
+    struct listed *listed = firn_names_find(expect->listed, path, bytes);
+    const struct alias *alias = listed != NULL ? NULL : firn_names_find(expect->aliases, path, bytes);
+
+    return alias != NULL ? alias->listed : listed;
+}
+
+/* The three readings of a stored name, in the order that firn/expect.h gives. */
+static struct listed *look_up_item(const struct firn_expect *expect, const char *name, size_t operand_bytes)
+{
+    size_t last = operand_bytes;
+    struct listed *listed = look_up(expect, name);
+
+    while (last > 0 && name[last - 1] != '/')
+        last--;
+    if (listed == NULL)
+        listed = look_up(expect, name + last);
+    if (listed == NULL && name[operand_bytes] == '/')
+        listed = look_up(expect, name + operand_bytes + 1);
+    return listed;
+}
+
+enum firn_expect_verdict firn_expect_see(struct firn_expect *expect, const char *name, size_t operand_bytes,
+                                         const uint8_t sha256[FIRN_ITEM_SHA256_BYTES])
+{
+    struct listed *listed = look_up_item(expect, name, operand_bytes);
+
+    if (listed == NULL)
+        return FIRN_EXPECT_UNLISTED;
+    listed->seen = true;
+    listed->matched = memcmp(listed->sha256, sha256, FIRN_ITEM_SHA256_BYTES) == 0;
+    return listed->matched ? FIRN_EXPECT_MATCH : FIRN_EXPECT_MISMATCH;
+}
+
+enum firn_expect_verdict firn_expect_see_link(struct firn_expect *expect, const char *name, size_t operand_bytes,
+                                              const char *target)
+{
+    const struct listed *listed = look_up_item(expect, target, operand_bytes);
+
+    if (listed == NULL || !listed->matched)
+        return FIRN_EXPECT_UNLISTED;
+    return firn_expect_see(expect, name, operand_bytes, listed->sha256);
+}
+
+uint64_t firn_expect_missing(const struct firn_expect *expect, void (*missing)(void *self, const char *path),
+                             void *self)
+{
+    uint64_t count = 0;
+
+    for (size_t i = 0; i < firn_names_count(expect->listed); i++) {
+        const char *path;
+        const struct listed *listed = firn_names_at(expect->listed, i, &path);
+
+        if (listed->seen)
+            continue;
+        count++;
+        if (missing != NULL)
+            missing(self, path);
+    }
+    return count;
+}
