@@ -1,8 +1,8 @@
 /*
  * firn/item.h - one item of a collection as the catalogue has it
  *
- * Room: container. An item is its pax header (POSIX.1-2001, IEEE Std 1003.1), which the container carries without reading
- * it, and where its content lies. Content space is the stored content of all items end to end.
+ * Room: container. An item is its pax header (POSIX.1-2001, IEEE Std 1003.1), which the container carries without
+ * reading it, and where its content lies. Content space is the stored content of all items end to end.
  *
  * SPDX-License-Identifier: BSD-2-Clause
  */

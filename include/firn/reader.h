@@ -1,9 +1,9 @@
 /*
  * firn/reader.h - reading a container: its layout, its items, their content, repaired on the way
  *
- * Room: container. Nothing is handed out as good unless a 128-bit hash of exactly those bytes says so. Damaged blocks are
- * mended from themselves, else rebuilt from their sheet, else told of as lost. The container is never written to. Memory is
- * bounded by one sheet and a few segments.
+ * Room: container. Nothing is handed out as good unless a 128-bit hash of exactly those bytes says so. Damaged blocks
+ * are mended from themselves, else rebuilt from their sheet, else told of as lost. The container is never written to.
+ * Memory is bounded by one sheet and a few segments.
  *
  * SPDX-License-Identifier: BSD-2-Clause
  */
@@ -59,7 +59,10 @@ FIRN_API void firn_reader_free(struct firn_reader *reader);      /* takes NULL *
 FIRN_API const struct firn_reader_layout *firn_reader_layout_of(const struct firn_reader *reader);
 FIRN_API void firn_reader_damage_so_far(const struct firn_reader *reader, struct firn_reader_damage *damage);
 
-/* The title page (4096 bytes) from its protected copy, else from page 0. FIRN_OK, or FIRN_LOST when only page 0 is there. */
+/*
+ * The title page (4096 bytes) from its protected copy, else from page 0. FIRN_OK, or FIRN_LOST when only page 0 is
+ * there.
+ */
 FIRN_API enum firn_status firn_reader_title_page(struct firn_reader *reader, uint8_t page[4096]);
 
 /* Why a stretch of an item is missing. */
@@ -72,7 +75,7 @@ enum firn_reader_loss {
 /* How an item came out. */
 struct firn_reader_outcome {
     uint64_t lost_bytes;          /* of its stored bytes */
-    bool sum_known, sum_right;    /* SHA-256 of the whole against the catalogue; right is meaningful when lost_bytes is 0 */
+    bool sum_known, sum_right;    /* SHA-256 of the whole against the catalogue; right only if lost_bytes is 0 */
     uint8_t sha256[FIRN_ITEM_SHA256_BYTES];     /* of the bytes handed out, when lost_bytes is 0 */
 };
 
@@ -87,13 +90,18 @@ struct firn_reader_visitor {
     /* foreseen_lost_bytes  with foresight: how much of the content cannot be had; else 0 */
     enum firn_status (*begin)(void *self, const struct firn_item *item, uint64_t foreseen_lost_bytes);
     /* Good bytes at `at` of the file; ascending; holes are not called for. NULL: content is not needed, nor read. */
-    enum firn_status (*bytes)(void *self, const struct firn_item *item, uint64_t at, const uint8_t *bytes, size_t count);
-    /* Bytes at `at` of the file that are lost, and where on the medium: the file offset of the first block concerned. */
+    enum firn_status (*bytes)(void *self, const struct firn_item *item, uint64_t at, const uint8_t *bytes,
+                              size_t count);
+    /*
+     * Bytes at `at` of the file that are lost, and where on the medium: the file offset of the first block concerned.
+     */
     enum firn_status (*gap)(void *self, const struct firn_item *item, uint64_t at, uint64_t count,
                             enum firn_reader_loss why, uint64_t container_at);
     enum firn_status (*end)(void *self, const struct firn_item *item, const struct firn_reader_outcome *outcome);
-    /* Asks to know at begin whether all content can be had, at the price of reading it twice: for outputs that cannot take
-       a beginning back. */
+    /*
+     * Asks to know at begin whether all content can be had, at the price of reading it twice: for outputs that cannot
+     * take a beginning back.
+     */
     bool foresight;
 };
 
@@ -104,7 +112,10 @@ struct firn_reader_walk_report {
     bool cut_short;               /* the end of the container is gone, so there may have been more items */
 };
 
-/* Goes through the catalogue from the start. FIRN_OK also when items are damaged or unknown: the visitor and report tell. */
+/*
+ * Goes through the catalogue from the start. FIRN_OK also when items are damaged or unknown: the visitor and report
+ * tell.
+ */
 FIRN_API enum firn_status firn_reader_walk(struct firn_reader *reader, const struct firn_reader_visitor *visitor,
                                            struct firn_fault *fault, struct firn_reader_walk_report *report);
 

@@ -1,8 +1,8 @@
 /*
  * firn/writer.h - writing a container, item by item, to a file or a pipe
  *
- * Room: container. Memory is bounded by the sheet, whatever the collection. Same items, same options, same nonce: the same
- * bytes, whatever the number of threads. Layout of what is written: format-spec/.
+ * Room: container. Memory is bounded by the sheet, whatever the collection. Same items, same options, same nonce: the
+ * same bytes, whatever the number of threads. Layout of what is written: format-spec/.
  *
  * SPDX-License-Identifier: BSD-2-Clause
  */
@@ -16,7 +16,10 @@
 
 enum { FIRN_WRITER_NONCE_BYTES = 16 };
 
-/* What the title page says of the collection; UTF-8 without control characters; NULL or "" where there is nothing to say. */
+/*
+ * What the title page says of the collection; UTF-8 without control characters; NULL or "" where there is nothing to
+ * say.
+ */
 struct firn_writer_title {
     const char *accession, *title, *custodian, *note;
     int64_t date;                      /* seconds since 1970-01-01T00:00:00Z */
@@ -30,7 +33,7 @@ struct firn_writer_options {
     struct firn_sheet_geometry geometry;
     enum firn_segment_effort effort;
     struct firn_writer_title title;
-    uint8_t nonce[FIRN_WRITER_NONCE_BYTES];   /* makes the container's id its own; the id also depends on what is packed */
+    uint8_t nonce[FIRN_WRITER_NONCE_BYTES];   /* makes the id the container's own; it also depends on what is packed */
     /* asked now and then; true stops the work with FIRN_STOPPED. May be NULL. */
     bool (*stop)(void *self);
     void *stop_self;
@@ -59,9 +62,9 @@ FIRN_API enum firn_status firn_writer_make(const struct firn_writer_options *opt
 FIRN_API void firn_writer_free(struct firn_writer *writer);
 
 /*
- * Announces the next item. Of `item` the fields pax, pax_bytes, has_content, bytes, extents and extent_count are read; the
- * arrays are lent for the call. Every item is ended (firn_writer_end) or withdrawn before the next one. Number, place and
- * digest are the writer's affair.
+ * Announces the next item. Of `item` the fields pax, pax_bytes, has_content, bytes, extents and extent_count are read;
+ * the arrays are lent for the call. Every item is ended (firn_writer_end) or withdrawn before the next one. Number,
+ * place and digest are the writer's affair.
  */
 FIRN_API enum firn_status firn_writer_item(struct firn_writer *writer, const struct firn_item *item);
 
@@ -72,8 +75,8 @@ FIRN_API enum firn_status firn_writer_content(struct firn_writer *writer, const 
 FIRN_API enum firn_status firn_writer_end(struct firn_writer *writer, uint8_t *sha256);
 
 /*
- * Takes the announced item back because its source failed. *traceless tells whether no trace of it is left; otherwise it
- * stands in the catalogue as an item whose content was never written, and readers say so.
+ * Takes the announced item back because its source failed. *traceless tells whether no trace of it is left; otherwise
+ * it stands in the catalogue as an item whose content was never written, and readers say so.
  */
 FIRN_API enum firn_status firn_writer_withdraw(struct firn_writer *writer, bool *traceless);
 

@@ -49,14 +49,14 @@ enum firn_status firn_text_parse_count(const char *words, uint64_t *count);
 size_t firn_text_utf8(const char *bytes, size_t count);
 
 /*
- * A file name for a terminal: control characters, backslashes and bytes that are no UTF-8 as \n, \t, \\ or \xHH, so that a
- * name can neither move the cursor nor break a line.
+ * A file name for a terminal: control characters, backslashes and bytes that are no UTF-8 as \n, \t, \\ or \xHH, so
+ * that a name can neither move the cursor nor break a line.
  */
 void firn_text_add_name(struct firn_text *text, const char *name);
 
 /*
- * A JSON string with its quotes (RFC 8259). A byte that is no UTF-8 becomes U+FFFD, since JSON has no way to say it; then the
- * result is false, and whoever needs the bytes must tell them apart.
+ * A JSON string with its quotes (RFC 8259). A byte that is no UTF-8 becomes U+FFFD, since JSON has no way to say it;
+ * then the result is false, and whoever needs the bytes must tell them apart.
  */
 bool firn_text_add_json(struct firn_text *text, const char *string);
 

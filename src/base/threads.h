@@ -1,8 +1,8 @@
 /*
  * base/threads.h - a few threads that share out numbered jobs
  *
- * Room: base. One set of jobs at a time. The calling thread is worker 0 and helps while it waits, so one thread in all is
- * a valid crew and the order of results never depends on the number: a job writes only what belongs to its index.
+ * Room: base. One set of jobs at a time. The calling thread is worker 0 and helps while it waits, so one thread in all
+ * is a valid crew and the order of results never depends on the number: a job writes only what belongs to its index.
  *
  * SPDX-License-Identifier: BSD-2-Clause
  */

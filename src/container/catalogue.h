@@ -1,9 +1,9 @@
 /*
  * container/catalogue.h - entries, batches, sums and index parts as bytes
  *
- * Room: container. A part of the catalogue is what one window of the writer holds: a batch of entries (or none, inside a
- * large file), the sums of the items that end in it, and the places of its segments. It stands twice: spread over BATCH,
- * SUMS and SEGMENT records where its content is, and whole in an INDEX record. Layout: format-spec/catalogue.md.
+ * Room: container. A part of the catalogue is what one window of the writer holds: a batch of entries (or none, inside
+ * a large file), the sums of the items that end in it, and the places of its segments. It stands twice: spread over
+ * BATCH, SUMS and SEGMENT records where its content is, and whole in an INDEX record. Layout: format-spec/catalogue.md.
  *
  * SPDX-License-Identifier: BSD-2-Clause
  */
@@ -70,7 +70,8 @@ void firn_catalogue_put_sum(const struct firn_catalogue_sum *sum, uint8_t *bytes
 void firn_catalogue_get_sum(const uint8_t *bytes, struct firn_catalogue_sum *sum);
 void firn_catalogue_seal_sums(uint32_t count, uint8_t *body);
 /* *sums points to count sums inside body */
-enum firn_status firn_catalogue_open_sums(const uint8_t *body, size_t body_bytes, uint32_t *count, const uint8_t **sums);
+enum firn_status firn_catalogue_open_sums(const uint8_t *body, size_t body_bytes, uint32_t *count,
+                                          const uint8_t **sums);
 
 /* --- segments --- */
 

@@ -82,15 +82,16 @@ void firn_decoder_forget(struct firn_decoder *decoder)
 }
 
 /* Reads the body of a place. What is wrong with it stands in the slot; returned are only reasons to give up. */
-static enum firn_status read_slot(struct firn_decoder *decoder, const struct firn_catalogue_place *place, struct slot *slot)
+static enum firn_status read_slot(struct firn_decoder *decoder, const struct firn_catalogue_place *place,
+                                  struct slot *slot)
 {
     struct firn_sheets_gap gap;
     struct firn_catalogue_place told;
 
     slot->place = *place;
     slot->container_at = 0;
-    slot->status = firn_sheets_read(decoder->sheets, place->at + FIRN_RECORD_HEADER_BYTES, slot->body, place->body_bytes,
-                                    &gap);
+    slot->status = firn_sheets_read(decoder->sheets, place->at + FIRN_RECORD_HEADER_BYTES, slot->body,
+                                    place->body_bytes, &gap);
     if (slot->status == FIRN_NO_MEMORY || slot->status == FIRN_STOPPED)
         return slot->status;
     if (slot->status != FIRN_OK) {
@@ -114,8 +115,8 @@ static void decode_slot(void *self, size_t index, unsigned worker)
     if (slot->status != FIRN_OK)
         return;
     if (firn_segment_decode(slot->body + FIRN_CATALOGUE_SEGMENT_HEAD_BYTES,
-                            slot->place.body_bytes - FIRN_CATALOGUE_SEGMENT_HEAD_BYTES, slot->raw, slot->place.raw_bytes,
-                            work) != FIRN_OK ||
+                            slot->place.body_bytes - FIRN_CATALOGUE_SEGMENT_HEAD_BYTES, slot->raw,
+                            slot->place.raw_bytes, work) != FIRN_OK ||
         !firn_hash_matches(slot->raw, slot->place.raw_bytes, slot->body + FIRN_CATALOGUE_SEGMENT_HASH_AT))
         slot->status = FIRN_MISMATCH;
 }

@@ -38,8 +38,8 @@ struct firn_parts {
 
 /* --- records --- */
 
-enum firn_status firn_parts_find_record(struct firn_sheets *sheets, uint64_t at, uint64_t limit, struct firn_record *record,
-                                        bool *skipped)
+enum firn_status firn_parts_find_record(struct firn_sheets *sheets, uint64_t at, uint64_t limit,
+                                        struct firn_record *record, bool *skipped)
 {
     uint8_t header[FIRN_RECORD_HEADER_BYTES];
     struct firn_sheets_gap gap;
@@ -123,15 +123,16 @@ static bool parse_colophon(const char *words, struct firn_parts_colophon *coloph
     if (sealed == NULL || digest == NULL)
         return false;
     covered = (size_t)(sealed - words) + sizeof seal - 1;
-    if (strlen(words + covered) < 2 * sizeof hash || firn_text_parse_hex(words + covered, sizeof hash, hash) != FIRN_OK ||
+    if (strlen(words + covered) < 2 * sizeof hash ||
+        firn_text_parse_hex(words + covered, sizeof hash, hash) != FIRN_OK ||
         !firn_hash_matches((const uint8_t *)words, covered, hash))
         return false;
     return number_of(words, "items", &colophon->items) && number_of(words, "withdrawn", &colophon->withdrawn) &&
            number_of(words, "content-bytes", &colophon->content_bytes) &&
            number_of(words, "stored-bytes", &colophon->stored_bytes) &&
-           number_of(words, "segments", &colophon->segments) && number_of(words, "segment-bytes", &colophon->coded_bytes) &&
-           number_of(words, "parts", &colophon->parts) && number_of(words, "index-at", &colophon->index_at) &&
-           colophon->index_at % FIRN_RECORD_ALIGNMENT == 0 &&
+           number_of(words, "segments", &colophon->segments) &&
+           number_of(words, "segment-bytes", &colophon->coded_bytes) && number_of(words, "parts", &colophon->parts) &&
+           number_of(words, "index-at", &colophon->index_at) && colophon->index_at % FIRN_RECORD_ALIGNMENT == 0 &&
            firn_text_parse_hex(digest, sizeof colophon->catalogue_sha256, colophon->catalogue_sha256) == FIRN_OK;
 }
 
@@ -265,7 +266,8 @@ uint64_t firn_parts_index_lost(const struct firn_parts *parts)
 static enum firn_status decode_entries(struct firn_parts *parts, struct firn_parts_part *part)
 {
     void *entries = parts->entries;
-    enum firn_status status = firn_memory_grow(parts->memory, &entries, &parts->entries_capacity, part->batch.raw_bytes, 1);
+    enum firn_status status = firn_memory_grow(parts->memory, &entries, &parts->entries_capacity, part->batch.raw_bytes,
+                                               1);
 
     parts->entries = entries;
     if (status == FIRN_OK)
@@ -278,7 +280,8 @@ static enum firn_status decode_entries(struct firn_parts *parts, struct firn_par
 static enum firn_status add_place(struct firn_parts *parts, const struct firn_catalogue_place *place, size_t *count)
 {
     void *places = parts->places;
-    enum firn_status status = firn_memory_grow(parts->memory, &places, &parts->places_capacity, *count + 1, sizeof *place);
+    enum firn_status status = firn_memory_grow(parts->memory, &places, &parts->places_capacity, *count + 1,
+                                               sizeof *place);
 
     parts->places = places;
     if (status == FIRN_OK)
@@ -322,7 +325,8 @@ static enum firn_status next_from_index(struct firn_parts *parts, struct firn_pa
         struct firn_catalogue_index index;
         struct firn_record record;
         bool skipped = false;
-        enum firn_status status = firn_parts_find_record(parts->sheets, parts->index_at, parts->index_end, &record, &skipped);
+        enum firn_status status = firn_parts_find_record(parts->sheets, parts->index_at, parts->index_end, &record,
+                                                         &skipped);
 
         if (fatal(status))
             return status;
@@ -360,7 +364,8 @@ static enum firn_status next_from_index(struct firn_parts *parts, struct firn_pa
 }
 
 /* Adds what a record in the stream tells to the part being put together. */
-static enum firn_status take_record(struct firn_parts *parts, const struct firn_record *record, struct firn_parts_part *part)
+static enum firn_status take_record(struct firn_parts *parts, const struct firn_record *record,
+                                    struct firn_parts_part *part)
 {
     enum firn_status status = FIRN_OK;
 

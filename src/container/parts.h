@@ -1,8 +1,8 @@
 /*
  * container/parts.h - the catalogue of a container, part by part
  *
- * Room: container. A part comes from its INDEX record; where that is gone, from the BATCH, SEGMENT and SUMS records in the
- * stream, found again after every gap.
+ * Room: container. A part comes from its INDEX record; where that is gone, from the BATCH, SEGMENT and SUMS records in
+ * the stream, found again after every gap.
  *
  * SPDX-License-Identifier: BSD-2-Clause
  */
@@ -32,7 +32,7 @@ struct firn_parts_part {
     uint32_t sum_count;
     const struct firn_catalogue_place *places;  /* ascending in content space */
     size_t place_count;
-    bool complete;                              /* nothing of it was lost: a place that is not told of was never written */
+    bool complete;                              /* nothing of it was lost: what is not told of was never written */
 };
 
 /* sheets are lent. FIRN_OK also when neither colophon nor index can be found. */
@@ -49,10 +49,10 @@ enum firn_status firn_parts_next(struct firn_parts *parts, struct firn_parts_par
 uint64_t firn_parts_index_lost(const struct firn_parts *parts);
 
 /*
- * Finds the next record at or after `at`, below limit; passes over what is damaged and says so in *skipped (which is never
- * set back). FIRN_OK, FIRN_END, FIRN_NO_MEMORY, FIRN_STOPPED.
+ * Finds the next record at or after `at`, below limit; passes over what is damaged and says so in *skipped (which is
+ * never set back). FIRN_OK, FIRN_END, FIRN_NO_MEMORY, FIRN_STOPPED.
  */
-enum firn_status firn_parts_find_record(struct firn_sheets *sheets, uint64_t at, uint64_t limit, struct firn_record *record,
-                                        bool *skipped);
+enum firn_status firn_parts_find_record(struct firn_sheets *sheets, uint64_t at, uint64_t limit,
+                                        struct firn_record *record, bool *skipped);
 
 #endif

@@ -45,7 +45,8 @@ enum firn_status firn_press_make(const struct firn_press_options *options, struc
     memcpy(press->page, options->page, sizeof press->page);
     memcpy(press->chain, options->nonce, FIRN_HASH_BYTES);
     press->sheet = press->memory->get(press->memory->self, blocks * FIRN_BLOCK_BYTES);
-    press->work = press->memory->get(press->memory->self, firn_reserve_work_bytes() * firn_threads_count(press->threads));
+    press->work = press->memory->get(press->memory->self,
+                                     firn_reserve_work_bytes() * firn_threads_count(press->threads));
     if (press->sheet == NULL || press->work == NULL) {
         firn_press_free(press);
         return FIRN_NO_MEMORY;

@@ -39,6 +39,7 @@ struct firn_press_totals {
 };
 
 /* Writes the last sheet. The stream must not be empty. */
-enum firn_status firn_press_finish(struct firn_press *press, struct firn_fault *fault, struct firn_press_totals *totals);
+enum firn_status firn_press_finish(struct firn_press *press, struct firn_fault *fault,
+                                   struct firn_press_totals *totals);
 
 #endif

@@ -7,8 +7,9 @@
 
 #include <string.h>
 
-static enum firn_status check_sheets(const struct firn_reader_options *options, void (*progress)(void *self, uint64_t blocks),
-                                     void *progress_self, struct firn_fault *fault)
+static enum firn_status check_sheets(const struct firn_reader_options *options,
+                                     void (*progress)(void *self, uint64_t blocks), void *progress_self,
+                                     struct firn_fault *fault)
 {
     struct firn_sheets_options sheets_options = {
         .store = options->store, .memory = options->memory, .threads = options->threads, .stop = options->stop,
@@ -35,7 +36,8 @@ static enum firn_status check_sheets(const struct firn_reader_options *options, 
 }
 
 enum firn_status firn_readback(const struct firn_reader_options *options, const struct firn_writer_totals *totals,
-                               void (*progress)(void *self, uint64_t blocks), void *progress_self, struct firn_fault *fault)
+                               void (*progress)(void *self, uint64_t blocks), void *progress_self,
+                               struct firn_fault *fault)
 {
     struct firn_store *store = options->store;
     struct firn_reader *reader;

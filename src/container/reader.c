@@ -176,7 +176,8 @@ static bool pass_wants(void *self, const struct firn_item *item)
     return visitor->wants == NULL || visitor->wants(visitor->self, item);
 }
 
-static enum firn_status pass_bytes(void *self, const struct firn_item *item, uint64_t at, const uint8_t *bytes, size_t count)
+static enum firn_status pass_bytes(void *self, const struct firn_item *item, uint64_t at, const uint8_t *bytes,
+                                   size_t count)
 {
     const struct firn_reader_visitor *visitor = ((struct foresight *)self)->visitor;
 

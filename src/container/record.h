@@ -1,8 +1,9 @@
 /*
  * container/record.h - the pieces of the stream, each with a header that can be found again after a gap
  *
- * Room: container. A record starts at a multiple of 32 in the stream, so its header never straddles two blocks; the header
- * names its own place, so that a header copied into some file's content is not taken for one. Layout: format-spec/stream.md.
+ * Room: container. A record starts at a multiple of 32 in the stream, so its header never straddles two blocks; the
+ * header names its own place, so that a header copied into some file's content is not taken for one. Layout:
+ * format-spec/stream.md.
  *
  * SPDX-License-Identifier: BSD-2-Clause
  */

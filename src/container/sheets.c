@@ -67,7 +67,8 @@ uint64_t firn_sheets_stream_bytes(const struct firn_sheets *sheets)
     return sheets->layout.data_blocks * FIRN_BLOCK_PAYLOAD_BYTES;
 }
 
-void firn_sheets_shape(const struct firn_sheets *sheets, uint64_t index, struct firn_sheet_shape *shape, uint64_t *first_block)
+void firn_sheets_shape(const struct firn_sheets *sheets, uint64_t index, struct firn_sheet_shape *shape,
+                       uint64_t *first_block)
 {
     const struct firn_reader_layout *layout = &sheets->layout;
 
@@ -81,16 +82,16 @@ void firn_sheets_shape(const struct firn_sheets *sheets, uint64_t index, struct 
 /* --- raw reading --- */
 
 /*
- * Reads blocks first .. first + count - 1. Where the medium gives an error, block by block; absent[i] tells which could not
- * be read at all.
+ * Reads blocks first .. first + count - 1. Where the medium gives an error, block by block; absent[i] tells which could
+ * not be read at all.
  */
 static void read_raw(struct firn_sheets *sheets, uint64_t first, uint32_t count, uint8_t *bytes, bool *absent)
 {
     struct firn_store *store = sheets->store;
     size_t got = 0, had;
     int os_error = 0;
-    enum firn_status status = store->read_at(store->self, firn_sheets_place(first), bytes, (size_t)count * FIRN_BLOCK_BYTES,
-                                             &got, &os_error);
+    enum firn_status status = store->read_at(store->self, firn_sheets_place(first), bytes,
+                                             (size_t)count * FIRN_BLOCK_BYTES, &got, &os_error);
     bool failed = status != FIRN_OK;
 
     had = got / FIRN_BLOCK_BYTES;
@@ -137,12 +138,13 @@ static enum firn_status find_first(struct firn_sheets *sheets, struct firn_block
 
 static bool same_container(const struct firn_block_tag *a, const struct firn_block_tag *b)
 {
-    return memcmp(a->id, b->id, sizeof a->id) == 0 && a->geometry.k == b->geometry.k && a->geometry.m == b->geometry.m &&
-           a->geometry.depth == b->geometry.depth;
+    return memcmp(a->id, b->id, sizeof a->id) == 0 && a->geometry.k == b->geometry.k &&
+           a->geometry.m == b->geometry.m && a->geometry.depth == b->geometry.depth;
 }
 
 /* The last good block of this container, from the back. There is one: find_first found it, at the latest. */
-static enum firn_status find_last(struct firn_sheets *sheets, const struct firn_block_tag *like, struct firn_block_tag *tag)
+static enum firn_status find_last(struct firn_sheets *sheets, const struct firn_block_tag *like,
+                                  struct firn_block_tag *tag)
 {
     bool absent[CHUNK_BLOCKS], foreign = false;
     uint64_t end = sheets->blocks_in_file;
@@ -257,7 +259,9 @@ void firn_sheets_close(struct firn_sheets *sheets)
 
 /* --- judging --- */
 
-/* Counts a damaged block, once however often it is read. Without memory for the mark it may count twice: only a figure. */
+/*
+ * Counts a damaged block, once however often it is read. Without memory for the mark it may count twice: only a figure.
+ */
 static void count_damage(struct firn_sheets *sheets, uint64_t number, enum firn_sheets_finding finding, bool absent)
 {
     uint32_t full = firn_sheet_full_blocks(&sheets->layout.geometry);
@@ -304,8 +308,8 @@ static enum firn_sheets_finding judge(uint8_t *block, const struct firn_block_ta
 }
 
 /* Whether all of count blocks from `at` on are sound, of those that stand at bytes; absent: NULL when all are there. */
-static bool all_sound(const struct firn_sheets *sheets, const struct firn_sheet_shape *shape, uint64_t first, uint32_t at,
-                      uint32_t count, uint8_t *bytes, const bool *absent)
+static bool all_sound(const struct firn_sheets *sheets, const struct firn_sheet_shape *shape, uint64_t first,
+                      uint32_t at, uint32_t count, uint8_t *bytes, const bool *absent)
 {
     for (uint32_t i = 0; i < count; i++) {
         struct firn_block_tag expected = expected_tag(sheets, shape, first, at + i);
@@ -473,7 +477,8 @@ enum firn_status firn_sheets_mend(struct firn_sheets *sheets, uint64_t index, co
 /* --- the stream --- */
 
 /* Reads on from data block `number`, as far as blocks are good; chunk_count is 0 when this one is not. */
-static void load_chunk(struct firn_sheets *sheets, uint64_t number, const struct firn_sheet_shape *shape, uint64_t first)
+static void load_chunk(struct firn_sheets *sheets, uint64_t number, const struct firn_sheet_shape *shape,
+                       uint64_t first)
 {
     uint32_t index = (uint32_t)(number - first), left = shape->data_blocks - index;
     uint32_t count = left < CHUNK_BLOCKS ? left : CHUNK_BLOCKS;

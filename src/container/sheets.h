@@ -1,8 +1,8 @@
 /*
  * container/sheets.h - the blocks of a container in its store, judged, mended, rebuilt
  *
- * Room: container. Used by the reader (stream by stream) and by care (sheet by sheet). Finds the layout from any one good
- * block; the title page is in the first 4096 bytes, block n at 4096 * (n + 1).
+ * Room: container. Used by the reader (stream by stream) and by care (sheet by sheet). Finds the layout from any one
+ * good block; the title page is in the first 4096 bytes, block n at 4096 * (n + 1).
  *
  * SPDX-License-Identifier: BSD-2-Clause
  */
@@ -44,7 +44,8 @@ void firn_sheets_damage(const struct firn_sheets *sheets, struct firn_reader_dam
 uint64_t firn_sheets_place(uint64_t number);
 
 /* Shape and first block of sheet `index`, 0 .. layout->sheets - 1. */
-void firn_sheets_shape(const struct firn_sheets *sheets, uint64_t index, struct firn_sheet_shape *shape, uint64_t *first_block);
+void firn_sheets_shape(const struct firn_sheets *sheets, uint64_t index, struct firn_sheet_shape *shape,
+                       uint64_t *first_block);
 
 /* Bytes of the stream: data blocks times payload. */
 uint64_t firn_sheets_stream_bytes(const struct firn_sheets *sheets);
@@ -63,8 +64,8 @@ enum firn_status firn_sheets_read(struct firn_sheets *sheets, uint64_t at, uint8
                                   struct firn_sheets_gap *gap);
 
 /*
- * Checks every block of a sheet as scrub does (hash and lanes) in one pass that keeps nothing. *clean is true when every
- * block is there and sound, guard words included. FIRN_OK, FIRN_STOPPED.
+ * Checks every block of a sheet as scrub does (hash and lanes) in one pass that keeps nothing. *clean is true when
+ * every block is there and sound, guard words included. FIRN_OK, FIRN_STOPPED.
  */
 enum firn_status firn_sheets_check(struct firn_sheets *sheets, uint64_t index, bool *clean);
 

@@ -6,8 +6,8 @@
 #include "container/digest.h"
 
 /*
- * Items come in the order of content space, and so do segments. An item whose content goes on in the next part is the last
- * one of its part; so going on to the next part for content never passes over an item.
+ * Items come in the order of content space, and so do segments. An item whose content goes on in the next part is the
+ * last one of its part; so going on to the next part for content never passes over an item.
  */
 struct walk {
     struct firn_parts *parts;
@@ -101,8 +101,8 @@ static void find_sum(struct walk *walk)
 /* --- handing out --- */
 
 /*
- * Hands out `count` stored bytes of the item, from stored_at on, as stretches of the file: raw ones, or gaps where raw is
- * NULL.
+ * Hands out `count` stored bytes of the item, from stored_at on, as stretches of the file: raw ones, or gaps where raw
+ * is NULL.
  */
 static enum firn_status hand_out(struct walk *walk, const uint8_t *raw, uint64_t count, enum firn_reader_loss why,
                                  uint64_t container_at)

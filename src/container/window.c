@@ -8,7 +8,9 @@
 
 enum { ENTRIES_ROOM = FIRN_WINDOW_ENTRY_BYTES + FIRN_LIMIT_ENTRY_BYTES };
 
-/* Room for `count` stretches of `raw` bytes in all, coded: a bound for each, and none of them is longer than its bound. */
+/*
+ * Room for `count` stretches of `raw` bytes in all, coded: a bound for each, and none of them is longer than its bound.
+ */
 static size_t coded_room(size_t raw, size_t count)
 {
     size_t slack = firn_segment_bound(FIRN_SEGMENT_RAW_MAX) - FIRN_SEGMENT_RAW_MAX;
@@ -163,9 +165,9 @@ size_t firn_window_close(struct firn_window *window)
         size_t left = window->entries_used - at;
         struct firn_window_cut *piece = &window->pieces[window->piece_count++];
 
-        *piece = (struct firn_window_cut){
-            .raw = window->entries + at, .raw_bytes = left < FIRN_SEGMENT_RAW_MAX ? left : FIRN_SEGMENT_RAW_MAX, .coded = to
-        };
+        *piece = (struct firn_window_cut){ .raw = window->entries + at,
+                                           .raw_bytes = left < FIRN_SEGMENT_RAW_MAX ? left : FIRN_SEGMENT_RAW_MAX,
+                                           .coded = to };
         to += piece->raw_bytes + slack;
     }
     return window->cut_count + window->piece_count;

@@ -2,8 +2,8 @@
  * container/window.h - what the writer gathers before it codes: some items, some megabytes of content
  *
  * Room: container. A window becomes one part of the catalogue. Content is cut into segments as it comes: a large file
- * starts its own, small neighbours share one; a segment is at most 1 MiB. Everything in a window that has not been given
- * out yet can be taken back without a trace.
+ * starts its own, small neighbours share one; a segment is at most 1 MiB. Everything in a window that has not been
+ * given out yet can be taken back without a trace.
  *
  * SPDX-License-Identifier: BSD-2-Clause
  */

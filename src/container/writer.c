@@ -143,7 +143,8 @@ static enum firn_status spool_part(struct firn_writer *writer, const struct firn
     if (status == FIRN_OK)
         status = spool->write_at(spool->self, writer->spool_at + sizeof length, body, bytes, &os_error);
     if (status != FIRN_OK)
-        return firn_fault_tell(writer->fault, status, os_error, writer->spool_at, "the temporary file of the catalogue");
+        return firn_fault_tell(writer->fault, status, os_error, writer->spool_at,
+                               "the temporary file of the catalogue");
     writer->spool_at += sizeof length + bytes;
     return FIRN_OK;
 }
@@ -159,8 +160,8 @@ static enum firn_status put_sums(struct firn_writer *writer, const struct firn_w
 }
 
 /*
- * Gives out a coded window: BATCH, SEGMENTs, SUMS; and its INDEX body to the spool. The INDEX body is made in two halves of
- * one buffer: the parts it is put together from behind, the body in front.
+ * Gives out a coded window: BATCH, SEGMENTs, SUMS; and its INDEX body to the spool. The INDEX body is made in two
+ * halves of one buffer: the parts it is put together from behind, the body in front.
  */
 static enum firn_status give_out(struct firn_writer *writer, const struct firn_window *window)
 {
@@ -225,8 +226,8 @@ static enum firn_status settle(struct firn_writer *writer)
 }
 
 /*
- * The filling window goes to the threads, the other one becomes the filling one. The open cut goes along when it belongs to
- * the open item alone, so that a large file is cut every 1 MiB wherever the windows end.
+ * The filling window goes to the threads, the other one becomes the filling one. The open cut goes along when it
+ * belongs to the open item alone, so that a large file is cut every 1 MiB wherever the windows end.
  */
 static enum firn_status turn(struct firn_writer *writer)
 {

@@ -50,9 +50,9 @@ static void make_tables(const struct firn_command *command, struct option *longs
     for (size_t i = 0; i < count; i++) {
         const struct firn_args_option *option = option_at(command, i);
 
-        longs[i] = (struct option){
-            .name = option->name, .has_arg = option->value != NULL ? required_argument : no_argument, .val = 256 + (int)i
-        };
+        longs[i] = (struct option){ .name = option->name,
+                                    .has_arg = option->value != NULL ? required_argument : no_argument,
+                                    .val = 256 + (int)i };
         if (option->letter != '\0') {
             *shorts++ = option->letter;
             if (option->value != NULL)

@@ -43,7 +43,7 @@ struct firn_args {
     const struct firn_command *command;
     bool given[FIRN_ARGS_OPTIONS_MAX];
     const char *values[FIRN_ARGS_OPTIONS_MAX];       /* the last one given */
-    const char **all_values;                         /* every value in the order given, for options that may come often */
+    const char **all_values;                         /* every value in the order given: some options may come often */
     int *all_options;                                /* and which option each belongs to */
     size_t all_count;
     const char *const *operands;
@@ -53,8 +53,8 @@ struct firn_args {
 };
 
 /*
- * Sorts argv[1 ..] (argv[0] is the command's name). On anything but FIRN_OK one line about what is wrong went to standard
- * error. The arrays inside are freed by firn_args_free.
+ * Sorts argv[1 ..] (argv[0] is the command's name). On anything but FIRN_OK one line about what is wrong went to
+ * standard error. The arrays inside are freed by firn_args_free.
  */
 enum firn_status firn_args_read(const struct firn_command *command, int argc, char **argv, struct firn_args *args);
 void firn_args_free(struct firn_args *args);

@@ -18,7 +18,19 @@
 #include <unistd.h>
 
 enum option {
-    OUTPUT, FROM_ARCHIVE, KEEP_BEGINNING, EXCLUDE, EXPECT, ACCESSION, TITLE, CUSTODIAN, NOTE, RESERVE, SHEET, EFFORT, REPLACE,
+    OUTPUT,
+    FROM_ARCHIVE,
+    KEEP_BEGINNING,
+    EXCLUDE,
+    EXPECT,
+    ACCESSION,
+    TITLE,
+    CUSTODIAN,
+    NOTE,
+    RESERVE,
+    SHEET,
+    EFFORT,
+    REPLACE,
     NO_READ_BACK
 };
 
@@ -79,7 +91,8 @@ static int read_reserve(struct packing *p)
     if (sheet != NULL && firn_text_parse_size(sheet, &sheet_bytes) != FIRN_OK)
         return firn_trouble_usage(p->view, sheet, "is no size such as 128MiB");
     if (firn_sheet_geometry_for(percent, sheet_bytes, &p->writing.geometry) != FIRN_OK)
-        return firn_trouble_usage(p->view, sheet != NULL ? sheet : words, "makes no sheet; it is too small or too large");
+        return firn_trouble_usage(p->view, sheet != NULL ? sheet : words,
+                                  "makes no sheet; it is too small or too large");
     if (sheet_bytes < (UINT64_C(1) << 20) || sheet_bytes > (UINT64_C(256) << 20))
         return firn_trouble_usage(p->view, sheet, "is no size of a sheet: 1MiB to 256MiB");
     if (p->writing.geometry.m == 0)
@@ -115,7 +128,8 @@ static int read_date(struct packing *p)
     if (words == NULL || *words == '\0') {
         p->writing.title.date = (int64_t)time(NULL);
         if (getrandom(p->writing.nonce, sizeof p->writing.nonce, 0) != (ssize_t)sizeof p->writing.nonce) {
-            firn_view_finding(p->view, "no-random", "", "the system gives no random bytes for the container's identity");
+            firn_view_finding(p->view, "no-random", "",
+                              "the system gives no random bytes for the container's identity");
             return FIRN_EXIT_OS;
         }
         return FIRN_EXIT_SOUND;
@@ -346,7 +360,8 @@ static void show(struct packing *p)
     firn_view_count(p->view, "items", NULL, t->items);
     firn_view_count(p->view, "withdrawn", t->withdrawn > 0 ? "withdrawn" : NULL, t->withdrawn);
     firn_view_bytes(p->view, "content-bytes", NULL, t->content_bytes);
-    firn_view_bytes(p->view, "stored-bytes", t->stored_bytes != t->content_bytes ? "without holes" : NULL, t->stored_bytes);
+    firn_view_bytes(p->view, "stored-bytes", t->stored_bytes != t->content_bytes ? "without holes" : NULL,
+                    t->stored_bytes);
     firn_view_bytes(p->view, "coded-bytes", "coded", t->coded_bytes);
     firn_view_bytes(p->view, "catalogue-bytes", "catalogue", t->catalogue_bytes);
     firn_view_bytes(p->view, "container-bytes", "container", t->container_bytes);

@@ -98,7 +98,8 @@ static void lost_words(const struct firn_outlet_finding *finding, struct firn_te
         if (finding->range_count > 1)
             firn_text_add(text, " in %" PRIu64 " stretches", finding->range_count);
         if (finding->ranges[0].container_at > 0)
-            firn_text_add(text, "; first bad block at byte %" PRIu64 " of the container", finding->ranges[0].container_at);
+            firn_text_add(text, "; first bad block at byte %" PRIu64 " of the container",
+                          finding->ranges[0].container_at);
     }
     firn_text_add(text, finding->kept ? "; kept with zeros, see its .gaps" : "; not written");
 }
@@ -184,7 +185,8 @@ static enum firn_status restore(struct restoring *r)
     if (status == FIRN_OK && r->args->values[TO_TAR] != NULL)
         status = to_tar(r);
     else if (status == FIRN_OK)
-        status = firn_outlet_folder(r->opening.reader, folder == NULL ? "." : folder, &r->outlet, &r->fault, &r->report);
+        status = firn_outlet_folder(r->opening.reader, folder == NULL ? "." : folder, &r->outlet, &r->fault,
+                                    &r->report);
     firn_progress_wipe(&r->progress);
     for (size_t i = 0; status == FIRN_OK && i + 1 < r->args->operand_count; i++)
         if (!firn_pattern_used(patterns, i)) {
@@ -209,8 +211,9 @@ static int outcome(const struct restoring *r, const struct firn_reader_damage *d
         return FIRN_EXIT_CANNOT_CREATE;
     if (findings[FIRN_OUTLET_REFUSED] > 0 || findings[FIRN_OUTLET_LINK] > 0)
         return FIRN_EXIT_BAD_DATA;
-    return damage->mended > 0 || damage->rebuilt > 0 || damage->lost > 0 || layout_exit == FIRN_EXIT_SAFE ? FIRN_EXIT_SAFE
-                                                                                                         : FIRN_EXIT_SOUND;
+    return damage->mended > 0 || damage->rebuilt > 0 || damage->lost > 0 || layout_exit == FIRN_EXIT_SAFE
+               ? FIRN_EXIT_SAFE
+               : FIRN_EXIT_SOUND;
 }
 
 static void show(struct restoring *r, const struct firn_reader_damage *damage)
@@ -231,7 +234,8 @@ static void show(struct restoring *r, const struct firn_reader_damage *damage)
     firn_view_count(r->view, "lost-items", r->report.findings[FIRN_OUTLET_LOST] > 0 ? "lost items" : NULL,
                     r->report.findings[FIRN_OUTLET_LOST]);
     firn_view_bytes(r->view, "lost-bytes", r->report.lost_bytes > 0 ? "lost" : NULL, r->report.lost_bytes);
-    firn_view_count(r->view, "unknown-items", r->report.items_unknown > 0 ? "unknown items" : NULL, r->report.items_unknown);
+    firn_view_count(r->view, "unknown-items", r->report.items_unknown > 0 ? "unknown items" : NULL,
+                    r->report.items_unknown);
     firn_view_count(r->view, "blocks-mended", damaged ? "mended" : NULL, damage->mended);
     firn_view_count(r->view, "blocks-rebuilt", damaged ? "rebuilt" : NULL, damage->rebuilt);
     firn_view_count(r->view, "blocks-lost", damaged ? "lost blocks" : NULL, damage->lost);

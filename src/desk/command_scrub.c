@@ -70,7 +70,8 @@ static void add_part(struct firn_text *text, uint64_t count, const char *one, co
     char words[FIRN_TEXT_COUNT_ROOM];
 
     if (count > 0)
-        firn_text_add(text, "%s%s %s", text->used > 0 ? ", " : "", firn_text_count(count, words), count == 1 ? one : many);
+        firn_text_add(text, "%s%s %s", text->used > 0 ? ", " : "", firn_text_count(count, words),
+                      count == 1 ? one : many);
 }
 
 /* The line for people: what was found, then what became of it. */
@@ -82,7 +83,8 @@ static void say(struct scrubbing *s, const char *path, const struct firn_scrub_r
     firn_text_start(&text, words, sizeof words);
     add_part(&text, r->mended, "block mended", "blocks mended");
     if (r->mended_bits > 0)
-        firn_text_add(&text, " (%s stray bit%s)", firn_text_count(r->mended_bits, count), r->mended_bits == 1 ? "" : "s");
+        firn_text_add(&text, " (%s stray bit%s)", firn_text_count(r->mended_bits, count),
+                      r->mended_bits == 1 ? "" : "s");
     add_part(&text, r->rebuilt, "block rebuilt from the reserve", "blocks rebuilt from the reserve");
     add_part(&text, r->lost, "block LOST", "blocks LOST");
     for (uint64_t i = 0; i < r->lost && i < s->range_count && i < 4; i++)
@@ -114,14 +116,15 @@ static void say(struct scrubbing *s, const char *path, const struct firn_scrub_r
 
 static void say_json(struct scrubbing *s, const char *path, enum firn_status status, const struct firn_scrub_report *r)
 {
-    static const char *const titles[] = {
-        [FIRN_SCRUB_TITLE_SOUND] = "sound", [FIRN_SCRUB_TITLE_DAMAGED] = "damaged", [FIRN_SCRUB_TITLE_HEALED] = "healed",
-        [FIRN_SCRUB_TITLE_UNKNOWN] = "unknown"
-    };
-    static const char *const journals[] = {
-        [FIRN_SCRUB_JOURNAL_NONE] = "none", [FIRN_SCRUB_JOURNAL_WAITS] = "waits", [FIRN_SCRUB_JOURNAL_DROPPED] = "dropped",
-        [FIRN_SCRUB_JOURNAL_REPLAYED] = "replayed", [FIRN_SCRUB_JOURNAL_STRANGE] = "strange"
-    };
+    static const char *const titles[] = { [FIRN_SCRUB_TITLE_SOUND] = "sound",
+                                          [FIRN_SCRUB_TITLE_DAMAGED] = "damaged",
+                                          [FIRN_SCRUB_TITLE_HEALED] = "healed",
+                                          [FIRN_SCRUB_TITLE_UNKNOWN] = "unknown" };
+    static const char *const journals[] = { [FIRN_SCRUB_JOURNAL_NONE] = "none",
+                                            [FIRN_SCRUB_JOURNAL_WAITS] = "waits",
+                                            [FIRN_SCRUB_JOURNAL_DROPPED] = "dropped",
+                                            [FIRN_SCRUB_JOURNAL_REPLAYED] = "replayed",
+                                            [FIRN_SCRUB_JOURNAL_STRANGE] = "strange" };
     struct firn_view *view = s->view;
 
     firn_view_begin(view, "scrub", NULL);

@@ -13,8 +13,10 @@ static const struct firn_command *const commands[] = {
 
 static void help(FILE *out)
 {
-    fputs("firn " FIRN_VERSION_TEXT " - packs collections for years on a shelf: dense, self-healing, self-describing\n\n"
-          "usage: firn COMMAND [options] ...\n\n", out);
+    fputs("firn " FIRN_VERSION_TEXT
+          " - packs collections for years on a shelf: dense, self-healing, self-describing\n\n"
+          "usage: firn COMMAND [options] ...\n\n",
+          out);
     for (size_t i = 0; i < sizeof commands / sizeof commands[0]; i++)
         fprintf(out, "  %-10s %s\n", commands[i]->name, commands[i]->summary);
     fputs("\n'firn COMMAND --help' tells the rest. A scrub that finds nothing prints nothing.\n"

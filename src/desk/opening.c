@@ -9,7 +9,8 @@
 #include <string.h>
 #include <unistd.h>
 
-int firn_opening_make(struct firn_opening *opening, const char *path, const struct firn_args *args, struct firn_view *view)
+int firn_opening_make(struct firn_opening *opening, const char *path, const struct firn_args *args,
+                      struct firn_view *view)
 {
     struct firn_reader_options options = {
         .store = &opening->store, .memory = firn_memory_system(), .threads = args->threads, .stop = firn_interrupt_asked
@@ -92,8 +93,9 @@ int firn_opening_remark(struct firn_view *view, const char *path, const struct f
         worst = FIRN_EXIT_SAFE;
     }
     if (layout->end_known && !layout->colophon_found) {
-        firn_view_finding(view, "no-colophon", path, "its last record is lost, so there may have been more items than can be "
-                                                     "seen; take another copy");
+        firn_view_finding(view, "no-colophon", path,
+                          "its last record is lost, so there may have been more items than can be "
+                          "seen; take another copy");
         worst = FIRN_EXIT_LOST;
     }
     if (layout->foreign_bytes > 0 && layout->blocks_missing == 0) {

@@ -18,7 +18,8 @@ struct firn_opening {
 };
 
 /* path `-` is standard input, copied to a temporary file first. Returns FIRN_EXIT_SOUND, or says why not. */
-int firn_opening_make(struct firn_opening *opening, const char *path, const struct firn_args *args, struct firn_view *view);
+int firn_opening_make(struct firn_opening *opening, const char *path, const struct firn_args *args,
+                      struct firn_view *view);
 void firn_opening_close(struct firn_opening *opening);
 
 /* "k = 224, m = 32, ..." in words: layout, protection, identity. */

@@ -92,8 +92,8 @@ static enum firn_status walk_folder(const struct shelf *shelf, const char *path)
     return status;
 }
 
-enum firn_status firn_shelf_walk(const char *path, firn_shelf_teller *tell, void (*trouble)(void *self, const char *path,
-                                 int os_error), void *self)
+enum firn_status firn_shelf_walk(const char *path, firn_shelf_teller *tell,
+                                 void (*trouble)(void *self, const char *path, int os_error), void *self)
 {
     struct shelf shelf = { .tell = tell, .trouble = trouble, .self = self };
     struct stat there;

@@ -26,7 +26,8 @@ enum firn_trouble_exit {
 int firn_trouble_exit(enum firn_status status);
 
 /* Says what happened to which thing and what to do, and returns the exit status. path: NULL for fault->what. */
-int firn_trouble_tell(struct firn_view *view, const char *path, enum firn_status status, const struct firn_fault *fault);
+int firn_trouble_tell(struct firn_view *view, const char *path, enum firn_status status,
+                      const struct firn_fault *fault);
 
 /* A wrong word on the command line: "WORD: WHAT; see 'firn COMMAND --help'". Returns FIRN_EXIT_USAGE. */
 int firn_trouble_usage(struct firn_view *view, const char *word, const char *what);

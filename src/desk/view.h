@@ -1,9 +1,9 @@
 /*
  * desk/view.h - how reports look: lines for people, JSON Lines for programs
  *
- * Room: desk. A report is a name and fields. For people each field is a line with a label; for programs the report is one
- * JSON object on one line (RFC 8259), field names in kebab-case; a name that is no UTF-8 stands in FIELD-hex too. Findings are
- * reports of their own; for people they go to standard error as one line.
+ * Room: desk. A report is a name and fields. For people each field is a line with a label; for programs the report is
+ * one JSON object on one line (RFC 8259), field names in kebab-case; a name that is no UTF-8 stands in FIELD-hex too.
+ * Findings are reports of their own; for people they go to standard error as one line.
  * SPDX-License-Identifier: BSD-2-Clause
  */
 #ifndef FIRN_DESK_VIEW_H
@@ -36,8 +36,8 @@ void firn_view_number(struct firn_view *view, const char *field, double value); 
 void firn_view_end(struct firn_view *view);
 
 /*
- * One line about one thing. For people: "firn COMMAND: PATH: WORDS" on standard error, also with --quiet. For programs: a
- * report "finding" with kind, path, words.
+ * One line about one thing. For people: "firn COMMAND: PATH: WORDS" on standard error, also with --quiet. For programs:
+ * a report "finding" with kind, path, words.
  */
 void firn_view_finding(struct firn_view *view, const char *kind, const char *path, const char *words);
 

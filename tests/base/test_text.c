@@ -13,12 +13,24 @@
 #include <string.h>
 
 /* IEC 80000-13: KiB = 1024, MiB = 1024^2 ...; SI: kB = 1000, MB = 1000^2 ... */
-static const struct { const char *words; enum firn_status status; uint64_t bytes; } sizes[] = {
-    { "0", FIRN_OK, 0 }, { "512", FIRN_OK, 512 }, { "512B", FIRN_OK, 512 }, { "4KiB", FIRN_OK, 4096 },
-    { "128MiB", FIRN_OK, 134217728 }, { "25GB", FIRN_OK, UINT64_C(25000000000) }, { "1.5 TB", FIRN_OK, UINT64_C(1500000000000) },
-    { "0.5KiB", FIRN_OK, 512 }, { "1kB", FIRN_OK, 1000 }, { "2PiB", FIRN_OK, UINT64_C(2251799813685248) },
-    { "", FIRN_BAD_ARGUMENT, 0 }, { "MiB", FIRN_BAD_ARGUMENT, 0 }, { "-1", FIRN_BAD_ARGUMENT, 0 },
-    { "1mb", FIRN_BAD_ARGUMENT, 0 }, { "1MiBs", FIRN_BAD_ARGUMENT, 0 }, { "99999999999999999999", FIRN_BAD_ARGUMENT, 0 },
+static const struct { const char *words; enum firn_status status; uint64_t bytes;
+} sizes[] = {
+    { "0", FIRN_OK, 0 },
+    { "512", FIRN_OK, 512 },
+    { "512B", FIRN_OK, 512 },
+    { "4KiB", FIRN_OK, 4096 },
+    { "128MiB", FIRN_OK, 134217728 },
+    { "25GB", FIRN_OK, UINT64_C(25000000000) },
+    { "1.5 TB", FIRN_OK, UINT64_C(1500000000000) },
+    { "0.5KiB", FIRN_OK, 512 },
+    { "1kB", FIRN_OK, 1000 },
+    { "2PiB", FIRN_OK, UINT64_C(2251799813685248) },
+    { "", FIRN_BAD_ARGUMENT, 0 },
+    { "MiB", FIRN_BAD_ARGUMENT, 0 },
+    { "-1", FIRN_BAD_ARGUMENT, 0 },
+    { "1mb", FIRN_BAD_ARGUMENT, 0 },
+    { "1MiBs", FIRN_BAD_ARGUMENT, 0 },
+    { "99999999999999999999", FIRN_BAD_ARGUMENT, 0 },
     { "20000PiB", FIRN_BAD_ARGUMENT, 0 },
 };
 
@@ -72,10 +84,22 @@ static void counts_are_whole_numbers(void **state)
 }
 
 /* RFC 3629, section 3 and 4: shortest form only, no surrogates, nothing above U+10FFFF */
-static const struct { const char *bytes; size_t length; } characters[] = {
-    { "A", 1 }, { "\xC3\xA9", 2 }, { "\xE2\x82\xAC", 3 }, { "\xF0\x9F\x8D\x80", 4 }, { "\x80", 0 }, { "\xC0\x80", 0 },
-    { "\xC1\xBF", 0 }, { "\xE0\x9F\xBF", 0 }, { "\xED\xA0\x80", 0 }, { "\xF0\x8F\xBF\xBF", 0 }, { "\xF4\x90\x80\x80", 0 },
-    { "\xC3", 0 }, { "\xE2\x82", 0 }, { "\xFF", 0 },
+static const struct { const char *bytes; size_t length;
+} characters[] = {
+    { "A", 1 },
+    { "\xC3\xA9", 2 },
+    { "\xE2\x82\xAC", 3 },
+    { "\xF0\x9F\x8D\x80", 4 },
+    { "\x80", 0 },
+    { "\xC0\x80", 0 },
+    { "\xC1\xBF", 0 },
+    { "\xE0\x9F\xBF", 0 },
+    { "\xED\xA0\x80", 0 },
+    { "\xF0\x8F\xBF\xBF", 0 },
+    { "\xF4\x90\x80\x80", 0 },
+    { "\xC3", 0 },
+    { "\xE2\x82", 0 },
+    { "\xFF", 0 },
 };
 
 static void knows_utf8(void **state)
@@ -169,7 +193,8 @@ static void every_status_has_its_phrase(void **state)
     for (int status = FIRN_OK; status <= FIRN_READ_ONLY; status++) {
         assert_string_not_equal(firn_status_text((enum firn_status)status), "unknown status");
         for (int other = FIRN_OK; other < status; other++)
-            assert_string_not_equal(firn_status_text((enum firn_status)status), firn_status_text((enum firn_status)other));
+            assert_string_not_equal(firn_status_text((enum firn_status)status),
+                                    firn_status_text((enum firn_status)other));
     }
     (void)state;
 }

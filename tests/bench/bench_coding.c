@@ -4,7 +4,8 @@
  *
  * Usage: bench_coding [FILE...]; without files, an interpreter and the texts of perl, or what of it is there. All of
  * a file is held in memory; every figure is the median of several rounds over all of its segments. The machine may be
- * busy, so the ratios to zlib say more than the MB/s. SPDX-License-Identifier: BSD-2-Clause
+ * busy, so the ratios to zlib say more than the MB/s.
+ * SPDX-License-Identifier: BSD-2-Clause
  */
 #include "firn/prefix.h"
 #include "firn/segment.h"

@@ -1,6 +1,7 @@
 /*
  * tests/coding/test_split.c - cuts: the bounds are bounds, and the search with them finds what the search without
- * them finds SPDX-License-Identifier: BSD-2-Clause
+ * them finds
+ * SPDX-License-Identifier: BSD-2-Clause
  */
 #include "coding/split.h"
 

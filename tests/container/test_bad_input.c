@@ -60,9 +60,11 @@ static void blocks_without_records(void **state)
     struct collection_result r;
 
     for (uint64_t n = 0; n < 20; n++) {
-        struct firn_block_tag tag = {
-            .version = 1, .kind = FIRN_BLOCK_DATA, .geometry = { .k = 20, .m = 0, .depth = 1 }, .number = n, .data_blocks = 20
-        };
+        struct firn_block_tag tag = { .version = 1,
+                                      .kind = FIRN_BLOCK_DATA,
+                                      .geometry = { .k = 20, .m = 0, .depth = 1 },
+                                      .number = n,
+                                      .data_blocks = 20 };
 
         firn_block_seal(bytes + (n + 1) * FIRN_BLOCK_BYTES, &tag);
     }

@@ -1,4 +1,6 @@
-/* tests/container/test_container.c - writer and reader together, in memory: what went in comes out, whatever is damaged */
+/*
+ * tests/container/test_container.c - writer and reader together, in memory: what went in comes out, whatever is damaged
+ */
 /* SPDX-License-Identifier: BSD-2-Clause */
 #include "firn/block.h"
 #include "firn/reader.h"
@@ -88,7 +90,10 @@ static void any_block_may_go(void **state)
     (void)state;
 }
 
-/* A run as long as the reserve of a full sheet, m * D = 32 blocks, at starts all over the full sheets and across their borders. */
+/*
+ * A run as long as the reserve of a full sheet, m * D = 32 blocks, at starts all over the full sheets and across their
+ * borders.
+ */
 static void any_run_up_to_the_reserve_may_go(void **state)
 {
     struct collection *c = collection_make(60, 5, &small_sheet, 1);

@@ -1,4 +1,6 @@
-/* tests/container/test_faults.c - memory that runs out, stores that fail, sources that fail: told, nothing passed off */
+/*
+ * tests/container/test_faults.c - memory that runs out, stores that fail, sources that fail: told, nothing passed off
+ */
 /* SPDX-License-Identifier: BSD-2-Clause */
 #include "firn/block.h"
 #include "firn/reader.h"
@@ -21,8 +23,8 @@ static const struct firn_sheet_geometry small_sheet = { .k = 14, .m = 4, .depth 
 
 enum { ITEMS = 40, SEED = 5 };
 
-static enum firn_status write_collection(const struct firn_memory *memory, struct firn_store *store, struct firn_store *spool,
-                                         unsigned threads, struct firn_writer_totals *totals)
+static enum firn_status write_collection(const struct firn_memory *memory, struct firn_store *store,
+                                         struct firn_store *spool, unsigned threads, struct firn_writer_totals *totals)
 {
     struct firn_writer_options options = {
         .store = store, .spool = spool, .memory = memory, .threads = threads, .geometry = small_sheet,
@@ -167,7 +169,8 @@ static void reads_that_fail(void **state)
 
     make(&store);
     for (uint64_t first = 0; first < 100; first += 9) {
-        store.ranges[0] = (struct fault_range){ .at = (1 + first) * FIRN_BLOCK_BYTES + 512, .bytes = 19 * FIRN_BLOCK_BYTES };
+        store.ranges[0] = (struct fault_range){ .at = (1 + first) * FIRN_BLOCK_BYTES + 512,
+                                                .bytes = 19 * FIRN_BLOCK_BYTES };
         store.range_count = 1;
         assert_int_equal(read_collection(firn_memory_system(), &store.store, &whole, &damage), FIRN_OK);
         assert_int_equal(whole, ITEMS);
@@ -245,7 +248,8 @@ static enum firn_status see_gap(void *self, const struct firn_item *item, uint64
     return FIRN_OK;
 }
 
-static enum firn_status see_bytes(void *self, const struct firn_item *item, uint64_t at, const uint8_t *bytes, size_t count)
+static enum firn_status see_bytes(void *self, const struct firn_item *item, uint64_t at, const uint8_t *bytes,
+                                  size_t count)
 {
     struct seen *seen = self;
 
@@ -265,14 +269,18 @@ static enum firn_status see_end(void *self, const struct firn_item *item, const 
     return FIRN_OK;
 }
 
-static void give(struct firn_writer *writer, uint8_t letter, uint64_t announced, uint64_t given, bool withdraw, bool *traceless)
+static void give(struct firn_writer *writer, uint8_t letter, uint64_t announced, uint64_t given, bool withdraw,
+                 bool *traceless)
 {
     static uint8_t bytes[65536];
     uint8_t pax[512];
     struct firn_item_extent extent = { 0, announced };
-    struct firn_item item = {
-        .pax = pax, .pax_bytes = sizeof pax, .has_content = true, .bytes = announced, .extents = &extent, .extent_count = 1
-    };
+    struct firn_item item = { .pax = pax,
+                              .pax_bytes = sizeof pax,
+                              .has_content = true,
+                              .bytes = announced,
+                              .extents = &extent,
+                              .extent_count = 1 };
 
     memset(pax, letter, sizeof pax);
     memset(bytes, letter, sizeof bytes);
@@ -338,9 +346,11 @@ static void withdrawn_items_are_never_taken_for_whole(void **state)
 static void the_writers_contract_is_held(void **state)
 {
     struct fault_store store, spool;
-    struct firn_writer_options options = {
-        .store = &store.store, .spool = &spool.store, .memory = firn_memory_system(), .threads = 1, .geometry = small_sheet
-    };
+    struct firn_writer_options options = { .store = &store.store,
+                                           .spool = &spool.store,
+                                           .memory = firn_memory_system(),
+                                           .threads = 1,
+                                           .geometry = small_sheet };
     uint8_t pax[512] = { 0 };
     struct firn_item_extent extent = { 0, 10 };
     struct firn_item item = {

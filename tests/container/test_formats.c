@@ -1,4 +1,6 @@
-/* tests/container/test_formats.c - records, entries, sums, index and colophon against the vectors of the specification */
+/*
+ * tests/container/test_formats.c - records, entries, sums, index and colophon against the vectors of the specification
+ */
 /* SPDX-License-Identifier: BSD-2-Clause */
 #include "container/catalogue.h"
 #include "container/digest.h"
@@ -76,7 +78,8 @@ static void record_spans(void **state)
 
 static void segment_heads(void **state)
 {
-    struct firn_catalogue_place place = { .content_at = 123456, .raw_bytes = 37, .body_bytes = 71 }, read = { .body_bytes = 71 };
+    struct firn_catalogue_place place = { .content_at = 123456, .raw_bytes = 37, .body_bytes = 71 },
+                                read = { .body_bytes = 71 };
     uint8_t head[FIRN_CATALOGUE_SEGMENT_HEAD_BYTES], hash[FIRN_HASH_BYTES];
     const uint8_t *vector;
     size_t count;
@@ -105,9 +108,12 @@ static void make_items(struct firn_item items[3], struct firn_item_extent extent
     items[1] = (struct firn_item){
         .pax = pax[1], .pax_bytes = 512, .has_content = true, .bytes = 37, .extents = extents, .extent_count = 1
     };
-    items[2] = (struct firn_item){
-        .pax = pax[1], .pax_bytes = 512, .has_content = true, .bytes = 1000000, .extents = extents + 1, .extent_count = 2
-    };
+    items[2] = (struct firn_item){ .pax = pax[1],
+                                   .pax_bytes = 512,
+                                   .has_content = true,
+                                   .bytes = 1000000,
+                                   .extents = extents + 1,
+                                   .extent_count = 2 };
 }
 
 static void entries(void **state)
@@ -274,8 +280,10 @@ static void title_pages(void **state)
 {
     const struct firn_sheet_geometry geometry = { .k = 224, .m = 32, .depth = 128 };
     struct firn_writer_title title = {
-        .accession = "MQ 1931/7", .title = "Ledgers of Marrow Quay, with the letters of the harbour master and all that was "
-        "found in the loft of the old customs house", .date = 0
+        .accession = "MQ 1931/7",
+        .title = "Ledgers of Marrow Quay, with the letters of the harbour master and all that was "
+                 "found in the loft of the old customs house",
+        .date = 0
     };
     uint8_t page[FIRN_TITLE_PAGE_BYTES + 1] = { 0 };
     const char *wrong;

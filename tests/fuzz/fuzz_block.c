@@ -1,4 +1,7 @@
-/* tests/fuzz/fuzz_block.c - any bytes as a block: judged, never trusted; what it calls good satisfies its own judgement again */
+/*
+ * tests/fuzz/fuzz_block.c - any bytes as a block: judged, never trusted; what it calls good satisfies its own judgement
+ * again
+ */
 /* SPDX-License-Identifier: BSD-2-Clause */
 #include "firn/block.h"
 
@@ -30,10 +33,10 @@ int LLVMFuzzerTestOneInput(const uint8_t *data, size_t size)
     }
     /* sealed from the same bytes with whatever tag they would make, it opens as sealed */
     if (size >= 16) {
-        struct firn_block_tag made = {
-            .version = FIRN_BLOCK_FORMAT_VERSION, .geometry = { .k = data[0], .m = data[1], .depth = (uint16_t)(1 + data[2]) },
-            .number = data[3], .data_blocks = data[4]
-        };
+        struct firn_block_tag made = { .version = FIRN_BLOCK_FORMAT_VERSION,
+                                       .geometry = { .k = data[0], .m = data[1], .depth = (uint16_t)(1 + data[2]) },
+                                       .number = data[3],
+                                       .data_blocks = data[4] };
 
         if (firn_sheet_geometry_valid(&made.geometry) &&
             firn_sheet_shape_of(&made.geometry, made.data_blocks, &shape) == FIRN_OK) {

@@ -1,4 +1,6 @@
-/* tests/fuzz/fuzz_catalogue.c - any bytes, sealed with a right hash, as BATCH, SUMS and INDEX; and as decoded entries */
+/*
+ * tests/fuzz/fuzz_catalogue.c - any bytes, sealed with a right hash, as BATCH, SUMS and INDEX; and as decoded entries
+ */
 /* SPDX-License-Identifier: BSD-2-Clause */
 #include "container/catalogue.h"
 
@@ -49,7 +51,8 @@ int LLVMFuzzerTestOneInput(const uint8_t *data, size_t size)
         return 0;
     memcpy(body, data, size);
     firn_hash_put(body + FIRN_HASH_BYTES, size - FIRN_HASH_BYTES, body);
-    if (firn_catalogue_open_batch(body, size, &batch) == FIRN_OK && firn_catalogue_decode_batch(&batch, raw, work) == FIRN_OK)
+    if (firn_catalogue_open_batch(body, size, &batch) == FIRN_OK &&
+        firn_catalogue_decode_batch(&batch, raw, work) == FIRN_OK)
         step_through(&batch, raw);
     if (firn_catalogue_open_sums(body, size, &count, &sums) == FIRN_OK &&
         sums + (size_t)count * FIRN_CATALOGUE_SUM_BYTES != body + size)

@@ -7,7 +7,8 @@
 
 int LLVMFuzzerTestOneInput(const uint8_t *data, size_t size);
 
-static enum firn_status take_bytes(void *self, const struct firn_item *item, uint64_t at, const uint8_t *bytes, size_t count)
+static enum firn_status take_bytes(void *self, const struct firn_item *item, uint64_t at, const uint8_t *bytes,
+                                   size_t count)
 {
     (void)self, (void)bytes;
     if (at > item->bytes || count > item->bytes - at)

@@ -21,8 +21,9 @@ int LLVMFuzzerTestOneInput(const uint8_t *data, size_t size)
     size_t coded_bytes, told = 0, room = size > 1 ? 1 + (data[0] | (size_t)data[1] << 8) : 1;
 
     if (work == NULL) {
-        size_t most = firn_segment_encode_work_bytes() > firn_segment_decode_work_bytes() ? firn_segment_encode_work_bytes()
-                                                                                          : firn_segment_decode_work_bytes();
+        size_t most = firn_segment_encode_work_bytes() > firn_segment_decode_work_bytes()
+                          ? firn_segment_encode_work_bytes()
+                          : firn_segment_decode_work_bytes();
 
         if (posix_memalign(&work, 64, most) != 0)
             abort();
@@ -34,7 +35,8 @@ int LLVMFuzzerTestOneInput(const uint8_t *data, size_t size)
         abort();
     if (size > RAW_MAX || firn_segment_bound(size) > sizeof coded)
         return 0;
-    if (firn_segment_encode(data, size, (enum firn_segment_effort)(data[2] % 4), coded, &coded_bytes, work) != FIRN_OK ||
+    if (firn_segment_encode(data, size, (enum firn_segment_effort)(data[2] % 4), coded, &coded_bytes, work) !=
+            FIRN_OK ||
         coded_bytes > firn_segment_bound(size) || firn_segment_decode(coded, coded_bytes, raw, size, work) != FIRN_OK ||
         memcmp(raw, data, size) != 0)
         abort();

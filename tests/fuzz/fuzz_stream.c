@@ -12,7 +12,8 @@ int LLVMFuzzerTestOneInput(const uint8_t *data, size_t size);
 
 enum { ROOM = 1 << 20 };
 
-static enum firn_status take_bytes(void *self, const struct firn_item *item, uint64_t at, const uint8_t *bytes, size_t count)
+static enum firn_status take_bytes(void *self, const struct firn_item *item, uint64_t at, const uint8_t *bytes,
+                                   size_t count)
 {
     (void)self, (void)bytes;
     if (at > item->bytes || count > item->bytes - at)
@@ -65,8 +66,13 @@ int LLVMFuzzerTestOneInput(const uint8_t *data, size_t size)
         return 0;
     firn_store_memory(&buffer, &store);
     if (firn_threads_make(firn_memory_system(), 1, &threads) != FIRN_OK ||
-        firn_press_make(&(struct firn_press_options){ .store = &store, .memory = firn_memory_system(), .threads = threads,
-                                                      .geometry = geometry, .nonce = nonce, .page = page }, &press) != FIRN_OK)
+        firn_press_make(&(struct firn_press_options){ .store = &store,
+                                                      .memory = firn_memory_system(),
+                                                      .threads = threads,
+                                                      .geometry = geometry,
+                                                      .nonce = nonce,
+                                                      .page = page },
+                        &press) != FIRN_OK)
         abort();
     while (size >= 3) {
         uint8_t header[FIRN_RECORD_HEADER_BYTES], *body;

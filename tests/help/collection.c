@@ -126,11 +126,16 @@ struct collection *collection_make(unsigned items, uint64_t seed, const struct f
     struct collection *c = calloc(1, sizeof *c);
     struct firn_store_buffer spool_buffer = { .bytes = malloc(SPOOL_ROOM), .capacity = SPOOL_ROOM };
     struct firn_store store, spool;
-    struct firn_writer_options options = {
-        .store = &store, .spool = &spool, .memory = firn_memory_system(), .threads = threads, .geometry = *geometry,
-        .effort = FIRN_SEGMENT_EFFORT_QUICK,
-        .title = { .accession = "MQ 1931/7", .title = "Ledgers of Marrow Quay", .custodian = "Harbour Archive", .date = 0 }
-    };
+    struct firn_writer_options options = { .store = &store,
+                                           .spool = &spool,
+                                           .memory = firn_memory_system(),
+                                           .threads = threads,
+                                           .geometry = *geometry,
+                                           .effort = FIRN_SEGMENT_EFFORT_QUICK,
+                                           .title = { .accession = "MQ 1931/7",
+                                                      .title = "Ledgers of Marrow Quay",
+                                                      .custodian = "Harbour Archive",
+                                                      .date = 0 } };
     struct firn_fault fault = { 0 };
     struct firn_writer *writer;
 
@@ -177,7 +182,8 @@ static enum firn_status begin(void *self, const struct firn_item *item, uint64_t
     return FIRN_OK;
 }
 
-static enum firn_status bytes_come(void *self, const struct firn_item *item, uint64_t at, const uint8_t *bytes, size_t count)
+static enum firn_status bytes_come(void *self, const struct firn_item *item, uint64_t at, const uint8_t *bytes,
+                                   size_t count)
 {
     struct reading *reading = self;
 

@@ -1,8 +1,8 @@
 /*
  * tests/help/collection.h - an invented collection, packed in memory and read back against what went in
  *
- * Items are numbered; the content of item n follows from n and the seed alone, so that whoever reads can tell right bytes
- * from wrong ones without keeping them.
+ * Items are numbered; the content of item n follows from n and the seed alone, so that whoever reads can tell right
+ * bytes from wrong ones without keeping them.
  * SPDX-License-Identifier: BSD-2-Clause
  */
 #ifndef FIRN_TESTS_COLLECTION_H

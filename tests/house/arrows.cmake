@@ -1,5 +1,6 @@
 # tests/house/arrows.cmake - includes stay in their room or go down; rooms beside each other do not know each other
 # SPDX-License-Identifier: BSD-2-Clause
+cmake_minimum_required(VERSION 3.22)
 set(below_base base)
 set(below_coding base coding)
 set(below_guard base guard)

@@ -1,5 +1,6 @@
 # tests/house/symbols.cmake - the library exports what the public headers declare with FIRN_API, no more and no less
 # SPDX-License-Identifier: BSD-2-Clause
+cmake_minimum_required(VERSION 3.22)
 file(GLOB headers ${ROOT}/include/firn/*.h)
 set(declared)
 foreach(header ${headers})

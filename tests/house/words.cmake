@@ -1,8 +1,9 @@
 # tests/house/words.cmake - nothing is left open, nothing is commented out, lines are not longer than 120 columns
 # SPDX-License-Identifier: BSD-2-Clause
-file(GLOB_RECURSE files ${ROOT}/src/*.c ${ROOT}/src/*.h ${ROOT}/include/*.h ${ROOT}/tests/*.c ${ROOT}/tests/*.h
+cmake_minimum_required(VERSION 3.22)
+file(GLOB_RECURSE files ${ROOT}/src/*.c ${ROOT}/src/*.h ${ROOT}/src/*.inc ${ROOT}/include/*.h ${ROOT}/tests/*.c ${ROOT}/tests/*.h
      ${ROOT}/examples/*.c)
-string(CONCAT open_words "(TO" "DO|FIX" "ME|XX" "X)[^a-zA-Z]")
+string(CONCAT open_words "(^|[^A-Z])(TO" "DO|FIX" "ME|XX" "X)([^A-Z]|$)")
 foreach(file ${files})
     file(STRINGS ${file} lines REGEX "${open_words}|^#if 0")
     if(lines)
