@@ -10,7 +10,7 @@
 
 enum {
     CHUNK_BLOCKS = 64,           /* 256 KiB: in the second-level cache while it is judged */
-    LEND_BLOCKS = 512,           /* 2 MiB: what mapping costs is spread over enough blocks */
+    LEND_BLOCKS = 1024,          /* 4 MiB: what mapping costs, and starting the crew, is spread over enough blocks */
     MEND_READ_BLOCKS = 256,
     MEND_JOB_BLOCKS = 64
 };
@@ -307,49 +307,67 @@ static enum firn_sheets_finding judge(uint8_t *block, const struct firn_block_ta
     return state == FIRN_BLOCK_MENDED ? FIRN_SHEETS_MENDED : FIRN_SHEETS_SOUND;
 }
 
-/* Whether all of count blocks from `at` on are sound, of those that stand at bytes; absent: NULL when all are there. */
-static bool all_sound(const struct firn_sheets *sheets, const struct firn_sheet_shape *shape, uint64_t first,
-                      uint32_t at, uint32_t count, uint8_t *bytes, const bool *absent)
-{
-    for (uint32_t i = 0; i < count; i++) {
-        struct firn_block_tag expected = expected_tag(sheets, shape, first, at + i);
+/* Blocks that lie together in memory, judged by the crew piece by piece. */
+struct checking {
+    const struct firn_sheets *sheets;
+    struct firn_sheet_shape shape;
+    uint64_t first;                              /* block of the sheet */
+    uint32_t at, count;                          /* of these, in the sheet */
+    uint8_t *bytes;
+    bool sound[LEND_BLOCKS / CHUNK_BLOCKS];      /* each job writes its own */
+};
 
-        if ((absent != NULL && absent[i]) ||
-            judge(bytes + (size_t)i * FIRN_BLOCK_BYTES, &expected, true) != FIRN_SHEETS_SOUND)
-            return false;
+static void check_chunk(void *self, size_t job, unsigned worker)
+{
+    struct checking *c = self;
+    uint32_t from = (uint32_t)job * CHUNK_BLOCKS, end = c->count - from < CHUNK_BLOCKS ? c->count : from + CHUNK_BLOCKS;
+
+    (void)worker;
+    c->sound[job] = true;
+    for (uint32_t i = from; i < end && c->sound[job]; i++) {
+        struct firn_block_tag expected = expected_tag(c->sheets, &c->shape, c->first, c->at + i);
+
+        c->sound[job] = judge(c->bytes + (size_t)i * FIRN_BLOCK_BYTES, &expected, true) == FIRN_SHEETS_SOUND;
     }
-    return true;
+}
+
+static bool check_blocks(struct firn_sheets *sheets, struct checking *c)
+{
+    size_t jobs = (c->count + CHUNK_BLOCKS - 1) / CHUNK_BLOCKS;
+    bool sound = true;
+
+    firn_threads_run(sheets->threads, check_chunk, c, jobs);
+    for (size_t i = 0; i < jobs; i++)
+        sound = sound && c->sound[i];
+    return sound;
 }
 
 enum firn_status firn_sheets_check(struct firn_sheets *sheets, uint64_t index, bool *clean)
 {
     struct firn_store *store = sheets->store;
-    struct firn_sheet_shape shape;
-    bool absent[CHUNK_BLOCKS];
-    uint64_t first;
-    uint32_t blocks, count;
+    struct checking c = { .sheets = sheets };
+    bool absent[CHUNK_BLOCKS], whole = true;
+    uint32_t blocks;
 
-    firn_sheets_shape(sheets, index, &shape, &first);
-    blocks = shape.data_blocks + shape.reserve_blocks;
+    firn_sheets_shape(sheets, index, &c.shape, &c.first);
+    blocks = c.shape.data_blocks + c.shape.reserve_blocks;
     sheets->chunk_count = 0;
     *clean = false;
-    for (uint32_t at = 0; at < blocks; at += count) {
-        uint8_t *lent;
-
+    for (c.at = 0; c.at < blocks; c.at += c.count) {
         if (should_stop(sheets))
             return FIRN_STOPPED;
-        count = blocks - at < LEND_BLOCKS ? blocks - at : LEND_BLOCKS;
-        if (store->lend != NULL && store->lend(store->self, firn_sheets_place(first + at),
-                                               (size_t)count * FIRN_BLOCK_BYTES, &lent) == FIRN_OK) {
-            if (!all_sound(sheets, &shape, first, at, count, lent, NULL))
-                return FIRN_OK;
-        } else {
-            count = count < CHUNK_BLOCKS ? count : CHUNK_BLOCKS;
-            read_raw(sheets, first + at, count, sheets->chunk, absent);
-            if (!all_sound(sheets, &shape, first, at, count, sheets->chunk, absent))
-                return FIRN_OK;
+        c.count = blocks - c.at < LEND_BLOCKS ? blocks - c.at : LEND_BLOCKS;
+        if (store->lend == NULL || store->lend(store->self, firn_sheets_place(c.first + c.at),
+                                               (size_t)c.count * FIRN_BLOCK_BYTES, &c.bytes) != FIRN_OK) {
+            c.count = c.count < CHUNK_BLOCKS ? c.count : CHUNK_BLOCKS;
+            c.bytes = sheets->chunk;
+            read_raw(sheets, c.first + c.at, c.count, c.bytes, absent);
+            for (uint32_t i = 0; i < c.count; i++)
+                whole = whole && !absent[i];
         }
-        sheets->damage.blocks_read += count;
+        if (!whole || !check_blocks(sheets, &c))
+            return FIRN_OK;
+        sheets->damage.blocks_read += c.count;
     }
     *clean = true;
     return FIRN_OK;
