@@ -6,12 +6,13 @@
 #include "transfer/acl.h"
 
 #include <errno.h>
+#include <fcntl.h>
 #include <limits.h>
 #include <stdio.h>
 #include <stdlib.h>
 #include <sys/xattr.h>
 
-enum { LIST_BYTES = 65536, VALUE_BYTES = FIRN_ACL_VALUE_MAX, NAMES_MAX = LIST_BYTES / 2, PATH_ROOM = 64 + NAME_MAX };
+enum { LIST_BYTES = 65536, VALUE_BYTES = FIRN_ACL_VALUE_MAX, NAMES_MAX = LIST_BYTES / 2, PATH_ROOM = 64 + PATH_MAX };
 
 struct firn_attributes {
     const struct firn_memory *memory;
@@ -41,9 +42,11 @@ void firn_attributes_free(struct firn_attributes *attributes)
         attributes->memory->put(attributes->memory->self, attributes);
 }
 
-/* The path of an object without a descriptor; names in a folder are at most NAME_MAX long. */
+/* The path of an object without a descriptor. */
 static const char *path_of(struct firn_attributes *attributes, const struct firn_attributes_place *place)
 {
+    if (place->folder == AT_FDCWD)
+        return place->name;
     snprintf(attributes->path, sizeof attributes->path, "/proc/self/fd/%d/%s", place->folder, place->name);
     return attributes->path;
 }

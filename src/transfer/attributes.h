@@ -21,7 +21,7 @@ enum firn_status firn_attributes_make(const struct firn_memory *memory, struct f
                                       struct firn_attributes **out);
 void firn_attributes_free(struct firn_attributes *attributes);      /* takes NULL */
 
-/* Where an object is: its own descriptor, or if that is -1 a name in a folder. */
+/* Where an object is: its own descriptor, or if that is -1 a name in a folder (AT_FDCWD: a path). */
 struct firn_attributes_place { int descriptor, folder; const char *name; };
 
 /* Reads them into an entry, in the order of their names. Returns 0, or the errno of something that could not be had. */

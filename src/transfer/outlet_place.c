@@ -23,6 +23,17 @@ static void close_last(struct firn_outlet_place *place)
     close(place->open[--place->depth].descriptor);
 }
 
+/* Makes room: the way back from far below goes through the lower folders first, then once more from the root. */
+static void close_upper_half(struct firn_outlet_place *place)
+{
+    enum { HALF = FIRN_OUTLET_PLACE_OPEN / 2 };
+
+    for (unsigned i = 0; i < HALF; i++)
+        close(place->open[i].descriptor);
+    memmove(place->open, place->open + HALF, (place->depth - HALF) * sizeof place->open[0]);
+    place->depth -= HALF;
+}
+
 void firn_outlet_place_end(struct firn_outlet_place *place)
 {
     while (place->depth > 0)
@@ -66,8 +77,8 @@ static enum firn_status step(struct firn_outlet_place *place, size_t from, size_
                : errno == ENOENT && !make         ? FIRN_NO_INPUT
                                                   : FIRN_CANNOT_CREATE;
     }
-    if (place->depth == FIRN_OUTLET_PLACE_OPEN)      /* of the deepest only the last stays open */
-        close_last(place);
+    if (place->depth == FIRN_OUTLET_PLACE_OPEN)
+        close_upper_half(place);
     place->open[place->depth].descriptor = descriptor;
     place->open[place->depth++].path_bytes = bytes;
     return FIRN_OK;

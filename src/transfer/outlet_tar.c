@@ -5,6 +5,7 @@
 #include "base/fault.h"
 #include "base/memory.h"
 #include "transfer/outlet_run.h"
+#include "transfer/pax_time.h"
 
 #include <errno.h>
 #include <unistd.h>
@@ -23,6 +24,9 @@ struct job {
     bool any;
     uint64_t last_number;            /* of the item that wants was asked for last */
     struct archive *archive;         /* of the file at hand; NULL: none, or it is left out */
+    bool in_header, dropping;        /* what libarchive writes now is gathered, or not wanted */
+    uint8_t *header;
+    size_t header_used, header_capacity;
     uint64_t at;                     /* of it, written up to here */
 };
 
@@ -65,10 +69,34 @@ static enum firn_status put(struct job *job, const uint8_t *bytes, size_t count)
     return status;
 }
 
+static enum firn_status gather(struct job *job, const void *bytes, size_t count)
+{
+    const struct firn_memory *memory = job->run.options->memory;
+    void *header = job->header;
+    enum firn_status status =
+        firn_memory_grow(memory, &header, &job->header_capacity, job->header_used + count, 1);
+
+    job->header = header;
+    if (status == FIRN_OK) {
+        memcpy(job->header + job->header_used, bytes, count);
+        job->header_used += count;
+    }
+    return status;
+}
+
 static la_ssize_t take_bytes(struct archive *archive, void *self, const void *bytes, size_t count)
 {
-    (void)archive;
-    return put(self, bytes, count) == FIRN_OK ? (la_ssize_t)count : -1;
+    struct job *job = self;
+    enum firn_status status = FIRN_STOPPED;
+
+    if (job->in_header)
+        status = gather(job, bytes, count);
+    else if (!job->dropping)
+        status = put(job, bytes, count);
+    if (status == FIRN_OK)
+        return (la_ssize_t)count;
+    archive_set_error(archive, ECANCELED, "the rest is not wanted");
+    return -1;
 }
 
 /* ---- one item ---- */
@@ -78,28 +106,34 @@ static enum firn_status begin_entry(struct job *job, struct archive_entry *entry
 {
     int result = ARCHIVE_FATAL;
 
+    job->in_header = true;
+    job->header_used = 0;
     firn_pax_enter(job->run.pax);
     job->archive = firn_pax_writer(job->run.pax, entry, take_bytes, job);
     if (job->archive != NULL)
         result = archive_write_header(job->archive, entry);
     firn_pax_leave(job->run.pax);
+    job->in_header = false;
     job->at = 0;
     if (job->archive == NULL)
         return firn_fault_tell(job->run.fault, FIRN_NO_MEMORY, 0, 0, job->run.name);
-    if (job->over != FIRN_OK)
-        return job->over;
-    if (result == ARCHIVE_OK || result == ARCHIVE_WARN)
-        return FIRN_OK;
+    if (result == ARCHIVE_OK || result == ARCHIVE_WARN) {
+        firn_pax_time_mend(job->header, job->header_used);
+        return put(job, job->header, job->header_used);
+    }
     firn_outlet_run_tell(&job->run, FIRN_OUTLET_FAILED, 0, "metadata that a pax header cannot hold");
     return FIRN_END;
 }
 
 static void drop_entry(struct job *job)
 {
+    /* closed, not failed: libarchive 3.6 keeps the client's data for good when a failed archive is freed */
+    job->dropping = true;
     if (job->archive != NULL)
-        archive_write_fail(job->archive);
+        (void)archive_write_close(job->archive);
     archive_write_free(job->archive);
     job->archive = NULL;
+    job->dropping = false;
 }
 
 /* libarchive refuses only when its memory or our writing failed. */

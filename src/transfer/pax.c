@@ -4,6 +4,7 @@
 
 #include "base/memory.h"
 #include "base/text.h"
+#include "transfer/pax_time.h"
 #include "transfer/ustar.h"
 
 #include <errno.h>
@@ -15,6 +16,7 @@ struct firn_pax {
     uint8_t *bytes;                    /* the header as made, or as changed for reading */
     size_t used, capacity;
     bool out_of_memory;
+    bool header_done;                 /* what libarchive writes now is not wanted */
 };
 
 enum firn_status firn_pax_make(const struct firn_memory *memory, struct firn_pax **out)
@@ -168,7 +170,10 @@ static la_ssize_t collect(struct archive *archive, void *self, const void *bytes
 {
     struct firn_pax *pax = self;
 
-    (void)archive;
+    if (pax->header_done) {
+        archive_set_error(archive, ECANCELED, "only the header is wanted");
+        return -1;
+    }
     if (pax->used <= FIRN_PAX_BYTES_MAX && count <= FIRN_PAX_BYTES_MAX - pax->used) {
         if (make_room(pax, pax->used + count) != FIRN_OK) {
             pax->out_of_memory = true;
@@ -189,11 +194,15 @@ enum firn_status firn_pax_header(struct firn_pax *pax, struct archive_entry *ent
     firn_pax_strip(entry);
     pax->used = 0;
     pax->out_of_memory = false;
+    pax->header_done = false;
     firn_pax_enter(pax);
     archive = firn_pax_writer(pax, entry, collect, pax);
     if (archive != NULL) {
+        /* Closed, not failed: libarchive 3.6 keeps the client's data for good when a failed archive is freed. Closing fills
+           up the content that was announced; the callback refuses the first of it. */
         result = archive_write_header(archive, entry);
-        archive_write_fail(archive);
+        pax->header_done = true;
+        (void)archive_write_close(archive);
         archive_write_free(archive);
     }
     firn_pax_leave(pax);
@@ -203,6 +212,7 @@ enum firn_status firn_pax_header(struct firn_pax *pax, struct archive_entry *ent
         return FIRN_BAD_ARGUMENT;
     if (pax->used > FIRN_PAX_BYTES_MAX)
         return FIRN_OVER_LIMIT;
+    firn_pax_time_mend(pax->bytes, pax->used);
     *bytes = pax->bytes;
     *count = pax->used;
     return FIRN_OK;
@@ -272,6 +282,8 @@ enum firn_status firn_pax_entry(struct firn_pax *pax, const struct firn_item *it
     struct firn_ustar_layout layout;
     enum firn_status status =
         item->pax_bytes > FIRN_PAX_BYTES_MAX ? FIRN_BAD_DATA : firn_ustar_check(item->pax, item->pax_bytes, &layout);
+    int64_t seconds;
+    long nanoseconds;
     bool binary;
 
     *entry = NULL;
@@ -286,6 +298,8 @@ enum firn_status firn_pax_entry(struct firn_pax *pax, const struct firn_item *it
         return status;
     if (!agrees(pax->entry, item))
         return FIRN_BAD_DATA;
+    if (firn_pax_time_read(item->pax, item->pax_bytes, &seconds, &nanoseconds))
+        archive_entry_set_mtime(pax->entry, (time_t)seconds, nanoseconds);
     firn_pax_strip(pax->entry);
     *entry = pax->entry;
     return FIRN_OK;
