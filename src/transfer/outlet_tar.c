@@ -71,7 +71,7 @@ static enum firn_status put(struct job *job, const uint8_t *bytes, size_t count)
 
 static enum firn_status gather(struct job *job, const void *bytes, size_t count)
 {
-    const struct firn_memory *memory = job->run.options->memory;
+    const struct firn_memory *memory = job->run.memory;
     void *header = job->header;
     enum firn_status status =
         firn_memory_grow(memory, &header, &job->header_capacity, job->header_used + count, 1);
@@ -360,6 +360,7 @@ enum firn_status firn_outlet_tar(struct firn_reader *reader, int descriptor, con
         status = write_archive(job, reader);
     options->memory->put(options->memory->self, job->buffer);
     options->memory->put(options->memory->self, job->zeros);
+    options->memory->put(options->memory->self, job->header);
     firn_outlet_run_end(&job->run);
     options->memory->put(options->memory->self, job);
     return status;
