@@ -8,7 +8,7 @@
 #include <string.h>
 #include <time.h>
 
-enum { VALUE_BYTES_MAX = 512, LINE_COLUMNS = 64, LABEL_COLUMNS = 12 };
+enum { VALUE_BYTES_MAX = 512, LINE_COLUMNS = 64, LABEL_COLUMNS = 12, BLANK_COLUMNS = 80 };
 
 static const char first_line[] = "FIRN CONTAINER, FORMAT 1\n";
 
@@ -144,7 +144,9 @@ enum firn_status firn_title_write(const struct firn_writer_title *title, const s
     *wrong = "title, custodian and note together";
     if (text.cut)
         return FIRN_BAD_ARGUMENT;
-    memset(page, '\n', FIRN_TITLE_PAGE_BYTES);
+    /* what is left is blank lines of full width: a few on a screen, not two thousand */
+    for (size_t i = 0; i < FIRN_TITLE_PAGE_BYTES; i++)
+        page[i] = (FIRN_TITLE_PAGE_BYTES - 1 - i) % BLANK_COLUMNS == 0 ? '\n' : ' ';
     memcpy(page, words, text.used);
     *wrong = NULL;
     return FIRN_OK;

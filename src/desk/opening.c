@@ -66,11 +66,13 @@ void firn_opening_show_layout(struct firn_view *view, const struct firn_reader_l
     firn_text_start(&text, words, sizeof words);
     if (g->m == 0)
         firn_text_add(&text, "NONE: a lost block cannot be rebuilt");
-    else
+    else if (layout->sheets > 1)
         firn_text_add(&text, "any %u of the %u blocks of a row; any run of %s", (unsigned)g->m, (unsigned)g->k + g->m,
-                      firn_text_size((uint64_t)(layout->sheets > 1 ? (uint32_t)g->m * g->depth
-                                                                   : layout->last_sheet.reserve_blocks)
-                                         * 4096, run));
+                      firn_text_size((uint64_t)g->m * g->depth * 4096, run));
+    else
+        firn_text_add(&text, "any %u of the %u blocks of a row; any run of %s", layout->last_sheet.m,
+                      layout->last_sheet.k + layout->last_sheet.m,
+                      firn_text_size((uint64_t)layout->last_sheet.reserve_blocks * 4096, run));
     firn_view_words(view, "", "can be lost", words);
     firn_view_words(view, "", "stray bits", "64 lanes a block, one flipped bit each is mended");
 }
