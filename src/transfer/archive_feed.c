@@ -7,14 +7,20 @@
 
 #include <errno.h>
 #include <fcntl.h>
+#include <locale.h>
 #include <sys/stat.h>
 #include <unistd.h>
 
-enum { PORTION_BYTES = 1 << 18, PEEK_BYTES = 6, RECORD_BYTES = 512 };
+/* PEEK_BYTES: an ISO 9660 image begins with 16 sectors of anything */
+enum { PORTION_BYTES = 1 << 18, ISO_MARK_AT = 32769, PEEK_BYTES = ISO_MARK_AT + 5, RECORD_BYTES = 512 };
 
 struct firn_archive_feed {
     const struct firn_memory *memory;
     struct archive *archive;
+    struct archive_entry *entry;
+    bool ahead;                      /* an entry was read, but not handed out */
+    int ahead_result;
+    locale_t bytes, unicode, locale, before;      /* locale is one of the first two */
     int descriptor;
     bool own;                        /* the descriptor is closed with the feed */
     bool searchable;
@@ -168,11 +174,46 @@ static enum firn_status start_reading(struct firn_archive_feed *feed, const char
     return firn_fault_tell(fault, feed->os_error != 0 ? FIRN_IO : FIRN_BAD_DATA, feed->os_error, 0, path);
 }
 
+static bool names_are_bytes(int family)
+{
+    return family == ARCHIVE_FORMAT_TAR || family == ARCHIVE_FORMAT_CPIO || family == ARCHIVE_FORMAT_AR
+        || family == ARCHIVE_FORMAT_LHA || family == ARCHIVE_FORMAT_RAW;
+}
+
+/* Which format it is shows with the first entry. If its names are in Unicode, it is read again from the start. */
+static enum firn_status find_locale(struct firn_archive_feed *feed, const char *path, struct firn_fault *fault)
+{
+    enum firn_status status;
+
+    feed->locale = feed->bytes;
+    status = start_reading(feed, path, fault);
+    if (status != FIRN_OK)
+        return status;
+    feed->ahead_result = firn_archive_feed_next(feed, &feed->entry);
+    feed->ahead = true;
+    if (!feed->searchable || names_are_bytes(firn_archive_feed_family(feed)))
+        return FIRN_OK;
+    archive_read_free(feed->archive);
+    feed->at = 0;
+    feed->ahead = false;
+    feed->locale = feed->unicode;
+    return start_reading(feed, path, fault);
+}
+
 /* ---- opening ---- */
 
+/* Archives whose list of contents is elsewhere than at their start, or whose names are in Unicode. */
 static bool needs_searching(const uint8_t *bytes, size_t count)
 {
-    return (count >= 4 && memcmp(bytes, "PK", 2) == 0) || (count >= 6 && memcmp(bytes, "7z\xBC\xAF\x27\x1C", 6) == 0);
+    static const struct { size_t at, count; const char *mark; } marks[] = {
+        { 0, 2, "PK" },   { 0, 6, "7z\xBC\xAF\x27\x1C" }, { ISO_MARK_AT, 5, "CD001" },
+        { 0, 4, "Rar!" }, { 0, 4, "xar!" },               { 0, 4, "MSCF" },
+    };
+
+    for (size_t i = 0; i < sizeof marks / sizeof marks[0]; i++)
+        if (count >= marks[i].at + marks[i].count && memcmp(bytes + marks[i].at, marks[i].mark, marks[i].count) == 0)
+            return true;
+    return false;
 }
 
 /* Copies what was peeked at and all that follows to a temporary file. */
@@ -245,12 +286,17 @@ enum firn_status firn_archive_feed_open(const char *path, const struct firn_memo
         return firn_fault_tell(fault, FIRN_NO_MEMORY, 0, 0, path);
     feed->memory = memory;
     feed->descriptor = -1;
+    feed->bytes = newlocale(LC_CTYPE_MASK, "C", (locale_t)0);
+    feed->unicode = newlocale(LC_CTYPE_MASK, "C.UTF-8", (locale_t)0);
+    feed->entry = archive_entry_new();
     feed->portions[0] = memory->get(memory->self, PORTION_BYTES);
     feed->portions[1] = memory->get(memory->self, PORTION_BYTES);
-    status = feed->portions[0] == NULL || feed->portions[1] == NULL ? firn_fault_tell(fault, FIRN_NO_MEMORY, 0, 0, path)
-                                                                    : open_input(feed, path, fault);
+    if (feed->bytes == (locale_t)0 || feed->entry == NULL || feed->portions[0] == NULL || feed->portions[1] == NULL)
+        status = firn_fault_tell(fault, FIRN_NO_MEMORY, 0, 0, path);
+    else
+        status = open_input(feed, path, fault);
     if (status == FIRN_OK)
-        status = start_reading(feed, path, fault);
+        status = find_locale(feed, path, fault);
     if (status != FIRN_OK) {
         firn_archive_feed_close(feed);
         return status;
@@ -264,6 +310,11 @@ void firn_archive_feed_close(struct firn_archive_feed *feed)
     if (feed == NULL)
         return;
     archive_read_free(feed->archive);
+    archive_entry_free(feed->entry);
+    if (feed->bytes != (locale_t)0)
+        freelocale(feed->bytes);
+    if (feed->unicode != (locale_t)0)
+        freelocale(feed->unicode);
     if (feed->spool.close != NULL)
         feed->spool.close(feed->spool.self);
     if (feed->own && feed->descriptor >= 0)
@@ -274,6 +325,36 @@ void firn_archive_feed_close(struct firn_archive_feed *feed)
 }
 
 /* ---- asking ---- */
+
+void firn_archive_feed_enter(struct firn_archive_feed *feed)
+{
+    feed->before = uselocale(feed->locale);
+}
+
+void firn_archive_feed_leave(struct firn_archive_feed *feed)
+{
+    (void)uselocale(feed->before);
+}
+
+int firn_archive_feed_next(struct firn_archive_feed *feed, struct archive_entry **entry)
+{
+    int result;
+
+    *entry = feed->entry;
+    if (feed->ahead) {
+        feed->ahead = false;
+        return feed->ahead_result;
+    }
+    firn_archive_feed_enter(feed);
+    result = archive_read_next_header2(feed->archive, feed->entry);
+    firn_archive_feed_leave(feed);
+    return result;
+}
+
+int firn_archive_feed_family(struct firn_archive_feed *feed)
+{
+    return archive_format(feed->archive) & ARCHIVE_FORMAT_BASE_MASK;
+}
 
 struct archive *firn_archive_feed_archive(struct firn_archive_feed *feed)
 {
@@ -296,10 +377,9 @@ static int byte_at(const struct firn_archive_feed *feed, uint64_t at)
 
 bool firn_archive_feed_ended_well(struct firn_archive_feed *feed)
 {
-    int format = archive_format(feed->archive) & ARCHIVE_FORMAT_BASE_MASK;
     la_int64_t end = archive_filter_bytes(feed->archive, 0);
 
-    if (format != ARCHIVE_FORMAT_TAR || archive_filter_count(feed->archive) > 1 || end < RECORD_BYTES)
+    if (firn_archive_feed_family(feed) != ARCHIVE_FORMAT_TAR || archive_filter_count(feed->archive) > 1 || end < RECORD_BYTES)
         return true;
     for (uint64_t at = (uint64_t)end - RECORD_BYTES; at < (uint64_t)end; at++)
         if (byte_at(feed, at) > 0)

@@ -37,7 +37,7 @@ struct job {
     struct firn_intake_run run;
     struct firn_archive_feed *feed;
     struct archive *archive;
-    struct archive_entry *entry;            /* the one read last */
+    struct archive_entry *entry;            /* the one read last, lent by feed */
     struct firn_holes holes;
     struct firn_store spool;                /* for content of unknown size; open if read_at is there */
     struct firn_digest *digest;
@@ -158,14 +158,20 @@ static enum firn_status take_flow(void *self, uint64_t at, const uint8_t *bytes,
 
 /* ---- storing ---- */
 
+/* The stored name of an entry: making a header puts a slash behind that of a folder. */
+static const char *name_of(struct job *job, struct archive_entry *entry)
+{
+    return entry == job->entry ? job->name : archive_entry_pathname(entry);
+}
+
 /* The entry, which is under its stored name by now; announced, but without its end. */
 static enum firn_status announce(struct job *job, struct archive_entry *entry, const struct firn_item *item)
 {
     enum firn_status status;
 
-    firn_pax_leave(job->run.pax);      /* making a header goes by its own locale */
-    status = firn_intake_run_announce(&job->run, entry, item, given_name(job));
-    firn_pax_enter(job->run.pax);
+    firn_archive_feed_leave(job->feed);      /* making a header goes by a locale of its own */
+    status = firn_intake_run_announce(&job->run, entry, item, name_of(job, entry));
+    firn_archive_feed_enter(job->feed);
     return status;
 }
 
@@ -358,7 +364,7 @@ static enum firn_status store_bare(struct job *job, struct archive_entry *entry,
 {
     const struct firn_item item = { .has_content = false };
     struct firn_intake_item told = {
-        .name = archive_entry_pathname(entry), .link = archive_entry_hardlink(entry), .sha256 = sha256
+        .name = name_of(job, entry), .link = archive_entry_hardlink(entry), .sha256 = sha256
     };
     enum firn_status status;
 
@@ -521,7 +527,7 @@ static enum firn_status take_hard_link(struct job *job)
 
 static enum firn_status take_file(struct job *job)
 {
-    bool cpio = (archive_format(job->archive) & ARCHIVE_FORMAT_BASE_MASK) == ARCHIVE_FORMAT_CPIO;
+    bool cpio = firn_archive_feed_family(job->feed) == ARCHIVE_FORMAT_CPIO;
 
     if (!archive_entry_size_is_set(job->entry))
         return take_unsized(job);
@@ -582,6 +588,16 @@ static bool name_entry(struct job *job)
     return true;
 }
 
+/* A time of -1.25 seconds in a tar archive comes from libarchive as -1 and .25 apart; it is -2 and .75. */
+static void mend_time(struct job *job)
+{
+    time_t seconds = archive_entry_mtime(job->entry);
+    long nanoseconds = archive_entry_mtime_nsec(job->entry);
+
+    if (firn_archive_feed_family(job->feed) == ARCHIVE_FORMAT_TAR && seconds < 0 && nanoseconds > 0)
+        archive_entry_set_mtime(job->entry, seconds - 1, 1000000000 - nanoseconds);
+}
+
 static bool is_plain_file(struct archive_entry *entry)
 {
     return archive_entry_hardlink(entry) == NULL && archive_entry_filetype(entry) == AE_IFREG;
@@ -600,6 +616,7 @@ static enum firn_status take_entry(struct job *job)
         return is_plain_file(job->entry) ? miss(job, job->name) : FIRN_OK;
     }
     archive_entry_copy_pathname(job->entry, job->name);
+    mend_time(job);
     return take_kind(job);
 }
 
@@ -627,7 +644,7 @@ static enum firn_status take_all(struct job *job, const char *path)
     unsigned retries = 0;
 
     while (status == FIRN_OK && !job->broken && (status = firn_intake_run_go_on(&job->run)) == FIRN_OK) {
-        int result = archive_read_next_header2(job->archive, job->entry);
+        int result = firn_archive_feed_next(job->feed, &job->entry);
 
         if (result == ARCHIVE_EOF) {
             if (firn_archive_feed_ended_well(job->feed))
@@ -640,12 +657,14 @@ static enum firn_status take_all(struct job *job, const char *path)
             tell_break(job, path);
         } else if (result < ARCHIVE_WARN || result == ARCHIVE_RETRY) {
             retries++;
-            tell(job, FIRN_INTAKE_UNREADABLE, 0, words(job));
+            firn_intake_run_tell(&job->run, FIRN_INTAKE_UNREADABLE, path, 0, words(job));
         } else if (is_no_archive(job)) {
             return firn_fault_tell(job->run.fault, FIRN_BAD_DATA, 0, 0, path);
         } else {
             retries = 0;
+            firn_archive_feed_enter(job->feed);
             status = take_entry(job);
+            firn_archive_feed_leave(job->feed);
             if (status == FIRN_END)      /* told of already */
                 status = miss(job, job->name);
         }
@@ -681,9 +700,6 @@ static enum firn_status start(struct job *job, const char *path)
         status = firn_names_make(memory, sizeof(struct summed), &job->summed);
     if (status == FIRN_OK)
         status = firn_names_make(memory, 0, &job->missing);
-    job->entry = archive_entry_new();
-    if (status == FIRN_OK && job->entry == NULL)
-        status = FIRN_NO_MEMORY;
     if (status != FIRN_OK)
         return firn_fault_tell(job->run.fault, status, 0, 0, path);
     status = firn_archive_feed_open(path, memory, job->run.fault, &job->feed);
@@ -700,7 +716,6 @@ static void end(struct job *job)
     firn_names_free(job->summed);
     firn_names_free(job->missing);
     firn_archive_feed_close(job->feed);
-    archive_entry_free(job->entry);
     firn_holes_end(&job->holes);
     firn_digest_free(job->digest);
     if (job->spool.close != NULL)
@@ -714,19 +729,20 @@ static enum firn_status run(struct job *job, const char *path)
 
     firn_holes_start(&job->holes, job->run.memory);
     job->lone_name = lone_name_of(path, lone);
-    firn_pax_enter(job->run.pax);
     status = start(job, path);
     if (status == FIRN_OK)
         status = take_all(job, path);
-    if (status == FIRN_OK)
+    if (status == FIRN_OK) {
+        firn_archive_feed_enter(job->feed);
         status = release_all(job, true);
+        firn_archive_feed_leave(job->feed);
+    }
     if (status == FIRN_OK && job->damaged && !job->run.options->keep_beginning) {
         int os_error = firn_archive_feed_error(job->feed);
 
         status = firn_fault_tell(job->run.fault, os_error != 0 ? FIRN_IO : FIRN_BAD_DATA, os_error, 0, path);
     }
     end(job);
-    firn_pax_leave(job->run.pax);
     return status;
 }
 

@@ -73,13 +73,14 @@ static enum firn_status gather(struct job *job, const void *bytes, size_t count)
 {
     const struct firn_memory *memory = job->run.memory;
     void *header = job->header;
-    enum firn_status status =
-        firn_memory_grow(memory, &header, &job->header_capacity, job->header_used + count, 1);
+    enum firn_status status = firn_memory_grow(memory, &header, &job->header_capacity, job->header_used + count, 1);
 
     job->header = header;
     if (status == FIRN_OK) {
         memcpy(job->header + job->header_used, bytes, count);
         job->header_used += count;
+    } else {
+        job->over = firn_fault_tell(job->run.fault, status, 0, 0, job->run.name);
     }
     return status;
 }
@@ -117,6 +118,8 @@ static enum firn_status begin_entry(struct job *job, struct archive_entry *entry
     job->at = 0;
     if (job->archive == NULL)
         return firn_fault_tell(job->run.fault, FIRN_NO_MEMORY, 0, 0, job->run.name);
+    if (job->over != FIRN_OK)
+        return job->over;
     if (result == ARCHIVE_OK || result == ARCHIVE_WARN) {
         firn_pax_time_mend(job->header, job->header_used);
         return put(job, job->header, job->header_used);
@@ -127,7 +130,6 @@ static enum firn_status begin_entry(struct job *job, struct archive_entry *entry
 
 static void drop_entry(struct job *job)
 {
-    /* closed, not failed: libarchive 3.6 keeps the client's data for good when a failed archive is freed */
     job->dropping = true;
     if (job->archive != NULL)
         (void)archive_write_close(job->archive);

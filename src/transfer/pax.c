@@ -16,7 +16,7 @@ struct firn_pax {
     uint8_t *bytes;                    /* the header as made, or as changed for reading */
     size_t used, capacity;
     bool out_of_memory;
-    bool header_done;                 /* what libarchive writes now is not wanted */
+    bool header_done;                  /* what libarchive writes now is not wanted */
 };
 
 enum firn_status firn_pax_make(const struct firn_memory *memory, struct firn_pax **out)
@@ -198,8 +198,6 @@ enum firn_status firn_pax_header(struct firn_pax *pax, struct archive_entry *ent
     firn_pax_enter(pax);
     archive = firn_pax_writer(pax, entry, collect, pax);
     if (archive != NULL) {
-        /* Closed, not failed: libarchive 3.6 keeps the client's data for good when a failed archive is freed. Closing fills
-           up the content that was announced; the callback refuses the first of it. */
         result = archive_write_header(archive, entry);
         pax->header_done = true;
         (void)archive_write_close(archive);

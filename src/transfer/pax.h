@@ -37,7 +37,8 @@ void firn_pax_strip(struct archive_entry *entry);
 
 /*
  * An open libarchive writer whose options suit this entry, and which hands its bytes to write unbuffered. Call within
- * enter and leave; free it by archive_write_fail and archive_write_free, so that it adds nothing. NULL: memory is out.
+ * enter and leave. Close it while write refuses, then free it: it adds nothing then. (libarchive 3.6 never gives back
+ * some memory of a writer that is freed after it failed.) NULL: memory is out.
  */
 struct archive *firn_pax_writer(struct firn_pax *pax, struct archive_entry *entry, archive_write_callback *write,
                                 void *self);
