@@ -538,18 +538,15 @@ static enum firn_status restore(struct job *job, struct firn_reader *reader)
         .self = job, .wants = visit_wants, .begin = visit_begin, .bytes = visit_bytes, .gap = visit_gap,
         .end = visit_end
     };
-    struct firn_reader_walk_report walked = { 0 };
     enum firn_status status;
 
     firn_outlet_place_start(&job->place, job->root);
     firn_outlet_place_start(&job->link_place, job->root);
     job->place.self = job;
     job->place.made = note_made;
-    status = firn_reader_walk(reader, &visitor, job->run.fault, &walked);
+    status = firn_outlet_run_walk(&job->run, reader, &visitor);
     if (status == FIRN_OK)
         status = job->over;
-    job->run.report->items_unknown = walked.items_unknown;
-    job->run.report->cut_short = walked.cut_short;
     give_up_file(job);
     give_all_later(job);
     firn_outlet_place_end(&job->link_place);

@@ -113,6 +113,23 @@ enum firn_status firn_outlet_run_start(struct firn_outlet_run *run, struct firn_
     return status == FIRN_OK ? survey.status : status;
 }
 
+enum firn_status firn_outlet_run_walk(struct firn_outlet_run *run, struct firn_reader *reader,
+                                      const struct firn_reader_visitor *visitor)
+{
+    struct firn_reader_walk_report walked = { 0 };
+    struct firn_fault fault = { 0 };
+    enum firn_status status;
+
+    if (run->fault != NULL)
+        *run->fault = (struct firn_fault){ 0 };
+    status = firn_reader_walk(reader, visitor, &fault, &walked);
+    if (status != FIRN_OK && run->fault != NULL && run->fault->os_error == 0 && run->fault->what[0] == '\0')
+        *run->fault = fault;
+    run->report->items_unknown = walked.items_unknown;
+    run->report->cut_short = walked.cut_short;
+    return status;
+}
+
 void firn_outlet_run_end(struct firn_outlet_run *run)
 {
     firn_pax_free(run->pax);

@@ -49,6 +49,10 @@ enum firn_status firn_outlet_run_start(struct firn_outlet_run *run, struct firn_
                                        struct firn_outlet_report *report);
 void firn_outlet_run_end(struct firn_outlet_run *run);
 
+/* firn_reader_walk; what a visitor of ours has told in run->fault stays, and report gets what the walk tells of. */
+enum firn_status firn_outlet_run_walk(struct firn_outlet_run *run, struct firn_reader *reader,
+                                      const struct firn_reader_visitor *visitor);
+
 /*
  * Makes an item the one at hand. False: it is not wanted, or cannot be given back, and that was told and counted.
  * status: FIRN_OK or FIRN_NO_MEMORY.

@@ -327,17 +327,14 @@ static enum firn_status write_archive(struct job *job, struct firn_reader *reade
         .self = job, .wants = visit_wants, .begin = visit_begin, .bytes = visit_bytes, .gap = visit_gap,
         .end = visit_end, .foresight = true
     };
-    struct firn_reader_walk_report walked = { 0 };
     enum firn_status status;
 
     job->buffer = job->run.memory->get(job->run.memory->self, BUFFER_BYTES);
     job->zeros = firn_memory_get_zeroed(job->run.memory, 1, ZEROS_BYTES);
     if (job->buffer == NULL || job->zeros == NULL)
         return firn_fault_tell(job->run.fault, FIRN_NO_MEMORY, 0, 0, "");
-    status = firn_reader_walk(reader, &visitor, job->run.fault, &walked);
+    status = firn_outlet_run_walk(&job->run, reader, &visitor);
     drop_entry(job);
-    job->run.report->items_unknown = walked.items_unknown;
-    job->run.report->cut_short = walked.cut_short;
     if (status == FIRN_OK)
         status = job->over;
     if (status == FIRN_OK)
