@@ -151,7 +151,8 @@ void box_wipe(struct box *box, uint64_t first_block, uint64_t blocks)
     int os_error;
 
     for (uint64_t i = 0; i < blocks; i++)
-        need(box->store.write_at(box->store.self, 4096 * (first_block + i + 1), zeros, sizeof zeros, &os_error) == FIRN_OK,
+        need(box->store.write_at(box->store.self, 4096 * (first_block + i + 1), zeros, sizeof zeros, &os_error) ==
+                 FIRN_OK,
              "wipe");
 }
 

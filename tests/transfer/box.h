@@ -29,7 +29,10 @@ struct box {
     uint8_t sha256[FIRN_ITEM_SHA256_BYTES];    /* of the item stored last, if it had one */
 };
 
-/* A writer without reserve, so that any damage is loss; stops the test program when that fails. memory NULL: the system's. */
+/*
+ * A writer without reserve, so that any damage is loss; stops the test program when that fails. memory NULL: the
+ * system's.
+ */
 struct box *box_make(const struct firn_memory *memory);
 void box_free(struct box *box);
 

@@ -1,4 +1,7 @@
-/* tests/transfer/test_archive.c - archives taken in: every format, links of all kinds, and archives that are broken or evil */
+/*
+ * tests/transfer/test_archive.c - archives taken in: every format, links of all kinds, and archives that are broken or
+ * evil
+ */
 /* SPDX-License-Identifier: BSD-2-Clause */
 #include "transfer/box.h"
 #include "transfer/tree.h"
@@ -163,13 +166,15 @@ static void reads_format(void **state)
 
 /* ---- archives by other hands ---- */
 
-static const struct tool_case { const char *what, *command; unsigned may_differ; } tool_cases[] = {
-    { "GNU tar, pax, with everything",
-      "tar --xattrs --xattrs-include='*' --acls --sparse --format=pax -C all -cf a .", TREE_ANY_HOLES },
-    { "GNU tar, plain", "tar --sparse --format=gnu -C some -cf a .", TREE_ANY_HOLES },
-    { "GNU tar, two parts after each other", "tar --format=ustar -C some -cf a . && tar --format=ustar -C some -rf a ./y",
+static const struct tool_case { const char *what, *command; unsigned may_differ;
+} tool_cases[] = {
+    { "GNU tar, pax, with everything", "tar --xattrs --xattrs-include='*' --acls --sparse --format=pax -C all -cf a .",
       TREE_ANY_HOLES },
-    { "GNU tar and pigs in blankets: gzip of xz", "tar --format=gnu -C some -c . | xz -0 | gzip -1 > a", TREE_ANY_HOLES },
+    { "GNU tar, plain", "tar --sparse --format=gnu -C some -cf a .", TREE_ANY_HOLES },
+    { "GNU tar, two parts after each other",
+      "tar --format=ustar -C some -cf a . && tar --format=ustar -C some -rf a ./y", TREE_ANY_HOLES },
+    { "GNU tar and pigs in blankets: gzip of xz", "tar --format=gnu -C some -c . | xz -0 | gzip -1 > a",
+      TREE_ANY_HOLES },
     { "ar", "cd like-ar && rm -f ../a && ar rcU ../a empty large", 0 },
     { "zip", "cd some && zip -qry ../a.zip . && mv ../a.zip ../a", TREE_ANY_HOLES },
     { "zip through a pipe", "cd some && zip -qry - . > ../a", TREE_ANY_HOLES },
@@ -179,7 +184,9 @@ static void reads_others(void **state)
 {
     const struct tool_case *c = *state;
     struct box *box = box_make(NULL);
-    const char *like = strstr(c->command, " all ") != NULL ? "all" : strstr(c->command, "like-ar") != NULL ? "like-ar" : "some";
+    const char *like = strstr(c->command, " all ") != NULL     ? "all"
+                       : strstr(c->command, "like-ar") != NULL ? "like-ar"
+                                                               : "some";
 
     run("rm -f a");
     run(c->command);
@@ -227,22 +234,41 @@ static const struct link_case {
 } link_cases[] = {
     { "the bytes come with the last name",
       { { "x/a", 1, 3, "" }, { "x/b", 1, 3, "" }, { "y", 2, 1, "other" }, { "x/c", 1, 3, "shared" } },
-      "y\nx/a\nx/b -> x/a\nx/c -> x/a\n", "", "shared", "test x/a -ef x/b && test x/a -ef x/c && test $(cat y) = other" },
+      "y\nx/a\nx/b -> x/a\nx/c -> x/a\n",
+      "",
+      "shared",
+      "test x/a -ef x/b && test x/a -ef x/c && test $(cat y) = other" },
     { "the bytes come with the second name",
       { { "x/a", 1, 3, "" }, { "x/b", 1, 3, "shared" }, { "x/c", 1, 3, "" } },
-      "x/a\nx/b -> x/a\nx/c -> x/a\n", "", "shared", "test x/a -ef x/b && test x/a -ef x/c" },
+      "x/a\nx/b -> x/a\nx/c -> x/a\n",
+      "",
+      "shared",
+      "test x/a -ef x/b && test x/a -ef x/c" },
     { "the bytes come with every name",
       { { "x/a", 1, 3, "shared" }, { "x/b", 1, 3, "shared" }, { "x/c", 1, 3, "shared" } },
-      "x/a\nx/b -> x/a\nx/c -> x/a\n", "", "shared", "test x/a -ef x/b && test x/a -ef x/c" },
+      "x/a\nx/b -> x/a\nx/c -> x/a\n",
+      "",
+      "shared",
+      "test x/a -ef x/b && test x/a -ef x/c" },
     { "other bytes come with the second name",
       { { "x/a", 1, 2, "first" }, { "x/b", 1, 2, "second" } },
-      "x/a\nx/b\n", "unlinked x/b\n", "second", "test $(cat x/a) = first" },
-    { "no bytes come at all", { { "x/a", 1, 2, "" }, { "x/b", 1, 2, "" } },
-      "x/a\nx/b -> x/a\n", "", "", "test x/a -ef x/b" },
+      "x/a\nx/b\n",
+      "unlinked x/b\n",
+      "second",
+      "test $(cat x/a) = first" },
+    { "no bytes come at all",
+      { { "x/a", 1, 2, "" }, { "x/b", 1, 2, "" } },
+      "x/a\nx/b -> x/a\n",
+      "",
+      "",
+      "test x/a -ef x/b" },
     { "the other names are not in the archive", { { "x/b", 1, 2, "" } }, "x/b\n", "", "", "test ! -s x/b" },
     { "two files of several names, mixed",
       { { "x/b", 1, 2, "" }, { "p", 2, 2, "" }, { "q", 2, 2, "two" }, { "x/z", 1, 2, "one" } },
-      "p\nq -> p\nx/b\nx/z -> x/b\n", "", "one", "test p -ef q && test x/b -ef x/z && test $(cat q) = two" },
+      "p\nq -> p\nx/b\nx/z -> x/b\n",
+      "",
+      "one",
+      "test p -ef q && test x/b -ef x/z && test $(cat q) = two" },
 };
 
 static void keeps_links(void **state)
@@ -401,16 +427,18 @@ static void takes_a_lone_file(void **state)
 
 /* ---- what is no archive, or broken ---- */
 
-static const struct junk_case { const char *what, *command; enum firn_status status; } junk_cases[] = {
+static const struct junk_case { const char *what, *command; enum firn_status status;
+} junk_cases[] = {
     { "not there", "rm -f a", FIRN_NO_INPUT },
     { "empty", ": > a", FIRN_BAD_DATA },
     { "text", "echo 'this is no archive, but words' > a", FIRN_BAD_DATA },
     { "noise", "head -c 100000 some/x > a", FIRN_BAD_DATA },
-    { "zeros alone", "head -c 10240 /dev/zero > a", FIRN_OK },      /* what tar makes of nothing: an end mark */
+    { "zeros alone", "head -c 10240 /dev/zero > a", FIRN_OK }, /* what tar makes of nothing: an end mark */
     { "mtree, which names other files",
       "printf '#mtree\\n./passwd type=file contents=/etc/passwd mode=0644 size=5\\n' > a", FIRN_BAD_DATA },
     { "a folder", "rm -f a; mkdir -p some/folder; ln -sfn some/folder a", FIRN_IO },
-    { "lrzip, which another program would read", "rm -f a; (printf 'LRZI\\0\\6'; head -c 9000 some/x) > a", FIRN_BAD_DATA },
+    { "lrzip, which another program would read", "rm -f a; (printf 'LRZI\\0\\6'; head -c 9000 some/x) > a",
+      FIRN_BAD_DATA },
     { "lzop, likewise", "(printf '\\211LZO\\0\\r\\n\\032\\n\\020\\100'; head -c 9000 some/x) > a", FIRN_BAD_DATA },
     { "grzip, likewise", "(printf 'GRZipII\\0\\2\\4:)'; head -c 9000 some/x) > a", FIRN_BAD_DATA },
 };
@@ -433,12 +461,12 @@ static void refuses_junk(void **state)
         assert_int_equal(box->taken.items, 0);
         box_free(box);
     }
-    assert_int_not_equal(access("started", F_OK), 0);      /* by the programs of those names that set_up put in the way */
+    assert_int_not_equal(access("started", F_OK), 0);      /* by the programs that set_up put in the way */
 }
 
 /*
- * A tar archive cut at every place that matters, plain and compressed: never taken for whole. What came before the cut is
- * stored, and whole, if the caller asks for it.
+ * A tar archive cut at every place that matters, plain and compressed: never taken for whole. What came before the cut
+ * is stored, and whole, if the caller asks for it.
  */
 static void notices_cuts(void **state)
 {
@@ -510,7 +538,8 @@ static void knows_encryption(void **state)
 
 static void lives_without_memory(void **state)
 {
-    static const char *const makes[] = { "tar --format=pax -C like -cf a .", "rm -f a; cd like && zip -qry ../a.zip . && mv ../a.zip ../a" };
+    static const char *const makes[] = { "tar --format=pax -C like -cf a .",
+                                         "rm -f a; cd like && zip -qry ../a.zip . && mv ../a.zip ../a" };
 
     (void)state;
     for (size_t i = 0; i < sizeof makes / sizeof makes[0]; i++) {
@@ -591,10 +620,12 @@ int main(void)
         cmocka_unit_test_setup(lives_without_memory, start_afresh),
     };
 
-#define ROWS(function, rows, label)                                                                                     \
-    for (size_t i = 0; i < COUNT(rows); i++)                                                                            \
-        tests[count++] = (struct CMUnitTest){ .name = (rows)[i].label, .test_func = function,                           \
-                                              .setup_func = start_afresh, .initial_state = (void *)(uintptr_t)&(rows)[i] }
+#define ROWS(function, rows, label)                                                                                    \
+    for (size_t i = 0; i < COUNT(rows); i++)                                                                           \
+    tests[count++] = (struct CMUnitTest){ .name = (rows)[i].label,                                                     \
+                                          .test_func = function,                                                       \
+                                          .setup_func = start_afresh,                                                  \
+                                          .initial_state = (void *)(uintptr_t) & (rows)[i] }
     ROWS(reads_format, format_cases, name);
     ROWS(reads_others, tool_cases, what);
     ROWS(keeps_links, link_cases, what);

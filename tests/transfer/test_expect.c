@@ -152,7 +152,8 @@ static void follows_links(void **state)
 /* Names that coreutils itself wrote. */
 static void reads_sha256sum(void **state)
 {
-    static const char *const names[] = { "plain", "two words", "new\nline", "back\\slash", "100%25", "\xE9", "*star", "\rcr" };
+    static const char *const names[] = { "plain",  "two words", "new\nline", "back\\slash",
+                                         "100%25", "\xE9",      "*star",     "\rcr" };
     struct firn_fault fault;
     struct firn_expect *expect;
 

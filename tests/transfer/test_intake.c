@@ -1,4 +1,6 @@
-/* tests/transfer/test_intake.c - folders taken in: names, order, links, holes, depth, and everything that can go wrong */
+/*
+ * tests/transfer/test_intake.c - folders taken in: names, order, links, holes, depth, and everything that can go wrong
+ */
 /* SPDX-License-Identifier: BSD-2-Clause */
 #include "transfer/box.h"
 #include "transfer/tree.h"
@@ -57,7 +59,8 @@ static void takes_operands(void **state)
 
     while (count < 3 && c->operands[count] != NULL)
         count++;
-    assert_int_equal(firn_intake_paths(box->writer, c->operands, count, &box->intake, &box->fault, &box->taken), FIRN_OK);
+    assert_int_equal(firn_intake_paths(box->writer, c->operands, count, &box->intake, &box->fault, &box->taken),
+                     FIRN_OK);
     assert_string_equal(box->items, c->items);
     assert_string_equal(box->notes, c->notes);
     box_free(box);
@@ -69,7 +72,10 @@ static const struct operand_case inner_cases[] = {
     { "up", { "../names/A" }, "names/A\n", "" },
     { "up, and one of that name", { "../names/A", "names/A" }, "names/A\n", "duplicate names/A\n" },
     { "up, and a folder of that name", { "../names/B", "names" }, "names/B\nnames/B/x\nnames\nnames/A\n", "" },
-    { "a file where a folder was stored", { "../other/deep/names", "other" }, "other/deep/names\n", "duplicate other\n" },
+    { "a file where a folder was stored",
+      { "../other/deep/names", "other" },
+      "other/deep/names\n",
+      "duplicate other\n" },
     { "a folder's name is a file's", { "other", "../other/deep" }, "other\n", "duplicate ../other/deep\n" },
     { "dot, and one in it", { ".", "names/A" }, "names\nnames/A\nother\n", "skipped names/A\n" },
     { "one in it, and dot", { "names/A", "." }, "names/A\nnames\nother\n", "skipped ./names/A\n" },
@@ -221,7 +227,10 @@ static void watch_descriptors(void *self, const struct firn_intake_item *item)
     most_open = now > most_open ? now : most_open;
 }
 
-/* Folders in folders, made from inside since no path would reach them; a file beside each folder, so that ways lead back. */
+/*
+ * Folders in folders, made from inside since no path would reach them; a file beside each folder, so that ways lead
+ * back.
+ */
 static void make_deep(const char *path, unsigned depth, const char *name)
 {
     int start = open(".", O_RDONLY | O_DIRECTORY);
@@ -285,7 +294,8 @@ static void goes_deep(void **state)
 /* Names longer than PATH_MAX together cannot be stored: said once for each name, the rest is there. */
 static void goes_too_deep(void **state)
 {
-    static const char name[] = "a rather long name for a folder that lies in itself again and again, a hundred bytes in all ......";
+    static const char
+        name[] = "a rather long name for a folder that lies in itself again and again, a hundred bytes in all ......";
     struct box *box = box_make(NULL);
 
     (void)state;
@@ -582,10 +592,11 @@ int main(void)
         cmocka_unit_test(lives_without_memory), cmocka_unit_test(same_bytes),
     };
 
-#define ROWS(function, rows)                                                                                            \
-    for (size_t i = 0; i < COUNT(rows); i++)                                                                            \
-        tests[count++] = (struct CMUnitTest){ .name = (rows)[i].what, .test_func = function,                            \
-                                              .initial_state = (void *)(uintptr_t)&(rows)[i] }
+#define ROWS(function, rows)                                                                                           \
+    for (size_t i = 0; i < COUNT(rows); i++)                                                                           \
+    tests[count++] = (struct CMUnitTest){ .name = (rows)[i].what,                                                      \
+                                          .test_func = function,                                                       \
+                                          .initial_state = (void *)(uintptr_t) & (rows)[i] }
     ROWS(takes_operands, operand_cases);
     ROWS(takes_inner_operands, inner_cases);
     ROWS(meets_change, change_cases);

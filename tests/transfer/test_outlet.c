@@ -120,7 +120,8 @@ static const struct way_case {
     const char *after;              /* must hold */
 } way_cases[] = {
     { "the file is there", "mkdir -p out/small && echo mine > out/small/a", false,
-      "exists small/a\nlink small/d/hard\nlink small/z\n", "test \"$(cat out/small/a)\" = mine && test -f out/small/d/b" },
+      "exists small/a\nlink small/d/hard\nlink small/z\n",
+      "test \"$(cat out/small/a)\" = mine && test -f out/small/d/b" },
     { "the file is there, replace", "mkdir -p out/small && echo mine > out/small/a", true, "",
       "cmp out/small/a small/a && test out/small/a -ef out/small/z" },
     { "the folder is there", "mkdir -p out/small/d && chmod 711 out/small/d", false, "",
@@ -128,11 +129,12 @@ static const struct way_case {
     { "the folder is there, replace", "mkdir -p out/small/d && chmod 711 out/small/d", true, "",
       "test \"$(stat -c %a out/small/d)\" = \"$(stat -c %a small/d)\"" },
     { "a file where a folder goes", "mkdir -p out/small && echo mine > out/small/d", false,
-      "exists small/d\nrefused small/d/b\nrefused small/d/c\nrefused small/d/hard\n", "test \"$(cat out/small/d)\" = mine" },
+      "exists small/d\nrefused small/d/b\nrefused small/d/c\nrefused small/d/hard\n",
+      "test \"$(cat out/small/d)\" = mine" },
     { "a file where a folder goes, replace", "mkdir -p out/small && echo mine > out/small/d", true, "",
       "cmp out/small/d/b small/d/b" },
-    { "a folder where a file goes", "mkdir -p out/small/a/x", false, "exists small/a\nlink small/d/hard\nlink small/z\n",
-      "test -d out/small/a/x" },
+    { "a folder where a file goes", "mkdir -p out/small/a/x", false,
+      "exists small/a\nlink small/d/hard\nlink small/z\n", "test -d out/small/a/x" },
     { "a folder where a file goes, replace", "mkdir -p out/small/a", true,
       "exists small/a\nlink small/d/hard\nlink small/z\n", "test -d out/small/a" },
     { "a folder where a link goes, replace", "mkdir -p out/small/link", true, "exists small/link\n",
@@ -140,9 +142,10 @@ static const struct way_case {
     { "a link out of the target where a folder goes", "mkdir -p out/small && ln -s ../../kept-apart out/small/d", false,
       "exists small/d\nrefused small/d/b\nrefused small/d/c\nrefused small/d/hard\n", "test -L out/small/d" },
     { "a link out of the target where a folder goes, replace",
-      "mkdir -p out/small && ln -s ../../kept-apart out/small/d", true, "", "test -d out/small/d && test ! -L out/small/d" },
-    { "a link out of the target where a file goes", "mkdir -p out/small && ln -s ../../kept-apart/file out/small/a", false,
-      "exists small/a\nlink small/d/hard\nlink small/z\n", "test -L out/small/a" },
+      "mkdir -p out/small && ln -s ../../kept-apart out/small/d", true, "",
+      "test -d out/small/d && test ! -L out/small/d" },
+    { "a link out of the target where a file goes", "mkdir -p out/small && ln -s ../../kept-apart/file out/small/a",
+      false, "exists small/a\nlink small/d/hard\nlink small/z\n", "test -L out/small/a" },
     { "a link out of the target where a file goes, replace",
       "mkdir -p out/small && ln -s ../../kept-apart/file out/small/a", true, "", "test ! -L out/small/a" },
     { "a broken link where a file goes", "mkdir -p out/small && ln -s nowhere out/small/a", false,
@@ -153,8 +156,8 @@ static const struct way_case {
       "test \"$(readlink out/small/link)\" = a" },
     { "the file where a hard link goes", "mkdir -p out/small && echo mine > out/small/z", false, "exists small/z\n",
       "test \"$(cat out/small/z)\" = mine" },
-    { "everything already, replace", "cp -a small/. out-small 2>/dev/null; mkdir out && mv out-small out/small", true, "",
-      "test out/small/a -ef out/small/z && test out/small/a -ef out/small/d/hard" },
+    { "everything already, replace", "cp -a small/. out-small 2>/dev/null; mkdir out && mv out-small out/small", true,
+      "", "test out/small/a -ef out/small/z && test out/small/a -ef out/small/d/hard" },
 };
 
 static void meets_things(void **state)
@@ -239,7 +242,8 @@ static int own_setuid(void *self)
     tree_file("out/in/tool", "x", 1, 04755);
     tree_folder("out/in/locked", 0755);
     tree_file("out/in/locked/file", "x", 1, 0);
-    if (chmod("out/in/locked/file", 0400) != 0 || box_take_path(box, "out/in") != FIRN_OK || box_close_lid(box) != FIRN_OK)
+    if (chmod("out/in/locked/file", 0400) != 0 || box_take_path(box, "out/in") != FIRN_OK ||
+        box_close_lid(box) != FIRN_OK)
         return 2;
     if (box_give_folder(box, "out/again") != FIRN_OK || box->notes[0] != '\0')
         return 3;
@@ -484,13 +488,16 @@ static const struct evil_case {
     { "a slash", { { "/", '5', NULL } }, "refused /\n" },
     { "slashes", { { "a//b", '0', NULL } }, "refused a//b\n" },
     { "a link, then through it", { { "l", '2', "../kept-apart" }, { "l/new", '0', NULL } }, "refused l/new\n" },
-    { "a link, then a folder of its name", { { "l", '2', "../kept-apart" }, { "l", '5', NULL }, { "l/file", '0', NULL } },
+    { "a link, then a folder of its name",
+      { { "l", '2', "../kept-apart" }, { "l", '5', NULL }, { "l/file", '0', NULL } },
       "exists l\nrefused l/file\n" },
     { "an absolute link, then through it", { { "l", '2', "/tmp" }, { "l/new", '0', NULL } }, "refused l/new\n" },
     { "a folder, then a link of its name, then through it",
-      { { "d", '5', NULL }, { "d", '2', "../kept-apart" }, { "d/new", '0', NULL } }, "exists d\n" },
-    { "a link in a folder, then through both", { { "d", '5', NULL }, { "d/l", '2', "../../kept-apart" },
-      { "d/l/new", '0', NULL } }, "refused d/l/new\n" },
+      { { "d", '5', NULL }, { "d", '2', "../kept-apart" }, { "d/new", '0', NULL } },
+      "exists d\n" },
+    { "a link in a folder, then through both",
+      { { "d", '5', NULL }, { "d/l", '2', "../../kept-apart" }, { "d/l/new", '0', NULL } },
+      "refused d/l/new\n" },
     { "a hard link to outside", { { "h", '1', "../kept-apart/file" } }, "refused h\n" },
     { "a hard link to an absolute name", { { "h", '1', "/etc/passwd" } }, "refused h\n" },
     { "a hard link through a link", { { "l", '2', "../kept-apart" }, { "h", '1', "l/file" } }, "link h\n" },
@@ -505,10 +512,11 @@ static const struct evil_case {
     { "below a file", { { "f", '0', NULL }, { "f/g", '0', NULL } }, "refused f/g\n" },
     { "an unknown type", { { "x", 'Z', NULL } }, "refused \n" },
     { "a global header", { { "x", 'g', NULL } }, "refused \n" },
-    { "a name too long for any file system", {
-        { "0123456789012345678901234567890123456789012345678901234567890123456789012345678901234567890123456789"
+    { "a name too long for any file system",
+      { { "0123456789012345678901234567890123456789012345678901234567890123456789012345678901234567890123456789"
           "0123456789012345678901234567890123456789012345678901234567890123456789012345678901234567890123456789"
-          "0123456789012345678901234567890123456789012345678901234567890123456789", '0', NULL } },
+          "0123456789012345678901234567890123456789012345678901234567890123456789",
+          '0', NULL } },
       "failed 0123456789012345678901234567890123456789012345678901234567890123456789012345678901234567890123456789"
       "0123456789012345678901234567890123456789012345678901234567890123456789012345678901234567890123456789"
       "0123456789012345678901234567890123456789012345678901234567890123456789\n" },
@@ -689,7 +697,8 @@ static void leaves_whole_files_when_killed(void **state)
         (void)nanosleep(&(struct timespec){ .tv_nsec = 1000L * wait_us }, NULL);
         (void)kill(child, SIGKILL);
         (void)scratch_wait(child);
-        run("test ! -e out || (cd out && find . -type f ! -name '.firn-*' | while read -r f; do cmp \"$f\" \"../$f\" || exit 1; "
+        run("test ! -e out || (cd out && find . -type f ! -name '.firn-*' | while read -r f; do cmp \"$f\" \"../$f\" "
+            "|| exit 1; "
             "done)");
         run("test ! -e out || test $(find out -name '.firn-*' | wc -l) -le 1");
     }
@@ -797,11 +806,13 @@ int main(void)
         WHOLE(stops),                   WHOLE(lives_without_memory),    WHOLE(leaves_whole_files_when_killed),
     };
 
-#define ROWS(function, rows)                                                                                            \
-    for (size_t i = 0; i < COUNT(rows); i++)                                                                            \
-        tests[count++] = (struct CMUnitTest){ .name = (rows)[i].what, .test_func = function,                            \
-                                              .setup_func = start_afresh, .teardown_func = clean_after,                 \
-                                              .initial_state = (void *)(uintptr_t)&(rows)[i] }
+#define ROWS(function, rows)                                                                                           \
+    for (size_t i = 0; i < COUNT(rows); i++)                                                                           \
+    tests[count++] = (struct CMUnitTest){ .name = (rows)[i].what,                                                      \
+                                          .test_func = function,                                                       \
+                                          .setup_func = start_afresh,                                                  \
+                                          .teardown_func = clean_after,                                                \
+                                          .initial_state = (void *)(uintptr_t) & (rows)[i] }
     ROWS(chooses, choice_cases);
     ROWS(meets_things, way_cases);
     ROWS(stays_inside, evil_cases);

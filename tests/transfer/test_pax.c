@@ -1,4 +1,6 @@
-/* tests/transfer/test_pax.c - headers checked by eyes of the test's own, by GNU tar, and with what nobody should send */
+/*
+ * tests/transfer/test_pax.c - headers checked by eyes of the test's own, by GNU tar, and with what nobody should send
+ */
 /* SPDX-License-Identifier: BSD-2-Clause */
 #include "transfer/pax.h"
 
@@ -41,7 +43,9 @@ static size_t header_of(struct archive_entry *entry, const uint8_t **bytes)
     return count;
 }
 
-/* ---- the ustar header: row by row from IEEE Std 1003.1-2001, pax, "ustar Interchange Format"; sums recomputed by hand */
+/*
+ * ---- the ustar header: row by row from IEEE Std 1003.1-2001, pax, "ustar Interchange Format"; sums recomputed by hand
+ */
 
 static const struct ustar_case {
     const char *name, *path;
@@ -55,7 +59,9 @@ static const struct ustar_case {
     { "folder d", "d", S_IFDIR | 0755, 0, '5', "007430" },
 };
 
-/* The published sums are of numbers written as seven digits and a NUL; libarchive writes six digits, a space and a NUL. */
+/*
+ * The published sums are of numbers written as seven digits and a NUL; libarchive writes six digits, a space and a NUL.
+ */
 static uint32_t sum_of_seven_digits(const uint8_t *header)
 {
     uint8_t copy[512];
@@ -126,7 +132,7 @@ static const char *record(const uint8_t *header, const char *key, size_t *value_
     return NULL;
 }
 
-/* The first three: recomputed from the definition in the standard; the rest by hand. A letter beyond ASCII makes libarchive
+/* The first three: recomputed from the definition in the standard; the rest by hand. A letter beyond ASCII makes
    write the record also where the path would fit into the ustar header. */
 static const struct length_case { const char *name; size_t path_bytes; unsigned length; } length_cases[] = {
     { "path of 7 bytes", 7, 16 },           { "path of 90 bytes", 90, 99 },
@@ -237,9 +243,29 @@ static void go(struct there *there, struct archive_entry *entry)
 }
 
 static const char *const names[] = {
-    "plain", "caf\xC3\xA9", "cafe\xCC\x81", "\xE1\x84\x80\xE1\x85\xA1", "\xE2\x84\xAB", "caf\xE9", "\xFF", "\xC0\x80",
-    "\xED\xA0\x80\xED\xB0\x80", "\xED\xA0\x80", "\xF4\x90\x80\x80", "\xEF\xBF\xBE", "\xF0\x9F\x8F\x94", "new\nline", " ",
-    "a=b", "12 path=x", "\x01\x1B[2J\x7F", "\\", "*?[", "back\\slash", "..double", "dots...",
+    "plain",
+    "caf\xC3\xA9",
+    "cafe\xCC\x81",
+    "\xE1\x84\x80\xE1\x85\xA1",
+    "\xE2\x84\xAB",
+    "caf\xE9",
+    "\xFF",
+    "\xC0\x80",
+    "\xED\xA0\x80\xED\xB0\x80",
+    "\xED\xA0\x80",
+    "\xF4\x90\x80\x80",
+    "\xEF\xBF\xBE",
+    "\xF0\x9F\x8F\x94",
+    "new\nline",
+    " ",
+    "a=b",
+    "12 path=x",
+    "\x01\x1B[2J\x7F",
+    "\\",
+    "*?[",
+    "back\\slash",
+    "..double",
+    "dots...",
 };
 
 /* Each name in each place, beside plain ones and beside one that is no UTF-8. */
@@ -266,7 +292,9 @@ static void keeps_names(void **state)
         }
 }
 
-/* Lengths around every limit of the formats, up to PATH_MAX. letter: plain, decomposed UTF-8 in part, no UTF-8 at all. */
+/*
+ * Lengths around every limit of the formats, up to PATH_MAX. letter: plain, decomposed UTF-8 in part, no UTF-8 at all.
+ */
 static void keeps_lengths(void **state)
 {
     static const size_t lengths[] = { 1, 99, 100, 101, 155, 156, 254, 255, 256, 257, 511, 512, 1023, 4094, 4095 };
@@ -476,7 +504,8 @@ static void tar_reads_it(void **state)
     archive_entry_set_mtime(entry, 1234567890, 987654321);
     count = header_of(entry, &header);
     list_by_tar(header, count, out, sizeof out);
-    assert_string_equal(out, "lrwxrwxrwx 3000000000/12     0 2009-02-13 23:31:30.987654321 caf\\303\\251/link -> there\n");
+    assert_string_equal(out,
+                        "lrwxrwxrwx 3000000000/12     0 2009-02-13 23:31:30.987654321 caf\\303\\251/link -> there\n");
 }
 
 /* ---- what nobody should send ---- */
@@ -530,7 +559,11 @@ static enum firn_status read_file(const uint8_t *bytes, size_t count)
 
 #define RECORDS(text) text, sizeof text - 1
 
-static const struct record_case { const char *name, *records; size_t count; enum firn_status status; } record_cases[] = {
+static const struct record_case {
+    const char *name, *records;
+    size_t count;
+    enum firn_status status;
+} record_cases[] = {
     { "good path", RECORDS("12 path=abc\n"), FIRN_OK },
     { "zeros before the length", RECORDS("0013 path=ab\n"), FIRN_OK },
     { "a length that could be shorter (90 bytes, 100 for 99)",
@@ -581,7 +614,7 @@ static void refuses_frames(void **state)
     bytes[156] = 'x';
     memcpy(bytes + 124, "00000001000", 11);
     seal(bytes);
-    assert_int_equal(read_file(bytes, count), FIRN_BAD_DATA);          /* longer than what is there: its records end early */
+    assert_int_equal(read_file(bytes, count), FIRN_BAD_DATA);      /* longer than what is there */
     for (const char *type = "SLKMVDNAZ7x"; *type != '\0'; type++) {
         start_header(bytes, *type, "x", 5);
         assert_int_equal(read_file(bytes, 512), FIRN_BAD_DATA);
@@ -740,10 +773,11 @@ int main(void)
     struct CMUnitTest tests[128];
     size_t count = 0;
 
-#define ROWS(function, rows)                                                                                            \
-    for (size_t i = 0; i < COUNT(rows); i++)                                                                            \
-        tests[count++] = (struct CMUnitTest){ .name = (rows)[i].name, .test_func = function,                            \
-                                              .initial_state = (void *)(uintptr_t)&(rows)[i] }
+#define ROWS(function, rows)                                                                                           \
+    for (size_t i = 0; i < COUNT(rows); i++)                                                                           \
+    tests[count++] = (struct CMUnitTest){ .name = (rows)[i].name,                                                      \
+                                          .test_func = function,                                                       \
+                                          .initial_state = (void *)(uintptr_t) & (rows)[i] }
     ROWS(is_ustar, ustar_cases);
     ROWS(counts_itself, length_cases);
     ROWS(says_numbers, number_cases);

@@ -100,7 +100,8 @@ static void compare_bytes(struct comparing *c, const char *one, const char *othe
         need(count >= 0, one);
         if (count == 0)
             break;
-        if (pread(files[1], bytes[1], (size_t)count, at[0]) != count || memcmp(bytes[0], bytes[1], (size_t)count) != 0) {
+        if (pread(files[1], bytes[1], (size_t)count, at[0]) != count ||
+            memcmp(bytes[0], bytes[1], (size_t)count) != 0) {
             differs(c, other, "content");
             break;
         }
