@@ -4,8 +4,8 @@
  * Room: transfer. A word chooses the item of that very name and everything below it. A word with `*`, `?` or `[` is a
  * shell pattern too (fnmatch of POSIX.1-2008): without a slash it is held against every single component of a name,
  * with a slash against the name and each folder above it, component by component, so that `*` and `?` never stand for a
- * slash. A folder that is chosen brings everything below it. A leading dot is nothing special. `?` stands for a letter of
- * UTF-8 or for a single byte, whatever the locale.
+ * slash. A folder that is chosen brings everything below it. A leading dot is nothing special. `?` stands for a letter
+ * of UTF-8 or for a single byte, whatever the locale.
  *
  * Words are brought into the form of stored names first (firn/intake.h): `/usr/share/`, `./usr/share` and `usr/share`
  * are the same word. A word of which nothing remains, such as `.`, chooses everything.

@@ -379,7 +379,8 @@ bool firn_archive_feed_ended_well(struct firn_archive_feed *feed)
 {
     la_int64_t end = archive_filter_bytes(feed->archive, 0);
 
-    if (firn_archive_feed_family(feed) != ARCHIVE_FORMAT_TAR || archive_filter_count(feed->archive) > 1 || end < RECORD_BYTES)
+    if (firn_archive_feed_family(feed) != ARCHIVE_FORMAT_TAR || archive_filter_count(feed->archive) > 1 ||
+        end < RECORD_BYTES)
         return true;
     for (uint64_t at = (uint64_t)end - RECORD_BYTES; at < (uint64_t)end; at++)
         if (byte_at(feed, at) > 0)

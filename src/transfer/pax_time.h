@@ -1,9 +1,9 @@
 /*
  * transfer/pax_time.h - times before 1970 with a fraction, as POSIX means them
  *
- * Room: transfer. In a pax header a time is a decimal number, so half a second before 1970 is -0.5. libarchive 3.6 writes
- * the seconds rounded down and then the fraction as it counts forward (-1.5), and reads what it writes; other readers are
- * off by up to two seconds then. This puts the number right, and reads the right number.
+ * Room: transfer. In a pax header a time is a decimal number, so half a second before 1970 is -0.5. libarchive 3.6
+ * writes the seconds rounded down and then the fraction as it counts forward (-1.5), and reads what it writes; other
+ * readers are off by up to two seconds then. This puts the number right, and reads the right number.
  *
  * SPDX-License-Identifier: BSD-2-Clause
  */

@@ -133,7 +133,7 @@ static const char *record(const uint8_t *header, const char *key, size_t *value_
 }
 
 /* The first three: recomputed from the definition in the standard; the rest by hand. A letter beyond ASCII makes
-   write the record also where the path would fit into the ustar header. */
+   libarchive write the record also where the path would fit into the ustar header. */
 static const struct length_case { const char *name; size_t path_bytes; unsigned length; } length_cases[] = {
     { "path of 7 bytes", 7, 16 },           { "path of 90 bytes", 90, 99 },
     { "path of 91 bytes", 91, 101 },        /* one more digit needs one more byte */

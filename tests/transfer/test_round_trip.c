@@ -38,7 +38,7 @@ static const struct change_case { const char *what, *command; unsigned may_diffe
     { "a mode", "chmod 600 same/all/sub/hello.txt", 0, 1 },
     { "a mode that may differ", "chmod 600 same/all/sub/hello.txt", TREE_ANY_MODE, 0 },
     { "a time by a nanosecond", "touch -d '2009-02-13 23:31:30.987654322 UTC' same/all/sub/hello.txt", 0, 1 },
-    { "a name", "rm same/all/sub/hello.txt; touch -r all/sub same/all/sub", 0, 2 },      /* it, and how many there are */
+    { "a name", "rm same/all/sub/hello.txt; touch -r all/sub same/all/sub", 0, 2 },      /* and how many there are */
     { "a link", "ln -sfn elsewhere same/all/link; touch -hr all/link same/all/link", 0, 4 },
     { "a hard link", "cp -p same/all/sub/large x && mv x same/all/sub/large; touch -r all/sub same/all/sub", 0, 3 },
     { "an attribute", "setfattr -n user.two -v 3 'same/all/plainly noted'", 0, 1 },
