@@ -282,6 +282,42 @@ static int lock_status(void *self)
     return (int)status;
 }
 
+/* What is lent is what is in the file; writing on it leaves no trace; what is not all there is not lent. */
+static void lends(void **state)
+{
+    enum { SIZE = 3 * 4096 + 100 };
+    uint8_t bytes[SIZE], *lent, *kept;
+    struct firn_store store;
+    struct firn_fault fault;
+    int os_error;
+    size_t count;
+
+    for (size_t i = 0; i < SIZE; i++)
+        bytes[i] = (uint8_t)(i * 7 + i / 251);
+    scratch_write("lent", bytes, SIZE, 0644);
+    assert_int_equal(firn_store_open(scratch_path("lent"), FIRN_STORE_MEND, memory, &store, &fault), FIRN_OK);
+    for (size_t at = 0; at < SIZE; at += 1000) {
+        count = SIZE - at < 5000 ? SIZE - at : 5000;
+        assert_int_equal(store.lend(store.self, at, count, &lent), FIRN_OK);
+        assert_memory_equal(lent, bytes + at, count);
+        memset(lent, 0xEE, count);
+    }
+    assert_int_not_equal(store.lend(store.self, 0, SIZE + 1, &lent), FIRN_OK);
+    assert_int_not_equal(store.lend(store.self, SIZE, 1, &lent), FIRN_OK);
+    assert_int_not_equal(store.lend(store.self, UINT64_MAX - 3, 8, &lent), FIRN_OK);
+    assert_int_not_equal(store.lend(store.self, 0, 0, &lent), FIRN_OK);
+    assert_int_equal(store.write_at(store.self, 4096, "mended", 6, &os_error), FIRN_OK);
+    assert_int_equal(store.lend(store.self, 4096, 6, &lent), FIRN_OK);
+    assert_memory_equal(lent, "mended", 6);
+    store.close(store.self);
+    memcpy(bytes + 4096, "mended", 6);
+    kept = scratch_read("lent", &count);
+    assert_int_equal(count, SIZE);
+    assert_memory_equal(kept, bytes, SIZE);
+    free(kept);
+    (void)state;
+}
+
 static void locks_others_out(void **state)
 {
     struct firn_fault fault;
@@ -1027,7 +1063,7 @@ int main(void)
     static const struct CMUnitTest singles[] = {
         cmocka_unit_test(tells_read_only_from_absent), cmocka_unit_test(reads_and_writes_a_file),
         cmocka_unit_test(tells_what_was_read_before_an_error), cmocka_unit_test(knows_the_size_of_a_device),
-        cmocka_unit_test(forgets), cmocka_unit_test(locks_others_out), cmocka_unit_test(stages_a_long_name),
+        cmocka_unit_test(forgets), cmocka_unit_test(lends), cmocka_unit_test(locks_others_out), cmocka_unit_test(stages_a_long_name),
         cmocka_unit_test(gives_the_mode_that_umask_leaves), cmocka_unit_test(leaves_no_trace_when_killed),
         cmocka_unit_test(tells_when_full), cmocka_unit_test(writes_a_pipe_in_order), cmocka_unit_test(pours),
         cmocka_unit_test(tells_when_a_device_is_full), cmocka_unit_test(keeps_memory_within_bounds),
