@@ -1063,7 +1063,8 @@ int main(void)
     static const struct CMUnitTest singles[] = {
         cmocka_unit_test(tells_read_only_from_absent), cmocka_unit_test(reads_and_writes_a_file),
         cmocka_unit_test(tells_what_was_read_before_an_error), cmocka_unit_test(knows_the_size_of_a_device),
-        cmocka_unit_test(forgets), cmocka_unit_test(lends), cmocka_unit_test(locks_others_out), cmocka_unit_test(stages_a_long_name),
+        cmocka_unit_test(forgets), cmocka_unit_test(lends), cmocka_unit_test(locks_others_out),
+        cmocka_unit_test(stages_a_long_name),
         cmocka_unit_test(gives_the_mode_that_umask_leaves), cmocka_unit_test(leaves_no_trace_when_killed),
         cmocka_unit_test(tells_when_full), cmocka_unit_test(writes_a_pipe_in_order), cmocka_unit_test(pours),
         cmocka_unit_test(tells_when_a_device_is_full), cmocka_unit_test(keeps_memory_within_bounds),
