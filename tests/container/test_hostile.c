@@ -1,4 +1,7 @@
-/* tests/container/test_hostile.c - catalogues that lead in circles, contradict themselves or claim the absurd: read to an end */
+/*
+ * tests/container/test_hostile.c - catalogues that lead in circles, contradict themselves or claim the absurd: read to
+ * an end
+ */
 /* SPDX-License-Identifier: BSD-2-Clause */
 #include "base/bytes.h"
 #include "container/catalogue.h"
@@ -35,9 +38,14 @@ static void forge_begin(struct forge *forge)
     *forge = (struct forge){ .buffer = { .bytes = malloc(ROOM), .capacity = ROOM } };
     firn_store_memory(&forge->buffer, &forge->store);
     assert_int_equal(firn_threads_make(firn_memory_system(), 1, &forge->threads), FIRN_OK);
-    assert_int_equal(firn_press_make(&(struct firn_press_options){ .store = &forge->store, .memory = firn_memory_system(),
-                                                                   .threads = forge->threads, .geometry = geometry,
-                                                                   .nonce = nonce, .page = page }, &forge->press), FIRN_OK);
+    assert_int_equal(firn_press_make(&(struct firn_press_options){ .store = &forge->store,
+                                                                   .memory = firn_memory_system(),
+                                                                   .threads = forge->threads,
+                                                                   .geometry = geometry,
+                                                                   .nonce = nonce,
+                                                                   .page = page },
+                                     &forge->press),
+                     FIRN_OK);
 }
 
 static uint64_t forge_record(struct forge *forge, unsigned type, const uint8_t *body, size_t count)
@@ -48,8 +56,8 @@ static uint64_t forge_record(struct forge *forge, unsigned type, const uint8_t *
     firn_record_put(&record, header);
     assert_int_equal(firn_press_put(forge->press, header, sizeof header, NULL), FIRN_OK);
     assert_int_equal(firn_press_put(forge->press, body, count, NULL), FIRN_OK);
-    assert_int_equal(firn_press_put_zeros(forge->press, (size_t)(firn_record_span(count) - sizeof header - count), NULL),
-                     FIRN_OK);
+    assert_int_equal(
+        firn_press_put_zeros(forge->press, (size_t)(firn_record_span(count) - sizeof header - count), NULL), FIRN_OK);
     return record.at;
 }
 
@@ -114,7 +122,8 @@ static void forge_colophon(struct forge *forge, uint64_t index_at)
 
 struct seen { uint64_t items, good, lost; };
 
-static enum firn_status see_bytes(void *self, const struct firn_item *item, uint64_t at, const uint8_t *bytes, size_t count)
+static enum firn_status see_bytes(void *self, const struct firn_item *item, uint64_t at, const uint8_t *bytes,
+                                  size_t count)
 {
     (void)item, (void)at, (void)bytes;
     ((struct seen *)self)->good += count;
@@ -187,7 +196,9 @@ static void catalogues_that_lead_in_circles(void **state)
 /* Segments that overlap, come backwards, repeat: every byte of an item is handed out or told of once. */
 static void segments_out_of_order(void **state)
 {
-    static const uint64_t places[][4] = { { 0, 0, 0, 0 }, { 300, 200, 100, 0 }, { 0, 50, 100, 150 }, { 900, 0, 900, 400 } };
+    static const uint64_t places[][4] = {
+        { 0, 0, 0, 0 }, { 300, 200, 100, 0 }, { 0, 50, 100, 150 }, { 900, 0, 900, 400 }
+    };
 
     for (size_t i = 0; i < sizeof places / sizeof places[0]; i++) {
         uint8_t body[FIRN_CATALOGUE_SEGMENT_HEAD_BYTES + 102], raw[100], hash[FIRN_HASH_BYTES], batch[8192];
