@@ -63,19 +63,19 @@ static enum firn_status take_pipe(struct box *box, const char *path)
 static int start_afresh(void **state)
 {
     (void)state;
-    run("rm -rf out a a.zip cut");
+    run("chmod -R u+rwX out 2>/dev/null; rm -rf out a a.zip cut");
     return 0;
 }
 
 static void give_and_compare(struct box *box, const char *with, unsigned may_differ)
 {
     assert_int_equal(box_close_lid(box), FIRN_OK);
-    box->outlet.owner = FIRN_OUTLET_OWNER_NUMBERS;
+    box->outlet.owner = geteuid() == 0 ? FIRN_OUTLET_OWNER_NUMBERS : FIRN_OUTLET_OWNER_NONE;
     box->outlet.devices = true;
     assert_int_equal(box_give_folder(box, "out"), FIRN_OK);
     assert_string_equal(box->notes, "");
     assert_int_equal(tree_differences(with, "out", may_differ), 0);
-    run("rm -rf out");      /* for the next one in the same test */
+    run("chmod -R u+rwX out; rm -rf out");      /* for the next one in the same test */
 }
 
 /* ---- every format and filter, made by libarchive, from a file and through a pipe ---- */

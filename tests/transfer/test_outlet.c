@@ -765,9 +765,9 @@ static int set_up(void **state)
     assert_int_equal(symlink("a", "small/link"), 0);
     tree_folder("modes", 0755);
     tree_file("modes/open", "x", 1, 0777);
-    tree_file("modes/shut", "x", 1, 0);
+    tree_file("modes/shut", "x", 1, geteuid() == 0 ? 0 : 0400);
     tree_folder("modes/folder", 01777);
-    tree_folder("modes/shut folder", 0);
+    tree_folder("modes/shut folder", geteuid() == 0 ? 0 : 0500);
     assert_int_equal(mkfifo("modes/fifo", 0600) == 0 && chmod("modes/fifo", 0666) == 0, 1);
     tree_folder("locked", 0755);
     tree_folder("locked/inner", 0755);
@@ -787,6 +787,7 @@ static int set_up(void **state)
 static int tear_down(void **state)
 {
     (void)state;
+    run("chmod -R u+rwX .");
     scratch_remove();
     return 0;
 }

@@ -69,6 +69,11 @@ static void tar_lists_it(void **state)
 
     (void)state;
     assert_int_equal(box_give_tar(box, "a.tar"), FIRN_OK);
+    if (geteuid() != 0) {
+        print_message("skipped: the listing below is of what root owns\n");
+        box_free(box);
+        skip();
+    }
     listing = popen("LC_ALL=C TZ=UTC0 tar --full-time --numeric-owner -tvf - < a.tar 2>&1", "r");
     assert_non_null(listing);
     got = fread(said, 1, sizeof said - 1, listing);
