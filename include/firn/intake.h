@@ -113,12 +113,15 @@ FIRN_API enum firn_status firn_intake_paths(struct firn_writer *writer, const ch
  * compressed by one of these, which becomes one item. mtree, which names files elsewhere instead of holding them, is
  * not read, and no other program is ever started.
  *
+ * Names in tar, cpio, ar and lha archives are taken as the bytes they are. Those in the other formats are in Unicode,
+ * and libarchive composes their letters (NFC).
+ *
  * Items keep the order of the archive. A name that comes twice is stored twice. Hard links stay links; where an archive
  * stores the bytes with a link they are moved to the first name if that came without (cpio), dropped if they are the
  * same bytes again (cpio), else the link becomes a file of its own (FIRN_INTAKE_UNLINKED).
  *
- * path  `-` is standard input. A zip or 7-Zip archive that comes through a pipe is copied to a temporary file first,
- *       since its list of contents stands at its end.
+ * path  `-` is standard input. A zip, 7-Zip, rar, xar, cab or ISO 9660 archive that comes through a pipe is copied to a
+ *       temporary file first.
  *
  * Encrypted items, and items compressed in a way unknown here, are findings, and the work goes on. Where the archive
  * breaks off or cannot be read on, the item concerned is withdrawn, FIRN_INTAKE_DAMAGED tells it, and the result is

@@ -22,7 +22,7 @@ enum firn_outlet_kind {
     FIRN_OUTLET_REFUSED,          /* would be written outside of the target, or is of a kind not allowed here */
     FIRN_OUTLET_LOST,             /* bytes of it are gone */
     FIRN_OUTLET_MISMATCH,         /* its bytes do not have the digest that the catalogue has */
-    FIRN_OUTLET_LINK,             /* a hard link to an item that was not given back */
+    FIRN_OUTLET_LINK,             /* a hard link to an item that was not given back, or (kept) not whole */
     FIRN_OUTLET_FAILED,           /* the system said no: os_error */
     /* notes: the item is there */
     FIRN_OUTLET_METADATA,         /* some of its metadata could not be set: detail, os_error */

@@ -275,12 +275,20 @@ enum firn_outlet_verdict firn_outlet_run_judge(const struct firn_outlet_run *run
 
 enum firn_status firn_outlet_run_written(struct firn_outlet_run *run, bool kept)
 {
-    if (kept)
+    bool link_kept = run->link != NULL && run->link->incomplete;
+
+    if (link_kept)
+        tell(run, &(struct firn_outlet_finding){
+            .kind = FIRN_OUTLET_LINK, .path = run->name, .number = run->number,
+            .detail = "the file it is a hard link to is not whole", .kept = true
+        });
+    if (kept || link_kept)
         run->report->kept++;
     else
         run->report->written++;
-    if (run->target == NULL || kept)
+    if (run->target == NULL)
         return FIRN_OK;
+    run->target->incomplete = kept;
     run->target->place = firn_names_keep(run->targets, run->name, strlen(run->name));
     run->target->written = run->target->place != NULL;
     return run->target->written ? FIRN_OK : FIRN_NO_MEMORY;

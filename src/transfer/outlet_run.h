@@ -17,6 +17,7 @@ struct firn_outlet_target {
     const char *stand_in;          /* the first chosen link, if the file itself is not chosen; else NULL */
     bool met;                      /* its item came by */
     bool written;
+    bool incomplete;               /* but not whole */
     const char *place;             /* the name it was given back under */
     uint64_t device, inode;        /* in a folder: of what was written */
 };
@@ -77,7 +78,7 @@ void firn_outlet_run_tell(struct firn_outlet_run *run, enum firn_outlet_kind kin
 void firn_outlet_run_tell_verdict(struct firn_outlet_run *run, enum firn_outlet_verdict verdict,
                                   const struct firn_item *item, bool kept);
 
-/* Counts the item at hand as given back. FIRN_OK or FIRN_NO_MEMORY. */
+/* Counts the item at hand as given back, and a link to something incomplete as kept. FIRN_OK or FIRN_NO_MEMORY. */
 enum firn_status firn_outlet_run_written(struct firn_outlet_run *run, bool kept);
 
 /* The content of NAME.gaps for the item at hand. FIRN_OK or FIRN_NO_MEMORY. text is to be put back by the caller. */
