@@ -103,6 +103,8 @@ struct firn_reader_visitor {
      * take a beginning back.
      */
     bool foresight;
+    /* Asks for the digests of items where no content is asked for: they stand apart from the list of items. */
+    bool digests;
 };
 
 struct firn_reader_walk_report {

@@ -199,39 +199,50 @@ enum firn_status firn_catalogue_next(struct firn_catalogue_cursor *cursor, struc
     return cursor->content_at > UINT64_MAX / 2 ? FIRN_BAD_DATA : FIRN_OK;
 }
 
-void firn_catalogue_put_sum(const struct firn_catalogue_sum *sum, uint8_t *bytes)
+void firn_catalogue_put_sums(const struct firn_catalogue_sum *sums, uint32_t count, uint8_t *body)
 {
-    firn_bytes_put64(bytes, sum->item);
-    firn_bytes_put64(bytes + 8, sum->bytes);
-    memcpy(bytes + 16, sum->sha256, sizeof sum->sha256);
-}
+    uint8_t *steps = body + FIRN_CATALOGUE_SUMS_HEAD_BYTES, *digests = steps + 2 * (size_t)count;
 
-void firn_catalogue_get_sum(const uint8_t *bytes, struct firn_catalogue_sum *sum)
-{
-    sum->item = firn_bytes_get64(bytes);
-    sum->bytes = firn_bytes_get64(bytes + 8);
-    memcpy(sum->sha256, bytes + 16, sizeof sum->sha256);
-}
-
-void firn_catalogue_seal_sums(uint32_t count, uint8_t *body)
-{
     firn_bytes_put32(body + 16, count);
     firn_bytes_put32(body + 20, 0);
+    firn_bytes_put64(body + 24, sums[0].item);
+    for (uint32_t i = 0; i < count; i++) {
+        firn_bytes_put16(steps + 2 * (size_t)i, (uint16_t)(i == 0 ? 0 : sums[i].item - sums[i - 1].item));
+        memcpy(digests + (size_t)i * FIRN_ITEM_SHA256_BYTES, sums[i].sha256, FIRN_ITEM_SHA256_BYTES);
+    }
     seal(body, FIRN_CATALOGUE_SUMS_HEAD_BYTES + (size_t)count * FIRN_CATALOGUE_SUM_BYTES);
 }
 
-enum firn_status firn_catalogue_open_sums(const uint8_t *body, size_t body_bytes, uint32_t *count, const uint8_t **sums)
+enum firn_status firn_catalogue_count_sums(const uint8_t *body, size_t body_bytes, uint32_t *count)
 {
     enum firn_status status = check_seal(body, body_bytes, FIRN_CATALOGUE_SUMS_HEAD_BYTES);
 
     if (status != FIRN_OK)
         return status;
     *count = firn_bytes_get32(body + 16);
-    *sums = body + FIRN_CATALOGUE_SUMS_HEAD_BYTES;
     if (*count > FIRN_LIMIT_PART_SUMS)
         return FIRN_OVER_LIMIT;
-    return body_bytes == FIRN_CATALOGUE_SUMS_HEAD_BYTES + (uint64_t)*count * FIRN_CATALOGUE_SUM_BYTES ? FIRN_OK
+    return *count > 0 && firn_bytes_get64(body + 24) <= UINT64_MAX / 4 &&
+           body_bytes == FIRN_CATALOGUE_SUMS_HEAD_BYTES + (size_t)*count * FIRN_CATALOGUE_SUM_BYTES ? FIRN_OK
                                                                                                      : FIRN_BAD_DATA;
+}
+
+enum firn_status firn_catalogue_get_sums(const uint8_t *body, struct firn_catalogue_sum *sums)
+{
+    uint32_t count = firn_bytes_get32(body + 16);
+    const uint8_t *steps = body + FIRN_CATALOGUE_SUMS_HEAD_BYTES, *digests = steps + 2 * (size_t)count;
+    uint64_t item = firn_bytes_get64(body + 24);
+
+    for (uint32_t i = 0; i < count; i++) {
+        uint16_t step = firn_bytes_get16(steps + 2 * (size_t)i);
+
+        if ((i == 0) != (step == 0))
+            return FIRN_BAD_DATA;      /* the first item is told whole, and no item has two sums */
+        item += step;
+        sums[i].item = item;
+        memcpy(sums[i].sha256, digests + (size_t)i * FIRN_ITEM_SHA256_BYTES, FIRN_ITEM_SHA256_BYTES);
+    }
+    return FIRN_OK;
 }
 
 void firn_catalogue_put_place(const struct firn_catalogue_place *place, uint8_t *bytes)
@@ -278,13 +289,11 @@ enum firn_status firn_catalogue_get_segment(const uint8_t *head, struct firn_cat
 
 size_t firn_catalogue_index_bytes(const struct firn_catalogue_index *index)
 {
-    return FIRN_CATALOGUE_INDEX_HEAD_BYTES + index->batch_bytes + (size_t)index->sums * FIRN_CATALOGUE_SUM_BYTES
-           + (size_t)index->segments * FIRN_CATALOGUE_PLACE_BYTES;
+    return FIRN_CATALOGUE_INDEX_HEAD_BYTES + index->batch_bytes + (size_t)index->segments * FIRN_CATALOGUE_PLACE_BYTES;
 }
 
 void firn_catalogue_put_index(const struct firn_catalogue_index *index, uint8_t *body)
 {
-    size_t sums = (size_t)index->sums * FIRN_CATALOGUE_SUM_BYTES;
     size_t places = (size_t)index->segments * FIRN_CATALOGUE_PLACE_BYTES;
     uint8_t *at = body + FIRN_CATALOGUE_INDEX_HEAD_BYTES;
 
@@ -292,15 +301,15 @@ void firn_catalogue_put_index(const struct firn_catalogue_index *index, uint8_t 
     firn_bytes_put64(body + 24, index->at);
     firn_bytes_put64(body + 32, index->end);
     firn_bytes_put32(body + 40, index->batch_bytes);
-    firn_bytes_put32(body + 44, index->sums);
-    firn_bytes_put32(body + 48, index->segments);
-    firn_bytes_put32(body + 52, 0);
+    firn_bytes_put32(body + 44, index->segments);
+    firn_bytes_put64(body + 48, index->sums_at);
+    firn_bytes_put32(body + 56, index->sums_bytes);
+    firn_bytes_put32(body + 60, 0);
+    memcpy(body + 64, index->sums_seal, sizeof index->sums_seal);
     if (index->batch_bytes > 0)
         memcpy(at, index->batch, index->batch_bytes);
-    if (sums > 0)
-        memcpy(at + index->batch_bytes, index->sum_bytes, sums);
     if (places > 0)
-        memcpy(at + index->batch_bytes + sums, index->place_bytes, places);
+        memcpy(at + index->batch_bytes, index->place_bytes, places);
     seal(body, firn_catalogue_index_bytes(index));
 }
 
@@ -314,13 +323,14 @@ enum firn_status firn_catalogue_open_index(const uint8_t *body, size_t body_byte
     index->at = firn_bytes_get64(body + 24);
     index->end = firn_bytes_get64(body + 32);
     index->batch_bytes = firn_bytes_get32(body + 40);
-    index->sums = firn_bytes_get32(body + 44);
-    index->segments = firn_bytes_get32(body + 48);
-    if (index->end < index->at || index->segments > FIRN_LIMIT_PART_SEGMENTS || index->sums > FIRN_LIMIT_PART_SUMS ||
-        firn_catalogue_index_bytes(index) != body_bytes)
+    index->segments = firn_bytes_get32(body + 44);
+    index->sums_at = firn_bytes_get64(body + 48);
+    index->sums_bytes = firn_bytes_get32(body + 56);
+    memcpy(index->sums_seal, body + 64, sizeof index->sums_seal);
+    if (index->end < index->at || index->segments > FIRN_LIMIT_PART_SEGMENTS ||
+        index->batch_bytes > body_bytes || firn_catalogue_index_bytes(index) != body_bytes)
         return FIRN_BAD_DATA;
     index->batch = body + FIRN_CATALOGUE_INDEX_HEAD_BYTES;
-    index->sum_bytes = index->batch + index->batch_bytes;
-    index->place_bytes = index->sum_bytes + (size_t)index->sums * FIRN_CATALOGUE_SUM_BYTES;
+    index->place_bytes = index->batch + index->batch_bytes;
     return FIRN_OK;
 }

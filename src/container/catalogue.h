@@ -16,10 +16,10 @@ enum {
     FIRN_CATALOGUE_ENTRY_HEAD_BYTES = 24,
     FIRN_CATALOGUE_EXTENT_BYTES = 16,
     FIRN_CATALOGUE_BATCH_HEAD_BYTES = 40,
-    FIRN_CATALOGUE_SUMS_HEAD_BYTES = 24,
-    FIRN_CATALOGUE_SUM_BYTES = 48,
+    FIRN_CATALOGUE_SUMS_HEAD_BYTES = 32,
+    FIRN_CATALOGUE_SUM_BYTES = 34,
     FIRN_CATALOGUE_SEGMENT_HEAD_BYTES = 32,
-    FIRN_CATALOGUE_INDEX_HEAD_BYTES = 56,
+    FIRN_CATALOGUE_INDEX_HEAD_BYTES = 80,
     FIRN_CATALOGUE_PLACE_BYTES = 24
 };
 
@@ -63,15 +63,17 @@ enum firn_status firn_catalogue_next(struct firn_catalogue_cursor *cursor, struc
 /* --- sums --- */
 
 struct firn_catalogue_sum {
-    uint64_t item, bytes;
+    uint64_t item;
     uint8_t sha256[FIRN_ITEM_SHA256_BYTES];
 };
-void firn_catalogue_put_sum(const struct firn_catalogue_sum *sum, uint8_t *bytes);
-void firn_catalogue_get_sum(const uint8_t *bytes, struct firn_catalogue_sum *sum);
-void firn_catalogue_seal_sums(uint32_t count, uint8_t *body);
-/* *sums points to count sums inside body */
-enum firn_status firn_catalogue_open_sums(const uint8_t *body, size_t body_bytes, uint32_t *count,
-                                          const uint8_t **sums);
+
+/* A whole sealed body, FIRN_CATALOGUE_SUMS_HEAD_BYTES and FIRN_CATALOGUE_SUM_BYTES for each of 1 .. 65 536 sums. Items
+   ascend, and two neighbours are less than 65 536 apart: a window of the writer holds far fewer. */
+void firn_catalogue_put_sums(const struct firn_catalogue_sum *sums, uint32_t count, uint8_t *body);
+/* How many sums a body holds. FIRN_OK, FIRN_MISMATCH, FIRN_BAD_DATA, FIRN_OVER_LIMIT. */
+enum firn_status firn_catalogue_count_sums(const uint8_t *body, size_t body_bytes, uint32_t *count);
+/* The sums of a body that was counted; sums has room for all. FIRN_OK or FIRN_BAD_DATA. */
+enum firn_status firn_catalogue_get_sums(const uint8_t *body, struct firn_catalogue_sum *sums);
 
 /* --- segments --- */
 
@@ -96,8 +98,11 @@ struct firn_catalogue_index {
     uint64_t part;                 /* from 0 */
     uint64_t at, end;              /* the stretch of the stream that it tells of */
     const uint8_t *batch;          /* a whole BATCH body, or nothing */
-    uint32_t batch_bytes, sums, segments;
-    const uint8_t *sum_bytes, *place_bytes;
+    uint32_t batch_bytes, segments;
+    uint64_t sums_at;              /* place of the SUMS record, 0 when the part has none */
+    uint32_t sums_bytes;           /* of its body */
+    uint8_t sums_seal[16];         /* the first 16 bytes of its body, so that the index answers for the digests too */
+    const uint8_t *place_bytes;
 };
 size_t firn_catalogue_index_bytes(const struct firn_catalogue_index *index);
 void firn_catalogue_put_index(const struct firn_catalogue_index *index, uint8_t *body);

@@ -31,8 +31,9 @@ struct firn_parts {
     size_t entries_capacity;
     struct firn_catalogue_place *places;
     size_t places_capacity;
-    uint8_t *sums;
+    struct firn_catalogue_sum *sums;
     size_t sums_capacity;
+    struct firn_catalogue_index sums_of;      /* the index part whose sums were not fetched yet; sums_at 0: none */
     void *work;
 };
 
@@ -309,8 +310,7 @@ static enum firn_status part_from_index(struct firn_parts *parts, size_t body_by
             status = add_place(parts, &place, &part->place_count);
     }
     part->places = parts->places;
-    part->sums = index->sum_bytes;
-    part->sum_count = index->sums;
+    parts->sums_of = *index;
     return status;
 }
 
@@ -363,6 +363,49 @@ static enum firn_status next_from_index(struct firn_parts *parts, struct firn_pa
     return FIRN_OK;
 }
 
+/* Adds the sums of the SUMS body at hand. */
+static enum firn_status add_sums(struct firn_parts *parts, size_t body_bytes, struct firn_parts_part *part)
+{
+    void *sums = parts->sums;
+    uint32_t count;
+    enum firn_status status = firn_catalogue_count_sums(parts->body, body_bytes, &count);
+
+    if (status != FIRN_OK || count > FIRN_LIMIT_PART_SUMS - part->sum_count)
+        return status != FIRN_OK ? status : FIRN_OVER_LIMIT;
+    status = firn_memory_grow(parts->memory, &sums, &parts->sums_capacity, part->sum_count + count,
+                              sizeof *parts->sums);
+    parts->sums = sums;
+    if (status == FIRN_OK)
+        status = firn_catalogue_get_sums(parts->body, parts->sums + part->sum_count);
+    if (status == FIRN_OK)
+        part->sum_count += count;
+    part->sums = parts->sums;
+    return status;
+}
+
+enum firn_status firn_parts_sums(struct firn_parts *parts, struct firn_parts_part *part)
+{
+    const struct firn_catalogue_index *index = &parts->sums_of;
+    uint64_t at = index->sums_at;
+    struct firn_record record;
+    bool skipped = false;
+    enum firn_status status;
+
+    if (at == 0)
+        return FIRN_OK;
+    parts->sums_of.sums_at = 0;
+    status = firn_parts_find_record(parts->sheets, at, at + 1, &record, &skipped);
+    if (status == FIRN_OK && (record.type != FIRN_RECORD_SUMS || record.body_bytes != index->sums_bytes))
+        status = FIRN_BAD_DATA;
+    if (status == FIRN_OK)
+        status = read_body(parts, &record, BODY_BYTES_MAX);
+    if (status == FIRN_OK && memcmp(parts->body, index->sums_seal, sizeof index->sums_seal) != 0)
+        status = FIRN_MISMATCH;
+    if (status == FIRN_OK)
+        status = add_sums(parts, (size_t)record.body_bytes, part);
+    return fatal(status) ? status : FIRN_OK;
+}
+
 /* Adds what a record in the stream tells to the part being put together. */
 static enum firn_status take_record(struct firn_parts *parts, const struct firn_record *record,
                                     struct firn_parts_part *part)
@@ -388,24 +431,7 @@ static enum firn_status take_record(struct firn_parts *parts, const struct firn_
         status = firn_catalogue_open_batch(parts->body, (size_t)record->body_bytes, &part->batch);
         return status == FIRN_OK ? decode_entries(parts, part) : status;
     }
-    if (record->type == FIRN_RECORD_SUMS) {
-        uint32_t count;
-        const uint8_t *sums;
-        void *kept = parts->sums;
-
-        status = firn_catalogue_open_sums(parts->body, (size_t)record->body_bytes, &count, &sums);
-        if (status != FIRN_OK || count > FIRN_LIMIT_PART_SUMS - part->sum_count)
-            return FIRN_BAD_DATA;
-        status = firn_memory_grow(parts->memory, &kept, &parts->sums_capacity, part->sum_count + (size_t)count,
-                                  FIRN_CATALOGUE_SUM_BYTES);
-        parts->sums = kept;
-        if (status == FIRN_OK) {
-            memcpy(parts->sums + (size_t)part->sum_count * FIRN_CATALOGUE_SUM_BYTES, sums,
-                   (size_t)count * FIRN_CATALOGUE_SUM_BYTES);
-            part->sum_count += count;
-        }
-    }
-    return status;
+    return record->type == FIRN_RECORD_SUMS ? add_sums(parts, (size_t)record->body_bytes, part) : FIRN_OK;
 }
 
 /* Walks the stream from parts->at: everything up to the next BATCH is one part. */
@@ -415,6 +441,7 @@ static enum firn_status next_from_stream(struct firn_parts *parts, struct firn_p
     enum firn_status status;
 
     *part = (struct firn_parts_part){ .complete = true };
+    parts->sums_of.sums_at = 0;
     for (;;) {
         bool skipped = false;
 

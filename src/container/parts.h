@@ -28,8 +28,8 @@ struct firn_parts_part {
     bool has_batch;
     struct firn_catalogue_batch batch;
     const uint8_t *entries;                     /* decoded */
-    const uint8_t *sums;                        /* sum_count sums, ascending by item */
-    uint32_t sum_count;
+    const struct firn_catalogue_sum *sums;      /* ascending; of an index part after firn_parts_sums */
+    size_t sum_count;
     const struct firn_catalogue_place *places;  /* ascending in content space */
     size_t place_count;
     bool complete;                              /* nothing of it was lost: what is not told of was never written */
@@ -45,6 +45,11 @@ const struct firn_parts_colophon *firn_parts_colophon_of(const struct firn_parts
 void firn_parts_rewind(struct firn_parts *parts);
 /* FIRN_OK, FIRN_END, FIRN_NO_MEMORY, FIRN_STOPPED. What is damaged is passed over. */
 enum firn_status firn_parts_next(struct firn_parts *parts, struct firn_parts_part *part);
+/*
+ * Fetches the sums of the part at hand where that takes another read. A SUMS record that is lost leaves the part
+ * without sums. FIRN_OK, FIRN_NO_MEMORY, FIRN_STOPPED.
+ */
+enum firn_status firn_parts_sums(struct firn_parts *parts, struct firn_parts_part *part);
 /* Parts since the last rewind whose INDEX record was gone. */
 uint64_t firn_parts_index_lost(const struct firn_parts *parts);
 

@@ -47,9 +47,11 @@ static enum firn_status next_part(struct walk *walk)
         walk->ended = status == FIRN_END;
         return status;
     }
-    if (walk->part.has_batch)
+    if (walk->visitor->bytes != NULL || walk->visitor->digests)
+        status = firn_parts_sums(walk->parts, &walk->part);
+    if (status == FIRN_OK && walk->part.has_batch)
         firn_catalogue_cursor_start(&walk->part.batch, walk->part.entries, walk->cursor_extents, &walk->cursor);
-    return FIRN_OK;
+    return status;
 }
 
 /* Copies the item that the cursor lent. */
@@ -79,19 +81,18 @@ static enum firn_status keep_item(struct walk *walk, const struct firn_item *ite
 /* The digest of the item, if this part tells it: sums are few and ascending. */
 static void find_sum(struct walk *walk)
 {
-    uint32_t low = 0, high = walk->part.sum_count;
+    size_t low = 0, high = walk->part.sum_count;
 
     while (low < high) {
-        uint32_t middle = low + (high - low) / 2;
-        struct firn_catalogue_sum sum;
+        size_t middle = low + (high - low) / 2;
+        const struct firn_catalogue_sum *sum = &walk->part.sums[middle];
 
-        firn_catalogue_get_sum(walk->part.sums + (size_t)middle * FIRN_CATALOGUE_SUM_BYTES, &sum);
-        if (sum.item == walk->item.number) {
-            walk->item.summed = sum.bytes == walk->item.bytes;
-            memcpy(walk->item.sha256, sum.sha256, sizeof sum.sha256);
+        if (sum->item == walk->item.number) {
+            walk->item.summed = true;
+            memcpy(walk->item.sha256, sum->sha256, sizeof sum->sha256);
             return;
         }
-        if (sum.item < walk->item.number)
+        if (sum->item < walk->item.number)
             low = middle + 1;
         else
             high = middle;

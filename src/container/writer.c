@@ -149,14 +149,14 @@ static enum firn_status spool_part(struct firn_writer *writer, const struct firn
     return FIRN_OK;
 }
 
-static enum firn_status put_sums(struct firn_writer *writer, const struct firn_window *window, uint8_t *body)
+static enum firn_status put_sums(struct firn_writer *writer, const struct firn_window *window, uint8_t *body,
+                                 struct firn_catalogue_index *index)
 {
-    size_t bytes = FIRN_CATALOGUE_SUMS_HEAD_BYTES + window->sum_count * FIRN_CATALOGUE_SUM_BYTES;
-
-    for (size_t i = 0; i < window->sum_count; i++)
-        firn_catalogue_put_sum(&window->sums[i], body + FIRN_CATALOGUE_SUMS_HEAD_BYTES + i * FIRN_CATALOGUE_SUM_BYTES);
-    firn_catalogue_seal_sums((uint32_t)window->sum_count, body);
-    return put_record(writer, FIRN_RECORD_SUMS, body, bytes);
+    index->sums_at = firn_press_at(writer->press);
+    index->sums_bytes = (uint32_t)(FIRN_CATALOGUE_SUMS_HEAD_BYTES + window->sum_count * FIRN_CATALOGUE_SUM_BYTES);
+    firn_catalogue_put_sums(window->sums, (uint32_t)window->sum_count, body);
+    memcpy(index->sums_seal, body, sizeof index->sums_seal);
+    return put_record(writer, FIRN_RECORD_SUMS, body, index->sums_bytes);
 }
 
 /*
@@ -193,11 +193,8 @@ static enum firn_status give_out(struct firn_writer *writer, const struct firn_w
         at += FIRN_CATALOGUE_PLACE_BYTES;
         index.segments++;
     }
-    if (window->sum_count > 0 && status == FIRN_OK) {
-        status = put_sums(writer, window, at);
-        index.sums = (uint32_t)window->sum_count;
-        index.sum_bytes = at + FIRN_CATALOGUE_SUMS_HEAD_BYTES;
-    }
+    if (window->sum_count > 0 && status == FIRN_OK)
+        status = put_sums(writer, window, at, &index);
     if (status != FIRN_OK)
         return status;
     index.end = firn_press_at(writer->press);
@@ -449,7 +446,7 @@ static void leave_item(struct firn_writer *writer)
 
 enum firn_status firn_writer_end(struct firn_writer *writer, uint8_t *sha256)
 {
-    struct firn_catalogue_sum sum = { .item = writer->item.number, .bytes = writer->item.bytes };
+    struct firn_catalogue_sum sum = { .item = writer->item.number };
     enum firn_status status = FIRN_OK;
 
     if (!writer->item_open || writer->item_stored != writer->item.stored_bytes)

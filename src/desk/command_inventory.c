@@ -125,7 +125,9 @@ static enum firn_status list_item(void *self, const struct firn_item *item, uint
 
 static int list(struct listing *l, struct firn_opening *opening)
 {
-    struct firn_reader_visitor visitor = { .self = l, .begin = list_item };
+    struct firn_reader_visitor visitor = {
+        .self = l, .begin = list_item, .digests = l->args->given[DIGESTS] || l->view->json
+    };
     const char *container = l->args->operands[0];
     int exit = firn_opening_remark(l->view, container, firn_reader_layout_of(opening->reader));
     struct firn_reader_walk_report report;

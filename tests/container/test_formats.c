@@ -181,59 +181,62 @@ static void absurd_entries_are_refused(void **state)
 
 static void sums(void **state)
 {
-    struct firn_catalogue_sum sum = { .item = 7, .bytes = 37 }, read;
-    uint8_t body[FIRN_CATALOGUE_SUMS_HEAD_BYTES + FIRN_CATALOGUE_SUM_BYTES];
+    struct firn_catalogue_sum sums[2] = { { .item = 7 }, { .item = 300 } }, read[2];
+    uint8_t body[FIRN_CATALOGUE_SUMS_HEAD_BYTES + 2 * FIRN_CATALOGUE_SUM_BYTES];
     struct firn_digest *digest;
-    const uint8_t *vector, *found;
+    const uint8_t *vector;
     uint32_t number;
     size_t count;
 
     vector = stream_vector("segment-raw", &count);
     assert_int_equal(firn_digest_make(&digest), FIRN_OK);
-    firn_digest_start(digest);
-    firn_digest_add(digest, vector, count);
-    firn_digest_finish(digest, sum.sha256);
+    for (size_t i = 0; i < 2; i++) {      /* of the 37 bytes, and of none */
+        firn_digest_start(digest);
+        firn_digest_add(digest, vector, i == 0 ? count : 0);
+        firn_digest_finish(digest, sums[i].sha256);
+    }
     firn_digest_free(digest);
-    firn_catalogue_put_sum(&sum, body + FIRN_CATALOGUE_SUMS_HEAD_BYTES);
-    vector = catalogue_vector("sum-of-item-7", &count);
-    assert_int_equal(count, FIRN_CATALOGUE_SUM_BYTES);
-    assert_memory_equal(body + FIRN_CATALOGUE_SUMS_HEAD_BYTES, vector, count);
-    firn_catalogue_seal_sums(1, body);
-    vector = catalogue_vector("sums-body", &count);
+    firn_catalogue_put_sums(sums, 2, body);
+    vector = catalogue_vector("sums-body-items-7-and-300", &count);
     assert_int_equal(count, sizeof body);
     assert_memory_equal(body, vector, count);
-    assert_int_equal(firn_catalogue_open_sums(body, sizeof body, &number, &found), FIRN_OK);
-    assert_int_equal(number, 1);
-    firn_catalogue_get_sum(found, &read);
-    assert_true(read.item == 7 && read.bytes == 37);
-    body[30] ^= 1;
-    assert_int_equal(firn_catalogue_open_sums(body, sizeof body, &number, &found), FIRN_MISMATCH);
-    assert_int_equal(firn_catalogue_open_sums(body, 23, &number, &found), FIRN_BAD_DATA);
+    assert_int_equal(firn_catalogue_count_sums(body, sizeof body, &number), FIRN_OK);
+    assert_int_equal(number, 2);
+    assert_int_equal(firn_catalogue_get_sums(body, read), FIRN_OK);
+    assert_true(read[0].item == 7 && read[1].item == 300);
+    assert_memory_equal(read[1].sha256, sums[1].sha256, 32);
+    assert_int_equal(firn_catalogue_count_sums(body, sizeof body - 1, &number), FIRN_MISMATCH);
+    body[34] ^= 1;
+    assert_int_equal(firn_catalogue_count_sums(body, sizeof body, &number), FIRN_MISMATCH);
+    assert_int_equal(firn_catalogue_count_sums(body, 31, &number), FIRN_BAD_DATA);
+    body[34] = body[35] = 0;      /* the same item twice */
+    assert_int_equal(firn_catalogue_get_sums(body, read), FIRN_BAD_DATA);
     (void)state;
 }
 
 static void index_parts(void **state)
 {
-    struct firn_catalogue_index index = { .part = 3, .at = 4128, .end = 4320, .sums = 1, .segments = 1 }, read;
+    struct firn_catalogue_index index = {
+        .part = 3, .at = 4128, .end = 4320, .segments = 1, .sums_at = 4256, .sums_bytes = 100
+    }, read;
     struct firn_catalogue_place place = { .content_at = 123456, .at = 4160, .raw_bytes = 37, .body_bytes = 61 }, told;
-    uint8_t sum[FIRN_CATALOGUE_SUM_BYTES], place_bytes[FIRN_CATALOGUE_PLACE_BYTES], body[ROOM];
+    uint8_t place_bytes[FIRN_CATALOGUE_PLACE_BYTES], body[ROOM];
     const uint8_t *vector;
     size_t count;
 
-    vector = catalogue_vector("sum-of-item-7", &count);
-    memcpy(sum, vector, sizeof sum);
+    vector = catalogue_vector("sums-body-items-7-and-300", &count);
+    memcpy(index.sums_seal, vector, sizeof index.sums_seal);
     firn_catalogue_put_place(&place, place_bytes);
     vector = catalogue_vector("place", &count);
     assert_int_equal(count, sizeof place_bytes);
     assert_memory_equal(place_bytes, vector, count);
-    index.sum_bytes = sum;
     index.place_bytes = place_bytes;
     firn_catalogue_put_index(&index, body);
     vector = catalogue_vector("index-body-part-3", &count);
     assert_int_equal(firn_catalogue_index_bytes(&index), count);
     assert_memory_equal(body, vector, count);
     assert_int_equal(firn_catalogue_open_index(body, count, &read), FIRN_OK);
-    assert_true(read.part == 3 && read.at == 4128 && read.end == 4320 && read.sums == 1 && read.segments == 1);
+    assert_true(read.part == 3 && read.at == 4128 && read.end == 4320 && read.segments == 1 && read.sums_at == 4256);
     assert_int_equal(firn_catalogue_get_place(read.place_bytes, &told), FIRN_OK);
     assert_true(told.at == 4160 && told.raw_bytes == 37);
     assert_int_equal(firn_catalogue_open_index(body, count - 1, &read), FIRN_MISMATCH);

@@ -1,7 +1,7 @@
 # tests/house/pure.cmake - a pure room asks the system for nothing: its objects need only what is listed here
 # SPDX-License-Identifier: BSD-2-Clause
 cmake_minimum_required(VERSION 3.22)
-set(allowed "^(firn_[a-z0-9_]+|mem(cpy|set|move|cmp|chr)|__stack_chk_fail|_GLOBAL_OFFSET_TABLE_|__cpu_model|__cpu_indicator_init|XXH3_[0-9]+bits(_dispatch)?|XXH_[a-zA-Z0-9_]+|__asan_.*|__ubsan_.*|__sanitizer_.*|__sancov_.*|__stop___sancov.*|__start___sancov.*|__popcountdi2|__tls_get_addr)$")
+set(allowed "^(firn_[a-z0-9_]+|mem(cpy|set|move|cmp|chr)|bcmp|__stack_chk_fail|_GLOBAL_OFFSET_TABLE_|__cpu_model|__cpu_indicator_init|XXH3_[0-9]+bits(_dispatch)?|XXH_[a-zA-Z0-9_]+|__asan_.*|__ubsan_.*|__sanitizer_.*|__sancov_.*|__stop___sancov.*|__start___sancov.*|__popcountdi2|__tls_get_addr)$")
 string(REPLACE "\\;" ";" OBJECTS "${OBJECTS}")
 set(seen 0)
 foreach(object ${OBJECTS})
