@@ -81,11 +81,12 @@ struct firn_reader_outcome {
 
 /*
  * What firn_reader_walk calls, in the order of the catalogue. The item lent to a call lives for that call only, but its
- * number identifies it. Any status but FIRN_OK from begin, bytes, gap or end ends the walk with that status.
+ * number identifies it. Any status but FIRN_OK from begin, bytes, gap or end ends the walk with that status; a fault that
+ * the visitor has filled in then stays as it is.
  */
 struct firn_reader_visitor {
     void *self;
-    /* Whether begin .. end shall be called for this item. NULL: for all. */
+    /* Whether begin .. end shall be called for this item. NULL: for all. With foresight files are asked for twice. */
     bool (*wants)(void *self, const struct firn_item *item);
     /* foreseen_lost_bytes  with foresight: how much of the content cannot be had; else 0 */
     enum firn_status (*begin)(void *self, const struct firn_item *item, uint64_t foreseen_lost_bytes);

@@ -222,14 +222,20 @@ enum firn_status firn_reader_walk(struct firn_reader *reader, const struct firn_
                                   struct firn_fault *fault, struct firn_reader_walk_report *report)
 {
     const struct firn_reader_layout *layout = &reader->layout;
-    enum firn_status status = visitor->foresight && visitor->begin != NULL && visitor->bytes != NULL
+    enum firn_status status;
+
+    if (fault != NULL)
+        *fault = (struct firn_fault){ 0 };
+    status = visitor->foresight && visitor->begin != NULL && visitor->bytes != NULL
                                   ? walk_foreseeing(reader, visitor, report)
                                   : firn_walk(reader->parts, reader->decoder, reader->memory, visitor, report);
 
     if (layout->colophon_found && layout->items > report->items)
         report->items_unknown = layout->items - report->items;
     report->cut_short = !layout->colophon_found;
-    return status == FIRN_OK ? FIRN_OK : firn_fault_tell(fault, status, 0, 0, "");
+    if (status != FIRN_OK && fault != NULL && fault->os_error == 0 && fault->what[0] == '\0')
+        firn_fault_tell(fault, status, 0, 0, "");
+    return status;
 }
 
 static enum firn_status tell_segments(struct firn_reader *reader, const struct firn_parts_part *part,

@@ -196,9 +196,15 @@ static void tell_finding(void *self, const struct firn_intake_finding *finding)
 static void see_item(void *self, const struct firn_intake_item *item)
 {
     struct packing *p = self;
+    enum firn_expect_verdict verdict = FIRN_EXPECT_UNLISTED;
+    /* a bag in an archive has a folder around it, and its manifest is told from inside that */
+    size_t own = p->args->values[FROM_ARCHIVE] != NULL ? strcspn(item->name, "/") : item->operand_bytes;
 
-    if (p->expect == NULL || item->sha256 == NULL ||
-        firn_expect_see(p->expect, item->name, item->operand_bytes, item->sha256) != FIRN_EXPECT_MISMATCH)
+    if (p->expect != NULL && item->sha256 != NULL)
+        verdict = firn_expect_see(p->expect, item->name, own, item->sha256);
+    else if (p->expect != NULL && item->link != NULL)
+        verdict = firn_expect_see_link(p->expect, item->name, own, item->link);
+    if (verdict != FIRN_EXPECT_MISMATCH)
         return;
     firn_progress_wipe(&p->progress);
     firn_view_finding(p->view, "mismatch", item->name, "is not what the manifest says it should be");

@@ -111,7 +111,7 @@ static void tell_finding(void *self, const struct firn_outlet_finding *finding)
         [FIRN_OUTLET_REFUSED] = { "refused", "refused" },
         [FIRN_OUTLET_LOST] = { "lost", "" },
         [FIRN_OUTLET_MISMATCH] = { "mismatch", "does not have the SHA-256 of the catalogue" },
-        [FIRN_OUTLET_LINK] = { "link", "is a hard link to an item that was not restored; not written" },
+        [FIRN_OUTLET_LINK] = { "link", "is a hard link to an item that was not restored whole" },
         [FIRN_OUTLET_FAILED] = { "failed", "cannot be written" },
         [FIRN_OUTLET_METADATA] = { "metadata", "is there, but not with all its metadata" },
     };
@@ -124,6 +124,8 @@ static void tell_finding(void *self, const struct firn_outlet_finding *finding)
     firn_text_add(&text, "%s", kinds[finding->kind].words);
     if (finding->kind == FIRN_OUTLET_LOST)
         lost_words(finding, &text);
+    if (finding->kind == FIRN_OUTLET_LINK)
+        firn_text_add(&text, finding->kept ? "; made all the same" : "; not written");
     if (finding->detail != NULL && finding->detail[0] != '\0')
         firn_text_add(&text, ": %s", finding->detail);
     if (finding->os_error != 0)

@@ -117,14 +117,8 @@ enum firn_status firn_outlet_run_walk(struct firn_outlet_run *run, struct firn_r
                                       const struct firn_reader_visitor *visitor)
 {
     struct firn_reader_walk_report walked = { 0 };
-    struct firn_fault fault = { 0 };
-    enum firn_status status;
+    enum firn_status status = firn_reader_walk(reader, visitor, run->fault, &walked);
 
-    if (run->fault != NULL)
-        *run->fault = (struct firn_fault){ 0 };
-    status = firn_reader_walk(reader, visitor, &fault, &walked);
-    if (status != FIRN_OK && run->fault != NULL && run->fault->os_error == 0 && run->fault->what[0] == '\0')
-        *run->fault = fault;
     run->report->items_unknown = walked.items_unknown;
     run->report->cut_short = walked.cut_short;
     return status;
