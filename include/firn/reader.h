@@ -81,8 +81,8 @@ struct firn_reader_outcome {
 
 /*
  * What firn_reader_walk calls, in the order of the catalogue. The item lent to a call lives for that call only, but its
- * number identifies it. Any status but FIRN_OK from begin, bytes, gap or end ends the walk with that status; a fault that
- * the visitor has filled in then stays as it is.
+ * number identifies it. Any status but FIRN_OK from begin, bytes, gap or end ends the walk with that status; a fault
+ * that the visitor has filled in then stays as it is.
  */
 struct firn_reader_visitor {
     void *self;

@@ -42,7 +42,9 @@ int LLVMFuzzerTestOneInput(const uint8_t *data, size_t size)
     memcpy(pax, data, bytes);
     put_sums_right(pax, bytes);
     for (int content = 0; content < 2; content++) {
-        struct firn_item item = { .pax = pax, .pax_bytes = bytes, .has_content = content == 1, .bytes = content == 1 ? 37 : 0 };
+        struct firn_item item = {
+            .pax = pax, .pax_bytes = bytes, .has_content = content == 1, .bytes = content == 1 ? 37 : 0
+        };
 
         if (firn_about_read(about, &item, &facts) == FIRN_OK && (facts.path == NULL || facts.link == NULL))
             abort();
