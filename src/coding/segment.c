@@ -9,6 +9,8 @@
 #include "firn/segment.h"
 
 #include "coding/histogram.h"
+#include "coding/matched.h"
+#include "coding/parse.h"
 #include "coding/sample.h"
 #include "coding/split.h"
 #include "coding/streams.h"
@@ -34,14 +36,25 @@ enum {
 _Static_assert((int)FIRN_SEGMENT_RAW_MAX == (int)FIRN_LIMIT_SEGMENT_RAW_BYTES, "one limit, two names");
 _Static_assert((int)FIRN_SPLIT_CELL_MIN_BYTES >= (int)STRETCH_MIN_BYTES, "cells are stretches too");
 
+/* What finding matches takes. */
+struct match_work {
+    struct firn_repeats repeats;
+    struct firn_parse_work parse;
+    struct firn_matched_write_work write;
+    struct firn_matched_command commands[FIRN_PARSE_COMMANDS_MAX];
+};
+
 struct encode_work {
     struct firn_split_work split;
+    struct match_work match;
+    uint8_t room[FIRN_SEGMENT_RAW_MAX + HEAD_BYTES];   /* for what may turn out smaller */
     uint8_t lengths[FIRN_TABLE_SYMBOLS];
     uint16_t words[FIRN_TABLE_SYMBOLS];
     uint32_t counts[FIRN_TABLE_SYMBOLS];
 };
 
 struct decode_work {
+    struct firn_matched_read_work matched;
     uint16_t entries[FIRN_STREAMS_ENTRIES];
     uint8_t lengths[FIRN_TABLE_SYMBOLS];
     uint32_t counts[FIRN_TABLE_SYMBOLS];
@@ -182,6 +195,29 @@ static size_t cell_bytes_of(enum firn_segment_effort effort)
     return effort == FIRN_SEGMENT_EFFORT_QUICK ? 16384 : effort == FIRN_SEGMENT_EFFORT_NORMAL ? 8192 : 4096;
 }
 
+static bool encode_matched(const uint8_t *raw, size_t raw_bytes, enum firn_segment_effort effort, uint8_t *coded,
+                           size_t *coded_bytes, struct encode_work *w)
+{
+    struct match_work *m = &w->match;
+    size_t count = 0, bytes;
+
+    (void)effort;
+    firn_cost_prepare(&m->write.logs);
+    m->write.codes.fine = 0;
+    firn_repeats_find(raw, raw_bytes, 160, 48, &m->repeats);
+    firn_parse_guess(&m->write.logs, raw, raw_bytes, &m->parse.prices);
+    for (unsigned pass = 0; pass < 3; pass++) {
+        count = firn_parse(raw, raw_bytes, &m->repeats, m->commands, &m->parse);
+        firn_matched_make_codes(raw, m->commands, count, FIRN_CONTEXTS_TABLES_MAX, true, &m->write);
+        firn_parse_learn(&m->write, &m->parse.prices);
+    }
+    bytes = firn_matched_write(raw, m->commands, count, coded + HEAD_BYTES, raw_bytes, &m->write);
+    coded[0] = 3;
+    coded[1] = 0;
+    *coded_bytes = bytes + HEAD_BYTES;
+    return bytes != 0;
+}
+
 enum firn_status firn_segment_encode(const uint8_t *raw, size_t raw_bytes, enum firn_segment_effort effort,
                                      uint8_t *coded, size_t *coded_bytes, void *work)
 {
@@ -194,6 +230,8 @@ enum firn_status firn_segment_encode(const uint8_t *raw, size_t raw_bytes, enum 
         put_stored(raw, raw_bytes, coded, coded_bytes);
         return FIRN_OK;
     }
+    if (encode_matched(raw, raw_bytes, effort, coded, coded_bytes, w))
+        return FIRN_OK;
     firn_split(raw, raw_bytes, cell_bytes_of(effort), true, &w->split);
     if (w->split.stretch_count == 1 && w->split.stretches[0].method != FIRN_SEGMENT_PREFIX) {
         bool run = w->split.stretches[0].method == FIRN_SEGMENT_RUN;
@@ -360,7 +398,7 @@ static bool is_solid(const uint8_t *coded, size_t coded_bytes, size_t raw_bytes)
 static bool is_known(const uint8_t *coded, size_t coded_bytes, size_t raw_bytes)
 {
     return raw_bytes >= 1 && raw_bytes <= FIRN_SEGMENT_RAW_MAX && coded_bytes > HEAD_BYTES && coded[1] == 0 &&
-           (coded[0] == FIRN_SEGMENT_PREFIX || is_solid(coded, coded_bytes, raw_bytes));
+           (coded[0] == FIRN_SEGMENT_PREFIX || coded[0] == 3 || is_solid(coded, coded_bytes, raw_bytes));
 }
 
 enum firn_status firn_segment_decode(const uint8_t *coded, size_t coded_bytes, uint8_t *raw, size_t raw_bytes,
@@ -376,6 +414,8 @@ enum firn_status firn_segment_decode(const uint8_t *coded, size_t coded_bytes, u
         memcpy(raw, coded + HEAD_BYTES, raw_bytes);
     else if (coded[0] == FIRN_SEGMENT_RUN)
         memset(raw, coded[HEAD_BYTES], raw_bytes);
+    else if (coded[0] == 3)
+        return firn_matched_read(coded + HEAD_BYTES, coded_bytes - HEAD_BYTES, raw, raw_bytes, &w->matched);
     else
         for (size_t at = 0; !head.last; at += head.raw_bytes)
             if (!take_head(&source, w, raw_bytes - at, &head) || read_stretch(&source, w, &head, raw + at) != FIRN_OK)
