@@ -68,10 +68,15 @@ static inline unsigned firn_matched_command_context(uint32_t length)
     return length < 4 ? 0 : length < 7 ? 1 : length < 16 ? 2 : 3;
 }
 
-/* By the byte before, and whether a match has just ended. */
-static inline unsigned firn_matched_literal_context(unsigned before, bool first)
+/*
+ * By the byte before. The first after a match has contexts of its own, by the byte that would have come had the match gone on:
+ * the one so far back as the match was copied from. 0 where there is none.
+ */
+static inline unsigned firn_matched_literal_context(const uint8_t *raw, size_t at, bool first, uint32_t distance)
 {
-    return before + (first ? 256u : 0u);
+    size_t back = first ? distance : 1;
+
+    return (at < back ? 0 : raw[at - back]) + (first ? 256u : 0u);
 }
 
 /* The symbol of a distance that is none of the recent ones; more_bits of more tell it from its like. */

@@ -168,10 +168,10 @@ static bool open_streams(const uint8_t *coded, size_t coded_bytes, struct source
  * A run of literals; the first has contexts of its own. Each entry tells the table of the next literal, so that no map is
  * looked up on the way.
  */
-static inline void take_literals(struct source *s, const struct firn_matched_read_work *w, unsigned before, uint8_t *to,
-                                 size_t count)
+static inline void take_literals(struct source *s, const struct firn_matched_read_work *w, unsigned context,
+                                 uint8_t *to, size_t count)
 {
-    unsigned table = w->codes.literals.map[firn_matched_literal_context(before, true)];
+    unsigned table = w->codes.literals.map[context];
 
     while (count > 0) {
         size_t now = count < LITERALS_PER_REFILL ? count : LITERALS_PER_REFILL;
@@ -252,7 +252,7 @@ enum firn_status firn_matched_read(const uint8_t *coded, size_t coded_bytes, uin
         if (run > raw_bytes - at)
             return FIRN_BAD_DATA;
         if (run > 0)
-            take_literals(&literals, work, at == 0 ? 0 : raw[at - 1], raw + at, run);
+            take_literals(&literals, work, firn_matched_literal_context(raw, at, true, recent[0]), raw + at, run);
         at += run;
         if (at == raw_bytes)
             break;

@@ -14,13 +14,11 @@ enum { HEAD_MAX_BYTES = 3 * FIRN_CONTEXTS_COST_MAX_BITS / 8 + 16, NUMBER_BYTES =
 
 /* ---- counting ---- */
 
-static void count_literals(const uint8_t *raw, size_t at, uint32_t literals, struct firn_matched_counts *counts)
+static void count_literals(const uint8_t *raw, size_t at, uint32_t literals, uint32_t distance,
+                           struct firn_matched_counts *counts)
 {
-    for (uint32_t k = 0; k < literals; k++) {
-        size_t place = at + k;
-
-        counts->literals[firn_matched_literal_context(place == 0 ? 0 : raw[place - 1], k == 0)][raw[place]]++;
-    }
+    for (uint32_t k = 0; k < literals; k++)
+        counts->literals[firn_matched_literal_context(raw, at + k, k == 0, distance)][raw[at + k]]++;
 }
 
 void firn_matched_count(const uint8_t *raw, const struct firn_matched_command *commands, size_t count, unsigned fine,
@@ -38,7 +36,7 @@ void firn_matched_count(const uint8_t *raw, const struct firn_matched_command *c
 
         counts->commands[firn_matched_command_context(before)][run * FIRN_MATCHED_LENGTH_CODES + length]++;
         counts->more_bits += firn_matched_runs[run].bits + firn_matched_lengths[length].bits;
-        count_literals(raw, at, c->literals, counts);
+        count_literals(raw, at, c->literals, recent[0], counts);
         at += c->literals + c->length;
         before = c->length;
         if (c->length > 0) {
@@ -183,14 +181,16 @@ static void put_literals(const uint8_t *raw, const struct firn_matched_command *
                          const struct firn_matched_write_work *w, struct stream *s)
 {
     size_t at = 0;
+    uint32_t distance = 1;
 
     for (size_t i = 0; i < count && s->at < s->end; i++) {
         for (uint32_t k = 0; k < commands[i].literals; k++, at++) {
-            unsigned context = firn_matched_literal_context(at == 0 ? 0 : raw[at - 1], k == 0);
+            unsigned context = firn_matched_literal_context(raw, at, k == 0, distance);
 
             put_word(s, w->literal_words[w->codes.literals.map[context]][raw[at]]);
         }
         at += commands[i].length;
+        distance = commands[i].distance;
     }
 }
 

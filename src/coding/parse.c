@@ -6,6 +6,8 @@
 
 #include "coding/histogram.h"
 
+#include "base/bytes.h"
+
 #include <string.h>
 
 enum { BIT = FIRN_COST_BIT, NEVER = 1 << 30 };
@@ -113,113 +115,125 @@ struct walk {
     uint32_t before;                   /* length of the last match before the window */
 };
 
-/* All lengths from `shortest` to `longest` at this distance, from place `at` of the window. */
-static void relax(struct firn_parse_work *w, uint32_t at, uint32_t base, const uint32_t *row, uint32_t shortest,
-                  uint32_t longest, uint32_t distance, unsigned symbol, uint32_t more)
+/* A repeat as it looks from a place: its distance and what that costs. */
+struct offer {
+    uint32_t distance, price;          /* price: of everything but distance symbol and command */
+    unsigned symbol;
+};
+
+/* All lengths from `shortest` to `longest` of the offer, from place `at` of the window. */
+static void relax(struct firn_parse_work *w, uint32_t at, const uint32_t *row, uint32_t shortest, uint32_t longest,
+                  const struct offer *offer)
 {
-    struct firn_parse_place *from = &w->places[at];
-    unsigned context = from->run == 0 ? 4 : 0;
+    uint16_t (*distances)[FIRN_MATCHED_DISTANCES_MAX] = w->prices.distances + (w->places[at].run == 0 ? 4 : 0);
+    uint32_t length = shortest, far;
 
-    for (uint32_t length = shortest; length <= longest; length++) {
-        struct firn_parse_place *to = from + length;
-        unsigned c = context + (length < 5 ? length - 2 : 3);
-        uint32_t price = base + more + w->prices.distances[c][symbol] + row[w->length_codes[length]];
+    for (; length <= longest && length < 5; length++) {
+        uint32_t price = offer->price + distances[length - 2][offer->symbol] + row[length - 2];
 
-        if (price < to->price) {
-            to->price = price;
-            to->length = length;
-            to->distance = distance;
+        if (price < w->price[at + length]) {
+            w->price[at + length] = price;
+            w->arrival[at + length] = (struct firn_parse_arrival){ length, offer->distance };
+        }
+    }
+    far = offer->price + distances[3][offer->symbol];
+    for (; length <= longest; length++) {
+        uint32_t price = far + row[w->length_codes[length]];
+
+        if (price < w->price[at + length]) {
+            w->price[at + length] = price;
+            w->arrival[at + length] = (struct firn_parse_arrival){ length, offer->distance };
         }
     }
 }
 
-/* What leads on from place `at` of the window; returns the length of a match that is to be taken at once, or 0. */
+/* What leads on from place `at` of the window; returns the distance of a match that is to be taken at once, or 0. */
 static uint32_t step(const struct walk *walk, uint32_t at, uint32_t before, const struct firn_repeats *repeats)
 {
     struct firn_parse_work *w = walk->w;
-    struct firn_parse_place *here = &w->places[at], *next = here + 1;
+    struct firn_parse_place *here = &w->places[at];
     const struct firn_parse_prices *p = &w->prices;
-    size_t place = walk->start + at;
+    size_t place = walk->start + at, left = walk->raw_bytes - place;
     const uint8_t *raw = walk->raw + place;
-    size_t left = walk->raw_bytes - place;
     uint32_t most = left < FIRN_PARSE_REACH ? (uint32_t)left : FIRN_PARSE_REACH, known = 1, price, base;
-    unsigned run_code = firn_matched_run_code(here->run), context, table;
+    unsigned run_code = firn_matched_run_code(here->run), table, more_bits;
     const uint32_t *row = p->commands[firn_matched_command_context(before)][run_code];
+    struct offer offer;
 
-    context = firn_matched_literal_context(place == 0 ? 0 : raw[-1], here->run == 0);
-    table = p->literal_map[context];
-    base = here->price - p->runs[run_code];
+    table = p->literal_map[firn_matched_literal_context(walk->raw, place, here->run == 0, here->recent[0])];
+    base = w->price[at] - p->runs[run_code];
     price = base + p->literals[table][raw[0]] + p->runs[firn_matched_run_code(here->run + 1)];
-    if (price < next->price) {
-        next->price = price;
-        next->length = 0;
+    if (price < w->price[at + 1]) {
+        w->price[at + 1] = price;
+        w->arrival[at + 1].length = 0;
     }
+    if (left < 2)
+        return 0;
+    base += p->runs[0];
     for (unsigned k = 0; k < FIRN_MATCHED_RECENT; k++) {
         uint32_t distance = here->recent[k], length;
 
-        if (distance > place || left < 2 || raw[0] != raw[-(ptrdiff_t)distance] || raw[1] != raw[1 - (ptrdiff_t)distance])
+        if (distance > place || firn_bytes_get16(raw) != firn_bytes_get16(raw - distance))
             continue;
         length = firn_repeats_equal(raw, raw - distance, most);
-        relax(w, at, base, row, 2, length, distance, k, 0);
-        if (length == FIRN_PARSE_REACH) {
-            w->places[at + length].distance = distance;
-            return length;
-        }
+        if (length == FIRN_PARSE_REACH)
+            return distance;
+        offer = (struct offer){ distance, base, k };
+        relax(w, at, row, 2, length, &offer);
     }
     for (uint32_t r = repeats->starts[place]; r < repeats->starts[place + 1]; r++) {
-        uint32_t length = firn_repeats_length(repeats->kept[r]), distance = firn_repeats_distance(repeats->kept[r]);
-        unsigned more_bits, symbol;
-        uint32_t more;
+        uint32_t length = firn_repeats_length(repeats->kept[r]), distance = firn_repeats_distance(repeats->kept[r]), more;
 
-        symbol = firn_matched_distance_symbol(distance, p->fine, &more_bits, &more);
-        if (length >= FIRN_PARSE_REACH) {
-            w->places[at + FIRN_PARSE_REACH].distance = distance;
-            return FIRN_PARSE_REACH;
-        }
-        relax(w, at, base, row, known + 1, length < most ? length : most, distance, symbol, more_bits * (uint32_t)BIT);
+        if (length >= FIRN_PARSE_REACH)
+            return distance;
+        offer.symbol = firn_matched_distance_symbol(distance, p->fine, &more_bits, &more);
+        offer.price = base + more_bits * (uint32_t)BIT;
+        offer.distance = distance;
+        relax(w, at, row, known + 1, length, &offer);
         known = length;
     }
     return 0;
 }
 
 /* Settles a place that is reached: the run and the recent distances of the way that leads to it. */
-static void settle(struct firn_parse_place *place)
+static void settle(struct firn_parse_work *w, uint32_t at)
 {
-    const struct firn_parse_place *from = place->length == 0 ? place - 1 : place - place->length;
+    struct firn_parse_place *place = &w->places[at];
+    struct firn_parse_arrival arrival = w->arrival[at];
 
-    memcpy(place->recent, from->recent, sizeof place->recent);
-    if (place->length == 0) {
-        place->run = from->run + 1;
+    if (arrival.length == 0) {
+        *place = w->places[at - 1];
+        place->run++;
     } else {
+        *place = w->places[at - arrival.length];
         place->run = 0;
-        firn_matched_recall(place->recent, place->distance);
+        firn_matched_recall(place->recent, arrival.distance);
     }
 }
 
 /* Turns the way to place `end` round and adds its commands. */
 static void add_commands(struct walk *walk, uint32_t end)
 {
-    struct firn_parse_place *places = walk->w->places;
-    uint32_t at = end, next = end;
+    const struct firn_parse_arrival *arrival = walk->w->arrival;
+    uint32_t *next = walk->w->price;   /* of a place on the way now: where the next one is */
+    uint32_t at = end;
 
-    while (at > 0) {                   /* `price` of a place on the way now holds where the next one is */
-        uint32_t back = places[at].length == 0 ? 1 : places[at].length;
+    next[end] = end;
+    while (at > 0) {
+        uint32_t back = at - (arrival[at].length == 0 ? 1 : arrival[at].length);
 
-        places[at].price = next;
-        next = at;
-        at -= back;
+        next[back] = at;
+        at = back;
     }
-    for (at = next; end > 0; at = places[at].price) {
-        if (places[at].length == 0) {
+    while (at != end) {
+        at = next[at];
+        if (arrival[at].length == 0) {
             walk->run++;
-        } else {
-            walk->commands[walk->made++] =
-                (struct firn_matched_command){ walk->run, places[at].length, places[at].distance };
-            walk->before = places[at].length;
-            walk->run = 0;
+            continue;
         }
-        if (at == end)
-            break;
+        walk->commands[walk->made++] = (struct firn_matched_command){ walk->run, arrival[at].length, arrival[at].distance };
+        walk->before = arrival[at].length;
+        walk->run = 0;
     }
 }
 
@@ -248,31 +262,26 @@ size_t firn_parse(const uint8_t *raw, size_t raw_bytes, const struct firn_repeat
     firn_matched_recent_start(recent);
     while (walk.start < raw_bytes) {
         size_t left = raw_bytes - walk.start;
-        uint32_t at = 0, end = left < FIRN_PARSE_WINDOW ? (uint32_t)left : FIRN_PARSE_WINDOW, taken = 0, distance = 0;
+        uint32_t at = 0, end = left < FIRN_PARSE_WINDOW ? (uint32_t)left : FIRN_PARSE_WINDOW, taken = 0;
 
         for (size_t k = 0; k < end + FIRN_PARSE_REACH + 1; k++)
-            places[k].price = NEVER;
-        places[0] = (struct firn_parse_place){ .price = work->prices.runs[firn_matched_run_code(walk.run)],
-                                               .run = walk.run };
+            work->price[k] = NEVER;
+        work->price[0] = work->prices.runs[firn_matched_run_code(walk.run)];
+        places[0].run = walk.run;
         memcpy(places[0].recent, recent, sizeof recent);
-        for (; at < end && taken == 0; at += taken == 0) {
-            uint32_t before = walk.before;
+        while (at < end) {
+            uint32_t before = places[at].run < at ? work->arrival[at - places[at].run].length : walk.before;
 
-            if (at > 0)
-                settle(&places[at]);
-            if (places[at].run < at)
-                before = places[at - places[at].run].length;
             taken = step(&walk, at, before, repeats);
+            if (taken != 0)
+                break;
+            settle(work, ++at);
         }
-        if (taken != 0)
-            distance = places[at + taken].distance;
-        else
-            settle(&places[at]);
         memcpy(recent, places[at].recent, sizeof recent);
         add_commands(&walk, at);
         walk.start += at;
         if (taken != 0)
-            walk.start = add_long(&walk, walk.start, distance, recent);
+            walk.start = add_long(&walk, walk.start, taken, recent);
     }
     if (walk.run > 0 || walk.made == 0)
         commands[walk.made++] = (struct firn_matched_command){ walk.run, 0, 0 };

@@ -18,14 +18,18 @@
 
 enum {
     FIRN_PARSE_WINDOW = 1 << 15,
-    FIRN_PARSE_REACH = 512,            /* a match reaches at most so far in a step; longer ones are taken at once */
+    FIRN_PARSE_REACH = 96,             /* matches so long or longer are taken at once */
     FIRN_PARSE_COMMANDS_MAX = FIRN_SEGMENT_RAW_MAX / FIRN_MATCHED_LENGTH_MIN + 1
 };
 
 struct firn_parse_place {
-    uint32_t price, run;               /* run: literals since the last match */
-    uint32_t length, distance;         /* of the match that ends here; length 0: a literal */
+    uint32_t run;                      /* literals since the last match */
     uint32_t recent[FIRN_MATCHED_RECENT];
+};
+
+/* How a place is reached: by the match that ends here; length 0: by a literal. */
+struct firn_parse_arrival {
+    uint32_t length, distance;
 };
 
 /* Everything in 1/64 bit. */
@@ -41,7 +45,9 @@ struct firn_parse_prices {
 struct firn_parse_work {
     struct firn_parse_prices prices;
     uint8_t length_codes[FIRN_PARSE_REACH + 1];
-    struct firn_parse_place places[FIRN_PARSE_WINDOW + FIRN_PARSE_REACH + 1];
+    uint32_t price[FIRN_PARSE_WINDOW + FIRN_PARSE_REACH + 1];
+    struct firn_parse_arrival arrival[FIRN_PARSE_WINDOW + FIRN_PARSE_REACH + 1];
+    struct firn_parse_place places[FIRN_PARSE_WINDOW + 1];
 };
 
 /* Prices for a first parse, from the bytes' counts alone. */

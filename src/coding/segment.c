@@ -204,7 +204,7 @@ static bool encode_matched(const uint8_t *raw, size_t raw_bytes, enum firn_segme
     (void)effort;
     firn_cost_prepare(&m->write.logs);
     m->write.codes.fine = 0;
-    firn_repeats_find(raw, raw_bytes, 160, 48, &m->repeats);
+    firn_repeats_find(raw, raw_bytes, FIRN_PARSE_REACH, 48, &m->repeats);
     firn_parse_guess(&m->write.logs, raw, raw_bytes, &m->parse.prices);
     for (unsigned pass = 0; pass < 3; pass++) {
         count = firn_parse(raw, raw_bytes, &m->repeats, m->commands, &m->parse);
