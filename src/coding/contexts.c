@@ -12,9 +12,10 @@ enum {
     SAME = FIRN_CONTEXTS_TABLES_MAX,   /* token of the map: the table before, once more and n times */
     MAP_TOKENS = FIRN_CONTEXTS_TABLES_MAX + 1,
     MAP_TOKEN_LIMIT = 7,
-    ROUNDS = 3,
+    ROUNDS = 4,
+    ABSENT_BITS = 12,
     TABLE_BITS = 60,                   /* a table is guessed to cost so much, and for each symbol */
-    TABLE_SYMBOL_BITS = 4
+    TABLE_SYMBOL_BITS = 3
 };
 
 /* ---- clustering ---- */
@@ -44,6 +45,15 @@ static void gather(const uint32_t *counts, size_t contexts, size_t symbols, stru
     w->starts[contexts] = made;
 }
 
+/* A symbol that a table does not have would be a rare one in it, however few symbols the table is made from. */
+static void price_table(const struct firn_cost_logs *logs, struct firn_contexts_work *w, unsigned t, size_t symbols)
+{
+    firn_cost_symbols(logs, w->sums[t], symbols, w->costs[t]);
+    for (size_t s = 0; s < symbols; s++)
+        if (w->sums[t][s] == 0 && w->costs[t][s] < ABSENT_BITS * FIRN_COST_BIT)
+            w->costs[t][s] = ABSENT_BITS * FIRN_COST_BIT;
+}
+
 /* What the context would cost under a code of its own, tables left out. */
 static uint64_t own_price(const struct firn_cost_logs *logs, const struct firn_contexts_work *w, size_t context)
 {
@@ -70,7 +80,7 @@ static unsigned seed(const struct firn_cost_logs *logs, size_t contexts, size_t 
     uint64_t own[FIRN_CONTEXTS_MAX];
     unsigned tables = 1;
 
-    firn_cost_symbols(logs, w->sums[0], symbols, w->costs[0]);
+    price_table(logs, w, 0, symbols);
     for (size_t c = 0; c < contexts; c++) {
         own[c] = own_price(logs, w, c);
         w->price[c] = price_of(w, c, w->costs[0]);
@@ -90,7 +100,7 @@ static unsigned seed(const struct firn_cost_logs *logs, size_t contexts, size_t 
         memset(w->sums[tables], 0, sizeof w->sums[tables]);
         for (uint32_t p = w->starts[from]; p < w->starts[from + 1]; p++)
             w->sums[tables][w->pairs[p].symbol] = w->pairs[p].count;
-        firn_cost_symbols(logs, w->sums[tables], symbols, w->costs[tables]);
+        price_table(logs, w, tables, symbols);
         for (size_t c = 0; c < contexts; c++) {
             uint64_t price = price_of(w, c, w->costs[tables]);
 
@@ -266,7 +276,7 @@ uint64_t firn_contexts_make(const struct firn_cost_logs *logs, const uint32_t *c
         if (round + 1 == ROUNDS)
             tables = join(logs, contexts, symbols, tables, made, work);
         for (unsigned t = 0; t < tables; t++)
-            firn_cost_symbols(logs, work->sums[t], symbols, work->costs[t]);
+            price_table(logs, work, t, symbols);
         assign(contexts, tables, made, work);
     }
     tidy(contexts, symbols, made, work);
@@ -402,10 +412,10 @@ static enum firn_status read_map(struct firn_bits_reader *reader, struct firn_co
             codes->map[c++] = (uint8_t)token;
             continue;
         }
-        while (zeros < 9 && firn_bits_take(reader, 1) == 0)
+        while (zeros < 10 && firn_bits_take(reader, 1) == 0)
             zeros++;
         more = (size_t)1 << zeros | firn_bits_take(reader, zeros);
-        if (zeros == 9 || c == 0 || more > contexts - c)
+        if (zeros == 10 || c == 0 || more > contexts - c)
             return FIRN_BAD_DATA;
         memset(codes->map + c, codes->map[c - 1], more);
         c += more;

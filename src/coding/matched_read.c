@@ -8,81 +8,17 @@
  */
 #include "coding/matched.h"
 
-#include "base/bytes.h"
+#include "coding/words.h"
 
 #include "firn/prefix.h"
 
 #include <string.h>
 
 enum {
-    NUMBER_BYTES = 3,
     WIDE = 16,                         /* bytes copied at a time where there is room */
     LITERALS_PER_REFILL = 5,
     LENGTH_MASK = 15
 };
-
-/* ---- bits ---- */
-
-/* Most significant bit first; zeros behind the end. At least 56 bits are held after a refill. */
-struct source {
-    const uint8_t *bytes;
-    size_t byte_count, at;             /* at: of the next byte to load; may run past byte_count */
-    uint64_t bits;
-    unsigned held;
-};
-
-static inline uint64_t swap64(uint64_t v)
-{
-#if defined(__GNUC__) && FIRN_BYTES_LITTLE
-    return __builtin_bswap64(v);
-#else
-    v = (v & UINT64_C(0x00FF00FF00FF00FF)) << 8 | (v >> 8 & UINT64_C(0x00FF00FF00FF00FF));
-    v = (v & UINT64_C(0x0000FFFF0000FFFF)) << 16 | (v >> 16 & UINT64_C(0x0000FFFF0000FFFF));
-    return v << 32 | v >> 32;
-#endif
-}
-
-static uint64_t load_end(const struct source *s)
-{
-    uint64_t word = 0;
-
-    for (size_t k = 0; k < 8; k++)
-        word = word << 8 | (s->at + k < s->byte_count ? s->bytes[s->at + k] : 0u);
-    return word;
-}
-
-static inline void refill(struct source *s)
-{
-    uint64_t word = s->at + 8 <= s->byte_count ? swap64(firn_bytes_get64(s->bytes + s->at)) : load_end(s);
-
-    s->bits |= word >> s->held;
-    s->at += (63 - s->held) >> 3;
-    s->held |= 56;
-}
-
-static inline void drop(struct source *s, unsigned count)
-{
-    s->bits <<= count;
-    s->held -= count;
-}
-
-/* count <= 31 */
-static inline uint32_t take(struct source *s, unsigned count)
-{
-    uint32_t value = (uint32_t)(s->bits >> 32 >> (32 - count));
-
-    drop(s, count);
-    return value;
-}
-
-/* Used up but for less than eight zero bits. */
-static bool is_used_up(struct source *s)
-{
-    size_t used_bits = 8 * s->at - s->held, end_bits = 8 * s->byte_count;
-
-    refill(s);
-    return used_bits <= end_bits && end_bits - used_bits < 8 && (s->bits >> 56) == 0;
-}
 
 /* ---- tables ---- */
 
@@ -115,21 +51,8 @@ static void spread32(const uint8_t *lengths, size_t symbols, uint32_t entries[FI
     }
 }
 
-static bool take_number(const uint8_t *coded, size_t coded_bytes, size_t *at, size_t *value)
-{
-    *value = 0;
-    for (unsigned k = 0; k < NUMBER_BYTES; k++) {
-        if (*at >= coded_bytes)
-            return false;
-        *value |= (size_t)(coded[*at] & 127) << 7 * k;
-        if (coded[(*at)++] < 128)
-            return k == 0 || coded[*at - 1] != 0;
-    }
-    return false;
-}
-
 /* Codes and places of the three streams. */
-static bool open_streams(const uint8_t *coded, size_t coded_bytes, struct source streams[3],
+static bool open_streams(const uint8_t *coded, size_t coded_bytes, struct firn_words_reader streams[3],
                          struct firn_matched_read_work *w)
 {
     struct firn_bits_reader reader = { coded, coded_bytes, 0 };
@@ -144,13 +67,13 @@ static bool open_streams(const uint8_t *coded, size_t coded_bytes, struct source
         return false;
     w->table_bits = reader.at_bits;
     at = firn_bits_close(&reader);
-    if (at == SIZE_MAX || !take_number(coded, coded_bytes, &at, &sizes[0]) ||
-        !take_number(coded, coded_bytes, &at, &sizes[1]) || sizes[0] > coded_bytes - at ||
+    if (at == SIZE_MAX || !firn_words_take_number(coded, coded_bytes, &at, &sizes[0]) ||
+        !firn_words_take_number(coded, coded_bytes, &at, &sizes[1]) || sizes[0] > coded_bytes - at ||
         sizes[1] > coded_bytes - at - sizes[0])
         return false;
     sizes[2] = coded_bytes - at - sizes[0] - sizes[1];
     for (unsigned k = 0; k < 3; k++) {
-        streams[k] = (struct source){ .bytes = coded + at, .byte_count = sizes[k] };
+        streams[k] = (struct firn_words_reader){ .bytes = coded + at, .byte_count = sizes[k] };
         at += sizes[k];
     }
     for (unsigned t = 0; t < c->commands.tables; t++)
@@ -168,7 +91,7 @@ static bool open_streams(const uint8_t *coded, size_t coded_bytes, struct source
  * A run of literals; the first has contexts of its own. Each entry tells the table of the next literal, so that no map is
  * looked up on the way.
  */
-static inline void take_literals(struct source *s, const struct firn_matched_read_work *w, unsigned context,
+static inline void take_literals(struct firn_words_reader *s, const struct firn_matched_read_work *w, unsigned context,
                                  uint8_t *to, size_t count)
 {
     unsigned table = w->codes.literals.map[context];
@@ -176,12 +99,12 @@ static inline void take_literals(struct source *s, const struct firn_matched_rea
     while (count > 0) {
         size_t now = count < LITERALS_PER_REFILL ? count : LITERALS_PER_REFILL;
 
-        refill(s);
+        firn_words_refill(s);
         count -= now;
         for (; now > 0; now--) {
             unsigned entry = w->literals[table][s->bits >> (64 - FIRN_MATCHED_LIMIT)];
 
-            drop(s, entry & LENGTH_MASK);
+            firn_words_drop(s, entry & LENGTH_MASK);
             *to++ = (uint8_t)(entry >> 8);
             table = entry >> 4 & 15;
         }
@@ -205,7 +128,7 @@ static inline void copy_match(uint8_t *to, size_t distance, size_t length, size_
 }
 
 /* The distance a symbol stands for; the recent ones are kept in order. */
-static inline size_t distance_of(struct source *s, unsigned symbol, unsigned fine, uint32_t recent[FIRN_MATCHED_RECENT])
+static inline size_t distance_of(struct firn_words_reader *s, unsigned symbol, unsigned fine, uint32_t recent[FIRN_MATCHED_RECENT])
 {
     uint32_t distance, a = recent[0], b = recent[1], c = recent[2];
 
@@ -213,7 +136,7 @@ static inline size_t distance_of(struct source *s, unsigned symbol, unsigned fin
         distance = recent[symbol];
     } else {
         unsigned code = (symbol - FIRN_MATCHED_RECENT) >> fine, exponent = code / 2 + 1;
-        uint32_t high = (2u | (code & 1)) << (exponent - 1) | take(s, exponent - 1);
+        uint32_t high = (2u | (code & 1)) << (exponent - 1) | firn_words_take(s, exponent - 1);
 
         distance = ((high - 2) << fine | ((symbol - FIRN_MATCHED_RECENT) & ((1u << fine) - 1))) + 1;
     }
@@ -227,7 +150,7 @@ static inline size_t distance_of(struct source *s, unsigned symbol, unsigned fin
 enum firn_status firn_matched_read(const uint8_t *coded, size_t coded_bytes, uint8_t *raw, size_t raw_bytes,
                                    struct firn_matched_read_work *work)
 {
-    struct source streams[3], commands, distances, literals;
+    struct firn_words_reader streams[3], commands, distances, literals;
     const struct firn_matched_codes *codes = &work->codes;
     uint32_t recent[FIRN_MATCHED_RECENT];
     size_t at = 0;
@@ -243,12 +166,12 @@ enum firn_status firn_matched_read(const uint8_t *coded, size_t coded_bytes, uin
         size_t distance;
         const struct firn_matched_class *run_class, *length_class;
 
-        refill(&commands);
+        firn_words_refill(&commands);
         entry = work->commands[table][commands.bits >> (64 - FIRN_MATCHED_LIMIT)];
-        drop(&commands, entry & LENGTH_MASK);
+        firn_words_drop(&commands, entry & LENGTH_MASK);
         run_class = &firn_matched_runs[entry >> 9];
         length_class = &firn_matched_lengths[entry >> 4 & (FIRN_MATCHED_LENGTH_CODES - 1)];
-        run = run_class->base + take(&commands, run_class->bits);
+        run = run_class->base + firn_words_take(&commands, run_class->bits);
         if (run > raw_bytes - at)
             return FIRN_BAD_DATA;
         if (run > 0)
@@ -256,17 +179,17 @@ enum firn_status firn_matched_read(const uint8_t *coded, size_t coded_bytes, uin
         at += run;
         if (at == raw_bytes)
             break;
-        length = length_class->base + take(&commands, length_class->bits);
+        length = length_class->base + firn_words_take(&commands, length_class->bits);
         table = codes->commands.map[firn_matched_command_context(length)];
-        refill(&distances);
+        firn_words_refill(&distances);
         entry = work->distances[codes->distances.map[firn_matched_distance_context(run, length)]]
                                [distances.bits >> (64 - FIRN_MATCHED_LIMIT)];
-        drop(&distances, entry & LENGTH_MASK);
+        firn_words_drop(&distances, entry & LENGTH_MASK);
         distance = distance_of(&distances, entry >> 4, codes->fine, recent);
         if (distance > at || length > raw_bytes - at)
             return FIRN_BAD_DATA;
         copy_match(raw + at, distance, length, raw_bytes - at);
         at += length;
     }
-    return is_used_up(&commands) && is_used_up(&distances) && is_used_up(&literals) ? FIRN_OK : FIRN_BAD_DATA;
+    return firn_words_used_up(&commands) && firn_words_used_up(&distances) && firn_words_used_up(&literals) ? FIRN_OK : FIRN_BAD_DATA;
 }

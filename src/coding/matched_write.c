@@ -4,13 +4,13 @@
  */
 #include "coding/matched.h"
 
-#include "base/bytes.h"
+#include "coding/words.h"
 
 #include "firn/prefix.h"
 
 #include <string.h>
 
-enum { HEAD_MAX_BYTES = 3 * FIRN_CONTEXTS_COST_MAX_BITS / 8 + 16, NUMBER_BYTES = 3 };
+enum { HEAD_MAX_BYTES = 3 * FIRN_CONTEXTS_COST_MAX_BITS / 8 + 16 };
 
 /* ---- counting ---- */
 
@@ -97,45 +97,8 @@ static void spell(const struct firn_contexts *codes, size_t symbols, uint32_t *s
 
 /* ---- bitstreams ---- */
 
-/* Writes eight bytes at a time, so needs eight bytes more room than the stream has. */
-struct stream {
-    uint8_t *at, *end;                 /* of the room, less those eight bytes */
-    uint64_t held;                     /* the low held_bits bits wait to be written */
-    unsigned held_bits;
-};
-
-static inline void flush(struct stream *s)
-{
-    for (; s->held_bits >= 8 && s->at < s->end; s->held_bits -= 8)
-        *s->at++ = (uint8_t)(s->held >> (s->held_bits - 8));
-}
-
-static inline void put(struct stream *s, uint32_t value, unsigned count)
-{
-    if (s->held_bits + count > 64 - 8)
-        flush(s);
-    s->held = s->held << count | value;
-    s->held_bits += count;
-}
-
-static inline void put_word(struct stream *s, uint32_t spelt)
-{
-    put(s, spelt >> 8, spelt & 255);
-}
-
-/* Returns whether all of it fitted. */
-static bool close_stream(struct stream *s)
-{
-    flush(s);
-    if (s->held_bits > 0 && s->at < s->end) {
-        *s->at++ = (uint8_t)(s->held << (8 - s->held_bits));
-        s->held_bits = 0;
-    }
-    return s->held_bits == 0;
-}
-
 static void put_commands(const struct firn_matched_command *commands, size_t count,
-                         const struct firn_matched_write_work *w, struct stream *s)
+                         const struct firn_matched_write_work *w, struct firn_words_writer *s)
 {
     uint32_t before = 0;
 
@@ -144,16 +107,16 @@ static void put_commands(const struct firn_matched_command *commands, size_t cou
         unsigned run = firn_matched_run_code(c->literals), length = c->length == 0 ? 0 : firn_matched_length_code(c->length);
         unsigned table = w->codes.commands.map[firn_matched_command_context(before)];
 
-        put_word(s, w->command_words[table][run * FIRN_MATCHED_LENGTH_CODES + length]);
-        put(s, c->literals - firn_matched_runs[run].base, firn_matched_runs[run].bits);
+        firn_words_put_spelt(s, w->command_words[table][run * FIRN_MATCHED_LENGTH_CODES + length]);
+        firn_words_put(s, c->literals - firn_matched_runs[run].base, firn_matched_runs[run].bits);
         if (c->length > 0)
-            put(s, c->length - firn_matched_lengths[length].base, firn_matched_lengths[length].bits);
+            firn_words_put(s, c->length - firn_matched_lengths[length].base, firn_matched_lengths[length].bits);
         before = c->length;
     }
 }
 
 static void put_distances(const struct firn_matched_command *commands, size_t count,
-                          const struct firn_matched_write_work *w, struct stream *s)
+                          const struct firn_matched_write_work *w, struct firn_words_writer *s)
 {
     uint32_t recent[FIRN_MATCHED_RECENT], more = 0;
     unsigned more_bits = 0;
@@ -168,17 +131,17 @@ static void put_distances(const struct firn_matched_command *commands, size_t co
         table = w->codes.distances.map[firn_matched_distance_context(c->literals, c->length)];
         symbol = firn_matched_recall(recent, c->distance);
         if (symbol < FIRN_MATCHED_RECENT) {
-            put_word(s, w->distance_words[table][symbol]);
+            firn_words_put_spelt(s, w->distance_words[table][symbol]);
             continue;
         }
         symbol = firn_matched_distance_symbol(c->distance, w->codes.fine, &more_bits, &more);
-        put_word(s, w->distance_words[table][symbol]);
-        put(s, more, more_bits);
+        firn_words_put_spelt(s, w->distance_words[table][symbol]);
+        firn_words_put(s, more, more_bits);
     }
 }
 
 static void put_literals(const uint8_t *raw, const struct firn_matched_command *commands, size_t count,
-                         const struct firn_matched_write_work *w, struct stream *s)
+                         const struct firn_matched_write_work *w, struct firn_words_writer *s)
 {
     size_t at = 0;
     uint32_t distance = 1;
@@ -187,18 +150,11 @@ static void put_literals(const uint8_t *raw, const struct firn_matched_command *
         for (uint32_t k = 0; k < commands[i].literals; k++, at++) {
             unsigned context = firn_matched_literal_context(raw, at, k == 0, distance);
 
-            put_word(s, w->literal_words[w->codes.literals.map[context]][raw[at]]);
+            firn_words_put_spelt(s, w->literal_words[w->codes.literals.map[context]][raw[at]]);
         }
         at += commands[i].length;
         distance = commands[i].distance;
     }
-}
-
-static void put_number(uint8_t **to, size_t value)
-{
-    for (; value >= 128; value >>= 7)
-        *(*to)++ = (uint8_t)(value | 128);
-    *(*to)++ = (uint8_t)value;
 }
 
 /* `fine` and the codes. */
@@ -218,28 +174,28 @@ size_t firn_matched_write(const uint8_t *raw, const struct firn_matched_command 
 {
     uint8_t head[HEAD_MAX_BYTES];
     size_t head_bytes = put_codes(&w->codes, head), first, second;
-    struct stream s = { .end = room + room_bytes };
+    struct firn_words_writer s = { .end = room + room_bytes };
     uint8_t *start, *to = head + head_bytes;
 
-    if (head_bytes + 2 * NUMBER_BYTES > room_bytes)
+    if (head_bytes + 2 * FIRN_WORDS_NUMBER_BYTES > room_bytes)
         return 0;
     spell(&w->codes.commands, FIRN_MATCHED_COMMANDS, w->command_words[0], FIRN_MATCHED_COMMANDS);
     spell(&w->codes.distances, firn_matched_distances(w->codes.fine), w->distance_words[0], FIRN_MATCHED_DISTANCES_MAX);
     spell(&w->codes.literals, 256, w->literal_words[0], 256);
-    start = s.at = room + head_bytes + 2 * NUMBER_BYTES;
+    start = s.at = room + head_bytes + 2 * FIRN_WORDS_NUMBER_BYTES;
     put_commands(commands, count, w, &s);
-    if (!close_stream(&s))
+    if (!firn_words_close(&s))
         return 0;
     first = (size_t)(s.at - start);
     put_distances(commands, count, w, &s);
-    if (!close_stream(&s))
+    if (!firn_words_close(&s))
         return 0;
     second = (size_t)(s.at - start) - first;
     put_literals(raw, commands, count, w, &s);
-    if (!close_stream(&s) || s.at == s.end)
+    if (!firn_words_close(&s) )
         return 0;
-    put_number(&to, first);
-    put_number(&to, second);
+    firn_words_put_number(&to, first);
+    firn_words_put_number(&to, second);
     memcpy(room, head, (size_t)(to - head));
     memmove(room + (to - head), start, (size_t)(s.at - start));
     return (size_t)(to - head) + (size_t)(s.at - start);

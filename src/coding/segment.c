@@ -12,8 +12,10 @@
 #include "coding/matched.h"
 #include "coding/parse.h"
 #include "coding/sample.h"
+#include "coding/samples.h"
 #include "coding/split.h"
 #include "coding/streams.h"
+#include "coding/survey.h"
 #include "coding/table.h"
 
 #include "firn/prefix.h"
@@ -47,6 +49,8 @@ struct match_work {
 struct encode_work {
     struct firn_split_work split;
     struct match_work match;
+    struct firn_survey_work survey;
+    struct firn_samples_write_work samples;
     uint8_t room[FIRN_SEGMENT_RAW_MAX + HEAD_BYTES];   /* for what may turn out smaller */
     uint8_t lengths[FIRN_TABLE_SYMBOLS];
     uint16_t words[FIRN_TABLE_SYMBOLS];
@@ -55,6 +59,7 @@ struct encode_work {
 
 struct decode_work {
     struct firn_matched_read_work matched;
+    struct firn_samples_read_work samples;
     uint16_t entries[FIRN_STREAMS_ENTRIES];
     uint8_t lengths[FIRN_TABLE_SYMBOLS];
     uint32_t counts[FIRN_TABLE_SYMBOLS];
@@ -230,6 +235,26 @@ enum firn_status firn_segment_encode(const uint8_t *raw, size_t raw_bytes, enum 
         put_stored(raw, raw_bytes, coded, coded_bytes);
         return FIRN_OK;
     }
+    {
+        struct firn_samples_shape shape;
+        size_t bytes;
+        firn_cost_prepare(&w->samples.logs);
+        uint32_t price = firn_survey(&w->samples.logs, raw, raw_bytes, &shape, &w->survey);
+        if (price < 460) {
+            bytes = firn_samples_write(&shape, raw, raw_bytes, 16, coded + 2, raw_bytes, &w->samples);
+#ifdef DBG
+            extern int printf(const char*,...);
+            printf("DBG shape w%u c%u %s%s%s pred %d head %zu row %zu  price %u ratio %.3f tables %u\n", shape.width, shape.channels, shape.big?"big ":"", shape.floats?"float ":"", shape.lean?"lean":"",
+              shape.predictor, shape.head_bytes, shape.row, price, (double)raw_bytes/bytes, w->samples.codes.tables);
+#endif
+            if (bytes != 0) {
+            coded[0] = 4;
+            coded[1] = 0;
+            *coded_bytes = bytes + 2;
+            return FIRN_OK;
+            }
+        }
+    }
     if (encode_matched(raw, raw_bytes, effort, coded, coded_bytes, w))
         return FIRN_OK;
     firn_split(raw, raw_bytes, cell_bytes_of(effort), true, &w->split);
@@ -398,7 +423,7 @@ static bool is_solid(const uint8_t *coded, size_t coded_bytes, size_t raw_bytes)
 static bool is_known(const uint8_t *coded, size_t coded_bytes, size_t raw_bytes)
 {
     return raw_bytes >= 1 && raw_bytes <= FIRN_SEGMENT_RAW_MAX && coded_bytes > HEAD_BYTES && coded[1] == 0 &&
-           (coded[0] == FIRN_SEGMENT_PREFIX || coded[0] == 3 || is_solid(coded, coded_bytes, raw_bytes));
+           (coded[0] == FIRN_SEGMENT_PREFIX || coded[0] == 3 || coded[0] == 4 || is_solid(coded, coded_bytes, raw_bytes));
 }
 
 enum firn_status firn_segment_decode(const uint8_t *coded, size_t coded_bytes, uint8_t *raw, size_t raw_bytes,
@@ -414,6 +439,8 @@ enum firn_status firn_segment_decode(const uint8_t *coded, size_t coded_bytes, u
         memcpy(raw, coded + HEAD_BYTES, raw_bytes);
     else if (coded[0] == FIRN_SEGMENT_RUN)
         memset(raw, coded[HEAD_BYTES], raw_bytes);
+    else if (coded[0] == 4)
+        return firn_samples_read(coded + HEAD_BYTES, coded_bytes - HEAD_BYTES, raw, raw_bytes, &w->samples);
     else if (coded[0] == 3)
         return firn_matched_read(coded + HEAD_BYTES, coded_bytes - HEAD_BYTES, raw, raw_bytes, &w->matched);
     else

@@ -1,0 +1,183 @@
+/*
+ * coding/samples.c - numbers, predictions and contexts, for writer and reader alike
+ * SPDX-License-Identifier: BSD-2-Clause
+ */
+#include "coding/samples.h"
+
+#include <string.h>
+
+bool firn_samples_shape_is_sound(const struct firn_samples_shape *shape, size_t raw_bytes)
+{
+    return shape->width >= 1 && shape->width <= FIRN_SAMPLES_WIDTH_MAX && shape->channels >= 1 &&
+           shape->channels <= FIRN_SAMPLES_CHANNELS_MAX && (unsigned)shape->predictor < FIRN_SAMPLES_PREDICTORS &&
+           shape->head_bytes <= FIRN_SAMPLES_HEAD_MAX && shape->row <= FIRN_SAMPLES_ROW_MAX &&
+           (shape->row == 0 || shape->row > shape->channels) && (!shape->floats || shape->width == 4) &&
+           (!shape->lean || shape->channels > 1) &&
+           raw_bytes >= shape->head_bytes + (size_t)shape->width * FIRN_SAMPLES_PARTS;
+}
+
+void firn_samples_classes(uint8_t classes[129])
+{
+    static const uint8_t ends[7] = { 1, 2, 3, 5, 8, 13, 25 };      /* the first size of the next class */
+
+    for (unsigned size = 0; size <= 128; size++) {
+        unsigned class = 0;
+
+        while (class < 7 && size >= ends[class])
+            class++;
+        classes[size] = (uint8_t)class;
+    }
+}
+
+/* ---- numbers ---- */
+
+void firn_samples_load(const struct firn_samples_shape *shape, const uint8_t *raw, size_t count, int32_t *x)
+{
+    unsigned width = shape->width, spare = 32 - 8 * width;
+
+    for (size_t i = 0; i < count; i++, raw += width) {
+        uint32_t value = 0;
+
+        for (unsigned k = 0; k < width; k++)
+            value = value << 8 | raw[shape->big ? k : width - 1 - k];
+        if (shape->floats && value >> 31)
+            value ^= UINT32_C(0x7FFFFFFF);
+        x[i] = width == 1 ? (int32_t)value : (int32_t)(value << spare) >> spare;
+    }
+}
+
+void firn_samples_store(const struct firn_samples_shape *shape, const int32_t *x, size_t count, uint8_t *raw)
+{
+    unsigned width = shape->width;
+
+    for (size_t i = 0; i < count; i++, raw += width) {
+        uint32_t value = (uint32_t)x[i];
+
+        if (shape->floats && value >> 31)
+            value ^= UINT32_C(0x7FFFFFFF);
+        for (unsigned k = 0; k < width; k++)
+            raw[shape->big ? width - 1 - k : k] = (uint8_t)(value >> 8 * k);
+    }
+}
+
+/* ---- predictions ---- */
+
+static int32_t middle(int32_t a, int32_t b, int32_t c)
+{
+    int32_t low = a < b ? a : b, high = a < b ? b : a;
+
+    return c < low ? low : c > high ? high : c;
+}
+
+/* Sums wrap round, so they are made without sign. */
+static int32_t wrap(uint32_t value)
+{
+    return (int32_t)value;
+}
+
+/* What x[i] is expected to be; i >= channels, and i >= row + channels for predictors that look up. */
+static inline int32_t predict(enum firn_samples_predictor predictor, const int32_t *x, size_t i, size_t c, size_t row)
+{
+    uint32_t w = (uint32_t)x[i - c], n = row == 0 ? w : (uint32_t)x[i - row], nw = row == 0 ? w : (uint32_t)x[i - row - c];
+
+    switch (predictor) {
+    case FIRN_SAMPLES_UP:
+        return wrap(n);
+    case FIRN_SAMPLES_PLANE:
+        return wrap(w + n - nw);
+    case FIRN_SAMPLES_MEDIAN:
+        return middle(wrap(w), wrap(n), wrap(w + n - nw));
+    case FIRN_SAMPLES_MEAN:
+        return (int32_t)(((int64_t)wrap(w) + wrap(n)) >> 1);
+    case FIRN_SAMPLES_BENT:
+        return (int32_t)((3 * (int64_t)wrap(w) + 3 * (int64_t)wrap(n) - 2 * (int64_t)wrap(nw)) >> 2);
+    case FIRN_SAMPLES_LINE:
+        return wrap(2 * w - (uint32_t)(i >= 2 * c ? x[i - 2 * c] : x[i - c]));
+    case FIRN_SAMPLES_CURVE:
+        if (i < 3 * c)
+            return wrap(w);
+        return wrap(3 * w - 3 * (uint32_t)x[i - 2 * c] + (uint32_t)x[i - 3 * c]);
+    default:
+        return wrap(w);
+    }
+}
+
+/* The prediction at the edges too: nothing in front, the left one as long as there is no row above. */
+static inline int32_t expected(const struct firn_samples_shape *shape, const int32_t *x, size_t i)
+{
+    if (shape->predictor == FIRN_SAMPLES_NOTHING || i < shape->channels)
+        return 0;
+    if (i < shape->row + shape->channels)
+        return predict(shape->row == 0 ? shape->predictor : FIRN_SAMPLES_LEFT, x, i, shape->channels, 0);
+    return predict(shape->predictor, x, i, shape->channels, shape->row);
+}
+
+void firn_samples_differ(const struct firn_samples_shape *shape, const int32_t *x, size_t count, int32_t *residuals)
+{
+    for (size_t i = 0; i < count; i++)
+        residuals[i] = wrap((uint32_t)x[i] - (uint32_t)expected(shape, x, i));
+    if (shape->lean)
+        for (size_t i = count; i-- > 0;)
+            if (i % shape->channels != 0)
+                residuals[i] = wrap((uint32_t)residuals[i] - (uint32_t)residuals[i - 1]);
+}
+
+/* A number of one byte stays within 0 .. 255; a wider one is sign-extended. */
+static inline int32_t fit(uint32_t value, unsigned width)
+{
+    unsigned spare = 32 - 8 * width;
+
+    return width == 1 ? (int32_t)(value & 255) : (int32_t)(value << spare) >> spare;
+}
+
+void firn_samples_restore(const struct firn_samples_shape *shape, size_t count, int32_t *x)
+{
+    if (shape->lean)
+        for (size_t i = 1; i < count; i++)
+            if (i % shape->channels != 0)
+                x[i] = wrap((uint32_t)x[i] + (uint32_t)x[i - 1]);
+    for (size_t i = 0; i < count; i++)
+        x[i] = fit((uint32_t)x[i] + (uint32_t)expected(shape, x, i), shape->width);
+}
+
+/* ---- contexts ---- */
+
+static void contexts_of_bytes(const struct firn_samples_shape *shape, const uint8_t *tokens, size_t start, size_t end,
+                              const uint8_t classes[129], uint16_t *contexts)
+{
+    size_t c = shape->channels, beside = c == 1 ? 2 : 1, up = shape->row == 0 ? 3 * c : shape->row;
+
+    for (size_t i = start; i < end; i++) {
+        unsigned w = i - start >= c ? classes[firn_samples_size(tokens[i - c])] : 0;
+        unsigned b = i - start >= beside ? classes[firn_samples_size(tokens[i - beside])] : 0;
+        unsigned n = i - start >= up ? firn_samples_size(tokens[i - up]) : 0;
+        unsigned ne = i - start >= up - c ? firn_samples_size(tokens[i - up + c]) : 0;
+
+        contexts[i] = (uint16_t)((i % c != 0 ? 512u : 0u) + 64 * w + 8 * b + classes[(n + ne + 1) / 2]);
+    }
+}
+
+static void contexts_of_numbers(const struct firn_samples_shape *shape, const uint8_t *tokens, size_t start, size_t end,
+                                uint16_t *contexts)
+{
+    unsigned mean[FIRN_SAMPLES_CHANNELS_MAX] = { 0 };
+    size_t c = shape->channels;
+
+    for (size_t i = start; i < end; i++) {
+        unsigned *m = &mean[i % c], level = *m >> 3;
+
+        if (shape->row != 0)
+            level = (level + (i - start >= shape->row ? tokens[i - shape->row] : 0u)) / 2;
+        contexts[i] = (uint16_t)(level + (i % c != 0 ? 128u : 0u));
+        *m += tokens[i] - (*m >> 3);
+    }
+}
+
+void firn_samples_contexts(const struct firn_samples_shape *shape, const uint8_t *tokens, size_t start, size_t end,
+                           const uint8_t classes[129], uint16_t *contexts)
+{
+    if (shape->width == 1)
+        contexts_of_bytes(shape, tokens, start, end, classes, contexts);
+    else
+        contexts_of_numbers(shape, tokens, start, end, contexts);
+}
