@@ -176,4 +176,8 @@ struct firn_matched_read_work {
 enum firn_status firn_matched_read(const uint8_t *coded, size_t coded_bytes, uint8_t *raw, size_t raw_bytes,
                                    struct firn_matched_read_work *work);
 
+/* How many bits codes and streams have. FIRN_OK or FIRN_BAD_DATA. */
+enum firn_status firn_matched_measure(const uint8_t *coded, size_t coded_bytes, uint64_t *table_bits, uint64_t *code_bits,
+                                      struct firn_matched_read_work *work);
+
 #endif

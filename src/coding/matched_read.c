@@ -193,3 +193,15 @@ enum firn_status firn_matched_read(const uint8_t *coded, size_t coded_bytes, uin
     }
     return firn_words_used_up(&commands) && firn_words_used_up(&distances) && firn_words_used_up(&literals) ? FIRN_OK : FIRN_BAD_DATA;
 }
+
+enum firn_status firn_matched_measure(const uint8_t *coded, size_t coded_bytes, uint64_t *table_bits, uint64_t *code_bits,
+                                      struct firn_matched_read_work *work)
+{
+    struct firn_words_reader streams[3];
+
+    if (!open_streams(coded, coded_bytes, streams, work))
+        return FIRN_BAD_DATA;
+    *table_bits = work->table_bits;
+    *code_bits = 8 * (uint64_t)(streams[0].byte_count + streams[1].byte_count + streams[2].byte_count);
+    return FIRN_OK;
+}

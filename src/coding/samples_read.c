@@ -42,8 +42,8 @@ static bool take_shape(const uint8_t *coded, size_t coded_bytes, size_t raw_byte
            firn_words_take_number(coded, coded_bytes, at, &shape->row) && firn_samples_shape_is_sound(shape, raw_bytes);
 }
 
-/* Copies the bytes in front and behind, reads the codes and finds the streams. */
-static bool open_streams(const uint8_t *coded, size_t coded_bytes, uint8_t *raw, size_t raw_bytes,
+/* Reads the codes and finds the streams; *edges_at: the bytes in front of the first number and behind the last. */
+static bool open_streams(const uint8_t *coded, size_t coded_bytes, size_t raw_bytes, size_t *edges_at,
                          struct firn_samples_shape *shape, struct firn_words_reader streams[PARTS],
                          struct firn_samples_read_work *w)
 {
@@ -55,8 +55,7 @@ static bool open_streams(const uint8_t *coded, size_t coded_bytes, uint8_t *raw,
     tail = (raw_bytes - shape->head_bytes) % shape->width;
     if (coded_bytes - at < shape->head_bytes + tail)
         return false;
-    memcpy(raw, coded + at, shape->head_bytes);
-    memcpy(raw + raw_bytes - tail, coded + at + shape->head_bytes, tail);
+    *edges_at = at;
     at += shape->head_bytes + tail;
     reader = (struct firn_bits_reader){ coded + at, coded_bytes - at, 0 };
     if (firn_contexts_read(&reader, &w->codes, FIRN_SAMPLES_CONTEXTS, 256) != FIRN_OK)
@@ -137,10 +136,13 @@ enum firn_status firn_samples_read(const uint8_t *coded, size_t coded_bytes, uin
 {
     struct firn_words_reader streams[PARTS];
     struct firn_samples_shape shape;
-    size_t count, each;
+    size_t count, each, tail, edges_at;
 
-    if (!open_streams(coded, coded_bytes, raw, raw_bytes, &shape, streams, work))
+    if (!open_streams(coded, coded_bytes, raw_bytes, &edges_at, &shape, streams, work))
         return FIRN_BAD_DATA;
+    tail = (raw_bytes - shape.head_bytes) % shape.width;
+    memcpy(raw, coded + edges_at, shape.head_bytes);
+    memcpy(raw + raw_bytes - tail, coded + edges_at + shape.head_bytes, tail);
     count = firn_samples_count(&shape, raw_bytes);
     each = count / PARTS;
     for (size_t part = 0; part < PARTS; part++) {
@@ -155,5 +157,21 @@ enum firn_status firn_samples_read(const uint8_t *coded, size_t coded_bytes, uin
     }
     firn_samples_restore(&shape, count, work->x);
     firn_samples_store(&shape, work->x, count, raw + shape.head_bytes);
+    return FIRN_OK;
+}
+
+enum firn_status firn_samples_measure(const uint8_t *coded, size_t coded_bytes, size_t raw_bytes, uint64_t *table_bits,
+                                      uint64_t *code_bits, struct firn_samples_read_work *work)
+{
+    struct firn_words_reader streams[PARTS];
+    struct firn_samples_shape shape;
+    size_t edges_at;
+
+    if (!open_streams(coded, coded_bytes, raw_bytes, &edges_at, &shape, streams, work))
+        return FIRN_BAD_DATA;
+    *table_bits = work->table_bits;
+    *code_bits = 0;
+    for (size_t part = 0; part < PARTS; part++)
+        *code_bits += 8 * (uint64_t)streams[part].byte_count;
     return FIRN_OK;
 }
