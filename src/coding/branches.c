@@ -1,8 +1,8 @@
 /*
  * coding/branches.c - the instructions that hold a distance of four bytes
  *
- * The bytes that say whether a distance follows are never changed themselves, as the search goes on behind a distance it has
- * turned and looks no further back than there: so turning back finds the same ones.
+ * The bytes that say whether a distance follows are never changed themselves, as the search goes on behind each distance it has
+ * found, turned or not, and looks no further back than there: so turning back finds the same ones.
  * SPDX-License-Identifier: BSD-2-Clause
  */
 #include "coding/branches.h"
@@ -33,15 +33,18 @@ static size_t turn(uint8_t *bytes, size_t byte_count, bool back)
 
     for (size_t at = 1; at + FIELD_BYTES <= byte_count; at++) {
         uint32_t value, place = (uint32_t)at;
+        uint8_t *field = bytes + at;
 
-        if ((bytes[at + 3] != 0 && bytes[at + 3] != 0xFF) || !is_distance(bytes, free, at))
+        if (!is_distance(bytes, free, at))
             continue;
-        value = firn_bytes_get32(bytes + at) + (back ? 0 - place : place);
-        value = (value & ((UINT32_C(1) << NEAR_BITS) - 1)) ^ UINT32_C(1) << (NEAR_BITS - 1);
-        firn_bytes_put32(bytes + at, value - (UINT32_C(1) << (NEAR_BITS - 1)));
-        turned++;
         free = at + FIELD_BYTES;
-        at += FIELD_BYTES;
+        at = free;
+        if (field[3] != 0 && field[3] != 0xFF)
+            continue;
+        value = firn_bytes_get32(field) + (back ? 0 - place : place);
+        value = (value & ((UINT32_C(1) << NEAR_BITS) - 1)) ^ UINT32_C(1) << (NEAR_BITS - 1);
+        firn_bytes_put32(field, value - (UINT32_C(1) << (NEAR_BITS - 1)));
+        turned++;
     }
     return turned;
 }

@@ -6,13 +6,19 @@
 
 #include <string.h>
 
+/* Whether it needs the row above. */
+static bool looks_up(enum firn_samples_predictor predictor)
+{
+    return predictor >= FIRN_SAMPLES_UP && predictor <= FIRN_SAMPLES_BENT;
+}
+
 bool firn_samples_shape_is_sound(const struct firn_samples_shape *shape, size_t raw_bytes)
 {
     return shape->width >= 1 && shape->width <= FIRN_SAMPLES_WIDTH_MAX && shape->channels >= 1 &&
            shape->channels <= FIRN_SAMPLES_CHANNELS_MAX && (unsigned)shape->predictor < FIRN_SAMPLES_PREDICTORS &&
            shape->head_bytes <= FIRN_SAMPLES_HEAD_MAX && shape->row <= FIRN_SAMPLES_ROW_MAX &&
-           (shape->row == 0 || shape->row > shape->channels) && (!shape->floats || shape->width == 4) &&
-           (!shape->lean || shape->channels > 1) &&
+           (shape->row > shape->channels || (shape->row == 0 && !looks_up(shape->predictor))) &&
+           (!shape->floats || shape->width == 4) && (!shape->lean || shape->channels > 1) &&
            raw_bytes >= shape->head_bytes + (size_t)shape->width * FIRN_SAMPLES_PARTS;
 }
 
@@ -78,7 +84,7 @@ static int32_t wrap(uint32_t value)
 /* What x[i] is expected to be; i >= channels, and i >= row + channels for predictors that look up. */
 static inline int32_t predict(enum firn_samples_predictor predictor, const int32_t *x, size_t i, size_t c, size_t row)
 {
-    uint32_t w = (uint32_t)x[i - c], n = row == 0 ? w : (uint32_t)x[i - row], nw = row == 0 ? w : (uint32_t)x[i - row - c];
+    uint32_t w = (uint32_t)x[i - c], n = (uint32_t)x[i - row], nw = (uint32_t)x[i - row - c];
 
     switch (predictor) {
     case FIRN_SAMPLES_UP:
@@ -102,13 +108,15 @@ static inline int32_t predict(enum firn_samples_predictor predictor, const int32
     }
 }
 
-/* The prediction at the edges too: nothing in front, the left one as long as there is no row above. */
+/* The prediction at the edges too: nothing in front; the left one as long as what is looked for is not there. */
 static inline int32_t expected(const struct firn_samples_shape *shape, const int32_t *x, size_t i)
 {
     if (shape->predictor == FIRN_SAMPLES_NOTHING || i < shape->channels)
         return 0;
+    if (!looks_up(shape->predictor))
+        return predict(shape->predictor, x, i, shape->channels, 0);
     if (i < shape->row + shape->channels)
-        return predict(shape->row == 0 ? shape->predictor : FIRN_SAMPLES_LEFT, x, i, shape->channels, 0);
+        return x[i - shape->channels];
     return predict(shape->predictor, x, i, shape->channels, shape->row);
 }
 
@@ -140,12 +148,127 @@ void firn_samples_restore(const struct firn_samples_shape *shape, size_t count, 
         x[i] = fit((uint32_t)x[i] + (uint32_t)expected(shape, x, i), shape->width);
 }
 
+/* One number of one byte; w, n, nw as in predict. */
+static inline uint8_t predict_byte(enum firn_samples_predictor predictor, int w, int n, int nw)
+{
+    switch (predictor) {
+    case FIRN_SAMPLES_UP:
+        return (uint8_t)n;
+    case FIRN_SAMPLES_PLANE:
+        return (uint8_t)(w + n - nw);
+    case FIRN_SAMPLES_MEDIAN:
+        return (uint8_t)middle(w, n, w + n - nw);
+    case FIRN_SAMPLES_MEAN:
+        return (uint8_t)((w + n) / 2);
+    case FIRN_SAMPLES_BENT:
+        return (uint8_t)((3 * (w + n) - 2 * nw) >> 2);
+    default:
+        return (uint8_t)w;
+    }
+}
+
+/* One channel: the number to the left stays in a register. */
+static inline void restore_one(enum firn_samples_predictor predictor, const uint8_t *residuals, size_t start, size_t end,
+                               size_t row, uint8_t *raw)
+{
+    uint8_t w = raw[start - 1], nw = looks_up(predictor) ? raw[start - row - 1] : 0;
+
+    for (size_t i = start; i < end; i++) {
+        uint8_t n = looks_up(predictor) ? raw[i - row] : 0;
+
+        w = (uint8_t)(residuals[i] + predict_byte(predictor, w, n, nw));
+        raw[i] = w;
+        nw = n;
+    }
+}
+
+/* Any number of channels; leaning residuals are summed up along a pixel. */
+static inline void restore_many(enum firn_samples_predictor predictor, const uint8_t *residuals, size_t start, size_t end,
+                                size_t row, size_t c, bool lean, uint8_t *raw)
+{
+    size_t channel = start % c;
+    uint8_t residual = 0;
+
+    for (size_t k = 0; lean && k < channel; k++)
+        residual = (uint8_t)(residual + residuals[start - channel + k]);
+    for (size_t i = start; i < end; i++) {
+        residual = (uint8_t)(residuals[i] + (lean && channel != 0 ? residual : 0));
+        raw[i] = (uint8_t)(residual + predict_byte(predictor, raw[i - c], looks_up(predictor) ? raw[i - row] : 0,
+                                                   looks_up(predictor) ? raw[i - row - c] : 0));
+        channel = channel + 1 == c ? 0 : channel + 1;
+    }
+}
+
+static inline void restore_by(enum firn_samples_predictor predictor, const struct firn_samples_shape *shape,
+                              const uint8_t *residuals, size_t start, size_t end, uint8_t *raw)
+{
+    if (shape->channels == 1)
+        restore_one(predictor, residuals, start, end, shape->row, raw);
+    else if (shape->channels == 3)
+        restore_many(predictor, residuals, start, end, shape->row, 3, shape->lean, raw);
+    else
+        restore_many(predictor, residuals, start, end, shape->row, shape->channels, shape->lean, raw);
+}
+
+/* Numbers start .. end, one by one, whatever is around them. */
+static void restore_edge(const struct firn_samples_shape *shape, const uint8_t *residuals, size_t start, size_t end,
+                         uint8_t *raw)
+{
+    size_t c = shape->channels;
+    uint8_t residual = 0;
+
+    for (size_t i = start; i < end; i++) {
+        int w = i < c ? 0 : raw[i - c];
+
+        residual = (uint8_t)(residuals[i] + (shape->lean && i % c != 0 ? residual : 0));
+        if (shape->predictor == FIRN_SAMPLES_LINE && i >= c)
+            w = 2 * w - (i >= 2 * c ? raw[i - 2 * c] : w);
+        else if (shape->predictor == FIRN_SAMPLES_CURVE && i >= 3 * c)
+            w = 3 * w - 3 * raw[i - 2 * c] + raw[i - 3 * c];
+        else if (shape->predictor == FIRN_SAMPLES_NOTHING)
+            w = 0;
+        raw[i] = (uint8_t)(residual + w);
+    }
+}
+
+void firn_samples_restore_bytes(const struct firn_samples_shape *shape, const uint8_t *residuals, size_t count,
+                                uint8_t *raw)
+{
+    size_t edge = looks_up(shape->predictor) ? shape->row + shape->channels
+                : shape->predictor == FIRN_SAMPLES_LEFT ? shape->channels : count;
+
+    edge = edge < count ? edge : count;
+    restore_edge(shape, residuals, 0, edge, raw);
+    if (edge == count)
+        return;
+    switch (shape->predictor) {
+    case FIRN_SAMPLES_UP:
+        restore_by(FIRN_SAMPLES_UP, shape, residuals, edge, count, raw);
+        break;
+    case FIRN_SAMPLES_PLANE:
+        restore_by(FIRN_SAMPLES_PLANE, shape, residuals, edge, count, raw);
+        break;
+    case FIRN_SAMPLES_MEDIAN:
+        restore_by(FIRN_SAMPLES_MEDIAN, shape, residuals, edge, count, raw);
+        break;
+    case FIRN_SAMPLES_MEAN:
+        restore_by(FIRN_SAMPLES_MEAN, shape, residuals, edge, count, raw);
+        break;
+    case FIRN_SAMPLES_BENT:
+        restore_by(FIRN_SAMPLES_BENT, shape, residuals, edge, count, raw);
+        break;
+    default:
+        restore_by(FIRN_SAMPLES_LEFT, shape, residuals, edge, count, raw);
+        break;
+    }
+}
+
 /* ---- contexts ---- */
 
 static void contexts_of_bytes(const struct firn_samples_shape *shape, const uint8_t *tokens, size_t start, size_t end,
                               const uint8_t classes[129], uint16_t *contexts)
 {
-    size_t c = shape->channels, beside = c == 1 ? 2 : 1, up = shape->row == 0 ? 3 * c : shape->row;
+    size_t c = shape->channels, beside = c == 1 ? 2 : 1, up = shape->row == 0 ? SIZE_MAX : shape->row;
 
     for (size_t i = start; i < end; i++) {
         unsigned w = i - start >= c ? classes[firn_samples_size(tokens[i - c])] : 0;

@@ -117,6 +117,10 @@ void firn_samples_store(const struct firn_samples_shape *shape, const int32_t *x
 void firn_samples_differ(const struct firn_samples_shape *shape, const int32_t *x, size_t count, int32_t *residuals);
 void firn_samples_restore(const struct firn_samples_shape *shape, size_t count, int32_t *x);
 
+/* The same for numbers of one byte; residuals and raw do not overlap. */
+void firn_samples_restore_bytes(const struct firn_samples_shape *shape, const uint8_t *residuals, size_t count,
+                                uint8_t *raw);
+
 /*
  * contexts[i] of part `start` .. `end` from its tokens; tokens before `start` count as 0.
  */
@@ -144,8 +148,9 @@ size_t firn_samples_write(const struct firn_samples_shape *shape, const uint8_t 
 
 struct firn_samples_read_work {
     struct firn_contexts codes;
-    uint16_t entries[FIRN_CONTEXTS_TABLES_MAX][FIRN_SAMPLES_ENTRIES];      /* token << 8 | length */
-    uint8_t tokens[FIRN_SEGMENT_RAW_MAX];
+    uint16_t entries[FIRN_CONTEXTS_TABLES_MAX][FIRN_SAMPLES_ENTRIES];
+    uint8_t turned[FIRN_SAMPLES_CONTEXTS], left[256];
+    uint8_t tokens[FIRN_SEGMENT_RAW_MAX + FIRN_SAMPLES_PARTS * FIRN_SAMPLES_CHANNELS_MAX];
     int32_t x[FIRN_SEGMENT_RAW_MAX];
     uint64_t table_bits;
 };

@@ -10,9 +10,22 @@
 
 #include <string.h>
 
-enum { LENGTH_MASK = 15, PARTS = FIRN_SAMPLES_PARTS };
+enum { LENGTH_MASK = 15, PARTS = FIRN_SAMPLES_PARTS, BATCH = 1024, PER_REFILL = 5 };
 
-/* entries[bits] = token << 8 | length */
+static inline uint8_t size_of(uint8_t token)
+{
+    uint8_t other = (uint8_t)-token;
+
+    return token < other ? token : other;
+}
+
+/* Plain comparisons, so that compilers make vectors of it: the table of firn_samples_classes. */
+static inline uint8_t class_of(uint8_t size)
+{
+    return (uint8_t)((size >= 1) + (size >= 2) + (size >= 3) + (size >= 5) + (size >= 8) + (size >= 13) + (size >= 25));
+}
+
+/* entries[bits] = token << 8 | class << 4 | length */
 static void spread(const uint8_t *lengths, uint16_t entries[FIRN_SAMPLES_ENTRIES])
 {
     uint16_t words[256];
@@ -22,7 +35,7 @@ static void spread(const uint8_t *lengths, uint16_t entries[FIRN_SAMPLES_ENTRIES
         unsigned span = 1u << (FIRN_SAMPLES_LIMIT - lengths[s]);
 
         for (unsigned k = 0; lengths[s] != 0 && k < span; k++)
-            entries[words[s] * span + k] = (uint16_t)(s << 8 | lengths[s]);
+            entries[words[s] * span + k] = (uint16_t)(s << 8 | (unsigned)class_of(size_of((uint8_t)s)) << 4 | lengths[s]);
     }
 }
 
@@ -79,30 +92,132 @@ static bool open_streams(const uint8_t *coded, size_t coded_bytes, size_t raw_by
     return true;
 }
 
-static void read_bytes(const struct firn_samples_shape *shape, struct firn_words_reader *s, size_t start, size_t end,
-                       struct firn_samples_read_work *w)
+/* ---- numbers of one byte ---- */
+
+/*
+ * One part under way. All parts go on in step, so that four look-ups that do not wait for one another are under way.
+ * `above` tells what the rows above and the channel add to the contexts of a batch; it is made beforehand, many at a time.
+ */
+struct part {
+    struct firn_words_reader in;
+    uint8_t *tokens;                   /* of this part, from its first one */
+    size_t count;
+    uint8_t above[BATCH];
+    unsigned entry, before;            /* the last entry, and the one before it, of a part of one channel */
+};
+
+/* above[k] for tokens done + k: class of the row above, and 8 for all channels but the first. */
+static void look_above(const struct firn_samples_shape *shape, struct part *p, size_t part_start, size_t done, size_t count)
 {
-    uint8_t classes[129];
-    uint16_t context[1];
+    size_t row = shape->row, c = shape->channels, k = 0, known = row == 0 ? SIZE_MAX : row;
+    const uint8_t *up = p->tokens + done - row;
+    uint8_t channel = c > 1 ? 8 : 0;
 
-    firn_samples_classes(classes);
-    (void)context;
-    for (size_t i = start; i < end; i++) {
-        size_t c = shape->channels, beside = c == 1 ? 2 : 1, up = shape->row == 0 ? 3 * c : shape->row;
-        unsigned a = i - start >= c ? classes[firn_samples_size(w->tokens[i - c])] : 0;
-        unsigned b = i - start >= beside ? classes[firn_samples_size(w->tokens[i - beside])] : 0;
-        unsigned n = i - start >= up ? firn_samples_size(w->tokens[i - up]) : 0;
-        unsigned ne = i - start >= up - c ? firn_samples_size(w->tokens[i - up + c]) : 0;
-        unsigned entry;
+    for (; k < count && done + k < known - c; k++)
+        p->above[k] = channel;
+    for (; k < count && done + k < known; k++)
+        p->above[k] = (uint8_t)(class_of((uint8_t)((size_of(up[k + c]) + 1) / 2)) | channel);
+    for (; k < count; k++)
+        p->above[k] = (uint8_t)(class_of((uint8_t)((size_of(up[k]) + size_of(up[k + c]) + 1) / 2)) | channel);
+    for (k = (c - (part_start + done) % c) % c; c > 1 && k < count; k += c)
+        p->above[k] &= 7;
+}
 
-        firn_words_refill(s);
-        entry = w->entries[w->codes.map[(i % c != 0 ? 512u : 0u) + 64 * a + 8 * b + classes[(n + ne + 1) / 2]]]
-                          [s->bits >> (64 - FIRN_SAMPLES_LIMIT)];
-        firn_words_drop(s, entry & LENGTH_MASK);
-        w->tokens[i] = (uint8_t)(entry >> 8);
-        w->x[i] = (int32_t)(entry >> 8);
+/* map[above << 6 | class at the left << 3 | class beside] from the order of the format. */
+static void turn_map(const struct firn_contexts *codes, uint8_t map[FIRN_SAMPLES_CONTEXTS])
+{
+    for (unsigned i = 0; i < FIRN_SAMPLES_CONTEXTS; i++)
+        map[(i >> 9) << 9 | (i & 7) << 6 | (i >> 3 & 63)] = codes->map[i];
+}
+
+/* One token of a part. Entries are token << 8 | class << 4 | length. */
+static inline void step(struct part *p, size_t at, size_t k, size_t channels, const struct firn_samples_read_work *w)
+{
+    unsigned context = (unsigned)p->above[k] << 6, entry;
+
+    if (channels == 1)
+        context |= (p->entry >> 1 & 0x38) | (p->before >> 4 & 7);
+    else
+        context |= w->left[p->tokens[(ptrdiff_t)at - (ptrdiff_t)channels]] | (p->entry >> 4 & 7);
+    entry = w->entries[w->turned[context]][p->in.bits >> (64 - FIRN_SAMPLES_LIMIT)];
+    firn_words_drop(&p->in, entry & LENGTH_MASK);
+    p->before = p->entry;
+    p->entry = entry;
+    p->tokens[at] = (uint8_t)(entry >> 8);
+}
+
+/* Tokens done .. done + count of all four parts. */
+static inline void read_batch(struct part parts[PARTS], size_t done, size_t count, size_t channels,
+                              const struct firn_samples_read_work *w)
+{
+    struct part *a = &parts[0], *b = &parts[1], *c = &parts[2], *d = &parts[3];
+
+    for (size_t k = 0; k < count;) {
+        size_t stop = count - k < PER_REFILL ? count : k + PER_REFILL;
+
+        firn_words_refill(&a->in);
+        firn_words_refill(&b->in);
+        firn_words_refill(&c->in);
+        firn_words_refill(&d->in);
+        for (; k < stop; k++) {
+            step(a, done + k, k, channels, w);
+            step(b, done + k, k, channels, w);
+            step(c, done + k, k, channels, w);
+            step(d, done + k, k, channels, w);
+        }
     }
 }
+
+/* The last tokens of a part that is longer than the others. */
+static void read_rest(const struct firn_samples_shape *shape, struct part *p, size_t part_start, size_t done,
+                      const struct firn_samples_read_work *w)
+{
+    for (; done < p->count; done++) {
+        look_above(shape, p, part_start, done, 1);
+        firn_words_refill(&p->in);
+        step(p, done, 0, shape->channels, w);
+    }
+}
+
+/*
+ * In front of each part's tokens there are as many zeros as the left one reaches back: the tokens of a part are not those in
+ * front of the next one, so each part starts FIRN_SAMPLES_CHANNELS_MAX bytes further on than the one before.
+ */
+static bool read_bytes(const struct firn_samples_shape *shape, const struct firn_words_reader streams[PARTS], size_t count,
+                       struct firn_samples_read_work *w)
+{
+    struct part parts[PARTS];
+    size_t each = count / PARTS, most = shape->row == 0 ? BATCH : shape->row - shape->channels, now;
+
+    most = most < BATCH ? most : BATCH;
+    turn_map(&w->codes, w->turned);
+    for (unsigned t = 0; t < 256; t++)
+        w->left[t] = (uint8_t)(class_of(size_of((uint8_t)t)) << 3);
+    for (size_t k = 0; k < PARTS; k++) {
+        uint8_t *tokens = w->tokens + k * each + (k + 1) * FIRN_SAMPLES_CHANNELS_MAX;
+
+        parts[k] = (struct part){ .in = streams[k], .tokens = tokens, .count = k + 1 < PARTS ? each : count - k * each };
+        memset(tokens - FIRN_SAMPLES_CHANNELS_MAX, 0, FIRN_SAMPLES_CHANNELS_MAX);
+    }
+    for (size_t done = 0; done < each; done += now) {
+        now = each - done < most ? each - done : most;
+        for (size_t k = 0; k < PARTS; k++)
+            look_above(shape, &parts[k], k * each, done, now);
+        if (shape->channels == 1)
+            read_batch(parts, done, now, 1, w);
+        else
+            read_batch(parts, done, now, shape->channels, w);
+    }
+    read_rest(shape, &parts[PARTS - 1], (PARTS - 1) * each, each, w);
+    for (size_t k = 0; k < PARTS; k++) {
+        if (!firn_words_used_up(&parts[k].in))
+            return false;
+        memmove(w->tokens + k * each, parts[k].tokens, parts[k].count);
+    }
+    return true;
+}
+
+/* ---- wider numbers ---- */
 
 static void read_numbers(const struct firn_samples_shape *shape, struct firn_words_reader *s, size_t start, size_t end,
                          struct firn_samples_read_work *w)
@@ -145,13 +260,16 @@ enum firn_status firn_samples_read(const uint8_t *coded, size_t coded_bytes, uin
     memcpy(raw + raw_bytes - tail, coded + edges_at + shape.head_bytes, tail);
     count = firn_samples_count(&shape, raw_bytes);
     each = count / PARTS;
+    if (shape.width == 1) {
+        if (!read_bytes(&shape, streams, count, work))
+            return FIRN_BAD_DATA;
+        firn_samples_restore_bytes(&shape, work->tokens, count, raw + shape.head_bytes);
+        return FIRN_OK;
+    }
     for (size_t part = 0; part < PARTS; part++) {
         size_t end = part + 1 < PARTS ? (part + 1) * each : count;
 
-        if (shape.width == 1)
-            read_bytes(&shape, &streams[part], part * each, end, work);
-        else
-            read_numbers(&shape, &streams[part], part * each, end, work);
+        read_numbers(&shape, &streams[part], part * each, end, work);
         if (!firn_words_used_up(&streams[part]))
             return FIRN_BAD_DATA;
     }
