@@ -18,21 +18,9 @@ bool firn_samples_shape_is_sound(const struct firn_samples_shape *shape, size_t 
            shape->channels <= FIRN_SAMPLES_CHANNELS_MAX && (unsigned)shape->predictor < FIRN_SAMPLES_PREDICTORS &&
            shape->head_bytes <= FIRN_SAMPLES_HEAD_MAX && shape->row <= FIRN_SAMPLES_ROW_MAX &&
            (shape->row > shape->channels || (shape->row == 0 && !looks_up(shape->predictor))) &&
+           shape->row % shape->channels == 0 &&
            (!shape->floats || shape->width == 4) && (!shape->lean || shape->channels > 1) &&
-           raw_bytes >= shape->head_bytes + (size_t)shape->width * FIRN_SAMPLES_PARTS;
-}
-
-void firn_samples_classes(uint8_t classes[129])
-{
-    static const uint8_t ends[7] = { 1, 2, 3, 5, 8, 13, 25 };      /* the first size of the next class */
-
-    for (unsigned size = 0; size <= 128; size++) {
-        unsigned class = 0;
-
-        while (class < 7 && size >= ends[class])
-            class++;
-        classes[size] = (uint8_t)class;
-    }
+           raw_bytes >= shape->head_bytes + (size_t)shape->width * shape->channels * FIRN_SAMPLES_PARTS;
 }
 
 /* ---- numbers ---- */
@@ -265,42 +253,65 @@ void firn_samples_restore_bytes(const struct firn_samples_shape *shape, const ui
 
 /* ---- contexts ---- */
 
-static void contexts_of_bytes(const struct firn_samples_shape *shape, const uint8_t *tokens, size_t start, size_t end,
-                              const uint8_t classes[129], uint16_t *contexts)
+void firn_samples_lines_start(struct firn_samples_lines *lines)
 {
-    size_t c = shape->channels, beside = c == 1 ? 2 : 1, up = shape->row == 0 ? SIZE_MAX : shape->row;
+    memset(lines->room, 0, sizeof lines->room);
+    for (size_t k = 0; k < 3; k++)
+        lines->line[k] = lines->room[k];
+}
 
-    for (size_t i = start; i < end; i++) {
-        unsigned w = i - start >= c ? classes[firn_samples_size(tokens[i - c])] : 0;
-        unsigned b = i - start >= beside ? classes[firn_samples_size(tokens[i - beside])] : 0;
-        unsigned n = i - start >= up ? firn_samples_size(tokens[i - up]) : 0;
-        unsigned ne = i - start >= up - c ? firn_samples_size(tokens[i - up + c]) : 0;
+/* Where a channel of a line starts. */
+static inline size_t channel_at(const struct firn_samples_shape *shape, unsigned channel)
+{
+    return channel * (firn_samples_line(shape) + 2 * FIRN_SAMPLES_MARGIN) + FIRN_SAMPLES_MARGIN;
+}
 
-        contexts[i] = (uint16_t)((i % c != 0 ? 512u : 0u) + 64 * w + 8 * b + classes[(n + ne + 1) / 2]);
+void firn_samples_lines_next(struct firn_samples_lines *lines, const struct firn_samples_shape *shape)
+{
+    uint8_t *oldest = lines->line[2];
+
+    lines->line[2] = lines->line[1];
+    lines->line[1] = lines->line[0];
+    lines->line[0] = oldest;
+    memset(oldest, 0, channel_at(shape, shape->channels));
+}
+
+/* 0 .. 15, about evenly in the logarithm; comparisons only, so that compilers make vectors of it. */
+static inline uint8_t level_of(uint8_t sum)
+{
+    return (uint8_t)((sum >= 1) + (sum >= 2) + (sum >= 3) + (sum >= 4) + (sum >= 6) + (sum >= 8) + (sum >= 11) +
+                     (sum >= 15) + (sum >= 20) + (sum >= 27) + (sum >= 36) + (sum >= 50) + (sum >= 70) + (sum >= 100) +
+                     (sum >= 150));
+}
+
+void firn_samples_lines_look(const struct firn_samples_lines *lines, const struct firn_samples_shape *shape,
+                             unsigned channel, size_t width, uint16_t *contexts)
+{
+    const uint8_t *above = lines->line[1] + channel_at(shape, channel), *beside = lines->line[2] + channel_at(shape, 0);
+
+    if (channel == 0) {
+        for (size_t x = 0; x < width; x++) {
+            uint8_t n = (uint8_t)(2 * above[x] + above[x + 1] + (above - 1)[x]);
+            uint8_t m = (uint8_t)(2 * beside[x] + above[x + 2] + (above - 2)[x]);
+
+            contexts[x] = (uint16_t)(level_of(n) << 4 | level_of(m));
+        }
+        return;
+    }
+    beside = lines->line[0] + channel_at(shape, channel - 1);
+    for (size_t x = 0; x < width; x++) {
+        uint8_t n = (uint8_t)(2 * above[x] + above[x + 1] + (above - 1)[x]);
+        uint8_t m = (uint8_t)(2 * beside[x] + beside[x + 1] + (beside - 1)[x]);
+
+        contexts[x] = (uint16_t)(256 | level_of(n) << 4 | level_of(m));
     }
 }
 
-static void contexts_of_numbers(const struct firn_samples_shape *shape, const uint8_t *tokens, size_t start, size_t end,
-                                uint16_t *contexts)
+void firn_samples_lines_tell(struct firn_samples_lines *lines, const struct firn_samples_shape *shape, unsigned channel,
+                             size_t width, const uint8_t *residuals)
 {
-    unsigned mean[FIRN_SAMPLES_CHANNELS_MAX] = { 0 };
-    size_t c = shape->channels;
+    uint8_t *line = lines->line[0] + channel_at(shape, channel);
 
-    for (size_t i = start; i < end; i++) {
-        unsigned *m = &mean[i % c], level = *m >> 3;
-
-        if (shape->row != 0)
-            level = (level + (i - start >= shape->row ? tokens[i - shape->row] : 0u)) / 2;
-        contexts[i] = (uint16_t)(level + (i % c != 0 ? 128u : 0u));
-        *m += tokens[i] - (*m >> 3);
-    }
-}
-
-void firn_samples_contexts(const struct firn_samples_shape *shape, const uint8_t *tokens, size_t start, size_t end,
-                           const uint8_t classes[129], uint16_t *contexts)
-{
-    if (shape->width == 1)
-        contexts_of_bytes(shape, tokens, start, end, classes, contexts);
-    else
-        contexts_of_numbers(shape, tokens, start, end, contexts);
+    for (size_t x = 0; x < width; x++)
+        line[x] = firn_samples_size(residuals[x]);
 }

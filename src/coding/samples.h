@@ -23,12 +23,16 @@ enum {
     FIRN_SAMPLES_PARTS = 4,
     FIRN_SAMPLES_WIDTH_MAX = 4,
     FIRN_SAMPLES_CHANNELS_MAX = 8,
-    FIRN_SAMPLES_ROW_MAX = 1 << 16,                /* samples */
+    FIRN_SAMPLES_ROW_MAX = 1 << 15,                /* samples */
     FIRN_SAMPLES_HEAD_MAX = (1 << 14) - 1,         /* bytes in front of the first sample */
-    FIRN_SAMPLES_CONTEXTS = 1024,
+    FIRN_SAMPLES_CONTEXTS = 512,
+    FIRN_SAMPLES_LINE_PIXELS = 512,                  /* pixels of a line when there are no rows */
+    FIRN_SAMPLES_SIZE_MAX = 60,
+    FIRN_SAMPLES_MARGIN = 2,                       /* zeros on both sides of a channel of a line */
     FIRN_SAMPLES_LIMIT = 11,
     FIRN_SAMPLES_ENTRIES = 1 << FIRN_SAMPLES_LIMIT,
-    FIRN_SAMPLES_BEFORE = FIRN_SAMPLES_ROW_MAX + 2 * FIRN_SAMPLES_CHANNELS_MAX     /* zeros in front of tokens */
+    FIRN_SAMPLES_LINE_BYTES = FIRN_SAMPLES_ROW_MAX + FIRN_SAMPLES_LINE_PIXELS * FIRN_SAMPLES_CHANNELS_MAX +
+                              2 * FIRN_SAMPLES_MARGIN * FIRN_SAMPLES_CHANNELS_MAX
 };
 
 /* The bits of the kind byte, from the lowest on. */
@@ -62,21 +66,53 @@ struct firn_samples_shape {
 /* Tells whether a reader would take it. */
 bool firn_samples_shape_is_sound(const struct firn_samples_shape *shape, size_t raw_bytes);
 
-static inline size_t firn_samples_count(const struct firn_samples_shape *shape, size_t raw_bytes)
+/* All channels of one place make a pixel; there are only whole ones. */
+static inline size_t firn_samples_pixels(const struct firn_samples_shape *shape, size_t raw_bytes)
 {
-    return (raw_bytes - shape->head_bytes) / shape->width;
+    return (raw_bytes - shape->head_bytes) / shape->width / shape->channels;
+}
+
+/* Where part k begins, in pixels. */
+static inline size_t firn_samples_part(size_t pixels, size_t k)
+{
+    return k == FIRN_SAMPLES_PARTS ? pixels : pixels / FIRN_SAMPLES_PARTS * k;
+}
+
+/* The pixels of a line. */
+static inline size_t firn_samples_line(const struct firn_samples_shape *shape)
+{
+    return shape->row == 0 ? FIRN_SAMPLES_LINE_PIXELS : shape->row / shape->channels;
 }
 
 /* ---- shared by writer and reader ---- */
 
 /* How much a residual of one byte differs from none. */
-static inline unsigned firn_samples_size(unsigned residual)
+static inline uint8_t firn_samples_size(uint8_t residual)
 {
-    return residual < 128 ? residual : 256 - residual;
+    uint8_t other = (uint8_t)-residual, size = residual < other ? residual : other;
+
+    return size < FIRN_SAMPLES_SIZE_MAX ? size : FIRN_SAMPLES_SIZE_MAX;
 }
 
-/* classes[n]: the class of a size from 0 to 128 */
-void firn_samples_classes(uint8_t classes[129]);
+/*
+ * Sizes of the residuals of one part, line by line: of the line at hand, the one above it and the one above that. Each channel
+ * of a line has zeros on both sides. All zero to begin with.
+ */
+struct firn_samples_lines {
+    uint8_t *line[3];                  /* at hand, above, above that; they go round */
+    uint8_t room[3][FIRN_SAMPLES_LINE_BYTES];
+};
+
+void firn_samples_lines_start(struct firn_samples_lines *lines);
+void firn_samples_lines_next(struct firn_samples_lines *lines, const struct firn_samples_shape *shape);
+
+/* Contexts of the first `width` residuals of a channel of the line at hand; they depend on lines above and channels before. */
+void firn_samples_lines_look(const struct firn_samples_lines *lines, const struct firn_samples_shape *shape,
+                             unsigned channel, size_t width, uint16_t *contexts);
+
+/* Tells the line what its residuals are. */
+void firn_samples_lines_tell(struct firn_samples_lines *lines, const struct firn_samples_shape *shape, unsigned channel,
+                             size_t width, const uint8_t *residuals);
 
 /* A number that is small when the residual is, of `width` bytes: 0, -1, 1, -2 ... become 0, 1, 2, 3 ... */
 static inline uint32_t firn_samples_fold(uint32_t residual, unsigned width)
@@ -121,18 +157,19 @@ void firn_samples_restore(const struct firn_samples_shape *shape, size_t count, 
 void firn_samples_restore_bytes(const struct firn_samples_shape *shape, const uint8_t *residuals, size_t count,
                                 uint8_t *raw);
 
-/*
- * contexts[i] of part `start` .. `end` from its tokens; tokens before `start` count as 0.
- */
-void firn_samples_contexts(const struct firn_samples_shape *shape, const uint8_t *tokens, size_t start, size_t end,
-                           const uint8_t classes[129], uint16_t *contexts);
+/* The context of wider numbers: tokens of late, in 1/8, and the one above if there are rows. */
+static inline unsigned firn_samples_level(unsigned mean, unsigned above, bool rows, unsigned channel)
+{
+    return (rows ? ((mean >> 3) + above) / 2 : mean >> 3) + (channel > 0 ? 128u : 0u);
+}
 
 /* ---- writing ---- */
 
 struct firn_samples_write_work {
     struct firn_cost_logs logs;
     int32_t x[FIRN_SEGMENT_RAW_MAX], residuals[FIRN_SEGMENT_RAW_MAX];
-    uint8_t tokens[FIRN_SEGMENT_RAW_MAX];
+    struct firn_samples_lines lines;
+    uint8_t tokens[FIRN_SEGMENT_RAW_MAX];          /* in the order of the streams */
     uint16_t contexts[FIRN_SEGMENT_RAW_MAX];
     uint32_t counts[FIRN_SAMPLES_CONTEXTS][256];
     uint32_t words[FIRN_CONTEXTS_TABLES_MAX][256];
@@ -149,8 +186,11 @@ size_t firn_samples_write(const struct firn_samples_shape *shape, const uint8_t 
 struct firn_samples_read_work {
     struct firn_contexts codes;
     uint16_t entries[FIRN_CONTEXTS_TABLES_MAX][FIRN_SAMPLES_ENTRIES];
-    uint8_t turned[FIRN_SAMPLES_CONTEXTS], left[256];
-    uint8_t tokens[FIRN_SEGMENT_RAW_MAX + FIRN_SAMPLES_PARTS * FIRN_SAMPLES_CHANNELS_MAX];
+    uint16_t places[FIRN_SAMPLES_CONTEXTS];        /* of a context: the first entry of its table */
+    struct firn_samples_lines lines[FIRN_SAMPLES_PARTS];
+    uint16_t contexts[FIRN_SAMPLES_PARTS][FIRN_SAMPLES_ROW_MAX + FIRN_SAMPLES_LINE_PIXELS];
+    uint8_t now[FIRN_SAMPLES_PARTS][FIRN_SAMPLES_ROW_MAX + FIRN_SAMPLES_LINE_PIXELS];
+    uint8_t tokens[FIRN_SEGMENT_RAW_MAX];
     int32_t x[FIRN_SEGMENT_RAW_MAX];
     uint64_t table_bits;
 };

@@ -10,22 +10,9 @@
 
 #include <string.h>
 
-enum { LENGTH_MASK = 15, PARTS = FIRN_SAMPLES_PARTS, BATCH = 1024, PER_REFILL = 5 };
+enum { LENGTH_MASK = 15, PARTS = FIRN_SAMPLES_PARTS, PER_REFILL = 5 };
 
-static inline uint8_t size_of(uint8_t token)
-{
-    uint8_t other = (uint8_t)-token;
-
-    return token < other ? token : other;
-}
-
-/* Plain comparisons, so that compilers make vectors of it: the table of firn_samples_classes. */
-static inline uint8_t class_of(uint8_t size)
-{
-    return (uint8_t)((size >= 1) + (size >= 2) + (size >= 3) + (size >= 5) + (size >= 8) + (size >= 13) + (size >= 25));
-}
-
-/* entries[bits] = token << 8 | class << 4 | length */
+/* entries[bits] = token << 8 | length */
 static void spread(const uint8_t *lengths, uint16_t entries[FIRN_SAMPLES_ENTRIES])
 {
     uint16_t words[256];
@@ -35,7 +22,7 @@ static void spread(const uint8_t *lengths, uint16_t entries[FIRN_SAMPLES_ENTRIES
         unsigned span = 1u << (FIRN_SAMPLES_LIMIT - lengths[s]);
 
         for (unsigned k = 0; lengths[s] != 0 && k < span; k++)
-            entries[words[s] * span + k] = (uint16_t)(s << 8 | (unsigned)class_of(size_of((uint8_t)s)) << 4 | lengths[s]);
+            entries[words[s] * span + k] = (uint16_t)(s << 8 | lengths[s]);
     }
 }
 
@@ -65,7 +52,7 @@ static bool open_streams(const uint8_t *coded, size_t coded_bytes, size_t raw_by
 
     if (!take_shape(coded, coded_bytes, raw_bytes, &at, shape))
         return false;
-    tail = (raw_bytes - shape->head_bytes) % shape->width;
+    tail = (raw_bytes - shape->head_bytes) % (shape->width * shape->channels);
     if (coded_bytes - at < shape->head_bytes + tail)
         return false;
     *edges_at = at;
@@ -92,156 +79,167 @@ static bool open_streams(const uint8_t *coded, size_t coded_bytes, size_t raw_by
     return true;
 }
 
-/* ---- numbers of one byte ---- */
-
-/*
- * One part under way. All parts go on in step, so that four look-ups that do not wait for one another are under way.
- * `above` tells what the rows above and the channel add to the contexts of a batch; it is made beforehand, many at a time.
- */
+/* One part under way, as in coding/streams.c: where the lowest 1 of bits stands tells how many are taken. */
 struct part {
-    struct firn_words_reader in;
-    uint8_t *tokens;                   /* of this part, from its first one */
-    size_t count;
-    uint8_t above[BATCH];
-    unsigned entry, before;            /* the last entry, and the one before it, of a part of one channel */
+    const uint8_t *at, *end;
+    uint64_t bits;
 };
 
-/* above[k] for tokens done + k: class of the row above, and 8 for all channels but the first. */
-static void look_above(const struct firn_samples_shape *shape, struct part *p, size_t part_start, size_t done, size_t count)
+/* The refill for where there are no eight bytes any more. A stream that is used up far beyond its end stays there. */
+static void refill_end(struct part *p)
 {
-    size_t row = shape->row, c = shape->channels, k = 0, known = row == 0 ? SIZE_MAX : row;
-    const uint8_t *up = p->tokens + done - row;
-    uint8_t channel = c > 1 ? 8 : 0;
+    unsigned taken = firn_words_trailing_zeros(p->bits);
+    size_t left = (size_t)(p->end - p->at), step = taken / 8;
 
-    for (; k < count && done + k < known - c; k++)
-        p->above[k] = channel;
-    for (; k < count && done + k < known; k++)
-        p->above[k] = (uint8_t)(class_of((uint8_t)((size_of(up[k + c]) + 1) / 2)) | channel);
-    for (; k < count; k++)
-        p->above[k] = (uint8_t)(class_of((uint8_t)((size_of(up[k]) + size_of(up[k + c]) + 1) / 2)) | channel);
-    for (k = (c - (part_start + done) % c) % c; c > 1 && k < count; k += c)
-        p->above[k] &= 7;
+    if (step > left) {                 /* bits that are not there were taken: no more come, and the count does not match */
+        p->at = p->end;
+        p->bits = UINT64_C(1) << 63;
+        return;
+    }
+    p->at += step;
+    p->bits = (firn_words_load(p->at, p->end) | 1) << taken % 8;
 }
 
-/* map[above << 6 | class at the left << 3 | class beside] from the order of the format. */
-static void turn_map(const struct firn_contexts *codes, uint8_t map[FIRN_SAMPLES_CONTEXTS])
+static inline void refill(struct part *p)
 {
-    for (unsigned i = 0; i < FIRN_SAMPLES_CONTEXTS; i++)
-        map[(i >> 9) << 9 | (i & 7) << 6 | (i >> 3 & 63)] = codes->map[i];
+    unsigned taken = firn_words_trailing_zeros(p->bits);
+
+    p->at += taken / 8;
+    p->bits = (firn_words_swap64(firn_bytes_get64(p->at)) | 1) << taken % 8;
 }
 
-/* One token of a part. Entries are token << 8 | class << 4 | length. */
-static inline void step(struct part *p, size_t at, size_t k, size_t channels, const struct firn_samples_read_work *w)
+/* All but less than eight zero bits taken, and none beyond. */
+static bool is_used_up(const struct part *p)
 {
-    unsigned context = (unsigned)p->above[k] << 6, entry;
+    unsigned taken = firn_words_trailing_zeros(p->bits);
+    size_t used_bits = taken, all_bits = 8 * (size_t)(p->end - p->at);
 
-    if (channels == 1)
-        context |= (p->entry >> 1 & 0x38) | (p->before >> 4 & 7);
+    if (used_bits > all_bits || all_bits - used_bits >= 8)
+        return false;
+    return all_bits == used_bits || (uint8_t)(p->end[-1] << (8 - (all_bits - used_bits))) == 0;
+}
+
+/* ---- numbers of one byte ---- */
+
+static inline void step(struct part *p, size_t which, size_t k, struct firn_samples_read_work *w)
+{
+    unsigned entry = w->entries[0][w->places[w->contexts[which][k]] | p->bits >> (64 - FIRN_SAMPLES_LIMIT)];
+
+    p->bits <<= entry & LENGTH_MASK;
+    w->now[which][k] = (uint8_t)(entry >> 8);
+}
+
+/*
+ * Whole rounds of a line, all parts in step, as long as all refills lie in front of `end`: a round moves each stream by 7 bytes
+ * at most and reads 8. Returns how many tokens of each part are done.
+ */
+static size_t hurry(struct part parts[PARTS], size_t count, const uint8_t *end, struct firn_samples_read_work *w)
+{
+    struct part a = parts[0], b = parts[1], c = parts[2], d = parts[3];
+    size_t rounds = count / PER_REFILL, k = 0;
+
+    for (unsigned p = 0; p < PARTS; p++) {
+        ptrdiff_t left = end - parts[p].at - firn_words_trailing_zeros(parts[p].bits) / 8;
+        size_t safe = left < 8 ? 0 : (size_t)(left - 8) / 7 + 1;
+
+        rounds = safe < rounds ? safe : rounds;
+    }
+    for (; rounds > 0; rounds--) {
+        refill(&a), refill(&b), refill(&c), refill(&d);
+        for (size_t stop = k + PER_REFILL; k < stop; k++) {
+            step(&a, 0, k, w);
+            step(&b, 1, k, w);
+            step(&c, 2, k, w);
+            step(&d, 3, k, w);
+        }
+    }
+    parts[0] = a, parts[1] = b, parts[2] = c, parts[3] = d;
+    return k;
+}
+
+/* Tokens of a channel of a line of part p, the first `done` of them known; then they go to where their numbers are. */
+static void finish_line(const struct firn_samples_shape *shape, struct part *p, size_t which, unsigned channel, size_t done,
+                        size_t width, uint8_t *tokens, struct firn_samples_read_work *w)
+{
+    const uint8_t *now = w->now[which];
+    size_t c = shape->channels;
+
+    for (size_t k = done; k < width; k++) {
+        refill_end(p);
+        step(p, which, k, w);
+    }
+    firn_samples_lines_tell(&w->lines[which], shape, channel, width, now);
+    if (c == 1)
+        memcpy(tokens, now, width);
+    else if (c == 3)
+        for (size_t k = 0; k < width; k++)
+            tokens[3 * k + channel] = now[k];
     else
-        context |= w->left[p->tokens[(ptrdiff_t)at - (ptrdiff_t)channels]] | (p->entry >> 4 & 7);
-    entry = w->entries[w->turned[context]][p->in.bits >> (64 - FIRN_SAMPLES_LIMIT)];
-    firn_words_drop(&p->in, entry & LENGTH_MASK);
-    p->before = p->entry;
-    p->entry = entry;
-    p->tokens[at] = (uint8_t)(entry >> 8);
+        for (size_t k = 0; k < width; k++)
+            tokens[c * k + channel] = now[k];
 }
 
-/* Tokens done .. done + count of all four parts. */
-static inline void read_batch(struct part parts[PARTS], size_t done, size_t count, size_t channels,
-                              const struct firn_samples_read_work *w)
+/* Line after line of all parts; the last one may have some pixels more. */
+static void read_bytes(const struct firn_samples_shape *shape, struct part parts[PARTS], size_t pixels,
+                       struct firn_samples_read_work *w)
 {
-    struct part *a = &parts[0], *b = &parts[1], *c = &parts[2], *d = &parts[3];
+    size_t line = firn_samples_line(shape), longest = pixels - firn_samples_part(pixels, PARTS - 1);
 
-    for (size_t k = 0; k < count;) {
-        size_t stop = count - k < PER_REFILL ? count : k + PER_REFILL;
+    for (unsigned i = 0; i < FIRN_SAMPLES_CONTEXTS; i++)
+        w->places[i] = (uint16_t)(w->codes.map[i] << FIRN_SAMPLES_LIMIT);
+    for (size_t p = 0; p < PARTS; p++)
+        firn_samples_lines_start(&w->lines[p]);
+    for (size_t at = 0; at < longest; at += line) {
+        size_t widths[PARTS];
 
-        firn_words_refill(&a->in);
-        firn_words_refill(&b->in);
-        firn_words_refill(&c->in);
-        firn_words_refill(&d->in);
-        for (; k < stop; k++) {
-            step(a, done + k, k, channels, w);
-            step(b, done + k, k, channels, w);
-            step(c, done + k, k, channels, w);
-            step(d, done + k, k, channels, w);
+        for (size_t p = 0; p < PARTS; p++) {
+            size_t all = firn_samples_part(pixels, p + 1) - firn_samples_part(pixels, p), left = all < at ? 0 : all - at;
+
+            widths[p] = left < line ? left : line;
+            firn_samples_lines_next(&w->lines[p], shape);
+        }
+        for (unsigned channel = 0; channel < shape->channels; channel++) {
+            size_t done;
+
+            for (size_t p = 0; p < PARTS; p++)
+                firn_samples_lines_look(&w->lines[p], shape, channel, widths[p], w->contexts[p]);
+            done = hurry(parts, widths[0], parts[PARTS - 1].end, w);
+            for (size_t p = 0; p < PARTS; p++)
+                finish_line(shape, &parts[p], p, channel, done, widths[p],
+                            w->tokens + (firn_samples_part(pixels, p) + at) * shape->channels, w);
         }
     }
 }
 
-/* The last tokens of a part that is longer than the others. */
-static void read_rest(const struct firn_samples_shape *shape, struct part *p, size_t part_start, size_t done,
-                      const struct firn_samples_read_work *w)
-{
-    for (; done < p->count; done++) {
-        look_above(shape, p, part_start, done, 1);
-        firn_words_refill(&p->in);
-        step(p, done, 0, shape->channels, w);
-    }
-}
-
-/*
- * In front of each part's tokens there are as many zeros as the left one reaches back: the tokens of a part are not those in
- * front of the next one, so each part starts FIRN_SAMPLES_CHANNELS_MAX bytes further on than the one before.
- */
-static bool read_bytes(const struct firn_samples_shape *shape, const struct firn_words_reader streams[PARTS], size_t count,
-                       struct firn_samples_read_work *w)
-{
-    struct part parts[PARTS];
-    size_t each = count / PARTS, most = shape->row == 0 ? BATCH : shape->row - shape->channels, now;
-
-    most = most < BATCH ? most : BATCH;
-    turn_map(&w->codes, w->turned);
-    for (unsigned t = 0; t < 256; t++)
-        w->left[t] = (uint8_t)(class_of(size_of((uint8_t)t)) << 3);
-    for (size_t k = 0; k < PARTS; k++) {
-        uint8_t *tokens = w->tokens + k * each + (k + 1) * FIRN_SAMPLES_CHANNELS_MAX;
-
-        parts[k] = (struct part){ .in = streams[k], .tokens = tokens, .count = k + 1 < PARTS ? each : count - k * each };
-        memset(tokens - FIRN_SAMPLES_CHANNELS_MAX, 0, FIRN_SAMPLES_CHANNELS_MAX);
-    }
-    for (size_t done = 0; done < each; done += now) {
-        now = each - done < most ? each - done : most;
-        for (size_t k = 0; k < PARTS; k++)
-            look_above(shape, &parts[k], k * each, done, now);
-        if (shape->channels == 1)
-            read_batch(parts, done, now, 1, w);
-        else
-            read_batch(parts, done, now, shape->channels, w);
-    }
-    read_rest(shape, &parts[PARTS - 1], (PARTS - 1) * each, each, w);
-    for (size_t k = 0; k < PARTS; k++) {
-        if (!firn_words_used_up(&parts[k].in))
-            return false;
-        memmove(w->tokens + k * each, parts[k].tokens, parts[k].count);
-    }
-    return true;
-}
-
 /* ---- wider numbers ---- */
 
-static void read_numbers(const struct firn_samples_shape *shape, struct firn_words_reader *s, size_t start, size_t end,
+static void read_numbers(const struct firn_samples_shape *shape, struct part *p, size_t start, size_t end,
                          struct firn_samples_read_work *w)
 {
     unsigned mean[FIRN_SAMPLES_CHANNELS_MAX] = { 0 };
     size_t c = shape->channels;
 
     for (size_t i = start; i < end; i++) {
-        unsigned *m = &mean[i % c], level = *m >> 3, entry, token;
+        unsigned above = shape->row != 0 && i - start >= shape->row ? w->tokens[i - shape->row] : 0, entry, token;
         uint32_t folded;
 
-        if (shape->row != 0)
-            level = (level + (i - start >= shape->row ? w->tokens[i - shape->row] : 0u)) / 2;
-        firn_words_refill(s);
-        entry = w->entries[w->codes.map[level + (i % c != 0 ? 128u : 0u)]][s->bits >> (64 - FIRN_SAMPLES_LIMIT)];
-        firn_words_drop(s, entry & LENGTH_MASK);
-        token = entry >> 8;
-        if (token > 127)
-            token = 127;
+        if (p->end - p->at >= 16)
+            refill(p);
+        else
+            refill_end(p);
+        entry = w->entries[w->codes.map[firn_samples_level(mean[i % c], above, shape->row != 0, (unsigned)(i % c))]]
+                          [p->bits >> (64 - FIRN_SAMPLES_LIMIT)];
+        p->bits <<= entry & LENGTH_MASK;
+        token = entry >> 8 & 127;
         w->tokens[i] = (uint8_t)token;
-        *m += token - (*m >> 3);
+        mean[i % c] += token - (mean[i % c] >> 3);
         folded = token;
-        if (token >= 16)
-            folded = (4 | (token & 3)) << (token / 4 - 2) | firn_words_take(s, token / 4 - 2);
+        if (token >= 16) {
+            unsigned more = token / 4 - 2;
+
+            folded = (4 | (token & 3)) << more | (uint32_t)(p->bits >> 32 >> (32 - more));
+            p->bits <<= more;
+        }
         w->x[i] = (int32_t)firn_samples_unfold(folded);
     }
 }
@@ -251,30 +249,32 @@ enum firn_status firn_samples_read(const uint8_t *coded, size_t coded_bytes, uin
 {
     struct firn_words_reader streams[PARTS];
     struct firn_samples_shape shape;
-    size_t count, each, tail, edges_at;
+    struct part parts[PARTS];
+    size_t pixels, tail, edges_at;
 
     if (!open_streams(coded, coded_bytes, raw_bytes, &edges_at, &shape, streams, work))
         return FIRN_BAD_DATA;
-    tail = (raw_bytes - shape.head_bytes) % shape.width;
+    tail = (raw_bytes - shape.head_bytes) % (shape.width * shape.channels);
     memcpy(raw, coded + edges_at, shape.head_bytes);
     memcpy(raw + raw_bytes - tail, coded + edges_at + shape.head_bytes, tail);
-    count = firn_samples_count(&shape, raw_bytes);
-    each = count / PARTS;
+    pixels = firn_samples_pixels(&shape, raw_bytes);
+    for (size_t p = 0; p < PARTS; p++)
+        parts[p] = (struct part){ streams[p].bytes, streams[p].bytes + streams[p].byte_count, 1 };
+    if (shape.width == 1)
+        read_bytes(&shape, parts, pixels, work);
+    for (size_t p = 0; p < PARTS; p++) {
+        if (shape.width > 1)
+            read_numbers(&shape, &parts[p], firn_samples_part(pixels, p) * shape.channels,
+                         firn_samples_part(pixels, p + 1) * shape.channels, work);
+        if (!is_used_up(&parts[p]))
+            return FIRN_BAD_DATA;
+    }
     if (shape.width == 1) {
-        if (!read_bytes(&shape, streams, count, work))
-            return FIRN_BAD_DATA;
-        firn_samples_restore_bytes(&shape, work->tokens, count, raw + shape.head_bytes);
-        return FIRN_OK;
+        firn_samples_restore_bytes(&shape, work->tokens, pixels * shape.channels, raw + shape.head_bytes);
+    } else {
+        firn_samples_restore(&shape, pixels * shape.channels, work->x);
+        firn_samples_store(&shape, work->x, pixels * shape.channels, raw + shape.head_bytes);
     }
-    for (size_t part = 0; part < PARTS; part++) {
-        size_t end = part + 1 < PARTS ? (part + 1) * each : count;
-
-        read_numbers(&shape, &streams[part], part * each, end, work);
-        if (!firn_words_used_up(&streams[part]))
-            return FIRN_BAD_DATA;
-    }
-    firn_samples_restore(&shape, count, work->x);
-    firn_samples_store(&shape, work->x, count, raw + shape.head_bytes);
     return FIRN_OK;
 }
 

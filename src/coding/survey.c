@@ -143,7 +143,7 @@ static void try_predictors(const struct firn_cost_logs *logs, const uint8_t *raw
     size_t unit = (size_t)shape.width * shape.channels;
 
     best->price = UINT32_MAX;
-    if (row % shape.width == 0 && row / shape.width > shape.channels)
+    if (row % unit == 0 && row / unit > 1)
         shape.row = row / shape.width;
     for (unsigned p = 0; p < FIRN_SAMPLES_PREDICTORS; p++) {
         struct firn_samples_shape one = shape;

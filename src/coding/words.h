@@ -89,6 +89,29 @@ static inline uint64_t firn_words_swap64(uint64_t v)
 #endif
 }
 
+static inline unsigned firn_words_trailing_zeros(uint64_t v)           /* v is not 0 */
+{
+#if defined(__GNUC__)
+    return (unsigned)__builtin_ctzll(v);
+#else
+    unsigned count = 0;
+
+    for (; (v & 1) == 0; v >>= 1)
+        count++;
+    return count;
+#endif
+}
+
+/* The eight bytes at `at`, zeros from `end` on; `at` may lie behind it. */
+static inline uint64_t firn_words_load(const uint8_t *at, const uint8_t *end)
+{
+    uint64_t word = 0;
+
+    for (ptrdiff_t k = 0; k < 8; k++)
+        word = word << 8 | (k < end - at ? at[k] : 0u);
+    return word;
+}
+
 static inline uint64_t firn_words_load_end(const struct firn_words_reader *r)
 {
     uint64_t word = 0;
