@@ -25,42 +25,64 @@ bool firn_samples_shape_is_sound(const struct firn_samples_shape *shape, size_t 
 
 /* ---- numbers ---- */
 
-void firn_samples_load(const struct firn_samples_shape *shape, const uint8_t *raw, size_t count, int32_t *x)
+/* Widths and orders are constants where these are called, so that each gets a loop of its own. */
+static inline void load(unsigned width, bool big, bool floats, const uint8_t *raw, size_t count, int32_t *x)
 {
-    unsigned width = shape->width, spare = 32 - 8 * width;
+    unsigned spare = 32 - 8 * width;
 
     for (size_t i = 0; i < count; i++, raw += width) {
         uint32_t value = 0;
 
         for (unsigned k = 0; k < width; k++)
-            value = value << 8 | raw[shape->big ? k : width - 1 - k];
-        if (shape->floats && value >> 31)
+            value = value << 8 | raw[big ? k : width - 1 - k];
+        if (floats && value >> 31)
             value ^= UINT32_C(0x7FFFFFFF);
         x[i] = width == 1 ? (int32_t)value : (int32_t)(value << spare) >> spare;
     }
 }
 
-void firn_samples_store(const struct firn_samples_shape *shape, const int32_t *x, size_t count, uint8_t *raw)
+static inline void store(unsigned width, bool big, bool floats, const int32_t *x, size_t count, uint8_t *raw)
 {
-    unsigned width = shape->width;
-
     for (size_t i = 0; i < count; i++, raw += width) {
         uint32_t value = (uint32_t)x[i];
 
-        if (shape->floats && value >> 31)
+        if (floats && value >> 31)
             value ^= UINT32_C(0x7FFFFFFF);
         for (unsigned k = 0; k < width; k++)
-            raw[shape->big ? width - 1 - k : k] = (uint8_t)(value >> 8 * k);
+            raw[big ? width - 1 - k : k] = (uint8_t)(value >> 8 * k);
     }
+}
+
+void firn_samples_load(const struct firn_samples_shape *shape, const uint8_t *raw, size_t count, int32_t *x)
+{
+    if (shape->width == 1)
+        load(1, false, false, raw, count, x);
+    else if (shape->width == 2 && !shape->big)
+        load(2, false, false, raw, count, x);
+    else if (shape->width == 4 && !shape->big)
+        load(4, false, shape->floats, raw, count, x);
+    else
+        load(shape->width, shape->big, shape->floats, raw, count, x);
+}
+
+void firn_samples_store(const struct firn_samples_shape *shape, const int32_t *x, size_t count, uint8_t *raw)
+{
+    if (shape->width == 2 && !shape->big)
+        store(2, false, false, x, count, raw);
+    else if (shape->width == 4 && !shape->big)
+        store(4, false, shape->floats, x, count, raw);
+    else
+        store(shape->width, shape->big, shape->floats, x, count, raw);
 }
 
 /* ---- predictions ---- */
 
-static int32_t middle(int32_t a, int32_t b, int32_t c)
+/* Written so that compilers make no jumps of it. */
+static inline int32_t middle(int32_t a, int32_t b, int32_t c)
 {
-    int32_t low = a < b ? a : b, high = a < b ? b : a;
+    int32_t low = a < b ? a : b, high = a < b ? b : a, below = c < high ? c : high;
 
-    return c < low ? low : c > high ? high : c;
+    return below > low ? below : low;
 }
 
 /* Sums wrap round, so they are made without sign. */
@@ -126,14 +148,54 @@ static inline int32_t fit(uint32_t value, unsigned width)
     return width == 1 ? (int32_t)(value & 255) : (int32_t)(value << spare) >> spare;
 }
 
+/* From where the predictor finds all it looks for; a loop for each. */
+static inline void restore_from(enum firn_samples_predictor predictor, const struct firn_samples_shape *shape, size_t start,
+                                size_t count, int32_t *x)
+{
+    size_t c = shape->channels, row = looks_up(predictor) ? shape->row : 0;
+    unsigned width = shape->width;
+
+    if (width == 2 && c == 1)
+        for (size_t i = start; i < count; i++)
+            x[i] = fit((uint32_t)x[i] + (uint32_t)predict(predictor, x, i, 1, row), 2);
+    else if (width == 2 && c == 2)
+        for (size_t i = start; i < count; i++)
+            x[i] = fit((uint32_t)x[i] + (uint32_t)predict(predictor, x, i, 2, row), 2);
+    else
+        for (size_t i = start; i < count; i++)
+            x[i] = fit((uint32_t)x[i] + (uint32_t)predict(predictor, x, i, c, row), width);
+}
+
 void firn_samples_restore(const struct firn_samples_shape *shape, size_t count, int32_t *x)
 {
+    size_t edge = (looks_up(shape->predictor) ? shape->row : 0) + 3 * (size_t)shape->channels;
+
+    edge = edge < count ? edge : count;
     if (shape->lean)
-        for (size_t i = 1; i < count; i++)
-            if (i % shape->channels != 0)
-                x[i] = wrap((uint32_t)x[i] + (uint32_t)x[i - 1]);
-    for (size_t i = 0; i < count; i++)
+        for (size_t i = 1, channel = 1; i < count; i++) {
+            x[i] = channel == 0 ? x[i] : wrap((uint32_t)x[i] + (uint32_t)x[i - 1]);
+            channel = channel + 1 == shape->channels ? 0 : channel + 1;
+        }
+    for (size_t i = 0; i < edge; i++)
         x[i] = fit((uint32_t)x[i] + (uint32_t)expected(shape, x, i), shape->width);
+    switch (shape->predictor) {
+    case FIRN_SAMPLES_LEFT:
+        restore_from(FIRN_SAMPLES_LEFT, shape, edge, count, x);
+        break;
+    case FIRN_SAMPLES_LINE:
+        restore_from(FIRN_SAMPLES_LINE, shape, edge, count, x);
+        break;
+    case FIRN_SAMPLES_CURVE:
+        restore_from(FIRN_SAMPLES_CURVE, shape, edge, count, x);
+        break;
+    case FIRN_SAMPLES_PLANE:
+        restore_from(FIRN_SAMPLES_PLANE, shape, edge, count, x);
+        break;
+    default:
+        for (size_t i = edge; i < count; i++)
+            x[i] = fit((uint32_t)x[i] + (uint32_t)expected(shape, x, i), shape->width);
+        break;
+    }
 }
 
 /* One number of one byte; w, n, nw as in predict. */
@@ -170,6 +232,30 @@ static inline void restore_one(enum firn_samples_predictor predictor, const uint
     }
 }
 
+/* Three channels in turn, without a look at which is next. */
+static inline void restore_three(enum firn_samples_predictor predictor, const uint8_t *residuals, size_t start, size_t end,
+                                 size_t row, bool lean, uint8_t *raw)
+{
+    bool up = looks_up(predictor);
+    uint8_t a = raw[start - 3], b = raw[start - 2], c = raw[start - 1];
+    uint8_t na = up ? raw[start - row - 3] : 0, nb = up ? raw[start - row - 2] : 0, nc = up ? raw[start - row - 1] : 0;
+
+    for (size_t i = start; i + 3 <= end; i += 3) {
+        uint8_t la = na, lb = nb, lc = nc, residual = residuals[i];
+
+        if (up)
+            na = raw[i - row], nb = raw[i + 1 - row], nc = raw[i + 2 - row];
+        a = (uint8_t)(residual + predict_byte(predictor, a, na, la));
+        raw[i] = a;
+        residual = (uint8_t)(residuals[i + 1] + (lean ? residual : 0));
+        b = (uint8_t)(residual + predict_byte(predictor, b, nb, lb));
+        raw[i + 1] = b;
+        residual = (uint8_t)(residuals[i + 2] + (lean ? residual : 0));
+        c = (uint8_t)(residual + predict_byte(predictor, c, nc, lc));
+        raw[i + 2] = c;
+    }
+}
+
 /* Any number of channels; leaning residuals are summed up along a pixel. */
 static inline void restore_many(enum firn_samples_predictor predictor, const uint8_t *residuals, size_t start, size_t end,
                                 size_t row, size_t c, bool lean, uint8_t *raw)
@@ -192,8 +278,10 @@ static inline void restore_by(enum firn_samples_predictor predictor, const struc
 {
     if (shape->channels == 1)
         restore_one(predictor, residuals, start, end, shape->row, raw);
+    else if (shape->channels == 3 && shape->lean)
+        restore_three(predictor, residuals, start, end, shape->row, true, raw);
     else if (shape->channels == 3)
-        restore_many(predictor, residuals, start, end, shape->row, 3, shape->lean, raw);
+        restore_three(predictor, residuals, start, end, shape->row, false, raw);
     else
         restore_many(predictor, residuals, start, end, shape->row, shape->channels, shape->lean, raw);
 }

@@ -185,8 +185,6 @@ static void read_bytes(const struct firn_samples_shape *shape, struct part parts
 {
     size_t line = firn_samples_line(shape), longest = pixels - firn_samples_part(pixels, PARTS - 1);
 
-    for (unsigned i = 0; i < FIRN_SAMPLES_CONTEXTS; i++)
-        w->places[i] = (uint16_t)(w->codes.map[i] << FIRN_SAMPLES_LIMIT);
     for (size_t p = 0; p < PARTS; p++)
         firn_samples_lines_start(&w->lines[p]);
     for (size_t at = 0; at < longest; at += line) {
@@ -213,35 +211,49 @@ static void read_bytes(const struct firn_samples_shape *shape, struct part parts
 
 /* ---- wider numbers ---- */
 
-static void read_numbers(const struct firn_samples_shape *shape, struct part *p, size_t start, size_t end,
+/* Number i of a part that starts at number `start`, in channel `channel`. */
+static inline void read_number(const struct firn_samples_shape *shape, struct part *p, size_t start, size_t i,
+                               unsigned channel, unsigned *mean, struct firn_samples_read_work *w)
+{
+    unsigned above = shape->row != 0 && i - start >= shape->row ? w->tokens[i - shape->row] : 0, entry, token, more;
+    unsigned context = firn_samples_level(*mean, above, shape->row != 0, channel);
+    uint32_t folded;
+
+    if (p->end - p->at >= 16)
+        refill(p);
+    else
+        refill_end(p);
+    entry = w->entries[0][w->places[context] | p->bits >> (64 - FIRN_SAMPLES_LIMIT)];
+    p->bits <<= entry & LENGTH_MASK;
+    token = entry >> 8 & 127;
+    w->tokens[i] = (uint8_t)token;
+    *mean += token - (*mean >> 3);
+    more = token < 16 ? 0 : token / 4 - 2;
+    folded = token < 16 ? token : (4 | (token & 3)) << more | (uint32_t)(p->bits >> 1 >> (63 - more));
+    p->bits <<= more;
+    w->x[i] = (int32_t)firn_samples_unfold(folded);
+}
+
+/* All parts in step, pixel by pixel; the last one may have some more. */
+static void read_numbers(const struct firn_samples_shape *shape, struct part parts[PARTS], size_t pixels,
                          struct firn_samples_read_work *w)
 {
-    unsigned mean[FIRN_SAMPLES_CHANNELS_MAX] = { 0 };
-    size_t c = shape->channels;
+    unsigned means[PARTS][FIRN_SAMPLES_CHANNELS_MAX] = { { 0 } };
+    struct part a = parts[0], b = parts[1], c = parts[2], d = parts[3];
+    size_t starts[PARTS], n = 0, each = firn_samples_part(pixels, 1), last = pixels - 3 * each;
 
-    for (size_t i = start; i < end; i++) {
-        unsigned above = shape->row != 0 && i - start >= shape->row ? w->tokens[i - shape->row] : 0, entry, token;
-        uint32_t folded;
-
-        if (p->end - p->at >= 16)
-            refill(p);
-        else
-            refill_end(p);
-        entry = w->entries[w->codes.map[firn_samples_level(mean[i % c], above, shape->row != 0, (unsigned)(i % c))]]
-                          [p->bits >> (64 - FIRN_SAMPLES_LIMIT)];
-        p->bits <<= entry & LENGTH_MASK;
-        token = entry >> 8 & 127;
-        w->tokens[i] = (uint8_t)token;
-        mean[i % c] += token - (mean[i % c] >> 3);
-        folded = token;
-        if (token >= 16) {
-            unsigned more = token / 4 - 2;
-
-            folded = (4 | (token & 3)) << more | (uint32_t)(p->bits >> 32 >> (32 - more));
-            p->bits <<= more;
+    for (size_t p = 0; p < PARTS; p++)
+        starts[p] = firn_samples_part(pixels, p) * shape->channels;
+    for (size_t x = 0; x < last; x++)
+        for (unsigned channel = 0; channel < shape->channels; channel++, n++) {
+            if (x < each) {
+                read_number(shape, &a, starts[0], starts[0] + n, channel, &means[0][channel], w);
+                read_number(shape, &b, starts[1], starts[1] + n, channel, &means[1][channel], w);
+                read_number(shape, &c, starts[2], starts[2] + n, channel, &means[2][channel], w);
+            }
+            read_number(shape, &d, starts[3], starts[3] + n, channel, &means[3][channel], w);
         }
-        w->x[i] = (int32_t)firn_samples_unfold(folded);
-    }
+    parts[0] = a, parts[1] = b, parts[2] = c, parts[3] = d;
 }
 
 enum firn_status firn_samples_read(const uint8_t *coded, size_t coded_bytes, uint8_t *raw, size_t raw_bytes,
@@ -260,15 +272,12 @@ enum firn_status firn_samples_read(const uint8_t *coded, size_t coded_bytes, uin
     pixels = firn_samples_pixels(&shape, raw_bytes);
     for (size_t p = 0; p < PARTS; p++)
         parts[p] = (struct part){ streams[p].bytes, streams[p].bytes + streams[p].byte_count, 1 };
-    if (shape.width == 1)
-        read_bytes(&shape, parts, pixels, work);
-    for (size_t p = 0; p < PARTS; p++) {
-        if (shape.width > 1)
-            read_numbers(&shape, &parts[p], firn_samples_part(pixels, p) * shape.channels,
-                         firn_samples_part(pixels, p + 1) * shape.channels, work);
+    for (unsigned i = 0; i < FIRN_SAMPLES_CONTEXTS; i++)
+        work->places[i] = (uint16_t)(work->codes.map[i] << FIRN_SAMPLES_LIMIT);
+    (shape.width == 1 ? read_bytes : read_numbers)(&shape, parts, pixels, work);
+    for (size_t p = 0; p < PARTS; p++)
         if (!is_used_up(&parts[p]))
             return FIRN_BAD_DATA;
-    }
     if (shape.width == 1) {
         firn_samples_restore_bytes(&shape, work->tokens, pixels * shape.channels, raw + shape.head_bytes);
     } else {
