@@ -185,7 +185,7 @@ size_t firn_samples_write(const struct firn_samples_shape *shape, const uint8_t 
 
 struct firn_samples_read_work {
     struct firn_contexts codes;
-    uint16_t entries[FIRN_CONTEXTS_TABLES_MAX][FIRN_SAMPLES_ENTRIES];
+    uint16_t entries[FIRN_CONTEXTS_TABLES_MAX * FIRN_SAMPLES_ENTRIES];
     uint16_t places[FIRN_SAMPLES_CONTEXTS];        /* of a context: the first entry of its table */
     struct firn_samples_lines lines[FIRN_SAMPLES_PARTS];
     uint16_t contexts[FIRN_SAMPLES_PARTS][FIRN_SAMPLES_ROW_MAX + FIRN_SAMPLES_LINE_PIXELS];

@@ -10,7 +10,7 @@
 
 #include <string.h>
 
-enum { LENGTH_MASK = 15, PARTS = FIRN_SAMPLES_PARTS, PER_REFILL = 5 };
+enum { LENGTH_MASK = 15, PARTS = FIRN_SAMPLES_PARTS, PER_REFILL = 5, WIDE_TOKENS = 128 };
 
 /* entries[bits] = token << 8 | length */
 static void spread(const uint8_t *lengths, uint16_t entries[FIRN_SAMPLES_ENTRIES])
@@ -74,8 +74,12 @@ static bool open_streams(const uint8_t *coded, size_t coded_bytes, size_t raw_by
             return false;
         streams[part] = (struct firn_words_reader){ .bytes = coded + at, .byte_count = size };
     }
+    for (unsigned t = 0; shape->width > 1 && t < w->codes.tables; t++)
+        for (unsigned token = WIDE_TOKENS; token < 256; token++)
+            if (w->codes.lengths[t][token] != 0)
+                return false;
     for (unsigned t = 0; t < w->codes.tables; t++)
-        spread(w->codes.lengths[t], w->entries[t]);
+        spread(w->codes.lengths[t], w->entries + t * FIRN_SAMPLES_ENTRIES);
     return true;
 }
 
@@ -93,7 +97,7 @@ static void refill_end(struct part *p)
 
     if (step > left) {                 /* bits that are not there were taken: no more come, and the count does not match */
         p->at = p->end;
-        p->bits = UINT64_C(1) << 63;
+        p->bits = UINT64_C(1) << 23;   /* what is taken before the next refill, at most 40 bits, does not push it out */
         return;
     }
     p->at += step;
@@ -123,7 +127,7 @@ static bool is_used_up(const struct part *p)
 
 static inline void step(struct part *p, size_t which, size_t k, struct firn_samples_read_work *w)
 {
-    unsigned entry = w->entries[0][w->places[w->contexts[which][k]] | p->bits >> (64 - FIRN_SAMPLES_LIMIT)];
+    unsigned entry = w->entries[w->places[w->contexts[which][k]] | p->bits >> (64 - FIRN_SAMPLES_LIMIT)];
 
     p->bits <<= entry & LENGTH_MASK;
     w->now[which][k] = (uint8_t)(entry >> 8);
@@ -223,9 +227,9 @@ static inline void read_number(const struct firn_samples_shape *shape, struct pa
         refill(p);
     else
         refill_end(p);
-    entry = w->entries[0][w->places[context] | p->bits >> (64 - FIRN_SAMPLES_LIMIT)];
+    entry = w->entries[w->places[context] | p->bits >> (64 - FIRN_SAMPLES_LIMIT)];
     p->bits <<= entry & LENGTH_MASK;
-    token = entry >> 8 & 127;
+    token = entry >> 8;
     w->tokens[i] = (uint8_t)token;
     *mean += token - (*mean >> 3);
     more = token < 16 ? 0 : token / 4 - 2;
