@@ -13,12 +13,12 @@ enum {
     REPETITION = 13,                   /* the last length two or more times again: gamma(count - 1) follows */
     TOKEN_LENGTH_BITS = 3,
     FULL = 1 << FIRN_TABLE_LENGTH_LIMIT,
-    GAMMA_MAX = FIRN_TABLE_SYMBOLS - 1,
+    GAMMA_ZEROS_MAX = 8,               /* a run is at most FIRN_TABLE_ALPHABET_MAX - 1 long */
     REPETITION_PAYS = 3                /* two equal lengths more are as short written out */
 };
 
 struct token {
-    uint8_t kind, count;               /* count - 1 of a run or repetition, else 0 */
+    uint16_t kind, count;              /* count - 1 of a run or repetition, else 0 */
 };
 
 /* Bits of v >= 1 in Elias's gamma code: as many zeros as v has bits after its first, then v. */
@@ -31,9 +31,9 @@ static unsigned gamma_bits(unsigned v)
     return bits;
 }
 
-static size_t tokenise(const uint8_t *lengths, struct token *tokens)
+static size_t tokenise(const uint8_t *lengths, size_t symbols, struct token *tokens)
 {
-    size_t made = 0, end = FIRN_TABLE_SYMBOLS;
+    size_t made = 0, end = symbols;
 
     while (end > 0 && lengths[end - 1] == 0)
         end--;
@@ -44,11 +44,11 @@ static size_t tokenise(const uint8_t *lengths, struct token *tokens)
         while (s + same < end && lengths[s + same] == length)
             same++;
         if (length == 0) {
-            tokens[made++] = same == 1 ? (struct token){ 0, 0 } : (struct token){ ABSENT_RUN, (uint8_t)(same - 1) };
+            tokens[made++] = same == 1 ? (struct token){ 0, 0 } : (struct token){ ABSENT_RUN, (uint16_t)(same - 1) };
         } else {
             tokens[made++] = (struct token){ length, 0 };
             if (same - 1 >= REPETITION_PAYS)
-                tokens[made++] = (struct token){ REPETITION, (uint8_t)(same - 2) };
+                tokens[made++] = (struct token){ REPETITION, (uint16_t)(same - 2) };
             else
                 for (size_t k = 1; k < same; k++)
                     tokens[made++] = (struct token){ length, 0 };
@@ -74,20 +74,30 @@ static unsigned plan(const struct token *tokens, size_t count, uint8_t *token_le
     return bits + (unsigned)firn_prefix_cost_bits(weights, token_lengths, FIRN_TABLE_TOKENS);
 }
 
-unsigned firn_table_cost_bits(const uint8_t lengths[FIRN_TABLE_SYMBOLS])
+unsigned firn_table_cost_bits_of(const uint8_t *lengths, size_t symbols)
 {
-    struct token tokens[FIRN_TABLE_SYMBOLS];
+    struct token tokens[FIRN_TABLE_ALPHABET_MAX];
     uint8_t token_lengths[FIRN_TABLE_TOKENS];
 
-    return plan(tokens, tokenise(lengths, tokens), token_lengths);
+    return plan(tokens, tokenise(lengths, symbols, tokens), token_lengths);
+}
+
+unsigned firn_table_cost_bits(const uint8_t lengths[FIRN_TABLE_SYMBOLS])
+{
+    return firn_table_cost_bits_of(lengths, FIRN_TABLE_SYMBOLS);
 }
 
 void firn_table_write(struct firn_bits_writer *writer, const uint8_t lengths[FIRN_TABLE_SYMBOLS])
 {
-    struct token tokens[FIRN_TABLE_SYMBOLS];
+    firn_table_write_of(writer, lengths, FIRN_TABLE_SYMBOLS);
+}
+
+void firn_table_write_of(struct firn_bits_writer *writer, const uint8_t *lengths, size_t symbols)
+{
+    struct token tokens[FIRN_TABLE_ALPHABET_MAX];
     uint8_t token_lengths[FIRN_TABLE_TOKENS];
     uint16_t words[FIRN_TABLE_TOKENS];
-    size_t count = tokenise(lengths, tokens);
+    size_t count = tokenise(lengths, symbols, tokens);
 
     plan(tokens, count, token_lengths);
     firn_prefix_assign(token_lengths, FIRN_TABLE_TOKENS, words);
@@ -104,14 +114,14 @@ void firn_table_write(struct firn_bits_writer *writer, const uint8_t lengths[FIR
     }
 }
 
-/* 0 when it is no gamma word of 1 .. GAMMA_MAX */
+/* 0 when it is no gamma word of at most GAMMA_ZEROS_MAX zeros */
 static unsigned take_gamma(struct firn_bits_reader *reader)
 {
     unsigned zeros = 0;
 
-    while (zeros < 8 && firn_bits_take(reader, 1) == 0)
+    while (zeros <= GAMMA_ZEROS_MAX && firn_bits_take(reader, 1) == 0)
         zeros++;
-    if (zeros == 8)
+    if (zeros > GAMMA_ZEROS_MAX)
         return 0;
     return 1u << zeros | firn_bits_take(reader, zeros);
 }
@@ -137,13 +147,18 @@ static enum firn_status read_token_code(struct firn_bits_reader *reader, uint8_t
 
 enum firn_status firn_table_read(struct firn_bits_reader *reader, uint8_t lengths[FIRN_TABLE_SYMBOLS])
 {
+    return firn_table_read_of(reader, lengths, FIRN_TABLE_SYMBOLS);
+}
+
+enum firn_status firn_table_read_of(struct firn_bits_reader *reader, uint8_t *lengths, size_t symbols)
+{
     uint8_t decode[1 << FIRN_TABLE_TOKEN_LIMIT];
     unsigned filled = 0, last = 0;
     size_t s = 0;
 
     if (read_token_code(reader, decode) != FIRN_OK)
         return FIRN_BAD_DATA;
-    memset(lengths, 0, FIRN_TABLE_SYMBOLS);
+    memset(lengths, 0, symbols);
     while (filled < FULL) {
         unsigned entry = decode[firn_bits_peek16(reader) >> (16 - FIRN_TABLE_TOKEN_LIMIT)], count = 1;
         unsigned kind = entry >> 4, length = kind;
@@ -159,7 +174,7 @@ enum firn_status firn_table_read(struct firn_bits_reader *reader, uint8_t length
             count = more + 1;
             length = kind == REPETITION ? last : 0;
         }
-        if (count > FIRN_TABLE_SYMBOLS - s)
+        if (count > symbols - s)
             return FIRN_BAD_DATA;                   /* under-full: the symbols end before the code does */
         if (length != 0)
             filled += count << (FIRN_TABLE_LENGTH_LIMIT - length);

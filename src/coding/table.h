@@ -19,6 +19,7 @@
 
 enum {
     FIRN_TABLE_SYMBOLS = 256,
+    FIRN_TABLE_ALPHABET_MAX = 512,
     FIRN_TABLE_LENGTH_LIMIT = 11,
     FIRN_TABLE_TOKENS = 14,            /* lengths 0 .. 11, absent run, repetition */
     FIRN_TABLE_TOKEN_LIMIT = 7,
@@ -35,5 +36,10 @@ void firn_table_write(struct firn_bits_writer *writer, const uint8_t lengths[FIR
 
 /* FIRN_OK: a full code of at least two symbols. FIRN_BAD_DATA: over-full, under-full, or not a table. */
 enum firn_status firn_table_read(struct firn_bits_reader *reader, uint8_t lengths[FIRN_TABLE_SYMBOLS]);
+
+/* The same for an alphabet of `symbols` symbols, at most FIRN_TABLE_ALPHABET_MAX. */
+unsigned firn_table_cost_bits_of(const uint8_t *lengths, size_t symbols);
+void firn_table_write_of(struct firn_bits_writer *writer, const uint8_t *lengths, size_t symbols);
+enum firn_status firn_table_read_of(struct firn_bits_reader *reader, uint8_t *lengths, size_t symbols);
 
 #endif

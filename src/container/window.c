@@ -173,12 +173,28 @@ size_t firn_window_close(struct firn_window *window)
     return window->cut_count + window->piece_count;
 }
 
-void firn_window_code(struct firn_window *window, size_t job, enum firn_segment_effort effort, void *work)
+static size_t rounded(size_t bytes)
+{
+    return (bytes + 63) / 64 * 64;
+}
+
+size_t firn_window_work_bytes(void)
+{
+    return rounded(firn_segment_encode_work_bytes()) + rounded(firn_segment_decode_work_bytes()) + FIRN_SEGMENT_RAW_MAX;
+}
+
+void firn_window_code(struct firn_window *window, size_t job, enum firn_segment_effort effort, uint8_t *work)
 {
     struct firn_window_cut *cut = job < window->cut_count ? &window->cuts[job]
                                                            : &window->pieces[job - window->cut_count];
+    uint8_t *decode_work = work + rounded(firn_segment_encode_work_bytes());
+    uint8_t *again = decode_work + rounded(firn_segment_decode_work_bytes());
 
     firn_hash_put(cut->raw, cut->raw_bytes, cut->hash);
-    /* 1 .. FIRN_SEGMENT_RAW_MAX bytes and the full bound of room: the encoder has nothing to refuse */
-    (void)firn_segment_encode(cut->raw, cut->raw_bytes, effort, cut->coded, &cut->coded_bytes, work);
+    if (firn_segment_encode(cut->raw, cut->raw_bytes, effort, cut->coded, &cut->coded_bytes, work) == FIRN_OK &&
+        firn_segment_decode(cut->coded, cut->coded_bytes, again, cut->raw_bytes, decode_work) == FIRN_OK &&
+        memcmp(again, cut->raw, cut->raw_bytes) == 0)
+        return;
+    /* 1 .. FIRN_SEGMENT_RAW_MAX bytes and the full bound of room: storing has nothing to refuse */
+    (void)firn_segment_encode(cut->raw, cut->raw_bytes, FIRN_SEGMENT_EFFORT_NONE, cut->coded, &cut->coded_bytes, work);
 }

@@ -85,7 +85,11 @@ void firn_window_carry(struct firn_window *from, struct firn_window *to);
 /* Ends the open cut, lays out all cuts and pieces for coding; returns the number of jobs for firn_window_code. */
 size_t firn_window_close(struct firn_window *window);
 
-/* Codes cut or piece number `job`. work: firn_segment_encode_work_bytes(). Jobs share nothing. */
-void firn_window_code(struct firn_window *window, size_t job, enum firn_segment_effort effort, void *work);
+/*
+ * Codes cut or piece number `job`, and decodes it again: what does not come back as it was, whether the memory failed
+ * or the coder, is stored as it is. work: firn_window_work_bytes(), aligned to 64. Jobs share nothing.
+ */
+void firn_window_code(struct firn_window *window, size_t job, enum firn_segment_effort effort, uint8_t *work);
+size_t firn_window_work_bytes(void);
 
 #endif

@@ -207,7 +207,7 @@ static void code_job(void *self, size_t index, unsigned worker)
     struct firn_writer *writer = self;
 
     firn_window_code(writer->coding, index, writer->options.effort,
-                     writer->work + worker * firn_segment_encode_work_bytes());
+                     writer->work + worker * firn_window_work_bytes());
 }
 
 /* Waits for the window that is being coded, and gives it out. */
@@ -268,7 +268,7 @@ static enum firn_status make_rooms(struct firn_writer *writer, const uint8_t *pa
         status = firn_window_make(writer->memory, &writer->windows[i]);
     if (status != FIRN_OK)
         return status;
-    writer->work = writer->memory->get(writer->memory->self, options->threads * firn_segment_encode_work_bytes());
+    writer->work = writer->memory->get(writer->memory->self, options->threads * firn_window_work_bytes());
     return writer->work == NULL ? FIRN_NO_MEMORY : FIRN_OK;
 }
 

@@ -32,6 +32,8 @@ static const char *method_name(enum firn_segment_method method)
     case FIRN_SEGMENT_STORED: return "stored";
     case FIRN_SEGMENT_RUN:    return "run";
     case FIRN_SEGMENT_PREFIX: return "prefix";
+    case FIRN_SEGMENT_MATCHED: return "matched";
+    case FIRN_SEGMENT_SAMPLES: return "samples";
     }
     return "unknown";
 }
@@ -46,14 +48,31 @@ static double entropy_bits(const uint32_t counts[256], size_t total)
     return bits;
 }
 
-/* The symbols of one code length, printable ones as they are, others in hexadecimal. */
-static void put_symbols(const uint8_t lengths[256], unsigned length)
+/* The symbols of one code length: bytes that can be printed as they are, other bytes in hexadecimal, numbers else. */
+static void put_symbols(const uint8_t *lengths, size_t symbols, bool bytes, unsigned length)
 {
+    if (memchr(lengths, (int)length, symbols) == NULL)
+        return;
     printf("    %2u bit%s ", length, length == 1 ? ": " : "s:");
-    for (unsigned symbol = 0; symbol < 256; symbol++)
-        if (lengths[symbol] == length)
-            printf(symbol > 0x20 && symbol < 0x7F ? " %c" : " %02X", symbol);
+    for (size_t symbol = 0; symbol < symbols; symbol++)
+        if (lengths[symbol] == length) {
+            if (!bytes)
+                printf(" %zu", symbol);
+            else
+                printf(symbol > 0x20 && symbol < 0x7F ? " %c" : " %02X", (unsigned)symbol);
+        }
     putchar('\n');
+}
+
+static void put_code(const uint8_t *lengths, size_t symbols, bool bytes)
+{
+    for (unsigned length = 1; length <= 15; length++)
+        put_symbols(lengths, symbols, bytes, length);
+}
+
+static bool is_of_bytes(const struct firn_segment_code *code)
+{
+    return strcmp(code->of, "literals") == 0;
 }
 
 static void stretch_words(const struct tables *t, const struct firn_segment_stretch *stretch, double entropy)
@@ -62,15 +81,31 @@ static void stretch_words(const struct tables *t, const struct firn_segment_stre
 
     printf("  %12" PRIu64 " +%-8zu %-7s %8zu bytes", t->segment->content_at + stretch->raw_at, stretch->raw_bytes,
            method_name(stretch->method), stretch->coded_bytes);
-    if (stretch->lengths == NULL) {
+    if (stretch->lengths == NULL && stretch->code_count == 0) {
         putchar('\n');
         return;
     }
-    printf("  entropy %.4f  code %.4f  table %.4f bits a byte\n", entropy / raw, (double)stretch->code_bits / raw,
+    printf("  entropy %.4f  code %.4f  tables %.4f bits a byte\n", entropy / raw, (double)stretch->code_bits / raw,
            (double)stretch->table_bits / raw);
-    for (unsigned length = 1; length <= 15; length++)
-        if (memchr(stretch->lengths, (int)length, 256) != NULL)
-            put_symbols(stretch->lengths, length);
+    if (stretch->lengths != NULL)
+        put_code(stretch->lengths, 256, true);
+    for (size_t i = 0; i < stretch->code_count; i++) {
+        printf("   code %zu, of %s\n", i + 1, stretch->codes[i].of);
+        put_code(stretch->codes[i].lengths, stretch->codes[i].symbols, is_of_bytes(&stretch->codes[i]));
+    }
+}
+
+static void lengths_json(struct firn_view *view, const uint8_t *lengths, size_t symbols)
+{
+    bool first = true;
+
+    fputs("\"lengths\":{", view->out);
+    for (size_t symbol = 0; symbol < symbols; symbol++)
+        if (lengths[symbol] > 0) {
+            fprintf(view->out, "%s\"%zu\":%u", first ? "" : ",", symbol, (unsigned)lengths[symbol]);
+            first = false;
+        }
+    fputc('}', view->out);
 }
 
 static void stretch_json(const struct tables *t, const struct firn_segment_stretch *stretch, double entropy)
@@ -83,16 +118,22 @@ static void stretch_json(const struct tables *t, const struct firn_segment_stret
     firn_view_words(view, "method", NULL, method_name(stretch->method));
     firn_view_count(view, "coded-bytes", NULL, stretch->coded_bytes);
     firn_view_number(view, "entropy-bits", entropy);
-    if (stretch->lengths != NULL) {
+    if (stretch->lengths != NULL || stretch->code_count > 0) {
         firn_view_count(view, "code-bits", NULL, stretch->code_bits);
         firn_view_count(view, "table-bits", NULL, stretch->table_bits);
-        fputs(",\"lengths\":{", view->out);
-        for (unsigned symbol = 0, first = 1; symbol < 256; symbol++)
-            if (stretch->lengths[symbol] > 0) {
-                fprintf(view->out, "%s\"%u\":%u", first ? "" : ",", symbol, (unsigned)stretch->lengths[symbol]);
-                first = 0;
-            }
-        fputc('}', view->out);
+    }
+    if (stretch->lengths != NULL) {
+        fputc(',', view->out);
+        lengths_json(view, stretch->lengths, 256);
+    }
+    if (stretch->code_count > 0) {
+        fputs(",\"codes\":[", view->out);
+        for (size_t i = 0; i < stretch->code_count; i++) {
+            fprintf(view->out, "%s{\"of\":\"%s\",", i > 0 ? "," : "", stretch->codes[i].of);
+            lengths_json(view, stretch->codes[i].lengths, stretch->codes[i].symbols);
+            fputc('}', view->out);
+        }
+        fputc(']', view->out);
     }
     firn_view_end(view);
 }
@@ -197,7 +238,8 @@ const struct firn_command firn_command_describe = {
     .usage = "FILE [--tables] [--page]",
     .about = "Layout, protection, identity and totals. With --tables also every code: for each\n"
              "stretch of content the symbols by code length, and what the code costs beside\n"
-             "the entropy, in bits for each byte of content.\n",
+             "the entropy of its bytes each for itself, in bits for each byte of content;\n"
+             "matches and contexts go below that.\n",
     .example = "  firn describe quay-1931.firn\n",
     .options = options, .option_count = sizeof options / sizeof options[0], .run = run
 };

@@ -131,7 +131,8 @@ struct collection *collection_make(unsigned items, uint64_t seed, const struct f
                                            .memory = firn_memory_system(),
                                            .threads = threads,
                                            .geometry = *geometry,
-                                           .effort = FIRN_SEGMENT_EFFORT_QUICK,
+                                           /* stored: the number of blocks shall not depend on the coder */
+                                           .effort = FIRN_SEGMENT_EFFORT_NONE,
                                            .title = { .accession = "MQ 1931/7",
                                                       .title = "Ledgers of Marrow Quay",
                                                       .custodian = "Harbour Archive",

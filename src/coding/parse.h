@@ -1,0 +1,64 @@
+/*
+ * coding/parse.h - which of the repeats to use: the cheapest way through a segment, by the codes' own prices
+ *
+ * Room: coding. Pure. A place is reached by a literal or at the end of a match; the cheapest way to every place is
+ * found from left to right, window by window, with the recent distances it leaves. Prices come from a parse before,
+ * through its codes; so codes and parse are made in turn.
+ *
+ * SPDX-License-Identifier: BSD-2-Clause
+ */
+#ifndef FIRN_CODING_PARSE_H
+#define FIRN_CODING_PARSE_H
+
+#include "coding/matched.h"
+#include "coding/repeats.h"
+
+#include <stddef.h>
+#include <stdint.h>
+
+enum {
+    FIRN_PARSE_WINDOW = 1 << 15,
+    FIRN_PARSE_REACH = 96,             /* matches so long or longer are taken at once */
+    FIRN_PARSE_COMMANDS_MAX = FIRN_SEGMENT_RAW_MAX / FIRN_MATCHED_LENGTH_MIN + 1
+};
+
+struct firn_parse_place {
+    uint32_t run;                      /* literals since the last match */
+    uint32_t recent[FIRN_MATCHED_RECENT];
+};
+
+/* How a place is reached: by the match that ends here; length 0: by a literal. */
+struct firn_parse_arrival {
+    uint32_t length, distance;
+};
+
+/* Everything in 1/64 bit. */
+struct firn_parse_prices {
+    uint16_t literals[FIRN_CONTEXTS_TABLES_MAX][256];
+    uint8_t literal_map[FIRN_MATCHED_LITERAL_CONTEXTS];
+    uint32_t commands[FIRN_MATCHED_COMMAND_CONTEXTS][FIRN_MATCHED_RUN_CODES][FIRN_MATCHED_LENGTH_CODES];
+    uint32_t runs[FIRN_MATCHED_RUN_CODES];         /* what a run is guessed to cost as long as no match follows */
+    uint16_t distances[FIRN_MATCHED_DISTANCE_CONTEXTS][FIRN_MATCHED_DISTANCES_MAX];
+    unsigned fine;
+};
+
+struct firn_parse_work {
+    struct firn_parse_prices prices;
+    uint8_t length_codes[FIRN_PARSE_REACH + 1];
+    uint32_t price[FIRN_PARSE_WINDOW + FIRN_PARSE_REACH + 1];
+    struct firn_parse_arrival arrival[FIRN_PARSE_WINDOW + FIRN_PARSE_REACH + 1];
+    struct firn_parse_place places[FIRN_PARSE_WINDOW + 1];
+};
+
+/* Prices for a first parse, from the bytes' counts alone. */
+void firn_parse_guess(const struct firn_cost_logs *logs, const uint8_t *raw, size_t raw_bytes,
+                      struct firn_parse_prices *prices);
+
+/* Prices by the codes and counts that firn_matched_make_codes left in `matched`. */
+void firn_parse_learn(const struct firn_matched_write_work *matched, struct firn_parse_prices *prices);
+
+/* Returns the number of commands, at most FIRN_PARSE_COMMANDS_MAX. Prices stand in work->prices. */
+size_t firn_parse(const uint8_t *raw, size_t raw_bytes, const struct firn_repeats *repeats,
+                  struct firn_matched_command *commands, struct firn_parse_work *work);
+
+#endif
