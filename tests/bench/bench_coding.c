@@ -7,6 +7,7 @@
  * busy, so the ratios to zlib say more than the MB/s.
  * SPDX-License-Identifier: BSD-2-Clause
  */
+#include "coding/candidates.h"
 #include "firn/prefix.h"
 #include "firn/segment.h"
 
@@ -63,8 +64,11 @@ static size_t firn_in(struct subject *s, size_t index, const uint8_t *raw, size_
     size_t coded_bytes = 0;
 
     (void)index;
-    stop_if(firn_segment_encode(raw, raw_bytes, s->effort, coded, &coded_bytes, s->encode_work) != FIRN_OK,
-            "encode failed");
+    /* stretches alone, not what would be chosen: this is about codes for bytes each for itself */
+    if (s->effort == FIRN_SEGMENT_EFFORT_NONE ||
+        (coded_bytes = firn_candidates_stretches(raw, raw_bytes, s->effort, coded, s->encode_work)) == 0)
+        stop_if(firn_segment_encode(raw, raw_bytes, FIRN_SEGMENT_EFFORT_NONE, coded, &coded_bytes, s->encode_work) !=
+                    FIRN_OK, "a segment was not coded");
     return coded_bytes;
 }
 
