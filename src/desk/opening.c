@@ -106,8 +106,8 @@ int firn_opening_remark(struct firn_view *view, const char *path, const struct f
         firn_view_finding(view, "foreign-bytes", path, words);
     }
     if (!layout->title_sound) {
-        firn_view_finding(view, "title-page", path, "the title page is not as its protected copy has it, or that is lost; "
-                                                    "scrub heals it if it can");
+        firn_view_finding(view, "title-page", path, "the title page is not as its protected copy has it, or that is "
+                                                    "lost; scrub heals it if it can");
         worst = worst == FIRN_EXIT_SOUND ? FIRN_EXIT_SAFE : worst;
     }
     return worst;
