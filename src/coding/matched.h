@@ -32,7 +32,8 @@ enum {
     FIRN_MATCHED_DISTANCES_MAX = FIRN_MATCHED_RECENT +
                                  (2 * (FIRN_MATCHED_DISTANCE_BITS - FIRN_MATCHED_FINE_MAX) << FIRN_MATCHED_FINE_MAX),
     FIRN_MATCHED_DISTANCE_CONTEXTS = 8,
-    FIRN_MATCHED_LITERAL_CONTEXTS = 512
+    FIRN_MATCHED_LITERAL_CONTEXTS = 512,
+    FIRN_MATCHED_BATCH = 256                       /* commands decoded before they are carried out */
 };
 
 struct firn_matched_command {
@@ -166,9 +167,10 @@ size_t firn_matched_write(const uint8_t *raw, const struct firn_matched_command 
 
 struct firn_matched_read_work {
     struct firn_matched_codes codes;
-    uint16_t literals[FIRN_CONTEXTS_TABLES_MAX][FIRN_MATCHED_ENTRIES];     /* symbol << 8 | next table << 4 | length */
+    uint16_t literals[FIRN_CONTEXTS_TABLES_MAX][FIRN_MATCHED_ENTRIES];
     uint32_t commands[FIRN_MATCHED_COMMAND_CONTEXTS][FIRN_MATCHED_ENTRIES];
     uint32_t distances[FIRN_MATCHED_DISTANCE_CONTEXTS][FIRN_MATCHED_ENTRIES];
+    struct firn_matched_command batch[FIRN_MATCHED_BATCH];
     uint64_t table_bits;                                               /* what map and tables took */
 };
 
