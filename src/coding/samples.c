@@ -4,22 +4,18 @@
  */
 #include "coding/samples.h"
 
+#include "coding/samples_predict.h"
+
 #include "base/bytes.h"
 
 #include <string.h>
-
-/* Whether it needs the row above. */
-static bool looks_up(enum firn_samples_predictor predictor)
-{
-    return predictor >= FIRN_SAMPLES_UP && predictor <= FIRN_SAMPLES_BENT;
-}
 
 bool firn_samples_shape_is_sound(const struct firn_samples_shape *shape, size_t raw_bytes)
 {
     return shape->width >= 1 && shape->width <= FIRN_SAMPLES_WIDTH_MAX && shape->channels >= 1 &&
            shape->channels <= FIRN_SAMPLES_CHANNELS_MAX && (unsigned)shape->predictor < FIRN_SAMPLES_PREDICTORS &&
            shape->head_bytes <= FIRN_SAMPLES_HEAD_MAX && shape->row <= FIRN_SAMPLES_ROW_MAX &&
-           (shape->row > shape->channels || (shape->row == 0 && !looks_up(shape->predictor))) &&
+           (shape->row > shape->channels || (shape->row == 0 && !firn_samples_predict_looks_up(shape->predictor))) &&
            shape->row % shape->channels == 0 &&
            (!shape->floats || shape->width == 4) && (!shape->lean || shape->channels > 1) &&
            raw_bytes >= shape->head_bytes + (size_t)shape->width * shape->channels * FIRN_SAMPLES_PARTS;
@@ -79,69 +75,6 @@ void firn_samples_store(const struct firn_samples_shape *shape, const int32_t *x
 
 /* ---- predictions ---- */
 
-/* Written so that compilers make no jumps of it. */
-static inline int32_t middle(int32_t a, int32_t b, int32_t c)
-{
-    int32_t low = a < b ? a : b, high = a < b ? b : a, below = c < high ? c : high;
-
-    return below > low ? below : low;
-}
-
-/* Sums wrap round, so they are made without sign. */
-static int32_t wrap(uint32_t value)
-{
-    return (int32_t)value;
-}
-
-/* What x[i] is expected to be; i >= channels, and i >= row + channels for predictors that look up. */
-static inline int32_t predict(enum firn_samples_predictor predictor, const int32_t *x, size_t i, size_t c, size_t row)
-{
-    uint32_t w = (uint32_t)x[i - c], n = (uint32_t)x[i - row], nw = (uint32_t)x[i - row - c];
-
-    switch (predictor) {
-    case FIRN_SAMPLES_UP:
-        return wrap(n);
-    case FIRN_SAMPLES_PLANE:
-        return wrap(w + n - nw);
-    case FIRN_SAMPLES_MEDIAN:
-        return middle(wrap(w), wrap(n), wrap(w + n - nw));
-    case FIRN_SAMPLES_MEAN:
-        return (int32_t)(((int64_t)wrap(w) + wrap(n)) >> 1);
-    case FIRN_SAMPLES_BENT:
-        return (int32_t)((3 * (int64_t)wrap(w) + 3 * (int64_t)wrap(n) - 2 * (int64_t)wrap(nw)) >> 2);
-    case FIRN_SAMPLES_LINE:
-        return wrap(2 * w - (uint32_t)(i >= 2 * c ? x[i - 2 * c] : x[i - c]));
-    case FIRN_SAMPLES_CURVE:
-        if (i < 3 * c)
-            return wrap(w);
-        return wrap(3 * w - 3 * (uint32_t)x[i - 2 * c] + (uint32_t)x[i - 3 * c]);
-    default:
-        return wrap(w);
-    }
-}
-
-/* The prediction at the edges too: nothing in front; the left one as long as what is looked for is not there. */
-static inline int32_t expected(const struct firn_samples_shape *shape, const int32_t *x, size_t i)
-{
-    if (shape->predictor == FIRN_SAMPLES_NOTHING || i < shape->channels)
-        return 0;
-    if (!looks_up(shape->predictor))
-        return predict(shape->predictor, x, i, shape->channels, 0);
-    if (i < shape->row + shape->channels)
-        return x[i - shape->channels];
-    return predict(shape->predictor, x, i, shape->channels, shape->row);
-}
-
-void firn_samples_differ(const struct firn_samples_shape *shape, const int32_t *x, size_t count, int32_t *residuals)
-{
-    for (size_t i = 0; i < count; i++)
-        residuals[i] = wrap((uint32_t)x[i] - (uint32_t)expected(shape, x, i));
-    if (shape->lean)
-        for (size_t i = count; i-- > 0;)
-            if (i % shape->channels != 0)
-                residuals[i] = wrap((uint32_t)residuals[i] - (uint32_t)residuals[i - 1]);
-}
-
 /* A number of one byte stays within 0 .. 255; a wider one is sign-extended. */
 static inline int32_t fit(uint32_t value, unsigned width)
 {
@@ -154,7 +87,7 @@ static inline int32_t fit(uint32_t value, unsigned width)
 static void straighten(const struct firn_samples_shape *shape, size_t count, int32_t *x)
 {
     for (size_t i = 1, channel = 1; i < count; i++) {
-        x[i] = channel == 0 ? x[i] : wrap((uint32_t)x[i] + (uint32_t)x[i - 1]);
+        x[i] = channel == 0 ? x[i] : firn_samples_predict_wrap((uint32_t)x[i] + (uint32_t)x[i - 1]);
         channel = channel + 1 == shape->channels ? 0 : channel + 1;
     }
 }
@@ -207,20 +140,20 @@ static void restore_sound(const struct firn_samples_shape *shape, size_t start, 
 static inline void restore_from(enum firn_samples_predictor predictor, const struct firn_samples_shape *shape,
                                 size_t start, size_t count, int32_t *x)
 {
-    size_t c = shape->channels, row = looks_up(predictor) ? shape->row : 0;
+    size_t c = shape->channels, row = firn_samples_predict_looks_up(predictor) ? shape->row : 0;
     unsigned width = shape->width;
 
     if (width == 2)
         for (size_t i = start; i < count; i++)
-            x[i] = fit((uint32_t)x[i] + (uint32_t)predict(predictor, x, i, c, row), 2);
+            x[i] = fit((uint32_t)x[i] + (uint32_t)firn_samples_predict(predictor, x, i, c, row), 2);
     else
         for (size_t i = start; i < count; i++)
-            x[i] = fit((uint32_t)x[i] + (uint32_t)predict(predictor, x, i, c, row), width);
+            x[i] = fit((uint32_t)x[i] + (uint32_t)firn_samples_predict(predictor, x, i, c, row), width);
 }
 
 void firn_samples_restore(const struct firn_samples_shape *shape, size_t count, int32_t *x, uint8_t *raw)
 {
-    size_t edge = (looks_up(shape->predictor) ? shape->row : 0) + 3 * (size_t)shape->channels;
+    size_t edge = (firn_samples_predict_looks_up(shape->predictor) ? shape->row : 0) + 3 * (size_t)shape->channels;
     bool sound = shape->width == 2 && shape->channels <= 2 && (shape->predictor == FIRN_SAMPLES_LEFT ||
                  shape->predictor == FIRN_SAMPLES_LINE || shape->predictor == FIRN_SAMPLES_CURVE);
 
@@ -228,7 +161,7 @@ void firn_samples_restore(const struct firn_samples_shape *shape, size_t count, 
     if (shape->lean)
         straighten(shape, count, x);
     for (size_t i = 0; i < edge; i++)
-        x[i] = fit((uint32_t)x[i] + (uint32_t)expected(shape, x, i), shape->width);
+        x[i] = fit((uint32_t)x[i] + (uint32_t)firn_samples_predict_number(shape, x, i), shape->width);
     if (sound && edge < count) {
         firn_samples_store(shape, x, edge, raw);
         restore_sound(shape, edge, count, x, raw);
@@ -249,7 +182,7 @@ void firn_samples_restore(const struct firn_samples_shape *shape, size_t count, 
         break;
     default:
         for (size_t i = edge; i < count; i++)
-            x[i] = fit((uint32_t)x[i] + (uint32_t)expected(shape, x, i), shape->width);
+            x[i] = fit((uint32_t)x[i] + (uint32_t)firn_samples_predict_number(shape, x, i), shape->width);
         break;
     }
     firn_samples_store(shape, x, count, raw);
@@ -265,53 +198,27 @@ struct byte_line {
     uint8_t *raw;
 };
 
-/* What stands around a number: to the left, two and three to the left, above, above to the left. */
-struct around {
-    uint8_t w, ww, www, n, nw;
-};
-
-static inline uint8_t predict_byte(enum firn_samples_predictor predictor, const struct around *a)
-{
-    switch (predictor) {
-    case FIRN_SAMPLES_UP:
-        return a->n;
-    case FIRN_SAMPLES_PLANE:
-        return (uint8_t)(a->w + a->n - a->nw);
-    case FIRN_SAMPLES_MEDIAN:
-        return (uint8_t)middle(a->w, a->n, a->w + a->n - a->nw);
-    case FIRN_SAMPLES_MEAN:
-        return (uint8_t)((a->w + a->n) / 2);
-    case FIRN_SAMPLES_BENT:
-        return (uint8_t)((3 * (a->w + a->n) - 2 * a->nw) >> 2);
-    case FIRN_SAMPLES_LINE:
-        return (uint8_t)(2 * a->w - a->ww);
-    case FIRN_SAMPLES_CURVE:
-        return (uint8_t)(3 * (a->w - a->ww) + a->www);
-    case FIRN_SAMPLES_NOTHING:
-        return 0;
-    default:
-        return a->w;
-    }
-}
-
 /* What stands around the channel whose number goes to `to`. */
-static inline struct around look_around(enum firn_samples_predictor predictor, const uint8_t *to, size_t c, size_t row)
+static inline struct firn_samples_predict_around look_around(enum firn_samples_predictor predictor, const uint8_t *to,
+                                                             size_t c, size_t row)
 {
-    bool up = looks_up(predictor), far = predictor == FIRN_SAMPLES_LINE || predictor == FIRN_SAMPLES_CURVE;
+    bool up = firn_samples_predict_looks_up(predictor),
+         far = predictor == FIRN_SAMPLES_LINE || predictor == FIRN_SAMPLES_CURVE;
 
-    return (struct around){ .w = *(to - c), .ww = far ? *(to - 2 * c) : 0, .www = far ? *(to - 3 * c) : 0,
-                            .nw = up ? *(to - row - c) : 0 };
+    return (struct firn_samples_predict_around){
+        .w = *(to - c), .ww = far ? *(to - 2 * c) : 0, .www = far ? *(to - 3 * c) : 0, .nw = up ? *(to - row - c) : 0
+    };
 }
 
 /* Makes the number of a residual, and goes on to the next pixel. */
-static inline void restore_number(enum firn_samples_predictor predictor, struct around *a, uint8_t residual, size_t row,
-                                  uint8_t *to)
+static inline void restore_number(enum firn_samples_predictor predictor, struct firn_samples_predict_around *a,
+                                  uint8_t residual, size_t row, uint8_t *to)
 {
     uint8_t number;
 
-    if (looks_up(predictor))
+    if (firn_samples_predict_looks_up(predictor))
         a->n = *(to - row);
-    number = (uint8_t)(residual + predict_byte(predictor, a));
+    number = (uint8_t)(residual + firn_samples_predict_byte(predictor, a));
     a->www = a->ww;
     a->ww = a->w;
     a->w = number;
@@ -321,7 +228,7 @@ static inline void restore_number(enum firn_samples_predictor predictor, struct 
 
 static inline void restore_one(enum firn_samples_predictor predictor, const struct byte_line *line, size_t from)
 {
-    struct around a = look_around(predictor, line->raw + from, 1, line->row);
+    struct firn_samples_predict_around a = look_around(predictor, line->raw + from, 1, line->row);
 
     for (size_t x = from; x < line->width; x++)
         restore_number(predictor, &a, line->residuals[x], line->row, line->raw + x);
@@ -333,8 +240,9 @@ static inline void restore_three(enum firn_samples_predictor predictor, const st
     const uint8_t *ra = line->residuals, *rb = ra + line->width, *rc = rb + line->width;
     size_t row = line->row, width = line->width;
     uint8_t *to = line->raw + 3 * from, lean = line->lean;
-    struct around a = look_around(predictor, to, 3, row), b = look_around(predictor, to + 1, 3, row),
-                  c = look_around(predictor, to + 2, 3, row);
+    struct firn_samples_predict_around a = look_around(predictor, to, 3, row),
+                                       b = look_around(predictor, to + 1, 3, row),
+                                       c = look_around(predictor, to + 2, 3, row);
 
     for (size_t x = from; x < width; x++, to += 3) {
         uint8_t second = (uint8_t)(rb[x] + (ra[x] & lean)), third = (uint8_t)(rc[x] + (second & lean));
@@ -353,7 +261,7 @@ static inline void restore_many(enum firn_samples_predictor predictor, const str
     uint8_t *residuals = line->residuals;
 
     for (size_t k = 0; k < c; k++) {
-        struct around a = look_around(predictor, line->raw + from * c + k, c, line->row);
+        struct firn_samples_predict_around a = look_around(predictor, line->raw + from * c + k, c, line->row);
 
         for (size_t x = from; x < width; x++) {
             if (k != 0)
@@ -387,16 +295,17 @@ static void restore_first(const struct firn_samples_shape *shape, const struct b
         for (size_t k = 0; k < c; k++) {
             uint8_t *to = line->raw + x * c + k;
             size_t i = at + x * c + k;
-            struct around a = { 0 };
+            struct firn_samples_predict_around a = { 0 };
 
             a.w = i < c ? 0 : *(to - c);
             a.ww = i < 2 * c ? a.w : *(to - 2 * c);
             a.www = i < 3 * c ? 0 : *(to - 3 * c);
             residual = (uint8_t)(line->residuals[k * line->width + x] + (residual & (k == 0 ? 0 : line->lean)));
-            if (looks_up(shape->predictor) || (shape->predictor == FIRN_SAMPLES_CURVE && i < 3 * c))
+            if (firn_samples_predict_looks_up(shape->predictor) ||
+                (shape->predictor == FIRN_SAMPLES_CURVE && i < 3 * c))
                 *to = (uint8_t)(residual + a.w);
             else
-                *to = (uint8_t)(residual + predict_byte(shape->predictor, &a));
+                *to = (uint8_t)(residual + firn_samples_predict_byte(shape->predictor, &a));
         }
     }
 }
@@ -404,7 +313,7 @@ static void restore_first(const struct firn_samples_shape *shape, const struct b
 void firn_samples_restore_line(const struct firn_samples_shape *shape, uint8_t *residuals, size_t width, size_t at,
                                uint8_t *raw)
 {
-    size_t c = shape->channels, edge = looks_up(shape->predictor) ? shape->row / c + 1 : 3, from;
+    size_t c = shape->channels, edge = firn_samples_predict_looks_up(shape->predictor) ? shape->row / c + 1 : 3, from;
     struct byte_line line = { residuals, width, shape->row, shape->lean ? UINT8_MAX : 0, raw };
 
     from = at / c >= edge ? 0 : edge - at / c < width ? edge - at / c : width;

@@ -163,6 +163,10 @@ void firn_samples_store(const struct firn_samples_shape *shape, const int32_t *x
 /* residuals[i] = x[i] - prediction, less the residual of the channel before when they lean. */
 void firn_samples_differ(const struct firn_samples_shape *shape, const int32_t *x, size_t count, int32_t *residuals);
 
+/* The same for numbers of one byte. */
+void firn_samples_differ_bytes(const struct firn_samples_shape *shape, const uint8_t *raw, size_t count,
+                               uint8_t *residuals);
+
 /* And back, into bytes; count is that of whole pixels. x is used up. */
 void firn_samples_restore(const struct firn_samples_shape *shape, size_t count, int32_t *x, uint8_t *raw);
 
@@ -186,6 +190,7 @@ static inline unsigned firn_samples_level(unsigned mean, unsigned above, bool ro
 struct firn_samples_write_work {
     struct firn_cost_logs logs;
     int32_t x[FIRN_SEGMENT_RAW_MAX], residuals[FIRN_SEGMENT_RAW_MAX];
+    uint8_t byte_residuals[FIRN_SEGMENT_RAW_MAX];
     struct firn_samples_lines lines;
     uint8_t tokens[FIRN_SEGMENT_RAW_MAX];          /* in the order of the streams */
     uint16_t contexts[FIRN_SEGMENT_RAW_MAX];

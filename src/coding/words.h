@@ -17,6 +17,17 @@
 
 enum { FIRN_WORDS_NUMBER_BYTES = 3 };  /* of a number below 2^21 */
 
+static inline uint64_t firn_words_swap64(uint64_t v)
+{
+#if defined(__GNUC__)
+    return __builtin_bswap64(v);       /* firn_bytes_get64 is little-endian on every machine */
+#else
+    v = (v & UINT64_C(0x00FF00FF00FF00FF)) << 8 | (v >> 8 & UINT64_C(0x00FF00FF00FF00FF));
+    v = (v & UINT64_C(0x0000FFFF0000FFFF)) << 16 | (v >> 16 & UINT64_C(0x0000FFFF0000FFFF));
+    return v << 32 | v >> 32;
+#endif
+}
+
 /* ---- writing ---- */
 
 struct firn_words_writer {
@@ -25,11 +36,23 @@ struct firn_words_writer {
     unsigned held_bits;
 };
 
-static inline void firn_words_flush(struct firn_words_writer *w)
+static inline void firn_words_flush_end(struct firn_words_writer *w)
 {
     for (; w->held_bits >= 8 && w->at < w->end; w->held_bits -= 8)
         *w->at++ = (uint8_t)(w->held >> (w->held_bits - 8));
     w->held_bits &= 63;                /* no room: what is held is lost, and close says so */
+}
+
+/* Whole bytes go out, where there is room eight at a time, of which some will be written again. */
+static inline void firn_words_flush(struct firn_words_writer *w)
+{
+    if (w->end - w->at < 8) {
+        firn_words_flush_end(w);
+    } else if (w->held_bits > 0) {
+        firn_bytes_put64(w->at, firn_words_swap64(w->held << (64 - w->held_bits)));
+        w->at += w->held_bits / 8;
+        w->held_bits %= 8;
+    }
 }
 
 /* count <= 32, and value has no more bits */
@@ -79,17 +102,6 @@ struct firn_words_reader {
     const uint8_t *at, *end;
     uint64_t bits;                     /* 1 to begin with */
 };
-
-static inline uint64_t firn_words_swap64(uint64_t v)
-{
-#if defined(__GNUC__)
-    return __builtin_bswap64(v);       /* firn_bytes_get64 is little-endian on every machine */
-#else
-    v = (v & UINT64_C(0x00FF00FF00FF00FF)) << 8 | (v >> 8 & UINT64_C(0x00FF00FF00FF00FF));
-    v = (v & UINT64_C(0x0000FFFF0000FFFF)) << 16 | (v >> 16 & UINT64_C(0x0000FFFF0000FFFF));
-    return v << 32 | v >> 32;
-#endif
-}
 
 static inline unsigned firn_words_trailing_zeros(uint64_t v)           /* v is not 0 */
 {
