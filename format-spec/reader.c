@@ -196,13 +196,12 @@ static struct pair hash_middle(const byte *x, size_t n)     /* section 7: 17 to 
         for (i = (unsigned)(n - 1) / 32 + 1; i-- > 0;)
             take_two(&a, &b, x, 16 * i, n - 16 * i - 16, 32 * i);
     } else {
-        for (i = 0; i < n / 32; i++) {
-            if (i == 4) {
-                a = mix(a);
-                b = mix(b);
-            }
-            take_two(&a, &b, x, 32 * i, 32 * i + 16, i < 4 ? 32 * i : 32 * i - 125);
-        }
+        for (i = 0; i < 4; i++)
+            take_two(&a, &b, x, 32 * i, 32 * i + 16, 32 * i);
+        a = mix(a);
+        b = mix(b);
+        for (; i < n / 32; i++)
+            take_two(&a, &b, x, 32 * i, 32 * i + 16, 32 * i - 125);
         take_two(&a, &b, x, n - 16, n - 32, 103);
     }
     h.low = mix(a + b);

@@ -292,7 +292,7 @@ static void title_pages(void **state)
     const char *wrong;
     size_t columns = 0;
 
-    assert_int_equal(firn_title_write(&title, &geometry, page, &wrong), FIRN_OK);
+    assert_int_equal(firn_title_write(&title, &geometry, NULL, page, &wrong), FIRN_OK);
     assert_true(firn_title_looks_right(page));
     for (size_t i = 0; i < FIRN_TITLE_PAGE_BYTES; i++) {
         columns = page[i] == '\n' ? 0 : columns + 1;
@@ -303,10 +303,10 @@ static void title_pages(void **state)
     assert_non_null(strstr((char *)page, "\n  packed on   1970-01-01T00:00:00Z\n"));
     assert_non_null(strstr((char *)page, "k = 224 data and m = 32 reserve"));
     title.note = "bell \a";
-    assert_int_equal(firn_title_write(&title, &geometry, page, &wrong), FIRN_BAD_ARGUMENT);
+    assert_int_equal(firn_title_write(&title, &geometry, NULL, page, &wrong), FIRN_BAD_ARGUMENT);
     assert_string_equal(wrong, "note");
     title.note = "no utf-8 \xE9";
-    assert_int_equal(firn_title_write(&title, &geometry, page, &wrong), FIRN_BAD_ARGUMENT);
+    assert_int_equal(firn_title_write(&title, &geometry, NULL, page, &wrong), FIRN_BAD_ARGUMENT);
     (void)state;
 }
 
