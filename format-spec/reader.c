@@ -13,7 +13,7 @@
  *     reader FILE -x FOLDER     writes the files into FOLDER, which must be there, each under its number and the last
  *                               part of its name, for standard C can make no folders: the list has the whole name.
  *                               Damaged files are written too, with zeros for what is lost, and .damaged behind the
- *                               name. The specification and the source of this program come along.
+ *                               name. Title page, specification and the source of this program come along.
  *
  * It never writes to FILE, and over nothing that is there. Exit status: 0 all is intact; 1 there is damage, and every
  * byte was brought back; 2 bytes are lost, and it says which; 64 and up: it could not work.
@@ -1065,7 +1065,7 @@ static bool decode_segment(const byte *coded, size_t bytes, byte *raw, size_t n)
 
 /* ---- stream.md and catalogue.md: which records there are ------------------------------------------------------- */
 
-enum { SPEC = 2, READER = 3, BATCH = 4, SEGMENT = 5, SUMS = 6, INDEX = 7, COLOPHON = 8, BODY_MAX = 1 << 24 };
+enum { TITLE = 1, SPEC = 2, READER = 3, BATCH = 4, SEGMENT = 5, SUMS = 6, INDEX = 7, COLOPHON = 8, BODY_MAX = 1 << 24 };
 
 static void add(struct list *list, uint64_t key, uint64_t at, uint64_t bytes, uint64_t raw)
 {
@@ -1137,7 +1137,7 @@ static void note_record(struct container *c, unsigned type, uint64_t at, uint64_
 {
     byte head[32];
     if (bytes < 32 || bytes > BODY_MAX || (type == INDEX && bytes < 80)) return;
-    if (type == SPEC || type == READER)
+    if (type == TITLE || type == SPEC || type == READER)
         add(&c->texts, type, at, bytes, 0);
     else if (type == BATCH && bytes >= 40 && read_stream(c, at, head, 32))
         add(&c->batches, get(head + 16, 8), at, bytes, 0);
@@ -1642,21 +1642,30 @@ static void do_items(struct container *c, struct task *task)
         miss(task, next, c->items_told);
 }
 
+/* The title page, the specification, the source of this program: into the folder, or only read. */
 static void do_texts(struct container *c, struct task *task)
 {
     for (size_t i = 0; i < c->texts.count && !task->failed; i++) {
         const struct ref *ref = &c->texts.refs[i];
         char path[4096];
-        snprintf(path, sizeof path, "%s/%s", task->path, ref->key == SPEC ? "specification.txt" : "reader.c");
+        snprintf(path, sizeof path, "%s/%s", task->path == NULL ? "" : task->path,
+                 ref->key == TITLE ? "title.txt" : ref->key == SPEC ? "specification.txt" : "reader.c");
         byte *text = room(NULL, ref->bytes);
         bool whole = read_stream(c, ref->at, text, ref->bytes);
-        FILE *file = new_file(task, path);
+        FILE *file = task->mode == 'x' ? new_file(task, path) : NULL;
         if (file != NULL) {
             task->failed |= fwrite(text, 1, ref->bytes, file) != ref->bytes;
             end_file(task, file);
         }
-        printf("%s%s\n", path, whole ? "" : " HAS GAPS");
+        if (file != NULL || !whole)
+            printf("%s%s\n", path, whole ? "" : " HAS GAPS");
         task->lost += !whole;
+        byte page[BLOCK];
+        if (ref->key == TITLE && whole && ref->bytes == BLOCK &&
+            (!read_at(c, 0, page, BLOCK) || memcmp(page, text, BLOCK) != 0)) {
+            printf("the title page is damaged; -x writes it as it was\n");
+            c->damaged = true;
+        }
         free(text);
     }
 }
@@ -1665,12 +1674,13 @@ static int run(struct container *c, struct task *task)
 {
     static const byte zeros[1024];
     do_items(c, task);
-    if (task->mode == 'x')
+    if (task->mode == 'x' || task->mode == 'c')
         do_texts(c, task);
     if (task->mode == 't') {
         task->failed |= fwrite(zeros, 1, sizeof zeros, task->out) != sizeof zeros;
         end_file(task, task->out);
     }
+    bool whole = task->lost + task->unknown == 0 && c->colophon_there;
     printf("%" PRIu64 " items", task->items);
     if (task->lost > 0)
         printf("; %" PRIu64 " ARE NOT WHOLE", task->lost);
@@ -1679,15 +1689,17 @@ static int run(struct container *c, struct task *task)
     if (!c->colophon_there)
         printf("; the end is lost, so THERE MAY HAVE BEEN MORE");
     if (c->damaged)
-        printf("; damaged blocks were met");
+        printf("; damaged blocks were met%s", whole ? " and mended" : "");
     printf("\n");
     if (task->failed) return CANNOT_CREATE;
-    return task->lost + task->unknown > 0 || !c->colophon_there ? LOSS : c->damaged ? SAFE : 0;
+    return !whole ? LOSS : c->damaged ? SAFE : 0;
 }
 
 int main(int count, char **words)
 {
-    struct task task = { .mode = count > 2 && words[2][0] == '-' ? words[2][1] : 'l', .path = count > 3 ? words[3] : NULL };
+    struct task task = { .mode = 'l', .path = count > 3 ? words[3] : NULL };
+    if (count > 2 && words[2][0] == '-')
+        task.mode = words[2][1];
     if (count < 2 || strchr("lctx", task.mode) == NULL || (count > 2 && strlen(words[2]) != 2) ||
         count != (task.mode == 'l' ? 2 : task.mode == 'c' ? 3 : 4)) {
         fprintf(stderr, "usage: reader FILE [-c | -t ARCHIVE | -x FOLDER]\n");
