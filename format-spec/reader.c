@@ -1275,15 +1275,16 @@ static void read_extended(struct item *item, const char *at, size_t left)
             length = 10 * length + (size_t)(at[digits] - '0');
         const char *key = at + digits + 1;
         if (digits == 0 || length > left || length < digits + 3) return;
-        const char *value = memchr(key, '=', length - digits - 2), *end = at + length - 1;
-        if (value++ == NULL) return;
-        if (is_key(key, value - 1, "path")) {
+        const char *equals = memchr(key, '=', length - digits - 2), *end = at + length - 1;
+        if (equals == NULL) return;
+        const char *value = equals + 1;
+        if (is_key(key, equals, "path")) {
             item->path = value;
             item->path_bytes = (size_t)(end - value);
-        } else if (is_key(key, value - 1, "linkpath")) {
+        } else if (is_key(key, equals, "linkpath")) {
             item->link = value;
             item->link_bytes = (size_t)(end - value);
-        } else if (is_key(key, value - 1, "mtime")) {
+        } else if (is_key(key, equals, "mtime")) {
             item->seconds = seconds_of(value, (size_t)(end - value));
         }
         at += length;
