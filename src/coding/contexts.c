@@ -29,18 +29,35 @@ static uint64_t price_of(const struct firn_contexts_work *w, size_t context, con
     return sum;
 }
 
+/* Eight counts at once: most contexts have few symbols. */
+static inline bool are_absent(const uint32_t counts[8])
+{
+    uint32_t any = 0;
+
+    for (size_t k = 0; k < 8; k++)
+        any |= counts[k];
+    return any == 0;
+}
+
 static void gather(const uint32_t *counts, size_t contexts, size_t symbols, struct firn_contexts_work *w)
 {
     uint32_t made = 0;
 
     memset(w->sums[0], 0, sizeof w->sums[0]);
     for (size_t c = 0; c < contexts; c++) {
+        const uint32_t *row = counts + c * symbols;
+
         w->starts[c] = made;
-        for (size_t s = 0; s < symbols; s++)
-            if (counts[c * symbols + s] != 0) {
-                w->pairs[made++] = (struct firn_contexts_pair){ counts[c * symbols + s], (uint16_t)s };
-                w->sums[0][s] += counts[c * symbols + s];
+        for (size_t s = 0; s < symbols; s++) {
+            if (s + 8 <= symbols && are_absent(row + s)) {
+                s += 7;
+                continue;
             }
+            if (row[s] != 0) {
+                w->pairs[made++] = (struct firn_contexts_pair){ row[s], (uint16_t)s };
+                w->sums[0][s] += row[s];
+            }
+        }
     }
     w->starts[contexts] = made;
 }
@@ -290,6 +307,17 @@ uint64_t firn_contexts_make(const struct firn_cost_logs *logs, const uint32_t *c
         bits += firn_table_cost_bits_of(made->lengths[t], symbols) +
                 firn_prefix_cost_bits(work->sums[t], made->lengths[t], symbols);
     return bits + map_cost_bits(made, contexts);
+}
+
+uint64_t firn_contexts_make_one(const uint32_t *counts, size_t contexts, size_t symbols, unsigned limit,
+                                struct firn_contexts *made, struct firn_contexts_work *work)
+{
+    memcpy(work->sums[0], counts, symbols * sizeof *counts);
+    memset(made->map, 0, contexts);
+    made->tables = 1;
+    make_codes(symbols, limit, made, work);
+    return firn_table_cost_bits_of(made->lengths[0], symbols) +
+           firn_prefix_cost_bits(work->sums[0], made->lengths[0], symbols) + map_cost_bits(made, contexts);
 }
 
 /* ---- the map written down ---- */

@@ -178,7 +178,10 @@ enum firn_status firn_table_read_of(struct firn_bits_reader *reader, uint8_t *le
             return FIRN_BAD_DATA;                   /* under-full: the symbols end before the code does */
         if (length != 0)
             filled += count << (FIRN_TABLE_LENGTH_LIMIT - length);
-        memset(lengths + s, (int)length, count);
+        if (count == 1)                            /* nearly always */
+            lengths[s] = (uint8_t)length;
+        else
+            memset(lengths + s, (int)length, count);
         s += count;
         last = length;
     }
