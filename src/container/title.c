@@ -119,7 +119,8 @@ void firn_title_layout(const struct firn_sheet_geometry *g, struct firn_text *te
  * them. A payload is 31 times 128 bytes, so dd needs no more than that. In a sheet of few data blocks the loop has to
  * pass over the reserve.
  */
-static void put_commands(struct firn_text *text, const struct firn_sheet_geometry *g, const struct firn_title_texts *texts)
+static void put_commands(struct firn_text *text, const struct firn_sheet_geometry *g,
+                         const struct firn_title_texts *texts)
 {
     uint64_t specification_at = firn_record_span(FIRN_TITLE_PAGE_BYTES) + FIRN_RECORD_HEADER_BYTES;
     uint64_t reader_at = specification_at + firn_record_span(texts->specification_bytes);

@@ -64,8 +64,8 @@ static inline size_t pages_labelled(const char *text, const char *label, uint8_t
 }
 
 /*
- * Numbers of one row of a table, "| 1 | 2 .. 3 | ...": the first number of each cell, or -1 where there is none. How many
- * cells.
+ * Numbers of one row of a table, "| 1 | 2 .. 3 | ...": the first number of each cell, or -1 where there is none. How
+ * many cells.
  */
 static inline size_t pages_row(const char *line, long *numbers, size_t room)
 {

@@ -1,4 +1,4 @@
-/* tests/spec/tiny_sheets.c - writes a container with sheets of four data blocks and the carried texts: tiny_sheets FILE */
+/* tests/spec/tiny_sheets.c - writes a container with the carried texts and sheets of four data blocks: tiny_sheets F */
 /* SPDX-License-Identifier: BSD-2-Clause */
 #include "firn/writer.h"
 
