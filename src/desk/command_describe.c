@@ -251,6 +251,8 @@ static int run(const struct firn_args *args, struct firn_view *view)
 
     if (args->operand_count != 1)
         return firn_trouble_usage(view, "FILE", "name one container");
+    if (args->given[PAGE] + args->given[SPEC] + args->given[READER] > 1)
+        return firn_trouble_usage(view, "--page, --spec, --reader", "print one text each: choose one");
     container = args->operands[0];
     exit = firn_opening_make(&opening, container, args, view);
     if (exit != FIRN_EXIT_SOUND)
@@ -283,7 +285,9 @@ const struct firn_command firn_command_describe = {
     .about = "Layout, protection, identity and totals. With --tables also every code: for each\n"
              "stretch of content the symbols by code length, and what the code costs beside\n"
              "the entropy of its bytes each for itself, in bits for each byte of content;\n"
-             "matches and contexts go below that.\n",
+             "matches and contexts go below that.\n\n"
+             "A container carries the specification of its format and the source of a reader\n"
+             "for those who have no firn; --spec and --reader print them.\n",
     .example = "  firn describe quay-1931.firn\n",
     .options = options, .option_count = sizeof options / sizeof options[0], .run = run
 };

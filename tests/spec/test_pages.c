@@ -346,6 +346,34 @@ static void segments(void **state)
     free(text);
 }
 
+/* segment.md, "Small examples": each row of the table */
+static void small_examples(void **state)
+{
+    char *text = page("segment.md"), *line = strstr(text, "\n## Small examples\n");
+    unsigned seen = 0;
+
+    (void)state;
+    assert_non_null(line);
+    line = strstr(line, "\n| stored |");
+    assert_non_null(line);
+    for (line++; *line == '|'; line = strchr(line, '\n') + 1) {
+        byte raw[16], coded[64], got[16];
+        char *first = strchr(line, '`'), *second = strchr(strchr(first + 1, '`') + 1, '`');
+        size_t raw_bytes = pages_hex(first + 1, raw, sizeof raw);
+        size_t coded_bytes = pages_hex(second + 1, coded, sizeof coded);
+
+        for (int library = 0; library < 2; library++) {
+            memset(got, 0, sizeof got);
+            assert_true((library ? library_decodes : decode_segment)(coded, coded_bytes, got, raw_bytes));
+            assert_memory_equal(got, raw, raw_bytes);
+            assert_false((library ? library_decodes : decode_segment)(coded, coded_bytes - 1, got, raw_bytes));
+        }
+        seen++;
+    }
+    assert_int_equal(seen, 4);
+    free(text);
+}
+
 /* segment.md, "An example of stretches": the bytes as printed */
 static void segment_of_the_page(void **state)
 {
@@ -402,7 +430,8 @@ int main(void)
         cmocka_unit_test(hashes), cmocka_unit_test(secret), cmocka_unit_test(digests),
         cmocka_unit_test(block_of_the_page), cmocka_unit_test(shapes), cmocka_unit_test(rows_of_the_vectors),
         cmocka_unit_test(row_of_the_page), cmocka_unit_test(record_headers), cmocka_unit_test(catalogue),
-        cmocka_unit_test(segments), cmocka_unit_test(segment_of_the_page), cmocka_unit_test(tables_of_the_page),
+        cmocka_unit_test(segments), cmocka_unit_test(small_examples),
+        cmocka_unit_test(segment_of_the_page), cmocka_unit_test(tables_of_the_page),
     };
 
     return cmocka_run_group_tests_name("the specification", tests, NULL, NULL);
