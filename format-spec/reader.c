@@ -20,6 +20,7 @@
  */
 #define _FILE_OFFSET_BITS 64 /* some systems open files of more than 2 GiB only then; others do not mind */
 #include <inttypes.h>
+#include <limits.h>
 #include <stdbool.h>
 #include <stdio.h>
 #include <stdlib.h>
@@ -366,7 +367,7 @@ struct list { struct ref *refs; size_t count, room; };
 
 struct container {
     FILE *file;
-    uint64_t file_at, blocks;               /* where the file stands; blocks that begin in it */
+    uint64_t blocks;                        /* that begin in the file */
     struct tag known;                       /* of the first sound block */
     uint64_t sheet_blocks, sheet_data;      /* of a full sheet */
     uint64_t stream_bytes;
@@ -387,36 +388,16 @@ struct container {
 
 static byte gone[1]; /* stands for a payload that cannot be rebuilt */
 
-/* Standard C tells places in a long, which may be too short; steps from where the file stands always do. */
-static bool go_to(struct container *c, uint64_t at)
-{
-    const long step = 0x40000000;
-    if (at < c->file_at && c->file_at - at <= (uint64_t)step) {
-        if (fseek(c->file, -(long)(c->file_at - at), SEEK_CUR) != 0) return false;
-        c->file_at = at;
-    } else if (at < c->file_at) {
-        rewind(c->file);
-        c->file_at = 0;
-    }
-    while (c->file_at < at) {
-        long go = (long)lesser(at - c->file_at, (uint64_t)step);
-        if (fseek(c->file, go, SEEK_CUR) != 0) return false;
-        c->file_at += (uint64_t)go;
-    }
-    return true;
-}
-
+/* Standard C tells places in a long, which may be too short; then it takes several steps. */
 static bool read_at(struct container *c, uint64_t at, byte *to, size_t bytes)
 {
-    if (!go_to(c, at)) return false;
-    size_t got = fread(to, 1, bytes, c->file);
-    c->file_at += got;
-    if (got < bytes && ferror(c->file)) { /* the medium failed: nobody knows where the file stands now */
-        rewind(c->file);
-        c->file_at = 0;
+    uint64_t step = lesser(at, LONG_MAX);
+    bool there = fseek(c->file, (long)step, SEEK_SET) == 0;
+    for (at -= step; there && at > 0; at -= step) {
+        step = lesser(at, LONG_MAX);
+        there = fseek(c->file, (long)step, SEEK_CUR) == 0;
     }
-    clearerr(c->file);
-    return got == bytes;
+    return there && fread(to, 1, bytes, c->file) == bytes;
 }
 
 /* block.md, section 4. True when the block of this number was read sound or mended, and belongs here. */

@@ -309,7 +309,7 @@ static void title_pages(void **state)
         columns = page[i] == '\n' ? 0 : columns + 1;
         assert_true(columns <= 80);
     }
-    /* 4128 + 32 is where the body of SPEC begins; 100 000 bytes of it and READER's header end at 104 192, 3256 times 32 */
+    /* the body of SPEC begins at 4128 + 32; 100 000 bytes of it and READER's header end at 104 192, 3256 times 32 */
     assert_non_null(strstr((char *)page, "skip=130 | head -c 100000 >specification.txt\n"));
     assert_non_null(strstr((char *)page, "skip=3256 | head -c 70000 >reader.c\n"));
     assert_non_null(strstr((char *)page, "while [ $n -lt 44 ]"));       /* (104 192 + 70 000) / 3968, rounded up */
