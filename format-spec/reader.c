@@ -1447,7 +1447,11 @@ static bool give_content(struct container *c, struct task *task, const struct it
         }
     }
     give(task, out, sha, NULL, item->size - at);
-    if (sha == NULL) return false;
+    if (sha == NULL) {
+        if (!sum_of(c, item->number, sum))
+            printf("    it has no SHA-256 either: perhaps its source failed while the container was made\n");
+        return false;
+    }
     sha_end(sha, digest);
     bool known = sum_of(c, item->number, sum), good = !known || memcmp(digest, sum, 32) == 0;
     if (!known)
