@@ -12,7 +12,7 @@
 
 enum {
     HEAD_BYTES = FIRN_CANDIDATES_HEAD_BYTES,
-    PASSES = 3,                        /* of parse and codes in turn */
+    PASSES = 4,                        /* of parse and codes in turn */
     TRIES_THOROUGH = 48,
     TRIES_NORMAL = 12,
     QUICK_TABLES = 6,                  /* of numbers */
@@ -20,7 +20,8 @@ enum {
     BRANCH_EVERY_BYTES = 200,          /* at least one turned in so many, and it is code */
     TRIAL_BYTES = 1 << 16,             /* of what looks hopeless, so much is tried before the rest is */
     HOPELESS = 505,                    /* 1/64 bits a byte */
-    REPEATED_LEAST = 64                /* one byte in so many must lie in a repeat */
+    REPEATED_LEAST = 64,               /* one byte in so many must lie in a repeat */
+    LITTLE = 32                        /* one bit of so many bytes */
 };
 
 static size_t cell_bytes_of(enum firn_segment_effort effort)
@@ -67,8 +68,12 @@ static uint64_t parse_well(const uint8_t *bytes, size_t raw_bytes, size_t *count
     firn_repeats_find(bytes, raw_bytes, FIRN_PARSE_REACH, TRIES_THOROUGH, &w->find.repeats);
     firn_parse_guess(&w->logs, bytes, raw_bytes, &w->parse.prices);
     for (unsigned pass = 0; pass < PASSES; pass++) {
-        *count = firn_parse(bytes, raw_bytes, &w->find.repeats, w->commands, &w->parse);
+        unsigned ways = pass + 1 < PASSES ? 1 : FIRN_PARSE_WAYS;       /* prices settle as well with one */
+
+        *count = firn_parse(bytes, raw_bytes, &w->find.repeats, ways, w->commands, &w->parse);
         bits = firn_matched_make_codes(bytes, w->commands, *count, &w->matched);
+        if (bits > 8 * (uint64_t)raw_bytes - raw_bytes / LITTLE)
+            break;                     /* there is next to nothing to gain */
         firn_parse_learn(&w->matched, &w->parse.prices);
     }
     return bits;
@@ -107,6 +112,16 @@ size_t firn_candidates_matched(const uint8_t *raw, size_t raw_bytes, enum firn_s
     }
     plan_matched(bytes, raw_bytes, effort, &count, w);
     return write_matched(bytes, raw_bytes, transform, count, coded, w);
+}
+
+/* Nearly all of what texts are made of; then a glance must tell that there are numbers. */
+static bool is_text(const uint8_t *raw, size_t raw_bytes)
+{
+    size_t others = 0;
+
+    for (size_t i = 0; i < raw_bytes; i++)
+        others += (raw[i] < 32 && raw[i] != 9 && raw[i] != 10 && raw[i] != 13) | (raw[i] > 126);
+    return others < raw_bytes / 32;
 }
 
 /* Keeps what stands in w->room when it is smaller than what was best. */
@@ -210,7 +225,7 @@ size_t firn_candidates_best(const uint8_t *raw, size_t raw_bytes, enum firn_segm
         return 0;
     firn_cost_prepare(&w->logs);
     price = plain_price(&w->logs, raw, raw_bytes);
-    if (firn_survey(&w->logs, raw, raw_bytes, thorough, &shape, &w->other.survey) < price) {
+    if (firn_survey(&w->logs, raw, raw_bytes, thorough && !is_text(raw, raw_bytes), &shape, &w->other.survey) < price) {
         samples = write_samples(raw, raw_bytes, &shape, quick ? QUICK_TABLES : FIRN_CONTEXTS_TABLES_MAX, w->room, w);
         keep(samples, &best, coded, w);
     }
