@@ -646,7 +646,7 @@ static unsigned gamma_word(struct bits *b)
     return take(b, zeros + 1);
 }
 
-enum { WORD_BITS = 11, WORDS = 1 << WORD_BITS, CODES = 16, CONTEXTS = 512, SYMBOLS = 512 };
+enum { WORD_BITS = 11, WORDS = 1 << WORD_BITS, CODES = 16, CONTEXTS = 512, SYMBOLS = 512, TOKENS = 14 };
 
 struct code { unsigned short symbol[WORDS]; byte length[WORDS]; }; /* by the next 11 bits; length 0: no word */
 
@@ -687,14 +687,12 @@ static void read_token_code(struct bits *b, struct code *code, unsigned tokens) 
     b->bad |= full != WORDS && !(used == 1 && full == WORDS / 2);
 }
 
-static void read_table(struct bits *b, struct code *code, unsigned symbols)
+static void read_table(struct bits *b, const struct code *tokens, struct code *code, unsigned symbols)
 {
-    static struct code tokens;
     byte lengths[SYMBOLS] = { 0 };
     unsigned symbol = 0, before = 0, full = 0;
-    read_token_code(b, &tokens, 14);
     while (!b->bad && full < WORDS) {
-        unsigned token = decode(b, &tokens), times = token < 12 ? 1 : gamma_word(b) + 1;
+        unsigned token = decode(b, tokens), times = token < 12 ? 1 : gamma_word(b) + 1;
         before = token < 12 ? token : token == 12 ? 0 : before;
         if (b->bad || (token == 13 && before == 0) || times > symbols - symbol) {
             b->bad = true;
@@ -725,8 +723,9 @@ static void read_codes(struct bits *b, struct codes *codes, unsigned contexts, u
                 codes->of[context] = same ? codes->of[context - 1] : (byte)token;
         }
     }
+    read_token_code(b, &tokens, TOKENS); /* once for all tables */
     for (unsigned i = 0; i < codes->count && !b->bad; i++)
-        read_table(b, &codes->code[i], symbols);
+        read_table(b, &tokens, &codes->code[i], symbols);
 }
 
 static unsigned decode_in(struct bits *b, const struct codes *codes, unsigned context)
@@ -738,10 +737,11 @@ static unsigned decode_in(struct bits *b, const struct codes *codes, unsigned co
 
 static bool prefix_stretch(struct bytes *in, unsigned streams, bool last, byte *raw, size_t n)
 {
-    static struct code code;
+    static struct code tokens, code;
     struct bits table = cut_bits(in, in->left);
     size_t sizes[6] = { 0 };
-    read_table(&table, &code, 256);
+    read_token_code(&table, &tokens, TOKENS);
+    read_table(&table, &tokens, &code, 256);
     end_bits(in, &table);
     for (unsigned i = 0; i < (last ? streams - 1 : streams); i++) {
         sizes[i] = number(in);
