@@ -147,17 +147,17 @@ static uint32_t plain_price(const struct firn_cost_logs *logs, const uint8_t *ra
     return (uint32_t)(sum / raw_bytes);
 }
 
-/* Whether a piece out of the middle hardly repeats anything: then the rest, which looks alike, is not tried either. */
+/* Whether hardly anything is repeated: then a better search is spared. Files of which there are two are found. */
 static bool is_hopeless(const uint8_t *raw, size_t raw_bytes, struct firn_candidates_work *w)
 {
     size_t count, repeated = 0;
 
-    if (raw_bytes < 4 * TRIAL_BYTES)
+    if (raw_bytes < TRIAL_BYTES)
         return false;
-    count = firn_hasty_parse(raw + raw_bytes / 2, TRIAL_BYTES, 1, w->commands, &w->find.hasty);
+    count = firn_hasty_parse(raw, raw_bytes, 1, w->commands, &w->find.hasty);
     for (size_t i = 0; i < count; i++)
         repeated += w->commands[i].length;
-    return repeated < TRIAL_BYTES / REPEATED_LEAST;
+    return repeated < raw_bytes / REPEATED_LEAST;
 }
 
 /* Whether matches are far behind numbers, which came to `samples` bytes, in a piece out of the middle. */
@@ -221,7 +221,7 @@ size_t firn_candidates_best(const uint8_t *raw, size_t raw_bytes, enum firn_segm
     size_t best = 0, samples = 0;
     uint32_t price;
 
-    if (firn_sample_is_even(raw, raw_bytes))
+    if (quick && firn_sample_is_even(raw, raw_bytes))
         return 0;
     firn_cost_prepare(&w->logs);
     price = plain_price(&w->logs, raw, raw_bytes);
