@@ -14,7 +14,8 @@
  * Correlation c: with probability c the copies share one fate, else each has its own.
  *
  * What is not in it, and makes things better than told: mending of lanes with two wrong bits, decoding of rows beyond
- * m byte by byte, collating row by row out of blocks of several copies, rows that lack a data block. What makes them
+ * m byte by byte, collating row by row out of blocks of several copies, rows that lack a data block. Rows of a sheet
+ * that one long run takes together count as if each had its own, up to D times. What makes them
  * worse: ageing (rates are constant), mistakes, fire, theft, a firm that closes, faults of programs. So a very small
  * figure says only that this cause is not what will lose the collection.
  *
@@ -160,5 +161,38 @@ struct firn_forecast_result {
 /* FIRN_OK or FIRN_BAD_ARGUMENT. */
 FIRN_API enum firn_status firn_forecast_run(const struct firn_forecast_medium *medium,
                                             const struct firn_forecast_plan *plan, struct firn_forecast_result *result);
+
+/* --- choosing --- */
+
+enum { FIRN_FORECAST_CHOICES = 10 };
+
+struct firn_forecast_cell {
+    double ln_lost;          /* ln P(anything is lost) */
+    double ln_rows;          /* of it, beyond m blocks of a row while a medium is left */
+    double cost;             /* a year, for each byte of content: copies, their size, and how often they are read */
+    bool meets;              /* ln_lost is at most the target */
+};
+
+/*
+ * Reserves beside intervals. What is asked for stands in the first fields; the rest is filled in. Keeping a byte for a
+ * year costs `keep`, checking it once `check`.
+ */
+struct firn_forecast_table {
+    unsigned reserve_count, interval_count;                     /* 1 .. FIRN_FORECAST_CHOICES */
+    struct firn_sheet_geometry geometries[FIRN_FORECAST_CHOICES];
+    double intervals[FIRN_FORECAST_CHOICES];                    /* years; INFINITY: never */
+    double ln_target;                                           /* -INFINITY: none */
+    double keep, check;                                         /* >= 0 */
+
+    struct firn_forecast_cell cells[FIRN_FORECAST_CHOICES][FIRN_FORECAST_CHOICES];      /* reserve, interval */
+    double ln_medium[FIRN_FORECAST_CHOICES];                    /* by interval: every copy's medium lost */
+    bool found;                                                 /* some choice meets the target */
+    unsigned best_reserve, best_interval;                       /* the cheapest that does; the safer of two as cheap */
+};
+
+/* plan: everything but geometry and interval. FIRN_OK or FIRN_BAD_ARGUMENT. */
+FIRN_API enum firn_status firn_forecast_table_fill(const struct firn_forecast_medium *medium,
+                                                   const struct firn_forecast_plan *plan,
+                                                   struct firn_forecast_table *table);
 
 #endif

@@ -5,7 +5,7 @@
  * its intervals one after another, each beginning with sound copies, and a shorter one at the end.
  * SPDX-License-Identifier: BSD-2-Clause
  */
-#include "firn/forecast.h"
+#include "care/forecast_outline.h"
 
 #include "care/forecast_log.h"
 #include "firn/block.h"
@@ -36,6 +36,7 @@ struct work {
     const struct firn_forecast_plan *plan;
     struct firn_forecast_result *result;
     struct shelf shelves[2];
+    bool outline;                               /* causes that only explain are left out */
 };
 
 /* ln(1 - e^-x): an event of constant rate happens */
@@ -144,6 +145,8 @@ static void run_interval(const struct work *w, double years, struct interval *in
         struct row_losses losses;
 
         interval->ln_lost[cause] = interval->ln_share[cause] = -INFINITY;
+        if (w->outline && cause != FIRN_FORECAST_ROWS)
+            continue;
         lose_rows(w, kinds[cause].ln_alone, kinds[cause].ln_bad, &losses);
         for (unsigned kept = 1; kept <= w->plan->copies; kept++) {
             double ln_kept = ln_media_kept(w->plan, medium, kept), ln_lost, ln_share;
@@ -205,6 +208,7 @@ static double latent_years(const struct work *w, double years)
 
     one.copies = 1;
     alone.plan = &one;
+    alone.outline = true;
     run_interval(&alone, years, &interval);
     /* rows are counted where the medium is kept: given that it is */
     return years / -firn_forecast_log_not(fmin(interval.ln_lost[FIRN_FORECAST_ROWS] + w->medium->loss * years, 0));
@@ -268,11 +272,11 @@ static bool plan_valid(const struct firn_forecast_plan *plan)
            plan->correlation >= 0 && plan->correlation <= 1;
 }
 
-enum firn_status firn_forecast_run(const struct firn_forecast_medium *medium, const struct firn_forecast_plan *plan,
-                                   struct firn_forecast_result *result)
+static enum firn_status forecast(const struct firn_forecast_medium *medium, const struct firn_forecast_plan *plan,
+                                 bool outline, struct firn_forecast_result *result)
 {
     struct firn_forecast_medium checked = *medium;
-    struct work w = { .medium = medium, .plan = plan, .result = result };
+    struct work w = { .medium = medium, .plan = plan, .result = result, .outline = outline };
 
     *result = (struct firn_forecast_result){ .data_blocks = 0 };
     for (unsigned figure = 0; figure < FIRN_FORECAST_FIGURES; figure++)
@@ -281,6 +285,19 @@ enum firn_status firn_forecast_run(const struct firn_forecast_medium *medium, co
     if (!plan_valid(plan) || lay_out(&w) != FIRN_OK)
         return FIRN_BAD_ARGUMENT;
     run_years(&w);
-    look_around(&w);
+    if (!outline)
+        look_around(&w);
     return FIRN_OK;
+}
+
+enum firn_status firn_forecast_run(const struct firn_forecast_medium *medium, const struct firn_forecast_plan *plan,
+                                   struct firn_forecast_result *result)
+{
+    return forecast(medium, plan, false, result);
+}
+
+enum firn_status firn_forecast_outline(const struct firn_forecast_medium *medium,
+                                       const struct firn_forecast_plan *plan, struct firn_forecast_result *result)
+{
+    return forecast(medium, plan, true, result);
 }
