@@ -139,6 +139,7 @@ enum firn_forecast_cause {
     FIRN_FORECAST_RUNS,          /* more than m in unreadable runs */
     FIRN_FORECAST_READING,       /* more than m not read for read errors */
     FIRN_FORECAST_ROWS,          /* more than m for all of these together */
+    FIRN_FORECAST_LAST_SHEET,    /* of these, rows of a short last sheet: its few rows lie close, so a run takes them */
     FIRN_FORECAST_MEDIUM,        /* every copy's medium lost */
     FIRN_FORECAST_ANY,
     FIRN_FORECAST_CAUSES

@@ -19,7 +19,9 @@ enum {
     SEGMENT_BLOCKS = (SEGMENT_BYTES + FIRN_BLOCK_PAYLOAD_BYTES - 1) / FIRN_BLOCK_PAYLOAD_BYTES + 1
 };
 
-/* Sheets of one shape. */
+/* Sheets of one shape: the full ones, and a short last one. */
+enum { ALL_SHELVES = 0, LAST_SHELF = 1 };
+
 struct shelf {
     struct firn_sheet_shape shape;
     double sheets;
@@ -111,11 +113,11 @@ static void lose_rows(const struct work *w, double ln_alone, double ln_bad, stru
  * Rows lost in every one of `copies` media, and the share of bytes that goes with them. Losses of neighbouring rows go
  * together, so taking rows as independent tells too much, never too little; the same holds for blocks of a segment.
  */
-static void meet_copies(const struct work *w, const struct row_losses *losses, unsigned copies, double *ln_lost,
-                        double *ln_share)
+static void meet_copies(const struct work *w, const struct row_losses *losses, unsigned first_shelf, unsigned copies,
+                        double *ln_lost, double *ln_share)
 {
     *ln_lost = *ln_share = -INFINITY;
-    for (unsigned i = 0; i < 2; i++) {
+    for (unsigned i = first_shelf; i < 2; i++) {
         const struct shelf *shelf = &w->shelves[i];
         double ln_row = ln_all(w->plan, losses->shelves[i].ln_row, copies);
         double ln_block = ln_all(w->plan, losses->shelves[i].ln_block, copies);
@@ -126,6 +128,20 @@ static void meet_copies(const struct work *w, const struct row_losses *losses, u
         *ln_lost = firn_forecast_log_or(*ln_lost, firn_forecast_log_any(ln_row, shelf->sheets * shelf->shape.rows));
         *ln_share = firn_forecast_log_add(*ln_share, log(blocks / (double)w->result->data_blocks) +
                                           firn_forecast_log_any(ln_block, SEGMENT_BLOCKS));
+    }
+}
+
+/* The same over however many media are kept. */
+static void meet_media(const struct work *w, const struct row_losses *losses, double ln_medium_lost,
+                       unsigned first_shelf, double *ln_lost, double *ln_share)
+{
+    *ln_lost = *ln_share = -INFINITY;
+    for (unsigned kept = 1; kept <= w->plan->copies; kept++) {
+        double ln_kept = ln_media_kept(w->plan, ln_medium_lost, kept), lost, share;
+
+        meet_copies(w, losses, first_shelf, kept, &lost, &share);
+        *ln_lost = firn_forecast_log_add(*ln_lost, ln_kept + lost);
+        *ln_share = firn_forecast_log_add(*ln_share, ln_kept + share);
     }
 }
 
@@ -148,13 +164,10 @@ static void run_interval(const struct work *w, double years, struct interval *in
         if (w->outline && cause != FIRN_FORECAST_ROWS)
             continue;
         lose_rows(w, kinds[cause].ln_alone, kinds[cause].ln_bad, &losses);
-        for (unsigned kept = 1; kept <= w->plan->copies; kept++) {
-            double ln_kept = ln_media_kept(w->plan, medium, kept), ln_lost, ln_share;
-
-            meet_copies(w, &losses, kept, &ln_lost, &ln_share);
-            interval->ln_lost[cause] = firn_forecast_log_add(interval->ln_lost[cause], ln_kept + ln_lost);
-            interval->ln_share[cause] = firn_forecast_log_add(interval->ln_share[cause], ln_kept + ln_share);
-        }
+        meet_media(w, &losses, medium, ALL_SHELVES, &interval->ln_lost[cause], &interval->ln_share[cause]);
+        if (cause == FIRN_FORECAST_ROWS)
+            meet_media(w, &losses, medium, LAST_SHELF, &interval->ln_lost[FIRN_FORECAST_LAST_SHEET],
+                       &interval->ln_share[FIRN_FORECAST_LAST_SHEET]);
     }
     interval->ln_lost[FIRN_FORECAST_MEDIUM] = ln_all(w->plan, medium, w->plan->copies);
     interval->ln_share[FIRN_FORECAST_MEDIUM] = interval->ln_lost[FIRN_FORECAST_MEDIUM];

@@ -68,8 +68,8 @@ static void make_range(struct chart *c)
                 matters = i == c->reserves ? fmin(matters, c->curves[i].y[j]) : matters;
                 c->bottom = fmin(c->bottom, c->curves[i].y[j]);
             }
-    c->bottom = floor(fmax(c->bottom, fmax(matters - BELOW_SPAN, LEAST_POWER)));
-    c->bottom = fmin(c->bottom, -LEAST_SPAN);
+    c->bottom = fmax(c->bottom, fmax(matters - BELOW_SPAN, LEAST_POWER));
+    c->bottom = fmin(4 * floor(c->bottom / 4), -LEAST_SPAN);      /* four steps of whole powers */
 }
 
 static void make(struct chart *c, const struct firn_forecast_view *f)
@@ -77,6 +77,16 @@ static void make(struct chart *c, const struct firn_forecast_view *f)
     *c = (struct chart){ .f = f };
     make_curves(c);
     make_range(c);
+}
+
+/* "1 mo", "3 y": short enough to stand close together. */
+static const char *short_time(double years, char words[FIRN_FORECAST_VIEW_ROOM])
+{
+    char *space = strchr(firn_forecast_view_time(years, words), ' ');
+
+    if (space != NULL)
+        strcpy(space + 1, space[1] == 'm' ? "mo" : space[1] == 'y' ? "y" : "d");
+    return words;
 }
 
 /* A curve's height at x, between its points along straight lines. */
@@ -130,7 +140,7 @@ static void plot_times(const struct chart *c, FILE *out)
         char words[FIRN_FORECAST_VIEW_ROOM];
         double share = (c->curves[0].x[j] - c->left) / (c->right - c->left);
         unsigned at = (unsigned)(share * (COLUMNS - 1));
-        size_t count = strlen(firn_forecast_view_time(c->f->table->intervals[j], words));
+        size_t count = strlen(short_time(c->f->table->intervals[j], words));
 
         at = at > count / 2 ? at - (unsigned)(count / 2) : 0;
         if (at < used || at + count >= sizeof line)
@@ -220,7 +230,7 @@ static void draw_axes(const struct chart *c, struct firn_drawing *drawing)
         char words[FIRN_FORECAST_VIEW_ROOM];
         double x = page_x(c, c->curves[0].x[j]), width;
 
-        firn_forecast_view_time(c->f->table->intervals[j], words);
+        short_time(c->f->table->intervals[j], words);
         width = firn_drawing_width(&centred, words);
         firn_drawing_line(drawing, x, PLOT_TOP, x, PLOT_BOTTOM, &grid_pen);
         if (x - width / 2 < free_from)

@@ -15,6 +15,7 @@ static const struct { const char *field, *label; } causes[FIRN_FORECAST_CAUSES] 
     [FIRN_FORECAST_RUNS] = { "runs", "unreadable runs alone" },
     [FIRN_FORECAST_READING] = { "read-errors", "read errors alone" },
     [FIRN_FORECAST_ROWS] = { "rows", "all three: a row beyond its reserve" },
+    [FIRN_FORECAST_LAST_SHEET] = { "last-sheet", "  of it, in the short last sheet" },
     [FIRN_FORECAST_MEDIUM] = { "media", "every copy's medium lost" },
     [FIRN_FORECAST_ANY] = { "any", "anything at all" },
 };
@@ -200,7 +201,7 @@ static void put_expected(FILE *out, const char *label, double value)
 static void put_scrub(const struct firn_forecast_view *f, const struct firn_forecast_result *r)
 {
     FILE *out = f->view->out;
-    char chance[FIRN_FORECAST_VIEW_ROOM];
+    char chance[FIRN_FORECAST_VIEW_ROOM], other[FIRN_FORECAST_VIEW_ROOM];
 
     fputs("one scrub of one copy finds, on average\n", out);
     put_expected(out, "blocks that their lanes mend", r->mended_blocks);
@@ -211,8 +212,9 @@ static void put_scrub(const struct firn_forecast_view *f, const struct firn_fore
     fprintf(out, "  %-37s %s\n", "chance that the medium is gone",
             firn_forecast_view_chance(r->media > 0 ? log(r->media) : -INFINITY, chance));
     if (f->plan->interval <= f->plan->years && r->waiting > 0)
-        fprintf(out, "  %-37s %.1e; %.1e if scrubs come irregularly\n", "share of blocks waiting for a scrub", r->waiting,
-                r->waiting_irregular);
+        fprintf(out, "  %-37s %-10s %s if scrubs come irregularly\n", "share of blocks waiting for a scrub",
+                firn_forecast_view_chance(log(r->waiting), chance),
+                firn_forecast_view_chance(log(r->waiting_irregular), other));
 }
 
 /* "1 in 120": for those to whom e-03 says little */
@@ -241,6 +243,8 @@ static void put_causes(const struct firn_forecast_view *f, const struct firn_for
     for (unsigned cause = 0; cause < FIRN_FORECAST_CAUSES; cause++) {
         double lost = r->lost_bytes[cause];
 
+        if (cause == FIRN_FORECAST_LAST_SHEET && isinf(r->ln_lost[cause]))
+            continue;
         fprintf(out, "  %-37s %-10s ", causes[cause].label, firn_forecast_view_chance(r->ln_lost[cause], chance));
         if (lost >= 0.5)
             fputs(firn_text_size((uint64_t)(lost + 0.5), bytes), out);
