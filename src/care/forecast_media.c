@@ -40,7 +40,7 @@ bool firn_forecast_figure_valid(unsigned figure, double value)
 {
     if (!isfinite(value) || value < 0)
         return false;
-    /* 1e15: an exabyte of run, or so many runs a year that nothing is left; beyond it arithmetic would only hide slips */
+    /* 1e15: a petabyte in a run, or more runs a year than anything survives; what is beyond it is a slip */
     return value <= 1e15 && (figure != RUN_LENGTH || value >= LEAST_RUN_BYTES) && (figure != READ_ERRORS || value <= 1);
 }
 
@@ -136,7 +136,8 @@ static const char *read_figure(struct firn_forecast_profile *profile, const char
         if (profile->given[figure])
             return "gives a figure for the second time";
         if (!read_value(figure, rest, firn_forecast_figure(&profile->medium, figure)))
-            return figure == RUN_LENGTH ? "wants a length from 512 bytes on, such as 64KiB" : "wants a rate such as 1e-9";
+            return figure == RUN_LENGTH ? "wants a length from 512 bytes on, such as 64KiB"
+                                        : "wants a rate such as 1e-9";
         if (!put_words(profile->sources[figure], source))
             return "must say where its figure comes from, in at most 239 bytes";
         profile->given[figure] = true;

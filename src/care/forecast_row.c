@@ -23,7 +23,7 @@ struct chain {
     double data[STATES][COUNTS_MAX];       /* the same, times how many of the lost are data blocks, on average */
 };
 
-/* The chain of every apart-th block: with a = 1 - P(leave good) - P(leave bad), steps are (1 - a^apart) of the share. */
+/* The chain of every apart-th block: with a = 1 - P(leave good) - P(leave bad), a step is 1 - a^apart of the share. */
 static void make_steps(struct chain *chain, const struct firn_forecast_row *row)
 {
     double bad = exp(row->ln_bad), leave = 1 / row->run_blocks, ln_good = firn_forecast_log_not(row->ln_bad);

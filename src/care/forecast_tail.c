@@ -18,7 +18,7 @@ static double ln_term(uint64_t n, uint64_t j, double ln_p, double ln_q)
     return choices + (j > 0 ? (double)j * ln_p : 0) + (n > j ? (double)(n - j) * ln_q : 0);
 }
 
-/* ln of the sum of the terms first, first + step, ... while they fall and matter; odds p / q for step 1, q / p for -1 */
+/* ln of the sum of the terms from `first` on, up or down, while they matter. The caller sees to it that they fall. */
 static double ln_terms(uint64_t n, uint64_t first, bool upwards, double ln_p, double ln_q)
 {
     double odds = exp(upwards ? ln_p - ln_q : ln_q - ln_p), term = 1, sum = 1;

@@ -234,7 +234,8 @@ static int read_rates(struct asking *a)
             value = (double)bytes;
         if (!read || !firn_forecast_figure_valid(figure, value))
             return firn_trouble_usage(a->view, words, FLIPS + figure == RUN_LENGTH
-                                      ? "is no length of a run: 512 or more, such as 64KiB" : "is no rate such as 1e-9");
+                                                          ? "is no length of a run: 512 or more, such as 64KiB"
+                                                          : "is no rate such as 1e-9");
         *firn_forecast_figure(&a->profile.medium, figure) = value;
         a->profile.given[figure] = true;
         a->profile.assumed[figure] = false;

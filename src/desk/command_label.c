@@ -235,7 +235,7 @@ static int make_new(struct labelling *l)
     int found, exit;
 
     if (l->args->operand_count > 2)
-        return firn_trouble_usage(l->view, l->args->operands[2], "is one mark too many; quote a mark with blanks in it");
+        return firn_trouble_usage(l->view, l->args->operands[2], "is a mark too many; quote a mark with blanks in it");
     found = read_container(l);
     if (found >= FIRN_EXIT_USAGE)
         return found;
@@ -329,8 +329,8 @@ static void show_verdict(struct labelling *l, const struct firn_label_verdict *v
     } else if (verdict->valid && !l->view->quiet) {
         fprintf(l->view->out, "%s: right\n", verdict->label);
     } else if (!verdict->valid) {
-        fprintf(l->view->out, "%s: WRONG: its check character is %s, the rest of it asks for %s\n", verdict->label, check,
-                expected);
+        fprintf(l->view->out, "%s: WRONG: its check character is %s, the rest of it asks for %s\n", verdict->label,
+                check, expected);
     }
 }
 
@@ -350,7 +350,7 @@ static int check_one(struct labelling *l, const char *typed)
     if (l->view->json || !l->view->quiet)
         firn_label_slips(&l->rules, typed, tell_slip, &slips, &fault);
     if (slips.more > 0 && !l->view->json)
-        fprintf(l->view->out, "  and %u more (--all); compare with the list of marks before you take one\n", slips.more);
+        fprintf(l->view->out, "  and %u more (--all); compare with your list of marks first\n", slips.more);
     return FIRN_EXIT_BAD_DATA;
 }
 

@@ -28,7 +28,7 @@ const char *firn_forecast_view_chance(double ln_chance, char words[FIRN_FORECAST
     if (ln_chance == -INFINITY) {
         memcpy(words, "none", sizeof "none");
     } else if (chance >= 0.001) {
-        snprintf(words, FIRN_FORECAST_VIEW_ROOM, chance >= 0.0995 ? "%.2f" : chance >= 0.00995 ? "%.3f" : "%.4f", chance);
+        snprintf(words, FIRN_FORECAST_VIEW_ROOM, "%.*f", chance >= 0.0995 ? 2 : chance >= 0.00995 ? 3 : 4, chance);
     } else {
         if (mantissa >= 9.95) {
             mantissa = 1;
@@ -194,8 +194,10 @@ static void put_head(const struct firn_forecast_view *f, const struct firn_forec
 
 static void put_expected(FILE *out, const char *label, double value)
 {
-    fprintf(out, value > 0 ? value >= 0.01 && value < 1e6 ? "  %-37s %.3g\n" : "  %-37s %.1e\n" : "  %-37s none\n", label,
-            value);
+    if (value > 0)
+        fprintf(out, value >= 0.01 && value < 1e6 ? "  %-37s %.3g\n" : "  %-37s %.1e\n", label, value);
+    else
+        fprintf(out, "  %-37s none\n", label);
 }
 
 static void put_scrub(const struct firn_forecast_view *f, const struct firn_forecast_result *r)

@@ -41,7 +41,7 @@ static enum firn_status read_file(struct firn_media *media, struct firn_fault *f
     return status;
 }
 
-/* "FOLDER/firn/media.txt", if folder is absolute (XDG Base Directory 0.8: others are ignored) and the name not too long */
+/* Folders that are not absolute are ignored, as the XDG Base Directory specification 0.8 asks. */
 static bool name_file(struct firn_media *media, const char *folder, size_t length, const char *rest)
 {
     struct firn_text text;
@@ -203,7 +203,7 @@ int firn_media_list(const struct firn_media *media, struct firn_view *view)
     int exit = each(media, view, list, view);
 
     if (exit == FIRN_EXIT_SOUND && !view->json)
-        fprintf(view->out, "\nOrders of magnitude of a class, not of your medium; where each figure comes from stands in\n"
-                           "%s\n", media->path);
+        fprintf(view->out, "\nOrders of magnitude of a class, not of your medium; sources of the figures:\n%s\n",
+                media->path);
     return exit;
 }

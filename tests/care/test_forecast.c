@@ -47,7 +47,7 @@ static void tails_agree_with_gsl(void **state)
     (void)state;
 }
 
-/* The distribution function of GSL loses digits far out; its single terms do not. The terms past the first few vanish. */
+/* The distribution function of GSL loses digits far out; its single terms do not. Terms past the first few vanish. */
 static void far_tails_agree_with_sums_of_gsl_terms(void **state)
 {
     static const struct { unsigned trials, more; double chance; } cases[] = {
@@ -313,7 +313,7 @@ static void layout_is_that_of_the_format(void **state)
     (void)state;
 }
 
-/* A medium lost at rate l: 1 - e^(-l Y) for one copy, however often it is looked at; 1 - (1 - (1 - e^(-l T))^c)^(Y/T). */
+/* A medium lost at rate l: 1 - e^(-l Y) for one copy, whenever one looks; for c copies 1 - (1 - (1 - e^(-l T))^c)^(Y/T). */
 static void lost_media(void **state)
 {
     struct firn_forecast_medium medium = { .loss = 0.03, .run_bytes = 512 };

@@ -163,8 +163,10 @@ static void make_table(struct firn_forecast_table *table, double target)
 {
     static const double reserves[] = { 0, 5, 14.3 };
 
-    *table = (struct firn_forecast_table){ .reserve_count = 3, .interval_count = 4, .intervals = { 0.25, 1, 2, INFINITY },
-                                           .ln_target = target > 0 ? log(target) : -INFINITY, .keep = 1, .check = 1 };
+    *table = (struct firn_forecast_table){
+        .reserve_count = 3, .interval_count = 4, .intervals = { 0.25, 1, 2, INFINITY },
+        .ln_target = target > 0 ? log(target) : -INFINITY, .keep = 1, .check = 1
+    };
     for (unsigned i = 0; i < 3; i++)
         assert_int_equal(firn_sheet_geometry_for(reserves[i], 134217728, &table->geometries[i]), FIRN_OK);
 }
@@ -222,7 +224,7 @@ static void the_choice_is_the_cheapest(void **state)
     (void)state;
 }
 
-/* Where scrubbing costs nothing, one scrubs often; where keeping does, the reserve costs nothing. Of equals the safer. */
+/* Where scrubbing costs nothing, one scrubs often; where keeping does, the reserve does not. Of equals the safer. */
 static void prices_decide(void **state)
 {
     struct firn_forecast_table table;
