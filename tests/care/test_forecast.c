@@ -313,7 +313,7 @@ static void layout_is_that_of_the_format(void **state)
     (void)state;
 }
 
-/* A medium lost at rate l: 1 - e^(-l Y) for one copy, whenever one looks; for c copies 1 - (1 - (1 - e^(-l T))^c)^(Y/T). */
+/* A medium lost at rate l: for one copy 1 - e^(-l Y), for c copies 1 - (1 - (1 - e^(-l T))^c)^(Y/T). */
 static void lost_media(void **state)
 {
     struct firn_forecast_medium medium = { .loss = 0.03, .run_bytes = 512 };
