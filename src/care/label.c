@@ -184,18 +184,19 @@ enum firn_status firn_label_make(const struct firn_label_rules *rules, const cha
     return FIRN_OK;
 }
 
-/* A label as typed: all but its last character are the mark. */
-static enum firn_status parse_label(const struct firn_label_rules *rules, const char *words, struct parsed *label,
-                                    struct firn_fault *fault)
+/* A label as typed, and folded if the rules say so: all but its last character are the mark. */
+static enum firn_status parse_label(const struct firn_label_rules *rules, const char *words, struct parsed *typed,
+                                    struct parsed *label, struct firn_fault *fault)
 {
     const struct system *system = &systems[rules->system];
-    enum firn_status status = parse(words, label, fault);
+    enum firn_status status = parse(words, typed, fault);
     const char *last;
 
     if (status != FIRN_OK)
         return status;
-    if (label->count < 2)
+    if (typed->count < 2)
         return firn_fault_tell(fault, FIRN_BAD_ARGUMENT, 0, 0, "a label needs a mark and a check character");
+    *label = *typed;
     if (rules->fold)
         fold(label, label->count - 1);
     status = examine(system, label, label->count - 1, fault);
@@ -209,8 +210,8 @@ enum firn_status firn_label_check(const struct firn_label_rules *rules, const ch
                                   struct firn_label_verdict *verdict, struct firn_fault *fault)
 {
     const struct system *system = &systems[rules->system];
-    struct parsed parsed;
-    enum firn_status status = parse_label(rules, label, &parsed, fault);
+    struct parsed typed, parsed;
+    enum firn_status status = parse_label(rules, label, &typed, &parsed, fault);
 
     *verdict = (struct firn_label_verdict){ .valid = false };
     if (status != FIRN_OK)
@@ -237,7 +238,8 @@ static bool look_alike(char a, char b)
 
 struct telling {
     const struct system *system;
-    struct parsed label;      /* with the change that is being tried */
+    bool fold;
+    struct parsed label;      /* as typed, with the change that is being tried; a swap may undo what folding hides */
     firn_label_slip_teller *tell;
     void *self;
 };
@@ -247,10 +249,20 @@ static bool try_slip(struct telling *t, enum firn_label_slip_kind kind, unsigned
     struct firn_label_slip slip = { .kind = kind, .first = t->label.at[first], .second = t->label.at[second],
                                     .found = found, .wanted = t->label.text[t->label.at[first]] };
 
-    if (!is_valid(t->system, &t->label))
+    struct parsed label = t->label;
+
+    if (t->fold)
+        fold(&label, label.count - 1);
+    if (!is_valid(t->system, &label))
         return true;
-    memcpy(slip.label, t->label.text, sizeof slip.label);
+    memcpy(slip.label, label.text, sizeof slip.label);
     return t->tell(t->self, &slip);
+}
+
+/* No label has them: folding would take them for digits. */
+static bool is_folded_away(const struct telling *t, char c)
+{
+    return t->fold && (c == 'O' || c == 'I');
 }
 
 static bool try_singles(struct telling *t, enum firn_label_slip_kind kind)
@@ -264,7 +276,7 @@ static bool try_singles(struct telling *t, enum firn_label_slip_kind kind)
         char *at = &t->label.text[t->label.at[i]], found = *at;
 
         for (unsigned value = 0; value < (last ? check_count(system) : system->values) && go_on; value++) {
-            if (characters[value] == found ||
+            if (characters[value] == found || (!last && is_folded_away(t, characters[value])) ||
                 look_alike(characters[value], found) != (kind == FIRN_LABEL_SLIP_LOOKALIKE))
                 continue;
             *at = characters[value];
@@ -298,10 +310,11 @@ static bool try_swaps(struct telling *t, enum firn_label_slip_kind kind, unsigne
 enum firn_status firn_label_slips(const struct firn_label_rules *rules, const char *label, firn_label_slip_teller *tell,
                                   void *self, struct firn_fault *fault)
 {
-    struct telling t = { .system = &systems[rules->system], .tell = tell, .self = self };
-    enum firn_status status = parse_label(rules, label, &t.label, fault);
+    struct telling t = { .system = &systems[rules->system], .fold = rules->fold, .tell = tell, .self = self };
+    struct parsed folded;
+    enum firn_status status = parse_label(rules, label, &t.label, &folded, fault);
 
-    if (status != FIRN_OK || is_valid(t.system, &t.label))
+    if (status != FIRN_OK || is_valid(t.system, &folded))
         return status;
     if (try_swaps(&t, FIRN_LABEL_SLIP_NEIGHBOURS, 1, 1) && try_singles(&t, FIRN_LABEL_SLIP_LOOKALIKE) &&
         try_swaps(&t, FIRN_LABEL_SLIP_JUMP, 2, 2) && try_singles(&t, FIRN_LABEL_SLIP_SINGLE))

@@ -317,8 +317,9 @@ static void title_values(void **state)
     const struct firn_sheet_geometry geometry = { .k = 224, .m = 32, .depth = 128 };
     char longest[513] = "";
     struct firn_writer_title title = {
-        .accession = "MQ 1931/7", .title = "Ledgers of Marrow Quay, with the letters of the harbour master, \xC3\xA9t\xC3\xA9 "
-                                           "1931, and all that was found in the loft  of the old customs house",
+        .accession = "MQ 1931/7",
+        .title = "Ledgers of Marrow Quay, with the letters of the harbour master, \xC3\xA9t\xC3\xA9 1931, and all that "
+                 "was found in the loft  of the old customs house",
         .note = longest, .date = 86400
     };
     uint8_t page[FIRN_TITLE_PAGE_BYTES];
