@@ -310,6 +310,15 @@ static void layout_is_that_of_the_format(void **state)
     assert_int_equal(r.blocks, 2 * 32768 + 1160);            /* format-spec/sheet.md: t = 1000 has 160 reserve blocks */
     assert_int_equal(r.rows, 256 + 5);
     assert_int_equal(r.last_sheet.k, 200);
+    /* rows of a short last sheet are told apart too: all there are, when there is no other sheet */
+    assert_true(r.ln_lost[FIRN_FORECAST_LAST_SHEET] == -INFINITY);
+    medium.flips = 1e-4;
+    run(&medium, &plan, &r);
+    assert_true(r.ln_lost[FIRN_FORECAST_LAST_SHEET] > -INFINITY);
+    assert_true(r.ln_lost[FIRN_FORECAST_LAST_SHEET] < r.ln_lost[FIRN_FORECAST_ROWS]);
+    plan.bytes = UINT64_C(1000) * 3968;
+    run(&medium, &plan, &r);
+    near(r.ln_lost[FIRN_FORECAST_LAST_SHEET], r.ln_lost[FIRN_FORECAST_ROWS], 1e-12);
     (void)state;
 }
 
