@@ -298,8 +298,9 @@ static void put_best(const struct firn_forecast_view *f)
         fprintf(out, "\n+ meets the target of %s. * is the cheapest: reserve %s, scrubbed %s%s,\n", target,
                 firn_forecast_view_percent(f->percents[t->best_reserve], percent),
                 isinf(t->intervals[t->best_interval]) ? "" : "every ", each_time(t->intervals[t->best_interval], time));
-        fprintf(out, "  where keeping a byte for a year costs %g and scrubbing it once %g (--prices). More reserve helps\n"
-                "  the last copy that is left, and against what no model holds\n", f->prices[0], f->prices[1]);
+        fprintf(out, "  where keeping a byte for a year costs %g and scrubbing it once %g (--prices).\n", f->prices[0],
+                f->prices[1]);
+        fputs("  More reserve helps the last copy that is left, and against what no model holds.\n", out);
         return;
     }
     for (unsigned j = 0; j < t->interval_count; j++)
