@@ -8,7 +8,8 @@
  * - Bits go wrong each for itself; a block is beyond its lanes when one of 64 lanes of 512 bits has two of them.
  * - Unreadable runs make a two-state Markov chain along the blocks (Gilbert 1960): good and bad stretches of
  *   geometric length. In good stretches a block can still be lost to flips or to a read error (Elliott 1963).
- * - A row's blocks lie D apart on that chain; the row is lost when more than m of its k + m blocks are.
+ * - A row's blocks lie D apart on that chain; the row is lost when more than m of its k + m blocks are. Without a
+ *   reserve every block stands for itself.
  * - A medium is lost as a whole at a constant rate.
  * - With several copies something is lost when no copy has it: each stretch needs one copy whose row is sound.
  * Correlation c: with probability c the copies share one fate, else each has its own.

@@ -8,6 +8,7 @@
 #include "care/forecast_outline.h"
 
 #include "care/forecast_log.h"
+#include "care/forecast_row.h"
 #include "firn/block.h"
 
 enum {
@@ -91,22 +92,39 @@ static double ln_media_kept(const struct firn_forecast_plan *plan, double ln_med
     return n == 1 ? ln_kept : firn_forecast_log_add(c < 1 ? log1p(-c) + apart : -INFINITY, shared);
 }
 
-/* What one medium's rows lose, by shelf. */
+/* What one medium's rows lose, by shelf. Without a reserve every block is a row of its own. */
 struct row_losses {
     struct firn_forecast_row_loss shelves[2];
+    double ln_neighbours;      /* without a reserve: that two blocks side by side are lost */
 };
 
 static void lose_rows(const struct work *w, double ln_alone, double ln_bad, struct row_losses *losses)
 {
     for (unsigned i = 0; i < 2; i++) {
         const struct firn_sheet_shape *shape = &w->shelves[i].shape;
-        struct firn_forecast_row row = { shape->k, shape->m, shape->rows, ln_alone, ln_bad,
+        struct firn_forecast_row row = { shape->m > 0 ? shape->k : 1, shape->m, shape->rows, ln_alone, ln_bad,
                                          run_blocks(w->medium->run_bytes) };
 
         losses->shelves[i] = (struct firn_forecast_row_loss){ -INFINITY, -INFINITY };
         if (w->shelves[i].sheets > 0)
             firn_forecast_row(&row, &losses->shelves[i]);
+        losses->ln_neighbours = firn_forecast_row_neighbours(&row);
     }
+}
+
+/*
+ * ln P(any of so many blocks in a row is lost in all copies), without a reserve. Whatever is lost begins somewhere: at
+ * the first block, or behind one that is not lost.
+ */
+static double ln_any_block(const struct work *w, const struct row_losses *losses, double ln_block, unsigned copies,
+                           double blocks)
+{
+    double both = ln_all(w->plan, losses->ln_neighbours, copies);
+    double begins = ln_block + firn_forecast_log_not(firn_forecast_log_cap(both - ln_block));
+
+    if (ln_block == -INFINITY || ln_block >= 0)
+        return ln_block;
+    return firn_forecast_log_or(ln_block, firn_forecast_log_any(begins - firn_forecast_log_not(ln_block), blocks - 1));
 }
 
 /*
@@ -125,7 +143,11 @@ static void meet_copies(const struct work *w, const struct row_losses *losses, u
 
         if (shelf->sheets <= 0)
             continue;
-        *ln_lost = firn_forecast_log_or(*ln_lost, firn_forecast_log_any(ln_row, shelf->sheets * shelf->shape.rows));
+        if (shelf->shape.m == 0)
+            ln_row = ln_any_block(w, losses, ln_row, copies, blocks);
+        else
+            ln_row = firn_forecast_log_any(ln_row, shelf->sheets * shelf->shape.rows);
+        *ln_lost = firn_forecast_log_or(*ln_lost, ln_row);
         *ln_share = firn_forecast_log_add(*ln_share, log(blocks / (double)w->result->data_blocks) +
                                           firn_forecast_log_any(ln_block, SEGMENT_BLOCKS));
     }
@@ -207,8 +229,8 @@ static void run_years(const struct work *w)
             ln_lost = firn_forecast_log_or(ln_lost, last.ln_lost[cause]);
             ln_share = firn_forecast_log_or(ln_share, last.ln_share[cause]);
         }
-        w->result->ln_lost[cause] = fmin(ln_lost, 0);
-        w->result->lost_bytes[cause] = (double)plan->bytes * exp(fmin(ln_share, 0));
+        w->result->ln_lost[cause] = firn_forecast_log_cap(ln_lost);
+        w->result->lost_bytes[cause] = (double)plan->bytes * exp(firn_forecast_log_cap(ln_share));
     }
 }
 
@@ -218,13 +240,15 @@ static double latent_years(const struct work *w, double years)
     struct firn_forecast_plan one = *w->plan;
     struct work alone = *w;
     struct interval interval;
+    double ln_rows;
 
     one.copies = 1;
     alone.plan = &one;
     alone.outline = true;
     run_interval(&alone, years, &interval);
     /* rows are counted where the medium is kept: given that it is */
-    return years / -firn_forecast_log_not(fmin(interval.ln_lost[FIRN_FORECAST_ROWS] + w->medium->loss * years, 0));
+    ln_rows = firn_forecast_log_cap(interval.ln_lost[FIRN_FORECAST_ROWS] + w->medium->loss * years);
+    return years / -firn_forecast_log_not(ln_rows);
 }
 
 /* What a scrub meets, and what the published formula says of two such copies. */

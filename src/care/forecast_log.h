@@ -18,16 +18,24 @@ static inline double firn_forecast_log_add(double a, double b)
     return low - high > -40 ? high + log1p(exp(low - high)) : high;
 }
 
+/* A chance that rounding has put beyond certainty. */
+static inline double firn_forecast_log_cap(double a)
+{
+    return a > 0 ? 0 : a;
+}
+
 /* ln(1 - e^a), a <= 0 */
 static inline double firn_forecast_log_not(double a)
 {
+    if (a >= 0)
+        return -INFINITY;
     return a > -0.6931471805599453 ? log(-expm1(a)) : log1p(-exp(a));
 }
 
 /* ln(1 - (1 - e^a)(1 - e^b)): either of two independent events */
 static inline double firn_forecast_log_or(double a, double b)
 {
-    return firn_forecast_log_add(a, b + firn_forecast_log_not(a));
+    return firn_forecast_log_cap(firn_forecast_log_add(a, b + firn_forecast_log_not(a)));
 }
 
 /* ln(1 - (1 - e^a)^n): at least one of n that happen each with e^a */

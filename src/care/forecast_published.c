@@ -27,6 +27,8 @@ double firn_forecast_two_copies(const struct firn_forecast_two_copies *c, bool l
     double visible = 1 / c->visible, latent = 1 / c->latent, unseen = c->mend_latent + c->notice_latent;
     double rate = unseen * latent * latent;
 
+    if (!(c->latent > 0 && c->visible > 0))      /* faults without a pause */
+        return 0;
     if (!latent_only)
         rate += c->mend_visible * visible * (visible + latent) + unseen * latent * visible;
     return rate > 0 ? c->alpha / rate : INFINITY;

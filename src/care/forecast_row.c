@@ -7,7 +7,7 @@
  * row follows exactly by going along its blocks with the chances of every count so far.
  * SPDX-License-Identifier: BSD-2-Clause
  */
-#include "firn/forecast.h"
+#include "care/forecast_row.h"
 
 #include "care/forecast_log.h"
 
@@ -98,14 +98,40 @@ static void alone(const struct firn_forecast_row *row, double ln_lost, struct fi
     loss->ln_block = ln_lost + (row->m == 0 ? 0 : firn_forecast_tail(n - 1, row->m - 1, ln_lost));
 }
 
+static double ln_either(const struct firn_forecast_row *row)
+{
+    return firn_forecast_log_add(row->ln_bad, row->ln_alone + firn_forecast_log_not(row->ln_bad));
+}
+
+static bool stand_alone(const struct firn_forecast_row *row)
+{
+    return row->ln_bad == -INFINITY || row->ln_bad >= 0 || row->run_blocks <= 1;
+}
+
+double firn_forecast_row_neighbours(const struct firn_forecast_row *row)
+{
+    struct firn_forecast_row beside = *row;
+    double both = -INFINITY;
+    struct chain chain;
+
+    if (stand_alone(row))
+        return row->ln_bad >= 0 ? 0 : 2 * ln_either(row);
+    beside.apart = 1;
+    make_steps(&chain, &beside);
+    for (unsigned from = GOOD; from < STATES; from++)
+        for (unsigned to = GOOD; to < STATES; to++)
+            both = firn_forecast_log_add(both, chain.ln_share[from] + chain.ln_lost[from] + chain.ln_step[from][to] +
+                                         chain.ln_lost[to]);
+    return both;
+}
+
 void firn_forecast_row(const struct firn_forecast_row *row, struct firn_forecast_row_loss *loss)
 {
     const unsigned n = row->k + row->m;
-    double either = firn_forecast_log_add(row->ln_bad, row->ln_alone + firn_forecast_log_not(row->ln_bad));
     struct chain chain;
 
-    if (row->ln_bad == -INFINITY || row->ln_bad >= 0 || row->run_blocks <= 1) {
-        alone(row, row->ln_bad >= 0 ? 0 : either, loss);
+    if (stand_alone(row)) {
+        alone(row, row->ln_bad >= 0 ? 0 : ln_either(row), loss);
         return;
     }
     chain.beyond = row->m + 1;
@@ -121,6 +147,6 @@ void firn_forecast_row(const struct firn_forecast_row *row, struct firn_forecast
     loss->ln_row = firn_forecast_log_add(chain.chance[GOOD][chain.beyond], chain.chance[BAD][chain.beyond]);
     loss->ln_block = firn_forecast_log_add(chain.data[GOOD][chain.beyond], chain.data[BAD][chain.beyond]) -
                      log((double)row->k);
-    loss->ln_row = fmin(loss->ln_row, 0);
-    loss->ln_block = fmin(loss->ln_block, 0);
+    loss->ln_row = firn_forecast_log_cap(loss->ln_row);
+    loss->ln_block = firn_forecast_log_cap(loss->ln_block);
 }

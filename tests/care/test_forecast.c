@@ -7,6 +7,8 @@
 /* SPDX-License-Identifier: BSD-2-Clause */
 #include "firn/forecast.h"
 
+#include "guard/random.h"
+
 #include <setjmp.h>
 #include <stdarg.h>
 #include <stddef.h>
@@ -421,6 +423,48 @@ static void directions(void **state)
     (void)state;
 }
 
+/* From nothing ever happens to everything always does: no figure is nonsense, and none contradicts another. */
+static void figures_stay_in_bounds(void **state)
+{
+    struct random random = random_start("figures_stay_in_bounds");
+    unsigned certain = 0, possible = 0;
+
+    for (unsigned round = 0; round < 400; round++) {
+        struct firn_forecast_medium medium = {
+            .flips = pow(10, random_below(&random, 28) - 20.0), .runs = pow(10, random_below(&random, 26) - 10.0),
+            .run_bytes = 512 * pow(10, random_below(&random, 9)), .loss = pow(10, random_below(&random, 18) - 12.0),
+            .read_errors = pow(10, -(double)random_below(&random, 20))
+        };
+        struct firn_forecast_plan plan = plan_of(UINT64_C(1) << random_below(&random, 62), 1 + random_below(&random, 4),
+                                                 pow(10, random_below(&random, 5) - 1.0),
+                                                 pow(10, random_below(&random, 5) - 2.0));
+        struct firn_forecast_result r;
+
+        plan.correlation = random_below(&random, 3) / 2.0;
+        plan.replace = random_below(&random, 2) / 10.0;
+        if (round % 5 == 0)
+            medium.flips = medium.read_errors = 0;
+        if (round % 7 == 0)
+            medium.runs = medium.loss = 0;
+        assert_int_equal(firn_sheet_geometry_for(random_below(&random, 3) * 7.0, 1 << 22, &plan.geometry), FIRN_OK);
+        run(&medium, &plan, &r);
+        for (unsigned cause = 0; cause < FIRN_FORECAST_CAUSES; cause++) {
+            assert_true(r.ln_lost[cause] <= 0);
+            assert_true(r.ln_lost[cause] <= r.ln_lost[FIRN_FORECAST_ANY] + 1e-9);
+            assert_true(r.lost_bytes[cause] >= 0 && r.lost_bytes[cause] <= (double)plan.bytes * (1 + 1e-9));
+        }
+        assert_true(r.ln_lost[FIRN_FORECAST_FLIPS] <= r.ln_lost[FIRN_FORECAST_ROWS] + 1e-9);
+        assert_true(r.mended_blocks >= 0 && r.beyond_lanes >= 0 && r.bad_blocks >= 0);
+        assert_true(r.media >= 0 && r.media <= 1 && r.reading_error >= 0 && r.reading_error <= 1);
+        assert_true(r.waiting >= 0 && r.waiting <= 1 && r.waiting_irregular >= 0 && r.waiting_irregular <= 1);
+        assert_true(r.two_copies_years >= 0);
+        certain += r.ln_lost[FIRN_FORECAST_ANY] > -1e-9;
+        possible += r.ln_lost[FIRN_FORECAST_ANY] < -1;
+    }
+    assert_true(certain > 20 && possible > 20);
+    (void)state;
+}
+
 static void refuses_what_means_nothing(void **state)
 {
     const struct firn_forecast_medium good = { .run_bytes = 512 };
@@ -473,6 +517,7 @@ int main(void)
         cmocka_unit_test(lost_media),
         cmocka_unit_test(flips_through_lanes_and_rows),
         cmocka_unit_test(directions),
+        cmocka_unit_test(figures_stay_in_bounds),
         cmocka_unit_test(refuses_what_means_nothing),
     };
 

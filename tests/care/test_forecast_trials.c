@@ -265,6 +265,48 @@ static void long_runs(void **state)
     (void)state;
 }
 
+/* --- no reserve: every lost block counts, and runs are told as they come --- */
+
+static bool any_lost(const struct copy *a, const struct copy *b)
+{
+    for (unsigned i = 0; i < a->blocks; i++)
+        if (a->lost[i] && (b == NULL || b->lost[i]))
+            return true;
+    return false;
+}
+
+static void no_reserve(void **state)
+{
+    enum { BLOCKS = 512 };
+    const struct firn_sheet_geometry bare = { .k = 16, .m = 0, .depth = 8 };
+    const double flip_rate = 3e-6, runs = 0.3, bad = -expm1(-runs * 30 / BLOCKS);
+    const struct firn_forecast_medium medium = { .flips = flip_rate, .runs = runs, .run_bytes = 29 * 4096 + 512 };
+    struct firn_forecast_plan plan = { .bytes = (uint64_t)BLOCKS * 3968, .geometry = bare, .copies = 1, .years = 1,
+                                       .interval = 1 };
+    struct firn_forecast_result one, two;
+    struct tally lost_one = { 0 }, lost_two = { 0 };
+
+    assert_int_equal(firn_forecast_run(&medium, &plan, &one), FIRN_OK);
+    assert_int_equal(one.blocks, BLOCKS);
+    plan.copies = 2;
+    assert_int_equal(firn_forecast_run(&medium, &plan, &two), FIRN_OK);
+    for (unsigned trial = 0; trial < 40000; trial++) {
+        struct copy a, b;
+
+        make_copy(&a, 4);
+        make_copy(&b, 4);
+        flip(&a, flip_rate);
+        lay_runs(&a, bad, 30);
+        flip(&b, flip_rate);
+        lay_runs(&b, bad, 30);
+        count(&lost_one, any_lost(&a, NULL));
+        count(&lost_two, any_lost(&a, &b));
+    }
+    agrees(&lost_one, exp(one.ln_lost[FIRN_FORECAST_ANY]));
+    agrees(&lost_two, exp(two.ln_lost[FIRN_FORECAST_ANY]));
+    (void)state;
+}
+
 /* --- bytes: a lost block takes every segment that it touches --- */
 
 static void lost_bytes(void **state)
@@ -372,6 +414,7 @@ int main(void)
         cmocka_unit_test(flips),
         cmocka_unit_test(runs_and_flips),
         cmocka_unit_test(long_runs),
+        cmocka_unit_test(no_reserve),
         cmocka_unit_test(lost_bytes),
         cmocka_unit_test(two_copies_over_years),
         cmocka_unit_test(waiting),

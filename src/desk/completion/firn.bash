@@ -10,6 +10,7 @@ _firn_value()
 _firn_words()
 {
     case $3 in
+        --algorithm) echo sha256 sha512 md5 ;;
         --effort) echo none quick normal thorough ;;
         --incomplete) echo keep ;;
         --owner) echo none names numbers ;;
