@@ -11,14 +11,15 @@
  * - A row's blocks lie D apart on that chain; the row is lost when more than m of its k + m blocks are. Without a
  *   reserve every block stands for itself.
  * - A medium is lost as a whole at a constant rate.
- * - With several copies something is lost when no copy has it: each stretch needs one copy whose row is sound.
+ * - With several copies something is lost when no copy has it: each stretch needs one copy whose row is sound. The
+ *   first copy fails between two scrubs, the others before it has been made anew.
  * Correlation c: with probability c the copies share one fate, else each has its own.
  *
  * What is not in it, and makes things better than told: mending of lanes with two wrong bits, decoding of rows beyond
- * m byte by byte, collating row by row out of blocks of several copies, rows that lack a data block. Rows of a sheet
- * that one long run takes together count as if each had its own, up to D times. What makes them
- * worse: ageing (rates are constant), mistakes, fire, theft, a firm that closes, faults of programs. So a very small
- * figure says only that this cause is not what will lose the collection.
+ * m byte by byte, collating row by row out of blocks of several copies, rows that lack a data block. Rows that one run
+ * takes together are followed two by two, which tells a little too much; as if each for itself below 1e-40. What makes
+ * them worse: ageing (rates are constant), mistakes, fire, theft, a firm that closes, faults of programs. So a very
+ * small figure says only that this cause is not what will lose the collection.
  *
  * SPDX-License-Identifier: BSD-2-Clause
  */

@@ -7,8 +7,9 @@
  */
 #include "care/forecast_outline.h"
 
+#include "care/forecast_beside.h"
+#include "care/forecast_copies.h"
 #include "care/forecast_log.h"
-#include "care/forecast_row.h"
 #include "firn/block.h"
 
 enum {
@@ -70,140 +71,120 @@ static double ln_in_run(const struct work *w, double years)
     return ln_happens(w->medium->runs * years * run_blocks(w->medium->run_bytes) / (double)w->result->blocks);
 }
 
-/* Chance among copies: with `correlation` all share one fate, else each has its own. */
-static double ln_all(const struct firn_forecast_plan *plan, double ln_one, unsigned copies)
-{
-    double c = plan->correlation;
-    double shared = c > 0 ? log(c) + ln_one : -INFINITY, apart = c < 1 ? log1p(-c) + copies * ln_one : -INFINITY;
-
-    return copies == 1 ? ln_one : firn_forecast_log_add(shared, apart);
-}
-
-/* ln P(exactly `kept` of the copies still have their medium), kept > 0 */
-static double ln_media_kept(const struct firn_forecast_plan *plan, double ln_medium_lost, unsigned kept)
-{
-    double ln_kept = firn_forecast_log_not(ln_medium_lost), c = plan->correlation;
-    unsigned n = plan->copies, lost = n - kept;
-    double choices = firn_forecast_log_factorial(n) - firn_forecast_log_factorial(kept) -
-                     firn_forecast_log_factorial(lost);
-    double apart = choices + kept * ln_kept + (lost > 0 ? lost * ln_medium_lost : 0);
-    double shared = kept == n && c > 0 ? log(c) + ln_kept : -INFINITY;
-
-    return n == 1 ? ln_kept : firn_forecast_log_add(c < 1 ? log1p(-c) + apart : -INFINITY, shared);
-}
-
 /* What one medium's rows lose, by shelf. Without a reserve every block is a row of its own. */
 struct row_losses {
     struct firn_forecast_row_loss shelves[2];
-    double ln_neighbours;      /* without a reserve: that two blocks side by side are lost */
+    double ln_both[2];      /* two rows side by side */
+};
+
+/* Damage to one medium, within an interval and till a bad copy is made anew. */
+struct gathering {
+    struct row_losses in, till;
+    struct firn_forecast_copies_chance medium;
 };
 
 static void lose_rows(const struct work *w, double ln_alone, double ln_bad, struct row_losses *losses)
 {
     for (unsigned i = 0; i < 2; i++) {
         const struct firn_sheet_shape *shape = &w->shelves[i].shape;
-        struct firn_forecast_row row = { shape->m > 0 ? shape->k : 1, shape->m, shape->rows, ln_alone, ln_bad,
+        struct firn_forecast_row row = { shape->k, shape->m, shape->rows, ln_alone, ln_bad,
                                          run_blocks(w->medium->run_bytes) };
 
         losses->shelves[i] = (struct firn_forecast_row_loss){ -INFINITY, -INFINITY };
-        if (w->shelves[i].sheets > 0)
-            firn_forecast_row(&row, &losses->shelves[i]);
-        losses->ln_neighbours = firn_forecast_row_neighbours(&row);
+        losses->ln_both[i] = -INFINITY;
+        if (w->shelves[i].sheets <= 0)
+            continue;
+        if (shape->m == 0)
+            row.k = 1, row.apart = 2;      /* a block is followed by the next */
+        firn_forecast_row(&row, &losses->shelves[i]);
+        losses->ln_both[i] = firn_forecast_beside_both(&row, losses->shelves[i].ln_row);
     }
 }
 
-/*
- * ln P(any of so many blocks in a row is lost in all copies), without a reserve. Whatever is lost begins somewhere: at
- * the first block, or behind one that is not lost.
- */
-static double ln_any_block(const struct work *w, const struct row_losses *losses, double ln_block, unsigned copies,
-                           double blocks)
-{
-    double both = ln_all(w->plan, losses->ln_neighbours, copies);
-    double begins = ln_block + firn_forecast_log_not(firn_forecast_log_cap(both - ln_block));
-
-    if (ln_block == -INFINITY || ln_block >= 0)
-        return ln_block;
-    return firn_forecast_log_or(ln_block, firn_forecast_log_any(begins - firn_forecast_log_not(ln_block), blocks - 1));
-}
-
-/*
- * Rows lost in every one of `copies` media, and the share of bytes that goes with them. Losses of neighbouring rows go
- * together, so taking rows as independent tells too much, never too little; the same holds for blocks of a segment.
- */
-static void meet_copies(const struct work *w, const struct row_losses *losses, unsigned first_shelf, unsigned copies,
+/* Rows lost in every one of `kept` media, and the share of bytes that goes with them. */
+static void meet_copies(const struct work *w, const struct gathering *g, unsigned first_shelf, unsigned kept,
                         double *ln_lost, double *ln_share)
 {
+    const struct row_losses *in = &g->in, *till = &g->till;
+
     *ln_lost = *ln_share = -INFINITY;
     for (unsigned i = first_shelf; i < 2; i++) {
         const struct shelf *shelf = &w->shelves[i];
-        double ln_row = ln_all(w->plan, losses->shelves[i].ln_row, copies);
-        double ln_block = ln_all(w->plan, losses->shelves[i].ln_block, copies);
+        const struct firn_forecast_copies_chance row = { in->shelves[i].ln_row, till->shelves[i].ln_row };
+        const struct firn_forecast_copies_chance both = { in->ln_both[i], till->ln_both[i] };
+        const struct firn_forecast_copies_chance block = { in->shelves[i].ln_block, till->shelves[i].ln_block };
+        double ln_row = firn_forecast_copies_lost(w->plan, &g->medium, kept, &row);
+        double ln_both = firn_forecast_copies_lost(w->plan, &g->medium, kept, &both);
+        double ln_block = firn_forecast_copies_lost(w->plan, &g->medium, kept, &block);
         double blocks = shelf->sheets * shelf->shape.data_blocks;
 
         if (shelf->sheets <= 0)
             continue;
         if (shelf->shape.m == 0)
-            ln_row = ln_any_block(w, losses, ln_row, copies, blocks);
+            ln_row = firn_forecast_beside_any(ln_row, ln_both, blocks);
         else
-            ln_row = firn_forecast_log_any(ln_row, shelf->sheets * shelf->shape.rows);
+            ln_row = firn_forecast_log_any(firn_forecast_beside_any(ln_row, ln_both, shelf->shape.rows), shelf->sheets);
         *ln_lost = firn_forecast_log_or(*ln_lost, ln_row);
+        /* blocks of a segment go together; as if each for itself they tell too much, never too little */
         *ln_share = firn_forecast_log_add(*ln_share, log(blocks / (double)w->result->data_blocks) +
                                           firn_forecast_log_any(ln_block, SEGMENT_BLOCKS));
     }
 }
 
 /* The same over however many media are kept. */
-static void meet_media(const struct work *w, const struct row_losses *losses, double ln_medium_lost,
-                       unsigned first_shelf, double *ln_lost, double *ln_share)
+static void meet_media(const struct work *w, const struct gathering *g, unsigned first_shelf, double *ln_lost,
+                       double *ln_share)
 {
     *ln_lost = *ln_share = -INFINITY;
     for (unsigned kept = 1; kept <= w->plan->copies; kept++) {
-        double ln_kept = ln_media_kept(w->plan, ln_medium_lost, kept), lost, share;
+        double ln_kept = firn_forecast_copies_kept(w->plan, &g->medium, kept), lost, share;
 
-        meet_copies(w, losses, first_shelf, kept, &lost, &share);
+        meet_copies(w, g, first_shelf, kept, &lost, &share);
         *ln_lost = firn_forecast_log_add(*ln_lost, ln_kept + lost);
         *ln_share = firn_forecast_log_add(*ln_share, ln_kept + share);
     }
 }
 
-/* One interval in which damage gathers for `years`. */
-static void run_interval(const struct work *w, double years, struct interval *interval)
+/* Rows of one medium after damage of one kind, or of all, has gathered for `years`. */
+static void gather(const struct work *w, enum firn_forecast_cause cause, double years, struct row_losses *losses)
 {
     double flips = ln_beyond_lanes(w->medium->flips * years), unread = ln_unread(w->medium->read_errors);
-    double bad = ln_in_run(w, years), medium = ln_happens(w->medium->loss * years);
-    const struct { double ln_alone, ln_bad; } kinds[] = {
-        [FIRN_FORECAST_FLIPS] = { flips, -INFINITY },
-        [FIRN_FORECAST_RUNS] = { -INFINITY, bad },
-        [FIRN_FORECAST_READING] = { unread, -INFINITY },
-        [FIRN_FORECAST_ROWS] = { firn_forecast_log_or(flips, unread), bad },
-    };
+    double bad = ln_in_run(w, years);
 
-    for (unsigned cause = 0; cause <= FIRN_FORECAST_ROWS; cause++) {
-        struct row_losses losses;
+    switch (cause) {
+    case FIRN_FORECAST_FLIPS:   lose_rows(w, flips, -INFINITY, losses); break;
+    case FIRN_FORECAST_RUNS:    lose_rows(w, -INFINITY, bad, losses); break;
+    case FIRN_FORECAST_READING: lose_rows(w, unread, -INFINITY, losses); break;
+    default:                    lose_rows(w, firn_forecast_log_or(flips, unread), bad, losses); break;
+    }
+}
 
+/* One interval between scrubs, and the time until a bad copy is made anew behind it. */
+static void run_interval(const struct work *w, double years, struct interval *interval)
+{
+    const double till = w->plan->copies > 1 ? years + w->plan->replace : years;
+    struct gathering g = { .medium = { ln_happens(w->medium->loss * years), ln_happens(w->medium->loss * till) } };
+
+    for (enum firn_forecast_cause cause = FIRN_FORECAST_FLIPS; cause <= FIRN_FORECAST_ROWS; cause++) {
         interval->ln_lost[cause] = interval->ln_share[cause] = -INFINITY;
         if (w->outline && cause != FIRN_FORECAST_ROWS)
             continue;
-        lose_rows(w, kinds[cause].ln_alone, kinds[cause].ln_bad, &losses);
-        meet_media(w, &losses, medium, ALL_SHELVES, &interval->ln_lost[cause], &interval->ln_share[cause]);
+        gather(w, cause, years, &g.in);
+        g.till = g.in;
+        if (till > years)
+            gather(w, cause, till, &g.till);
+        meet_media(w, &g, ALL_SHELVES, &interval->ln_lost[cause], &interval->ln_share[cause]);
         if (cause == FIRN_FORECAST_ROWS)
-            meet_media(w, &losses, medium, LAST_SHELF, &interval->ln_lost[FIRN_FORECAST_LAST_SHEET],
+            meet_media(w, &g, LAST_SHELF, &interval->ln_lost[FIRN_FORECAST_LAST_SHEET],
                        &interval->ln_share[FIRN_FORECAST_LAST_SHEET]);
     }
-    interval->ln_lost[FIRN_FORECAST_MEDIUM] = ln_all(w->plan, medium, w->plan->copies);
+    interval->ln_lost[FIRN_FORECAST_MEDIUM] = firn_forecast_copies_media(w->plan, &g.medium);
     interval->ln_share[FIRN_FORECAST_MEDIUM] = interval->ln_lost[FIRN_FORECAST_MEDIUM];
     /* rows are counted where a medium is left, so the two exclude each other */
     interval->ln_lost[FIRN_FORECAST_ANY] = firn_forecast_log_add(interval->ln_lost[FIRN_FORECAST_ROWS],
                                                                  interval->ln_lost[FIRN_FORECAST_MEDIUM]);
     interval->ln_share[FIRN_FORECAST_ANY] = firn_forecast_log_add(interval->ln_share[FIRN_FORECAST_ROWS],
                                                                   interval->ln_share[FIRN_FORECAST_MEDIUM]);
-}
-
-/* While a bad copy is made anew, damage to the others still counts as the same interval's. */
-static double exposure(const struct firn_forecast_plan *plan, double years)
-{
-    return plan->copies > 1 ? years + plan->replace : years;
 }
 
 static void run_years(const struct work *w)
@@ -215,9 +196,9 @@ static void run_years(const struct work *w)
     bool has_rest = rest > 1e-9 * plan->years;
 
     if (whole > 0)
-        run_interval(w, exposure(plan, plan->interval), &full);
+        run_interval(w, plan->interval, &full);
     if (has_rest)
-        run_interval(w, exposure(plan, rest), &last);
+        run_interval(w, rest, &last);
     for (unsigned cause = 0; cause < FIRN_FORECAST_CAUSES; cause++) {
         double ln_lost = -INFINITY, ln_share = -INFINITY;
 

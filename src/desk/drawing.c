@@ -112,15 +112,16 @@ void firn_drawing_words(struct firn_drawing *drawing, double x, double y, const 
 {
     static const char *const anchors[] = { "start", "middle", "end" };
     bool bold = type->face == FIRN_DRAWING_BOLD || type->face == FIRN_DRAWING_MONO_BOLD;
+    double width = firn_drawing_width(type, words), size = type->size;
 
     if (*words == '\0')
         return;
-    fprintf(drawing->out, "<text x=\"%.3f\" y=\"%.3f\" font-family=\"%s\" font-size=\"%g\"%s text-anchor=\"%s\"", x, y,
-            is_mono(type) ? "'DejaVu Sans Mono', 'Liberation Mono', monospace"
-                          : "'DejaVu Sans', 'Liberation Sans', sans-serif",
-            type->size, bold ? " font-weight=\"bold\"" : "", anchors[type->anchor]);
-    if (type->most > 0 && firn_drawing_width(type, words) > type->most)
-        fprintf(drawing->out, " textLength=\"%.3f\" lengthAdjust=\"spacingAndGlyphs\"", type->most);
+    if (type->most > 0 && width > type->most)
+        size *= type->most / width;
+    fprintf(drawing->out, "<text x=\"%.3f\" y=\"%.3f\" font-family=\"%s\" font-size=\"%.4g\"%s text-anchor=\"%s\"", x,
+            y, is_mono(type) ? "'DejaVu Sans Mono', 'Liberation Mono', monospace"
+                             : "'DejaVu Sans', 'Liberation Sans', sans-serif", size,
+            bold ? " font-weight=\"bold\"" : "", anchors[type->anchor]);
     fputs(" xml:space=\"preserve\">", drawing->out);
     put_escaped(drawing->out, words);
     fputs("</text>\n", drawing->out);

@@ -41,7 +41,7 @@ struct firn_drawing_type {
     double size;             /* of the letters, in millimetres */
     enum firn_drawing_face face;
     enum firn_drawing_anchor anchor;
-    double most;             /* the widest it may become; letters are pushed together beyond that. 0: any */
+    double most;             /* the widest it may become; letters are made smaller beyond that. 0: any */
 };
 
 /* words: UTF-8 without control characters */

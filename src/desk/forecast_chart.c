@@ -24,6 +24,7 @@ struct chart {
     struct curve curves[CURVES_MAX];      /* the reserves, then the media */
     double left, right, bottom;           /* top is 0: certainty */
     double target;                        /* -INFINITY: none */
+    char target_name[FIRN_FORECAST_VIEW_ROOM + 8];
 };
 
 static void make_curves(struct chart *c)
@@ -51,6 +52,7 @@ static void make_curves(struct chart *c)
 /* Down to the least chance there is, but not so far below target and lost media that the upper part is squeezed. */
 static void make_range(struct chart *c)
 {
+    char words[FIRN_FORECAST_VIEW_ROOM];
     double matters;
 
     c->left = c->curves[0].x[0];
@@ -60,6 +62,7 @@ static void make_range(struct chart *c)
         c->right += 0.05;
     }
     c->target = c->f->target > 0 ? log10(c->f->target) : -INFINITY;
+    snprintf(c->target_name, sizeof c->target_name, "target %s", firn_forecast_view_chance(c->target * ln_ten, words));
     matters = isinf(c->target) ? 0 : c->target;
     c->bottom = isinf(c->target) ? 0 : c->target - 1;
     for (unsigned i = c->reserves + 1; i-- > 0;)
@@ -301,7 +304,7 @@ static void draw_names(struct firn_drawing *drawing, struct name *names, unsigne
 /* below: which curves lie below the chart altogether */
 static void draw_curves(const struct chart *c, struct firn_drawing *drawing, bool below[CURVES_MAX])
 {
-    struct name names[CURVES_MAX];
+    struct name names[CURVES_MAX + 1];      /* and the target */
     unsigned named = 0;
 
     for (unsigned i = c->reserves + 1; i-- > 0;) {      /* the broad one first, under the others */
@@ -317,21 +320,19 @@ static void draw_curves(const struct chart *c, struct firn_drawing *drawing, boo
                            media ? &media_pen : &curve_pens[i % (sizeof curve_pens / sizeof curve_pens[0])]);
         names[named++] = (struct name){ x[points - 1], y[points - 1], 0, c->curves[i].name };
     }
+    if (!isinf(c->target))
+        names[named++] = (struct name){ PLOT_RIGHT, page_y(c, c->target), 0, c->target_name };
     draw_names(drawing, names, named);
 }
 
 static void draw_choice(const struct chart *c, struct firn_drawing *drawing)
 {
     const struct firn_forecast_table *t = c->f->table;
-    const struct firn_drawing_type type = { 2.8, FIRN_DRAWING_PLAIN, FIRN_DRAWING_START, 0 };
-    char words[80], chance[FIRN_FORECAST_VIEW_ROOM];
     double y;
 
     if (isinf(c->target))
         return;
     firn_drawing_line(drawing, PLOT_LEFT, page_y(c, c->target), PLOT_RIGHT, page_y(c, c->target), &target_pen);
-    snprintf(words, sizeof words, "target %s", firn_forecast_view_chance(c->target * ln_ten, chance));
-    firn_drawing_words(drawing, PLOT_LEFT + 1.5, page_y(c, c->target) - 0.9, &type, words);
     if (!t->found)
         return;
     y = fmax(c->curves[t->best_reserve].y[t->best_interval], c->bottom);

@@ -7,6 +7,7 @@
 /* SPDX-License-Identifier: BSD-2-Clause */
 #include "firn/forecast.h"
 
+#include "care/forecast_beside.h"
 #include "guard/random.h"
 
 #include <setjmp.h>
@@ -224,6 +225,85 @@ static void rows_agree_with_every_path_summed(void **state)
     (void)state;
 }
 
+/* The same for two rows side by side, whose blocks follow each other in turn: both are lost, in every way they can. */
+struct brute_two {
+    double near[2][2], far[2][2];      /* first row to second, second to first */
+    double lost[2];
+    unsigned blocks, m;                /* of both rows */
+    double both;
+};
+
+static void walk_two(struct brute_two *b, unsigned at, unsigned state, double chance, const unsigned lost[2])
+{
+    if (at == b->blocks) {
+        if (lost[0] > b->m && lost[1] > b->m)
+            b->both += chance;
+        return;
+    }
+    for (unsigned is_lost = 0; is_lost < 2; is_lost++)
+        for (unsigned next = 0; next < (at + 1 < b->blocks ? 2U : 1U); next++) {
+            unsigned now[2] = { lost[0], lost[1] };
+            double here = chance * (is_lost ? b->lost[state] : 1 - b->lost[state]);
+
+            now[at % 2] += is_lost;
+            if (at + 1 < b->blocks)
+                here *= at % 2 == 0 ? b->near[state][next] : b->far[state][next];
+            walk_two(b, at + 1, next, here, now);
+        }
+}
+
+static void power(const double one[2][2], unsigned steps, double out[2][2])
+{
+    memcpy(out, (const double[2][2]){ { 1, 0 }, { 0, 1 } }, sizeof(double[2][2]));
+    while (steps-- > 0) {
+        double next[2][2];
+
+        for (unsigned i = 0; i < 2; i++)
+            for (unsigned j = 0; j < 2; j++)
+                next[i][j] = out[i][0] * one[0][j] + out[i][1] * one[1][j];
+        memcpy(out, next, sizeof next);
+    }
+}
+
+static void rows_side_by_side_agree_with_every_path_summed(void **state)
+{
+    static const struct { unsigned k, m, apart; double alone, bad, run; } cases[] = {
+        { 2, 2, 3, 0.01, 0.05, 3 }, { 3, 2, 8, 0.05, 0.3, 20 }, { 1, 0, 2, 0.01, 0.02, 6 }, { 3, 2, 2, 1e-3, 0.01, 50 },
+    };
+
+    for (size_t i = 0; i < sizeof cases / sizeof cases[0]; i++) {
+        const struct firn_forecast_row row = { cases[i].k, cases[i].m, cases[i].apart, log(cases[i].alone),
+                                               log(cases[i].bad), cases[i].run };
+        const double r = 1 / cases[i].run, p = r * cases[i].bad / (1 - cases[i].bad);
+        const double one[2][2] = { { 1 - p, p }, { r, 1 - r } };
+        struct brute_two b = { .lost = { cases[i].alone, 1 }, .blocks = 2 * (row.k + row.m), .m = row.m };
+        struct firn_forecast_row_loss loss;
+
+        power(one, 1, b.near);
+        power(one, cases[i].apart - 1, b.far);
+        walk_two(&b, 0, 0, 1 - cases[i].bad, (const unsigned[2]){ 0, 0 });
+        walk_two(&b, 0, 1, cases[i].bad, (const unsigned[2]){ 0, 0 });
+        firn_forecast_row(&row, &loss);
+        assert_true(b.both > 0 && b.both < exp(loss.ln_row));
+        near(exp(firn_forecast_beside_both(&row, loss.ln_row)), b.both, 1e-9);
+    }
+    (void)state;
+}
+
+/* Any of n independent rows; rows that always go together; rows of which nobody knows whether they do. */
+static void any_of_rows_side_by_side(void **state)
+{
+    const double q = 0.03;
+
+    near(exp(firn_forecast_beside_any(log(q), 2 * log(q), 10)), 1 - pow(1 - q, 10), 1e-12);
+    near(exp(firn_forecast_beside_any(log(q), log(q), 10)), q, 1e-12);
+    assert_true(firn_forecast_beside_any(log(q), -INFINITY, 10) > firn_forecast_beside_any(log(q), 2 * log(q), 10));
+    assert_true(firn_forecast_beside_any(-INFINITY, -INFINITY, 10) == -INFINITY);
+    assert_true(firn_forecast_beside_any(0, 0, 10) == 0);
+    near(exp(firn_forecast_beside_any(log(q), 2 * log(q), 1)), q, 1e-12);
+    (void)state;
+}
+
 /* Runs of one block, or rows whose blocks lie far apart, are as good as single losses: GSL's binomial tail again. */
 static void rows_without_runs_are_binomial(void **state)
 {
@@ -330,7 +410,7 @@ static void lost_media(void **state)
     struct firn_forecast_medium medium = { .loss = 0.03, .run_bytes = 512 };
     struct firn_forecast_plan plan = plan_of(1000000000, 1, 10, 1);
     struct firn_forecast_result r;
-    double one = -expm1(-0.03);
+    double one = -expm1(-0.03), till;
 
     run(&medium, &plan, &r);
     near(exp(r.ln_lost[FIRN_FORECAST_MEDIUM]), -expm1(-0.3), 1e-12);
@@ -347,10 +427,12 @@ static void lost_media(void **state)
     plan.interval = INFINITY;
     run(&medium, &plan, &r);
     near(exp(r.ln_lost[FIRN_FORECAST_ANY]), pow(-expm1(-0.3), 3), 1e-12);
+    /* all three within 1.5 years, but not all of them in the last half year: those belong to the next interval */
     plan.interval = 1;
     plan.replace = 0.5;
+    till = -expm1(-0.045);
     run(&medium, &plan, &r);
-    near(exp(r.ln_lost[FIRN_FORECAST_ANY]), 1 - pow(1 - pow(-expm1(-0.045), 3), 10), 1e-9);
+    near(exp(r.ln_lost[FIRN_FORECAST_ANY]), 1 - pow(1 - (pow(till, 3) - pow(till - one, 3)), 10), 1e-9);
     plan.replace = 0;
     plan.correlation = 1;     /* copies that share every fate are one copy */
     run(&medium, &plan, &r);
@@ -510,6 +592,8 @@ int main(void)
         cmocka_unit_test(scrub_arithmetic),
         cmocka_unit_test(baker_two_copies),
         cmocka_unit_test(rows_agree_with_every_path_summed),
+        cmocka_unit_test(rows_side_by_side_agree_with_every_path_summed),
+        cmocka_unit_test(any_of_rows_side_by_side),
         cmocka_unit_test(rows_without_runs_are_binomial),
         cmocka_unit_test(share_of_bad_blocks),
         cmocka_unit_test(rows_hold_to_1e300_and_beyond),
