@@ -2,8 +2,8 @@
  * care/forecast_chain.h - good and bad stretches of blocks as a two-state Markov chain
  *
  * Room: care. Pure. E. N. Gilbert, "Capacity of a Burst-Noise Channel", BSTJ 39, 1960, pp. 1253-1265, with losses in
- * the good state too as in E. O. Elliott, BSTJ 42, 1963, pp. 1977-1997. Every n-th block of such a chain makes such a chain
- * again. All chances are natural logarithms.
+ * the good state too as in E. O. Elliott, BSTJ 42, 1963, pp. 1977-1997. Every n-th block of such a chain makes such a
+ * chain again. All chances are natural logarithms.
  * SPDX-License-Identifier: BSD-2-Clause
  */
 #ifndef FIRN_CARE_FORECAST_CHAIN_H
