@@ -8,13 +8,8 @@
 #include "firn/forecast.h"
 
 #include "guard/random.h"
+#include "help/tally.h"
 
-#include <setjmp.h>
-#include <stdarg.h>
-#include <stddef.h>
-#include <cmocka.h>
-
-#include <math.h>
 #include <stdlib.h>
 
 enum { BLOCKS_MAX = 2048, ROWS_MAX = 128, LANES = 64, LANE_BITS = 512, SEGMENT_DATA_BLOCKS = 265 };
@@ -36,46 +31,6 @@ static unsigned poisson(double mean)
     for (double at = -log(uniform()); at < mean; at -= log(uniform()))
         events++;
     return events;
-}
-
-/* What many trials said of one number, beside what was forecast. */
-struct tally {
-    double sum, squares;
-    unsigned trials;
-};
-
-static void count(struct tally *tally, double value)
-{
-    tally->sum += value;
-    tally->squares += value * value;
-    tally->trials++;
-}
-
-static double mean(const struct tally *tally)
-{
-    return tally->sum / tally->trials;
-}
-
-static double standard_error(const struct tally *tally)
-{
-    return sqrt((tally->squares / tally->trials - mean(tally) * mean(tally)) / tally->trials);
-}
-
-static void agrees(const struct tally *tally, double forecast)
-{
-    double error = standard_error(tally);
-
-    print_message("trials %u: %.5g +- %.2g, forecast %.5g\n", tally->trials, mean(tally), error, forecast);
-    assert_true(tally->sum > 20);      /* so rare that it says nothing */
-    assert_true(fabs(mean(tally) - forecast) < 5 * error);
-}
-
-static void does_not_exceed(const struct tally *tally, double forecast)
-{
-    print_message("trials %u: %.5g +- %.2g, forecast at most %.5g\n", tally->trials, mean(tally),
-                  standard_error(tally), forecast);
-    assert_true(tally->sum > 20);
-    assert_true(mean(tally) < forecast + 5 * standard_error(tally));
 }
 
 /* --- one copy, one interval --- */
@@ -190,11 +145,11 @@ static void flips(void **state)
         judge(&copy);
         for (unsigned i = 0; i < copy.blocks; i++)
             gone += copy.lost[i];
-        count(&any, copy.rows_lost > 0);
-        count(&beyond, gone);
+        tally_add(&any, copy.rows_lost > 0);
+        tally_add(&beyond, gone);
     }
-    agrees(&beyond, forecast.beyond_lanes);
-    agrees(&any, exp(forecast.ln_lost[FIRN_FORECAST_ANY]));
+    tally_agrees(&beyond, forecast.beyond_lanes);
+    tally_agrees(&any, exp(forecast.ln_lost[FIRN_FORECAST_ANY]));
     (void)state;
 }
 
@@ -219,19 +174,19 @@ static void runs_and_flips(void **state)
         make_copy(&copy, SHEETS);
         flip(&copy, flip_rate);
         for (unsigned i = 0; i < copy.blocks; i++)
-            count(&alone, copy.lost[i]);
+            tally_add(&alone, copy.lost[i]);
         lay_runs(&copy, bad, 6);
         judge(&copy);
-        count(&any, copy.rows_lost > 0);
-        count(&rows, copy.rows_lost);
-        count(&data, copy.data_gone);
+        tally_add(&any, copy.rows_lost > 0);
+        tally_add(&rows, copy.rows_lost);
+        tally_add(&data, copy.data_gone);
     }
-    agrees(&alone, forecast.beyond_lanes / blocks);
+    tally_agrees(&alone, forecast.beyond_lanes / blocks);
     row.ln_alone = log(forecast.beyond_lanes / blocks);
     firn_forecast_row(&row, &loss);
-    agrees(&rows, SHEETS * 8 * exp(loss.ln_row));
-    agrees(&data, SHEETS * 96 * exp(loss.ln_block));
-    does_not_exceed(&any, exp(forecast.ln_lost[FIRN_FORECAST_ANY]));
+    tally_agrees(&rows, SHEETS * 8 * exp(loss.ln_row));
+    tally_agrees(&data, SHEETS * 96 * exp(loss.ln_block));
+    tally_does_not_exceed(&any, exp(forecast.ln_lost[FIRN_FORECAST_ANY]));
     (void)state;
 }
 
@@ -255,14 +210,14 @@ static void long_runs(void **state)
         make_copy(&copy, SHEETS);
         lay_runs(&copy, bad, 30);
         judge(&copy);
-        count(&any, copy.rows_lost > 0);
-        count(&rows, copy.rows_lost);
-        count(&data, copy.data_gone);
+        tally_add(&any, copy.rows_lost > 0);
+        tally_add(&rows, copy.rows_lost);
+        tally_add(&data, copy.data_gone);
     }
-    agrees(&rows, SHEETS * 8 * exp(loss.ln_row));
-    agrees(&data, SHEETS * 96 * exp(loss.ln_block));
-    does_not_exceed(&any, exp(forecast.ln_lost[FIRN_FORECAST_RUNS]));
-    assert_true(mean(&any) > 0.8 * exp(forecast.ln_lost[FIRN_FORECAST_RUNS]));
+    tally_agrees(&rows, SHEETS * 8 * exp(loss.ln_row));
+    tally_agrees(&data, SHEETS * 96 * exp(loss.ln_block));
+    tally_does_not_exceed(&any, exp(forecast.ln_lost[FIRN_FORECAST_RUNS]));
+    assert_true(tally_mean(&any) > 0.8 * exp(forecast.ln_lost[FIRN_FORECAST_RUNS]));
     (void)state;
 }
 
@@ -300,11 +255,11 @@ static void no_reserve(void **state)
         lay_runs(&a, bad, 30);
         flip(&b, flip_rate);
         lay_runs(&b, bad, 30);
-        count(&lost_one, any_lost(&a, NULL));
-        count(&lost_two, any_lost(&a, &b));
+        tally_add(&lost_one, any_lost(&a, NULL));
+        tally_add(&lost_two, any_lost(&a, &b));
     }
-    agrees(&lost_one, exp(one.ln_lost[FIRN_FORECAST_ANY]));
-    agrees(&lost_two, exp(two.ln_lost[FIRN_FORECAST_ANY]));
+    tally_agrees(&lost_one, exp(one.ln_lost[FIRN_FORECAST_ANY]));
+    tally_agrees(&lost_two, exp(two.ln_lost[FIRN_FORECAST_ANY]));
     (void)state;
 }
 
@@ -330,9 +285,9 @@ static void lost_bytes(void **state)
         at = random_below(&generator, SHEETS * 96 - SEGMENT_DATA_BLOCKS);
         for (unsigned i = 0; i < SEGMENT_DATA_BLOCKS; i++)
             hit += copy.data_block_gone[at + i];
-        count(&share, hit > 0);
+        tally_add(&share, hit > 0);
     }
-    does_not_exceed(&share, forecast.lost_bytes[FIRN_FORECAST_ANY] / (double)plan.bytes);
+    tally_does_not_exceed(&share, forecast.lost_bytes[FIRN_FORECAST_ANY] / (double)plan.bytes);
     (void)state;
 }
 
@@ -383,9 +338,9 @@ static void two_copies_over_years(void **state)
 
             for (unsigned year = 0; year < 6 && !any; year++)
                 any = interval_loses(&shelf);
-            count(&lost, any);
+            tally_add(&lost, any);
         }
-        agrees(&lost, exp(forecast.ln_lost[FIRN_FORECAST_ANY]));
+        tally_agrees(&lost, exp(forecast.ln_lost[FIRN_FORECAST_ANY]));
     }
     (void)state;
 }
@@ -422,9 +377,9 @@ static void media_that_are_replaced(void **state)
         plan.replace = 0.3 * i;
         assert_int_equal(firn_forecast_run(&medium, &plan, &forecast), FIRN_OK);
         for (unsigned trial = 0; trial < 40000; trial++)
-            count(&lost, both_fail(medium.loss, plan.replace, 8));
-        does_not_exceed(&lost, exp(forecast.ln_lost[FIRN_FORECAST_MEDIUM]));
-        assert_true(mean(&lost) > 0.85 * exp(forecast.ln_lost[FIRN_FORECAST_MEDIUM]));
+            tally_add(&lost, both_fail(medium.loss, plan.replace, 8));
+        tally_does_not_exceed(&lost, exp(forecast.ln_lost[FIRN_FORECAST_MEDIUM]));
+        assert_true(tally_mean(&lost) > 0.85 * exp(forecast.ln_lost[FIRN_FORECAST_MEDIUM]));
     }
     (void)state;
 }
@@ -441,9 +396,9 @@ static void waiting(void **state)
             /* the interval in progress at a random moment has begun some time ago: memory is lost when it is random */
             double since = regular ? uniform() : -log(uniform());
 
-            count(&bad, -log(uniform()) < rate * since);
+            tally_add(&bad, -log(uniform()) < rate * since);
         }
-        agrees(&bad, firn_forecast_waiting(rate, regular));
+        tally_agrees(&bad, firn_forecast_waiting(rate, regular));
     }
     (void)state;
 }
