@@ -176,6 +176,9 @@ static const char *each_time(double years, char words[FIRN_FORECAST_VIEW_ROOM])
 static void put_head(const struct firn_forecast_view *f, const struct firn_forecast_result *r)
 {
     const struct firn_forecast_plan *p = f->plan;
+    const struct firn_sheet_shape *last = &r->last_sheet;
+    bool one_sheet = r->data_blocks == last->data_blocks;      /* then its rows are all there are */
+    unsigned m = one_sheet ? last->m : p->geometry.m, k = one_sheet ? last->k : p->geometry.k;
     char size[FIRN_TEXT_SIZE_ROOM], whole[FIRN_TEXT_SIZE_ROOM], all[FIRN_TEXT_SIZE_ROOM];
     char years[FIRN_FORECAST_VIEW_ROOM], interval[FIRN_FORECAST_VIEW_ROOM], percent[FIRN_FORECAST_VIEW_ROOM];
     FILE *out = f->view->out;
@@ -186,10 +189,15 @@ static void put_head(const struct firn_forecast_view *f, const struct firn_forec
         fputs("never scrubbed\n", out);
     else
         fprintf(out, "scrubbed every %s\n", each_time(p->interval, interval));
-    fprintf(out, "  reserve %s: any %u of the %u blocks of a row may be lost; %s a copy, %s in all\n\n",
-            firn_forecast_view_percent(f->percent, percent), (unsigned)p->geometry.m,
-            (unsigned)p->geometry.k + p->geometry.m, firn_text_size(r->container_bytes, whole),
-            firn_text_size(r->container_bytes * p->copies, all));
+    if (m == 0)
+        fputs("  NO reserve: a block that is lost stays lost", out);
+    else
+        fprintf(out, "  reserve %s: any %u of the %u blocks of a row may be lost",
+                firn_forecast_view_percent(f->percent, percent), m, k + m);
+    fprintf(out, "; %s a copy", firn_text_size(r->container_bytes, whole));
+    if (p->copies > 1)
+        fprintf(out, ", %s in all", firn_text_size(r->container_bytes * p->copies, all));
+    fputs("\n\n", out);
 }
 
 static void put_expected(FILE *out, const char *label, double value)
