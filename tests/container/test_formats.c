@@ -7,6 +7,7 @@
 #include "container/record.h"
 #include "base/bytes.h"
 #include "container/title.h"
+#include "container/title_value.h"
 #include "firn/segment.h"
 #include "guard/hash.h"
 
@@ -354,6 +355,59 @@ static void title_pages(void **state)
     (void)state;
 }
 
+/* What was written on a page comes back, long values put together again; nothing is found where nothing was given. */
+static void title_values(void **state)
+{
+    const struct firn_sheet_geometry geometry = { .k = 224, .m = 32, .depth = 128 };
+    char longest[513] = "";
+    struct firn_writer_title title = {
+        .accession = "MQ 1931/7",
+        .title = "Ledgers of Marrow Quay, with the letters of the harbour master, \xC3\xA9t\xC3\xA9 1931, and all that "
+                 "was found in the loft  of the old customs house",
+        .note = longest, .date = 86400
+    };
+    uint8_t page[FIRN_TITLE_PAGE_BYTES];
+    char value[FIRN_TITLE_VALUE_ROOM];
+    const char *wrong;
+
+    for (size_t i = 0; i < 512; i++)
+        longest[i] = i % 80 == 7 ? ' ' : (char)('a' + i % 26);
+    assert_int_equal(firn_title_write(&title, &geometry, page, &wrong), FIRN_OK);
+    assert_int_equal(firn_title_value_read(page, "accession", value), FIRN_OK);
+    assert_string_equal(value, title.accession);
+    assert_int_equal(firn_title_value_read(page, "title", value), FIRN_OK);
+    assert_string_equal(value, title.title);
+    assert_int_equal(firn_title_value_read(page, "note", value), FIRN_OK);
+    assert_string_equal(value, longest);
+    assert_int_equal(firn_title_value_read(page, "packed on", value), FIRN_OK);
+    assert_string_equal(value, "1970-01-02T00:00:00Z");
+    assert_int_equal(firn_title_value_read(page, "custodian", value), FIRN_END);
+    assert_string_equal(value, "");
+    assert_int_equal(firn_title_value_read(page, "pack", value), FIRN_END);
+    (void)state;
+}
+
+/* A page as a broken medium gives it: no value runs away, and none carries a control character out. */
+static void title_values_of_broken_pages(void **state)
+{
+    uint8_t page[FIRN_TITLE_PAGE_BYTES];
+    char value[FIRN_TITLE_VALUE_ROOM];
+
+    memset(page, 'x', sizeof page);
+    assert_int_equal(firn_title_value_read(page, "title", value), FIRN_END);
+    memset(page, ' ', sizeof page);
+    assert_int_equal(firn_title_value_read(page, "title", value), FIRN_END);
+    for (size_t i = 0; i + 80 <= sizeof page; i += 80)
+        memcpy(page + i, i == 0 ? "\n  title       \x1B[2J\xFF" : "\n              more", 20);
+    page[sizeof page - 1] = '\n';
+    assert_int_equal(firn_title_value_read(page, "title", value), FIRN_NO_ROOM);
+    assert_memory_equal(value, "?[2J?", 5);
+    assert_int_equal(strlen(value), FIRN_TITLE_VALUE_ROOM - 1);
+    memcpy(page, "HOW IT IS LAID OUT\n", 19);
+    assert_int_equal(firn_title_value_read(page, "title", value), FIRN_END);
+    (void)state;
+}
+
 int main(void)
 {
     const struct CMUnitTest tests[] = {
@@ -361,6 +415,7 @@ int main(void)
         cmocka_unit_test(entries), cmocka_unit_test(headers_are_filled),
         cmocka_unit_test(absurd_entries_are_refused), cmocka_unit_test(sums),
         cmocka_unit_test(index_parts), cmocka_unit_test(digests), cmocka_unit_test(title_pages),
+        cmocka_unit_test(title_values), cmocka_unit_test(title_values_of_broken_pages),
     };
 
     return cmocka_run_group_tests_name("formats", tests, NULL, NULL);
