@@ -99,6 +99,23 @@ static void find_sum(struct walk *walk)
     }
 }
 
+/*
+ * Looks for the digest of an item that goes on in the parts that follow: it stands in the one where the item ends. Only
+ * the last item of a part goes on, and the first part with items of its own is the last one that can tell.
+ */
+static enum firn_status seek_sum(struct walk *walk)
+{
+    enum firn_status status = FIRN_OK;
+
+    while (status == FIRN_OK && !walk->item.summed && !walk->ended && walk->cursor.items_left == 0) {
+        status = next_part(walk);
+        status = status == FIRN_END ? FIRN_OK : status;
+        if (status == FIRN_OK && !walk->ended)
+            find_sum(walk);
+    }
+    return status;
+}
+
 /* --- handing out --- */
 
 /*
@@ -206,7 +223,9 @@ static enum firn_status visit(struct walk *walk)
     find_sum(walk);
     if (visitor->wants != NULL && !visitor->wants(visitor->self, &walk->item))
         return FIRN_OK;
-    if (visitor->begin != NULL)
+    if (!content && visitor->digests && walk->item.has_content)
+        status = seek_sum(walk);
+    if (status == FIRN_OK && visitor->begin != NULL)
         status = visitor->begin(visitor->self, &walk->item, 0);
     if (status == FIRN_OK && content) {
         firn_digest_start(walk->digest);
