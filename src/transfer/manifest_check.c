@@ -83,7 +83,8 @@ static enum firn_status digest_file(struct check *check, int descriptor, uint8_t
     return FIRN_OK;
 }
 
-static enum firn_status compare_file(struct check *check, int folder, const char *name, const struct firn_roll_item *file)
+static enum firn_status compare_file(struct check *check, int folder, const char *name,
+                                     const struct firn_roll_item *file)
 {
     uint8_t sha256[FIRN_DIGEST_BYTES];
     enum firn_status status;
