@@ -62,8 +62,8 @@ static void tell_file(void *self, const struct firn_manifest_file *file)
 
     firn_progress_wipe(&l->progress);
     if (file->digest == NULL) {
-        firn_view_finding(l->view, "untold", file->path, "its digest cannot be told: content or catalogue is lost here; "
-                                                         "take another copy");
+        firn_view_finding(l->view, "untold", file->path,
+                          "its digest cannot be told: content or catalogue is lost here; take another copy");
         return;
     }
     firn_text_start(&text, digest, sizeof digest);

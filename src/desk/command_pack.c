@@ -2,6 +2,7 @@
 /* SPDX-License-Identifier: BSD-2-Clause */
 #include "desk/commands.h"
 
+#include "desk/events.h"
 #include "desk/interrupt.h"
 #include "desk/progress.h"
 #include "desk/trouble.h"
@@ -31,7 +32,8 @@ enum option {
     SHEET,
     EFFORT,
     REPLACE,
-    NO_READ_BACK
+    NO_READ_BACK,
+    EVENTS
 };
 
 static const struct firn_args_option options[] = {
@@ -49,6 +51,7 @@ static const struct firn_args_option options[] = {
     [EFFORT] = { "effort", '\0', "WORD", "none, quick, normal or thorough (default normal)" },
     [REPLACE] = { "replace", '\0', NULL, "FILE may be overwritten" },
     [NO_READ_BACK] = { "no-read-back", '\0', NULL, "do not read the container back when it is written" },
+    [EVENTS] = { "events", '\0', "FILE", "append what was done as PREMIS events, JSON Lines" },
 };
 
 /* All that one run needs; freed in one place. */
@@ -72,6 +75,7 @@ struct packing {
     uint64_t mismatches;
     struct firn_writer_totals totals;
     bool read_back;
+    struct firn_lines events;
 };
 
 /* --- words --- */
@@ -397,6 +401,51 @@ static int intake_exit(const struct firn_intake_report *report)
     return report->findings[FIRN_INTAKE_CHANGED] > 0 ? FIRN_EXIT_TRY_AGAIN : FIRN_EXIT_SOUND;
 }
 
+/* ---- events ---- */
+
+static void record(struct packing *p, enum firn_events_type type, bool fine, const char *detail, const char *note)
+{
+    const char *archive = p->args->values[FROM_ARCHIVE];
+    bool packing = type == FIRN_EVENTS_PACKING, digests = type == FIRN_EVENTS_DIGEST_CALCULATION;
+    const struct firn_events_event event = {
+        .type = type, .outcome = fine ? FIRN_EVENTS_SUCCESS : FIRN_EVENTS_FAILURE, .detail = detail, .note = note,
+        .container = p->output, .made = packing, .id = p->totals.blocks > 0 ? p->totals.id : NULL,
+        .others = archive != NULL ? &archive : p->args->operands,
+        .other_count = !packing ? 0 : archive != NULL ? 1 : p->args->operand_count,
+        .catalogue_sha256 = digests ? p->totals.catalogue_sha256 : NULL
+    };
+
+    firn_events_tell(&p->events, &event);
+}
+
+static void record_expectation(struct packing *p, bool fine)
+{
+    char detail[300];
+    struct firn_text text;
+
+    if (p->expect == NULL)
+        return;
+    firn_text_start(&text, detail, sizeof detail);
+    firn_text_add(&text, "what was taken in, held against %.200s", p->args->values[EXPECT]);
+    record(p, FIRN_EVENTS_FIXITY_CHECK, fine, detail, fine ? NULL : "not as the manifest says; nothing was written");
+}
+
+static void record_done(struct packing *p, int exit)
+{
+    char detail[120], note[120];
+    struct firn_text text;
+
+    record_expectation(p, true);
+    firn_text_start(&text, detail, sizeof detail);
+    firn_text_add(&text, "%" PRIu64 " items, %" PRIu64 " bytes of content", p->totals.items, p->totals.content_bytes);
+    firn_text_start(&text, note, sizeof note);
+    firn_text_add(&text, "%" PRIu64 " items of the sources were left out", firn_intake_left_out(&p->report));
+    record(p, FIRN_EVENTS_PACKING, exit == FIRN_EXIT_SOUND, detail, exit == FIRN_EXIT_SOUND ? NULL : note);
+    record(p, FIRN_EVENTS_DIGEST_CALCULATION, true, "SHA-256 of every file, and of the catalogue that has them", NULL);
+    if (p->read_back)
+        record(p, FIRN_EVENTS_FIXITY_CHECK, true, "the container, read back when it was written", NULL);
+}
+
 static void close_all(struct packing *p)
 {
     firn_writer_free(p->writer);
@@ -423,6 +472,8 @@ static int run(const struct firn_args *args, struct firn_view *view)
         .item = see_item, .progress = step, .stop = firn_interrupt_asked
     };
     exit = read_words(&p);
+    if (exit == FIRN_EXIT_SOUND)
+        exit = firn_lines_open(&p.events, args->values[EVENTS], view);
     if (exit != FIRN_EXIT_SOUND)
         return exit;
     status = pack(&p);
@@ -430,6 +481,7 @@ static int run(const struct firn_args *args, struct firn_view *view)
     if (status == FIRN_OK) {
         show(&p);
         exit = intake_exit(&p.report);
+        record_done(&p, exit);
     } else if (status == FIRN_MISMATCH && p.mismatches > 0) {
         char words[160];
         struct firn_text text;
@@ -439,11 +491,14 @@ static int run(const struct firn_args *args, struct firn_view *view)
                       p.mismatches);
         firn_view_finding(view, "refused", p.output, words);
         exit = FIRN_EXIT_BAD_DATA;
+        record_expectation(&p, false);
+        record(&p, FIRN_EVENTS_PACKING, false, NULL, words);
     } else {
+        record(&p, FIRN_EVENTS_PACKING, false, NULL, firn_status_text(status));
         exit = firn_trouble_tell(view, p.fault.what[0] != '\0' ? NULL : p.output, status, &p.fault);
     }
     close_all(&p);
-    return exit;
+    return firn_lines_close(&p.events, exit);
 }
 
 const struct firn_command firn_command_pack = {

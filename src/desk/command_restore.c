@@ -2,6 +2,7 @@
 /* SPDX-License-Identifier: BSD-2-Clause */
 #include "desk/commands.h"
 
+#include "desk/events.h"
 #include "desk/interrupt.h"
 #include "desk/opening.h"
 #include "desk/progress.h"
@@ -15,7 +16,7 @@
 #include <sys/stat.h>
 #include <unistd.h>
 
-enum option { DIRECTORY, TO_TAR, INCOMPLETE, REPLACE, OWNER, DEVICES };
+enum option { DIRECTORY, TO_TAR, INCOMPLETE, REPLACE, OWNER, DEVICES, EVENTS };
 
 static const struct firn_args_option options[] = {
     [DIRECTORY] = { "directory", 'C', "DIR", "restore into DIR, which is made if need be (default: here)" },
@@ -24,6 +25,7 @@ static const struct firn_args_option options[] = {
     [REPLACE] = { "replace", '\0', NULL, "files that are there may be overwritten" },
     [OWNER] = { "owner", '\0', "WORD", "none, names or numbers (default names for root, else none)" },
     [DEVICES] = { "devices", '\0', NULL, "make device nodes too" },
+    [EVENTS] = { "events", '\0', "FILE", "append what was done as PREMIS events, JSON Lines" },
 };
 
 struct restoring {
@@ -36,6 +38,7 @@ struct restoring {
     struct firn_outlet_report report;
     struct firn_store_stage *stage;
     struct firn_fault fault;
+    struct firn_lines events;
 };
 
 static int read_words(struct restoring *r)
@@ -244,6 +247,42 @@ static void show(struct restoring *r, const struct firn_reader_damage *damage)
     firn_view_end(r->view);
 }
 
+/* Blocks that were put right in memory are a recovery; what was given back is an unpacking. */
+static void record(struct restoring *r, const struct firn_reader_damage *damage, enum firn_status status, int exit)
+{
+    const char *place = r->args->values[TO_TAR] != NULL ? r->args->values[TO_TAR] : r->args->values[DIRECTORY];
+    char detail[120], note[160];
+    struct firn_text text;
+    bool fine = exit == FIRN_EXIT_SOUND || exit == FIRN_EXIT_SAFE;
+    struct firn_events_event event = {
+        .type = FIRN_EVENTS_RECOVERY, .outcome = damage->lost == 0 ? FIRN_EVENTS_SUCCESS : FIRN_EVENTS_FAILURE,
+        .container = r->container, .id = firn_reader_layout_of(r->opening.reader)->id, .note = note,
+        .detail = "on reading, in memory; the container itself was not written to"
+    };
+
+    firn_text_start(&text, note, sizeof note);
+    firn_text_add(&text, "%" PRIu64 " blocks mended, %" PRIu64 " rebuilt, %" PRIu64 " lost", damage->mended,
+                  damage->rebuilt, damage->lost);
+    if (damage->mended + damage->rebuilt + damage->lost > 0)
+        firn_events_tell(&r->events, &event);
+    place = place == NULL ? "." : place;
+    event.type = FIRN_EVENTS_UNPACKING;
+    event.outcome = fine ? FIRN_EVENTS_SUCCESS : FIRN_EVENTS_FAILURE;
+    event.others = &place;
+    event.other_count = 1;
+    event.detail = detail;
+    firn_text_start(&text, detail, sizeof detail);
+    firn_text_add(&text, "%" PRIu64 " items, %" PRIu64 " bytes", r->report.written, r->report.bytes);
+    firn_text_start(&text, note, sizeof note);
+    if (status != FIRN_OK)
+        firn_text_add(&text, "%s", firn_status_text(status));
+    else
+        firn_text_add(&text, "%" PRIu64 " items not given back whole, %" PRIu64 " bytes lost",
+                      r->report.findings[FIRN_OUTLET_LOST] + r->report.items_unknown, r->report.lost_bytes);
+    event.note = fine ? NULL : note;
+    firn_events_tell(&r->events, &event);
+}
+
 static int run(const struct firn_args *args, struct firn_view *view)
 {
     struct restoring r = { .args = args, .view = view };
@@ -258,9 +297,11 @@ static int run(const struct firn_args *args, struct firn_view *view)
     if (exit != FIRN_EXIT_SOUND)
         return exit;
     r.container = args->operands[0];
-    exit = firn_opening_make(&r.opening, r.container, args, view);
+    exit = firn_lines_open(&r.events, args->values[EVENTS], view);
+    if (exit == FIRN_EXIT_SOUND)
+        exit = firn_opening_make(&r.opening, r.container, args, view);
     if (exit != FIRN_EXIT_SOUND)
-        return exit;
+        return firn_lines_close(&r.events, exit);
     layout_exit = firn_opening_remark(view, r.container, firn_reader_layout_of(r.opening.reader));
     status = restore(&r);
     firn_reader_damage_so_far(r.opening.reader, &damage);
@@ -272,9 +313,10 @@ static int run(const struct firn_args *args, struct firn_view *view)
     } else {
         exit = firn_trouble_tell(view, r.fault.what[0] != '\0' ? NULL : r.container, status, &r.fault);
     }
+    record(&r, &damage, status, exit);
     firn_store_stage_close(r.stage);
     firn_opening_close(&r.opening);
-    return exit;
+    return firn_lines_close(&r.events, exit);
 }
 
 const struct firn_command firn_command_restore = {
