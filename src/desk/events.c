@@ -162,6 +162,6 @@ void firn_events_tell(struct firn_lines *events, const struct firn_events_event 
     put_objects(line, event);
     if (event->catalogue_sha256 != NULL)
         put_fixity(line, event->catalogue_sha256);
-    fputc('}', line);
+    fputs("}\n", line);
     firn_lines_end(events, line);
 }

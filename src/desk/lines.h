@@ -1,9 +1,7 @@
 /*
  * desk/lines.h - a file of JSON Lines that grows from run to run
  *
- * Room: desk. Each line goes out in one write at the end of the file and is on the medium before the call returns, so
- * that two runs may write to one file, and a power cut costs the line at hand at most. A torn last line is ended before
- * the next one begins.
+ * Room: desk. How lines are written: care/append.h.
  * SPDX-License-Identifier: BSD-2-Clause
  */
 #ifndef FIRN_DESK_LINES_H
@@ -25,7 +23,7 @@ int firn_lines_open(struct firn_lines *lines, const char *path, struct firn_view
 
 /* A stream for the next line, or NULL when lines go nowhere or memory is out, which was told. */
 FILE *firn_lines_begin(struct firn_lines *lines);
-/* Ends what firn_lines_begin gave, and writes it. What goes wrong is told once and remembered in exit. */
+/* Ends what firn_lines_begin gave, its LF included, and writes it. What goes wrong is told once, and kept in exit. */
 void firn_lines_end(struct firn_lines *lines, FILE *line);
 
 /* Closes; returns the exit status that a run has which has come to `exit` without the file. */
