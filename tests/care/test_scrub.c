@@ -289,7 +289,7 @@ static void goes_on_where_it_is_told(void **state)
     (void)state;
     for (size_t i = 0; i < sizeof begins / sizeof begins[0]; i++) {
         uint64_t first = (begins[i] + SHEET - 1) / SHEET * SHEET;      /* of the first sheet that is checked */
-        unsigned rebuilt = (first <= SHEET ? 5 : 0) + (first <= 2 * SHEET ? RUN - 4 : 0);
+        int rebuilt = (first <= SHEET ? 5 : 0) + (first <= 2 * SHEET ? RUN - 4 : 0);
         struct parts parts = { .begin = begins[i] };
         struct ward *ward = &parts.ward;
 
