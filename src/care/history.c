@@ -118,36 +118,47 @@ static bool same_container(const struct firn_history_entry *one, const struct fi
     return memcmp(one->id, other->id, sizeof one->id) == 0;
 }
 
-/* The next part of a scrub stands for all parts before it. */
-static void take(struct firn_history *history, const struct firn_history_entry *entry, const struct firn_core *core)
+/* The next part of a scrub stands for all parts before it. FIRN_OK or FIRN_NO_MEMORY. */
+static enum firn_status take(struct firn_history *history, const struct firn_history_entry *entry,
+                             const struct firn_core *core)
 {
-    struct firn_history_entry *newest = history->count == 0 ? NULL : &history->entries[history->count - 1];
+    void *entries = history->entries;
+    enum firn_status status = firn_memory_grow(history->memory, &entries, &history->capacity, history->count + 1,
+                                               sizeof *entry);
+    struct firn_history_entry *newest;
 
+    history->entries = entries;
+    if (status != FIRN_OK)
+        return status;
+    newest = history->count == 0 ? NULL : &history->entries[history->count - 1];
     history->core = *core;
     history->core.places = entry->places;
     history->core.places_lost = entry->left;
     if (newest != NULL && newest->began == entry->began && same_container(newest, entry) && !newest->done) {
         *newest = *entry;
-        return;
+        return FIRN_OK;
     }
     if (history->count == FIRN_HISTORY_MAX) {
         memmove(history->entries, history->entries + 1, (FIRN_HISTORY_MAX - 1) * sizeof history->entries[0]);
         history->count--;
     }
     history->entries[history->count++] = *entry;
+    return FIRN_OK;
 }
 
-static void take_lines(struct firn_history *history, char *bytes)
+static enum firn_status take_lines(struct firn_history *history, char *bytes)
 {
+    enum firn_status status = FIRN_OK;
     char *rest = NULL;
 
-    for (char *line = strtok_r(bytes, "\n", &rest); line != NULL; line = strtok_r(NULL, "\n", &rest)) {
+    for (char *line = strtok_r(bytes, "\n", &rest); line != NULL && status == FIRN_OK; line = strtok_r(NULL, "\n", &rest)) {
         struct firn_history_entry entry;
         struct firn_core core;
 
         if (strncmp(line, first_word, sizeof first_word - 1) != 0 && read_entry(line, &entry, &core))
-            take(history, &entry, &core);
+            status = take(history, &entry, &core);
     }
+    return status;
 }
 
 static size_t read_end(int descriptor, char *bytes, size_t count, off_t at)
@@ -170,6 +181,7 @@ static enum firn_status read_file(struct firn_history *history)
 {
     int descriptor = open(history->file, O_RDONLY | O_CLOEXEC | O_NONBLOCK);
     struct stat facts;
+    enum firn_status status;
     off_t at = 0;
     char *bytes;
     size_t got;
@@ -193,9 +205,9 @@ static enum firn_status read_file(struct firn_history *history)
         if (bytes[i] == '\0')
             bytes[i] = '?';
     bytes[got] = '\0';
-    take_lines(history, bytes);
+    status = take_lines(history, bytes);
     history->memory->put(history->memory->self, bytes);
-    return FIRN_OK;
+    return status;
 }
 
 /* ---- the file ---- */
@@ -262,6 +274,7 @@ void firn_history_close(struct firn_history *history)
         return;
     history->memory->put(history->memory->self, history->file);
     history->memory->put(history->memory->self, history->place);
+    history->memory->put(history->memory->self, history->entries);
     history->memory->put(history->memory->self, history);
 }
 
@@ -294,7 +307,9 @@ enum firn_status firn_history_add(struct firn_history *history, const struct fir
     enum firn_status status;
     int descriptor;
 
-    take(history, entry, core);
+    status = take(history, entry, core);
+    if (status != FIRN_OK)
+        return firn_fault_tell(fault, status, 0, 0, history->place);
     if (history->file == NULL)
         return FIRN_OK;
     firn_text_start(&text, line, sizeof line);
@@ -343,7 +358,7 @@ void firn_history_count(struct firn_history_entry *entry, const struct firn_scru
     entry->unreadable += report->unreadable;
     entry->written += report->written;
     entry->title_damaged = report->title == FIRN_SCRUB_TITLE_DAMAGED || report->title == FIRN_SCRUB_TITLE_HEALED;
-    entry->end_missing = !report->end_known;
+    entry->end_missing = entry->done && !report->end_known;      /* only the end can tell */
     entry->places = core->places;
     entry->left = repaired ? core->places_lost : core->places;
 }
@@ -355,7 +370,6 @@ void firn_history_count(struct firn_history_entry *entry, const struct firn_scru
 size_t firn_history_intervals(const struct firn_history *history,
                               struct firn_trend_interval intervals[FIRN_HISTORY_MAX])
 {
-    const struct firn_history_entry *newest = &history->entries[history->count == 0 ? 0 : history->count - 1];
     const struct firn_history_entry *before = NULL;
     uint64_t left = 0, waiting = 0;
     size_t count = 0;
@@ -364,7 +378,7 @@ size_t firn_history_intervals(const struct firn_history *history,
         const struct firn_history_entry *entry = &history->entries[i];
         uint64_t fresh = entry->places > left ? entry->places - left : 0;
 
-        if (!same_container(entry, newest))
+        if (!same_container(entry, &history->entries[history->count - 1]))
             continue;
         left = entry->left;
         if (!entry->done) {

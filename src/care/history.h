@@ -37,8 +37,8 @@ struct firn_history {
     const struct firn_memory *memory;
     char *file;                        /* where it is kept; NULL when it is not */
     char *place;                       /* of the container, from the root */
-    struct firn_history_entry entries[FIRN_HISTORY_MAX];
-    size_t count;                      /* ascending in time; parts of one scrub are one entry */
+    struct firn_history_entry *entries;
+    size_t count, capacity;            /* ascending in time; parts of one scrub are one entry */
     struct firn_core core;             /* of the newest */
 };
 
@@ -57,13 +57,13 @@ const struct firn_history_entry *firn_history_open_turn(const struct firn_histor
 /* When the container was last gone through to its end; 0 for never. */
 int64_t firn_history_last_done(const struct firn_history *history);
 
-/* Adds what one call of firn_scrub has come to; part of the same scrub when it went on from firn_history_open_turn. */
+/* Adds what one call of firn_scrub has come to, to what earlier parts have (firn_history_open_turn); done is set already. */
 void firn_history_count(struct firn_history_entry *entry, const struct firn_scrub_report *report,
                         const struct firn_core *core, bool repaired);
 
 /*
  * Takes an entry in, in the place of the newest if it goes on with that, and writes it down. The entry counts also when
- * it cannot be written. FIRN_OK, FIRN_CANNOT_CREATE, FIRN_IO.
+ * it cannot be written. FIRN_OK, FIRN_CANNOT_CREATE, FIRN_IO; FIRN_NO_MEMORY: it does not count.
  */
 enum firn_status firn_history_add(struct firn_history *history, const struct firn_history_entry *entry,
                                   const struct firn_core *core, struct firn_fault *fault);
