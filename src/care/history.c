@@ -149,9 +149,9 @@ static enum firn_status take(struct firn_history *history, const struct firn_his
 static enum firn_status take_lines(struct firn_history *history, char *bytes)
 {
     enum firn_status status = FIRN_OK;
-    char *rest = NULL;
+    char *rest = NULL, *line = strtok_r(bytes, "\n", &rest);
 
-    for (char *line = strtok_r(bytes, "\n", &rest); line != NULL && status == FIRN_OK; line = strtok_r(NULL, "\n", &rest)) {
+    for (; line != NULL && status == FIRN_OK; line = strtok_r(NULL, "\n", &rest)) {
         struct firn_history_entry entry;
         struct firn_core core;
 

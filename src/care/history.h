@@ -57,7 +57,7 @@ const struct firn_history_entry *firn_history_open_turn(const struct firn_histor
 /* When the container was last gone through to its end; 0 for never. */
 int64_t firn_history_last_done(const struct firn_history *history);
 
-/* Adds what one call of firn_scrub has come to, to what earlier parts have (firn_history_open_turn); done is set already. */
+/* Adds what one call of firn_scrub has come to, to what earlier parts have; whether it is done is told already. */
 void firn_history_count(struct firn_history_entry *entry, const struct firn_scrub_report *report,
                         const struct firn_core *core, bool repaired);
 

@@ -10,7 +10,7 @@
 #include <stdint.h>
 #include <stdio.h>
 
-/* Any bytes, as text or inside a quoted attribute: control characters visible, nothing that HTML would read as its own. */
+/* Any bytes, as text or inside a quoted attribute: control characters visible, nothing that HTML reads as its own. */
 void firn_page_words(FILE *out, const char *words);
 
 /* "1 234 567", held together. */

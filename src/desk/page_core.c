@@ -12,7 +12,8 @@ void firn_page_core_patterns(FILE *out)
 {
     fputs("<svg width=\"0\" height=\"0\" style=\"position:absolute\" aria-hidden=\"true\"><defs>\n"
           "<pattern id=\"mended\" width=\"6\" height=\"6\" patternUnits=\"userSpaceOnUse\">"
-          "<rect width=\"6\" height=\"6\" fill=\"#d9ebf4\"/><circle cx=\"3\" cy=\"3\" r=\"1.6\" fill=\"#1d5b7a\"/></pattern>\n"
+          "<rect width=\"6\" height=\"6\" fill=\"#d9ebf4\"/>"
+          "<circle cx=\"3\" cy=\"3\" r=\"1.6\" fill=\"#1d5b7a\"/></pattern>\n"
           "<pattern id=\"rebuilt\" width=\"6\" height=\"6\" patternUnits=\"userSpaceOnUse\">"
           "<rect width=\"6\" height=\"6\" fill=\"#fff\"/>"
           "<path d=\"M-1 7L7 -1M-1 1L1 -1M5 7L7 5\" stroke=\"#16242e\" stroke-width=\"1.6\"/></pattern>\n"
@@ -24,8 +25,8 @@ void firn_page_core_patterns(FILE *out)
 
 static void put_legend(FILE *out, const char *fill, const char *words)
 {
-    fprintf(out, "<li><svg viewBox=\"0 0 32 19\" aria-hidden=\"true\"><rect width=\"32\" height=\"19\" fill=\"%s\"/></svg>%s"
-            "</li>\n", fill, words);
+    fprintf(out, "<li><svg viewBox=\"0 0 32 19\" aria-hidden=\"true\"><rect width=\"32\" height=\"19\" fill=\"%s\"/>"
+                 "</svg>%s</li>\n", fill, words);
 }
 
 void firn_page_core_legend(FILE *out)
@@ -41,7 +42,8 @@ void firn_page_core_legend(FILE *out)
 
 static void put_band(FILE *out, double x, double width, double y, double height, const char *fill)
 {
-    fprintf(out, "<rect x=\"%.2f\" y=\"%.2f\" width=\"%.2f\" height=\"%.2f\" fill=\"%s\"/>\n", x, y, width, height, fill);
+    fprintf(out, "<rect x=\"%.2f\" y=\"%.2f\" width=\"%.2f\" height=\"%.2f\" fill=\"%s\"/>\n", x, y, width, height,
+            fill);
 }
 
 struct span { double x, width; uint64_t blocks; };
@@ -62,8 +64,14 @@ static uint64_t damage(const struct firn_core_slice *slice)
 
 static void put_peaks(FILE *out, const struct firn_core *core)
 {
-    fprintf(out, "<svg class=\"peaks\" viewBox=\"0 0 %d %d\" preserveAspectRatio=\"none\" aria-hidden=\"true\">\n", WIDTH,
-            PEAK_HEIGHT);
+    bool any = false;
+
+    for (size_t i = 0; i < FIRN_CORE_SLICES; i++)
+        any = any || damage(&core->slices[i]) > 0;
+    if (!any)
+        return;
+    fprintf(out, "<svg class=\"peaks\" viewBox=\"0 0 %d %d\" preserveAspectRatio=\"none\" aria-hidden=\"true\">\n",
+            WIDTH, PEAK_HEIGHT);
     for (size_t i = 0; i < FIRN_CORE_SLICES; i++) {
         struct span span = span_of(core, i);
         uint64_t blocks = damage(&core->slices[i]);
@@ -99,8 +107,8 @@ static void put_core(FILE *out, const struct firn_core *core, const struct firn_
 {
     double seen = WIDTH * ((double)newest->reached / (double)newest->blocks);
 
-    fprintf(out, "<div class=\"core\"><svg viewBox=\"0 0 %d %d\" preserveAspectRatio=\"none\" role=\"img\"><title>", WIDTH,
-            HEIGHT);
+    fprintf(out, "<div class=\"core\"><svg viewBox=\"0 0 %d %d\" preserveAspectRatio=\"none\" role=\"img\" "
+                 "shape-rendering=\"crispEdges\"><title>", WIDTH, HEIGHT);
     firn_page_counted(out, newest->blocks, "block", "blocks");
     fputs(", first to last: ", out);
     firn_page_counted(out, newest->mended, "mended, ", "mended, ");

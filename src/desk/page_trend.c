@@ -62,8 +62,8 @@ static void put_chart(FILE *out, const struct trend *trend)
     double bar = WIDTH / (2.0 * (double)trend->count);
 
     bar = bar > BAR_MAX ? BAR_MAX : bar < BAR_MIN ? BAR_MIN : bar;
-    fprintf(out, "<svg viewBox=\"0 0 %d %d\" preserveAspectRatio=\"none\" role=\"img\">\n<title>Damaged places in each of ",
-            WIDTH, HEIGHT);
+    fprintf(out, "<svg viewBox=\"0 0 %d %d\" preserveAspectRatio=\"none\" role=\"img\">\n"
+                 "<title>Damaged places in each of ", WIDTH, HEIGHT);
     firn_page_counted(out, trend->count, "scrub", "scrubs");
     fputs("</title>\n", out);
     fprintf(out, "<path d=\"M0 %dH%d\" stroke=\"#16242e\" vector-effect=\"non-scaling-stroke\"/>\n", BASE, WIDTH);
@@ -81,7 +81,7 @@ void firn_page_trend(FILE *out, const struct firn_history *history)
     struct trend trend = gather(history);
 
     fputs("<figure class=\"trend\">\n", out);
-    if (trend.count > 1)
+    if (trend.count > 1 && trend.damaged > 0)
         put_chart(out, &trend);
     fputs("<figcaption>", out);
     if (trend.count == 0) {
@@ -90,6 +90,8 @@ void firn_page_trend(FILE *out, const struct firn_history *history)
         fputs("First scrub, so there is no trend yet.", out);
     } else if (trend.damaged == 0) {
         firn_page_counted(out, trend.count, "scrub", "scrubs");
+        fputs(" since ", out);
+        firn_page_day(out, trend.scrubs[0]->at);
         fputs(", none of them found damage.", out);
     } else {
         fputs("Damaged places in each scrub, ", out);

@@ -62,15 +62,15 @@ static const struct gauge {
     bool always;           /* also of a container that nothing is known of */
 } gauges[] = {
     { "firn_container_blocks", "Blocks of 4096 bytes that the container has.", NULL, FIELD(blocks), false },
-    { "firn_container_scrubbed_timestamp_seconds", "When it was last gone through to its end.", is_scrubbed_at, 0, false },
+    { "firn_container_scrubbed_timestamp_seconds", "When it was gone through last.", is_scrubbed_at, 0, false },
     { "firn_container_checked_ratio", "How far the newest scrub has come.", is_checked, 0, false },
     { "firn_container_mended_blocks", "Blocks with stray bits in the newest scrub.", NULL, FIELD(mended), false },
-    { "firn_container_rebuilt_blocks", "Blocks that the reserve gave back in the newest scrub.", NULL, FIELD(rebuilt), false },
+    { "firn_container_rebuilt_blocks", "Blocks that came from the reserve in the newest scrub.", NULL, FIELD(rebuilt), false },
     { "firn_container_lost_blocks", "Blocks that are lost, in the newest scrub.", NULL, FIELD(lost), false },
     { "firn_container_unreadable_blocks", "Blocks that the medium gave an error for.", NULL, FIELD(unreadable), false },
     { "firn_container_damaged_places", "Runs of damaged blocks in the newest scrub.", NULL, FIELD(places), false },
     { "firn_container_cut_short", "1 when its end is missing.", is_cut, 0, false },
-    { "firn_container_damage_growing", "1 when damage comes faster than before: copy this medium.", is_growing, 0, false },
+    { "firn_container_damage_growing", "1 when damage comes faster: copy this medium.", is_growing, 0, false },
     { "firn_container_scrub_failed", "1 when this run could not look at it.", is_failed, 0, true },
 };
 
@@ -136,7 +136,7 @@ static void write_all(void *self, FILE *out)
     for (size_t i = 0; i < w->count; i++)
         waiting += w->turns[i].waits || (w->turns[i].tried && w->turns[i].entry.blocks > 0 && !w->turns[i].entry.done);
     put_run(out, "firn_scrub_run_timestamp_seconds", "When the newest run ended.", (double)time(NULL));
-    put_run(out, "firn_scrub_run_exit_status", "0 sound, 1 damage and all safe, 2 bytes lost, else it failed.", w->exit);
+    put_run(out, "firn_scrub_run_exit_status", "0 sound, 1 damage, all safe, 2 bytes lost, else it failed.", w->exit);
     put_run(out, "firn_scrub_run_containers", "Containers that the run was told of.", (double)w->count);
     put_run(out, "firn_scrub_run_waiting_containers", "Of these, not gone through: they wait.", (double)waiting);
     for (size_t i = 0; i < sizeof gauges / sizeof gauges[0]; i++)

@@ -19,15 +19,16 @@ struct page {
 /* Worst first: the order of the table and of the cores. */
 enum verdict { LOST, FAILED, GROWING, LEFT, REBUILT, MENDED, UNKNOWN, SOUND, VERDICTS };
 
-static const struct { const char *words, *style, *sign; } verdicts[VERDICTS] = {
-    [LOST] = { "bytes lost", "lost", "\xE2\x9C\x95" },                     /* multiplication x */
-    [FAILED] = { "could not be looked at", "lost", "?" },
-    [GROWING] = { "damage comes faster", "lost", "\xE2\x86\x97" },         /* arrow to the north-east */
-    [LEFT] = { "damaged, not repaired", "damaged", "\xE2\x97\x90" },       /* circle, half black */
-    [REBUILT] = { "rebuilt and repaired", "damaged", "\xE2\x97\x90" },
-    [MENDED] = { "mended", "damaged", "\xE2\x97\x94" },                    /* circle, a quarter black */
-    [UNKNOWN] = { "not looked at yet", "waits", "\xE2\x80\xA6" },          /* ellipsis */
-    [SOUND] = { "sound", "sound", "\xE2\x97\x8B" },                        /* circle */
+/* What the badge of one says, and how many of them are told of; the signs are a cross, an arrow, circles filling up. */
+static const struct { const char *words, *counted, *style, *sign; } verdicts[VERDICTS] = {
+    [LOST] = { "bytes lost", "with bytes lost", "lost", "\xE2\x9C\x95" },
+    [FAILED] = { "could not be looked at", "not to be looked at", "lost", "?" },
+    [GROWING] = { "damage comes faster", "damaged faster than before", "lost", "\xE2\x86\x97" },
+    [LEFT] = { "damaged, not repaired", "damaged and not repaired", "damaged", "\xE2\x97\x91" },
+    [REBUILT] = { "rebuilt and repaired", "rebuilt and repaired", "damaged", "\xE2\x97\x91" },
+    [MENDED] = { "mended", "mended", "damaged", "\xE2\x97\x94" },
+    [UNKNOWN] = { "not gone through yet", "not gone through yet", "waits", "\xE2\x80\xA6" },
+    [SOUND] = { "sound", "sound", "sound", "\xE2\x97\x8B" },
 };
 
 static const struct firn_history_entry *newest_of(const struct firn_scrub_turn *turn)
@@ -37,25 +38,31 @@ static const struct firn_history_entry *newest_of(const struct firn_scrub_turn *
     return history == NULL || history->count == 0 ? NULL : &history->entries[history->count - 1];
 }
 
-static enum verdict judge(const struct firn_scrub_turn *turn)
+/* Several may hold of one container. */
+static bool holds(const struct firn_scrub_turn *turn, enum verdict verdict)
 {
     const struct firn_history_entry *newest = newest_of(turn);
 
-    if (newest != NULL && (newest->lost > 0 || newest->end_missing))
-        return LOST;
-    if (turn->tried && turn->status != FIRN_OK)
-        return FAILED;
-    if (newest == NULL)
-        return UNKNOWN;
-    if (firn_history_trend(turn->history).grows)
-        return GROWING;
-    if (newest->left > 0)
-        return LEFT;
-    if (newest->rebuilt > 0)
-        return REBUILT;
-    if (newest->mended > 0 || newest->title_damaged)
-        return MENDED;
-    return firn_history_last_done(turn->history) == 0 ? UNKNOWN : SOUND;
+    switch (verdict) {
+    case LOST:    return newest != NULL && (newest->lost > 0 || newest->end_missing);
+    case FAILED:  return turn->tried && turn->status != FIRN_OK;
+    case GROWING: return newest != NULL && firn_history_trend(turn->history).grows;
+    case LEFT:    return newest != NULL && newest->left > 0 && newest->lost == 0;
+    case REBUILT: return newest != NULL && newest->rebuilt > 0;
+    case MENDED:  return newest != NULL && (newest->mended > 0 || newest->title_damaged);
+    case UNKNOWN: return newest == NULL || firn_history_last_done(turn->history) == 0;
+    default:      return true;
+    }
+}
+
+/* The worst that holds. */
+static enum verdict judge(const struct firn_scrub_turn *turn)
+{
+    unsigned verdict = LOST;
+
+    while (!holds(turn, (enum verdict)verdict))
+        verdict++;
+    return (enum verdict)verdict;
 }
 
 static const char *name_of(const char *path)
@@ -138,20 +145,20 @@ static void put_attention(FILE *out, const struct page *page)
 {
     size_t troubles = 0;
 
-    for (unsigned verdict = LOST; verdict <= REBUILT; verdict++)
-        troubles += count_of(page, (enum verdict)verdict);
+    for (size_t i = 0; i < page->count; i++)
+        troubles += judge(&page->turns[i]) <= REBUILT;
     fputs("<section id=\"attention\">\n<h2>What needs attention</h2>\n", out);
     if (troubles == 0) {
         fputs("<p class=\"calm\">Nothing. What was looked at is sound, or was mended.</p>\n</section>\n", out);
         return;
     }
-    fputs("<div class=\"wide\"><table>\n<thead><tr><th>Container</th><th>What was found</th><th>What to do</th></tr></thead>\n"
+    fputs("<table>\n<thead><tr><th>Container</th><th>What was found</th><th>What to do</th></tr></thead>\n"
           "<tbody>\n", out);
     for (unsigned verdict = LOST; verdict <= REBUILT; verdict++)
         for (size_t i = 0; i < page->count; i++) {
             const struct firn_scrub_turn *turn = &page->turns[i];
 
-            if (judge(turn) != verdict)
+            if (!holds(turn, (enum verdict)verdict))
                 continue;
             fprintf(out, "<tr><th scope=\"row\"><a href=\"#c%zu\">", i);
             firn_page_words(out, name_of(turn->path));
@@ -159,7 +166,7 @@ static void put_attention(FILE *out, const struct page *page)
             put_trouble(out, turn, (enum verdict)verdict);
             fprintf(out, "</td><td>%s</td></tr>\n", what_to_do((enum verdict)verdict));
         }
-    fputs("</tbody>\n</table></div>\n</section>\n", out);
+    fputs("</tbody>\n</table>\n</section>\n", out);
 }
 
 /* ---- one container ---- */
@@ -212,7 +219,7 @@ static void put_container(FILE *out, const struct firn_scrub_turn *turn, size_t 
             verdicts[verdict].sign, verdicts[verdict].words);
     if (newest != NULL) {
         firn_page_core(out, turn->history);
-        if (verdict == GROWING)
+        if (holds(turn, GROWING))
             fputs("<p class=\"warning\">Damage comes faster than it used to. Copy this medium now.</p>\n", out);
         fputs("<div class=\"pair\">\n", out);
         put_facts(out, turn, newest);
@@ -226,9 +233,9 @@ static void put_shelf(FILE *out, const struct page *page)
 {
     fputs("<section id=\"shelf\">\n<h2>The shelf</h2>\n", out);
     firn_page_core_legend(out);
-    fputs("<p class=\"soft\">Each core is a container, drawn from its first block to its last as it was found; what is mended "
-          "or rebuilt was put right unless it says otherwise. Peaks show how many blocks of a slice were damaged, "
-          "each step of height twice as many.</p>\n<div class=\"shelf\">\n", out);
+    fputs("<p class=\"soft\">Each core is a container, drawn from its first block to its last as it was found; what is "
+          "mended or rebuilt was put right unless it says otherwise. Peaks show how many blocks of a slice were "
+          "damaged, each step of height twice as many.</p>\n<div class=\"shelf\">\n", out);
     for (unsigned verdict = LOST; verdict < VERDICTS; verdict++)
         for (size_t i = 0; i < page->count; i++)
             if (judge(&page->turns[i]) == verdict)
@@ -253,7 +260,7 @@ static void put_lead(FILE *out, const struct page *page)
         if (count == 0)
             continue;
         fputs(before, out);
-        firn_page_counted(out, count, verdicts[verdict].words, verdicts[verdict].words);
+        firn_page_counted(out, count, verdicts[verdict].counted, verdicts[verdict].counted);
         before = ", ";
     }
     fputs(".", out);
@@ -282,9 +289,9 @@ static void write_all(void *self, FILE *out)
     fputs("</header>\n<main>\n", out);
     put_attention(out, page);
     put_shelf(out, page);
-    fputs("</main>\n<footer>\n<p class=\"soft\">A repair does not make a medium young again, and a page without warnings is no "
-          "reason to trust one. Keep more than one copy, on different media, in different places; rehearse restoring. "
-          "Your institution\xE2\x80\x99s policy and professional practice come before anything said here.</p>\n"
+    fputs("</main>\n<footer>\n<p class=\"soft\">A repair does not make a medium young again, and a page without "
+          "warnings is no reason to trust one. Keep more than one copy, on different media, in different places; "
+          "rehearse restoring. Your institution\xE2\x80\x99s policy and professional practice come before anything said here.</p>\n"
           "</footer>\n</body>\n</html>\n", out);
 }
 

@@ -32,7 +32,9 @@ static void add_places(struct firn_text *text, uint64_t places, const char *word
 
 static void add_time(struct firn_text *text, double seconds)
 {
-    const struct { double seconds; const char *one; } units[] = { { 86400, "day" }, { 3600, "hour" }, { 60, "minute" } };
+    const struct { double seconds; const char *one; } units[] = {
+        { 86400, "day" }, { 3600, "hour" }, { 60, "minute" }
+    };
     size_t unit = 0;
     uint64_t count;
 

@@ -24,7 +24,7 @@ struct firn_scrub_turn {
     uint64_t range_count;
     bool report_only;
     struct firn_history *history;          /* with this run in it; NULL when it is not kept in memory */
-    struct firn_history_entry entry;       /* of the scrub that this run is part of; blocks 0 when nothing was checked */
+    struct firn_history_entry entry;       /* of the scrub that this run is part of; blocks 0: none was begun */
     struct firn_trend trend;
 };
 
