@@ -387,7 +387,8 @@ static void scrub_all(struct scrubbing *s)
         struct firn_text text;
 
         firn_text_start(&text, words, sizeof words);
-        firn_text_add(&text, "time is up; %" PRIu64 " of %zu containers wait for the next run", waiting, s->count);
+        firn_text_add(&text, "time is up; %" PRIu64 " of %zu containers are still to be gone through", waiting,
+                      s->count);
         firn_view_note(s->view, "time-is-up", "", words);
     }
 }

@@ -65,7 +65,7 @@ static const struct gauge {
     { "firn_container_scrubbed_timestamp_seconds", "When it was gone through last.", is_scrubbed_at, 0, false },
     { "firn_container_checked_ratio", "How far the newest scrub has come.", is_checked, 0, false },
     { "firn_container_mended_blocks", "Blocks with stray bits in the newest scrub.", NULL, FIELD(mended), false },
-    { "firn_container_rebuilt_blocks", "Blocks that came from the reserve in the newest scrub.", NULL, FIELD(rebuilt), false },
+    { "firn_container_rebuilt_blocks", "Blocks from the reserve in the newest scrub.", NULL, FIELD(rebuilt), false },
     { "firn_container_lost_blocks", "Blocks that are lost, in the newest scrub.", NULL, FIELD(lost), false },
     { "firn_container_unreadable_blocks", "Blocks that the medium gave an error for.", NULL, FIELD(unreadable), false },
     { "firn_container_damaged_places", "Runs of damaged blocks in the newest scrub.", NULL, FIELD(places), false },

@@ -291,7 +291,8 @@ static void write_all(void *self, FILE *out)
     put_shelf(out, page);
     fputs("</main>\n<footer>\n<p class=\"soft\">A repair does not make a medium young again, and a page without "
           "warnings is no reason to trust one. Keep more than one copy, on different media, in different places; "
-          "rehearse restoring. Your institution\xE2\x80\x99s policy and professional practice come before anything said here.</p>\n"
+          "rehearse restoring. Your institution\xE2\x80\x99s policy and professional practice come before anything "
+          "said here.</p>\n"
           "</footer>\n</body>\n</html>\n", out);
 }
 
