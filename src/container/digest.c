@@ -14,6 +14,7 @@ static const EVP_MD *method(enum firn_digest_kind kind)
 {
     switch (kind) {
     case FIRN_DIGEST_SHA512: return EVP_sha512();
+    case FIRN_DIGEST_SHA1:   return EVP_sha1();
     case FIRN_DIGEST_MD5:    return EVP_md5();
     case FIRN_DIGEST_SHA256: break;
     }
@@ -22,7 +23,7 @@ static const EVP_MD *method(enum firn_digest_kind kind)
 
 size_t firn_digest_size(enum firn_digest_kind kind)
 {
-    return kind == FIRN_DIGEST_SHA512 ? 64 : kind == FIRN_DIGEST_MD5 ? 16 : 32;
+    return (size_t)EVP_MD_get_size(method(kind));
 }
 
 enum firn_status firn_digest_make(struct firn_digest **out)

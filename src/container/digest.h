@@ -1,7 +1,7 @@
 /*
  * container/digest.h - SHA-256, and what else a manifest may ask for, by OpenSSL's libcrypto
  *
- * Room: container. SHA-256 and SHA-512: FIPS 180-4; MD5: RFC 1321. The format itself knows SHA-256 only.
+ * Room: container. SHA-256, SHA-512, SHA-1: FIPS 180-4; MD5: RFC 1321. The format itself knows SHA-256 only.
  * SPDX-License-Identifier: BSD-2-Clause
  */
 #ifndef FIRN_CONTAINER_DIGEST_H
@@ -14,7 +14,7 @@
 
 enum { FIRN_DIGEST_BYTES = 32, FIRN_DIGEST_BYTES_MAX = 64 };
 
-enum firn_digest_kind { FIRN_DIGEST_SHA256, FIRN_DIGEST_SHA512, FIRN_DIGEST_MD5 };
+enum firn_digest_kind { FIRN_DIGEST_SHA256, FIRN_DIGEST_SHA512, FIRN_DIGEST_SHA1, FIRN_DIGEST_MD5 };
 
 struct firn_digest;      /* libcrypto's context */
 

@@ -4,6 +4,7 @@
 
 #include "desk/events.h"
 #include "desk/interrupt.h"
+#include "desk/pack_bags.h"
 #include "desk/progress.h"
 #include "desk/trouble.h"
 #include "firn/expect.h"
@@ -73,6 +74,7 @@ struct packing {
     struct firn_pattern *exclude;
     struct firn_expect *expect;
     uint64_t mismatches;
+    struct firn_pack_bags bags;
     struct firn_writer_totals totals;
     bool read_back;
     struct firn_lines events;
@@ -204,6 +206,7 @@ static void see_item(void *self, const struct firn_intake_item *item)
     /* a bag in an archive has a folder around it, and its manifest is told from inside that */
     size_t own = p->args->values[FROM_ARCHIVE] != NULL ? strcspn(item->name, "/") : item->operand_bytes;
 
+    firn_pack_bags_see(&p->bags, item);
     if (p->expect != NULL && item->sha256 != NULL)
         verdict = firn_expect_see(p->expect, item->name, own, item->sha256);
     else if (p->expect != NULL && item->link != NULL)
@@ -282,6 +285,9 @@ static enum firn_status prepare(struct packing *p)
         p->intake.exclude = p->exclude;
     if (status == FIRN_OK && p->args->values[EXPECT] != NULL)
         status = firn_expect_open(p->args->values[EXPECT], p->writing.memory, &p->fault, &p->expect);
+    if (status == FIRN_OK)
+        status = firn_pack_bags_open(&p->bags, p->args, p->view, &p->fault);
+    p->intake.digests = p->bags.digests;
     return status;
 }
 
@@ -330,6 +336,16 @@ static enum firn_status read_back(struct packing *p)
     return status;
 }
 
+/* Whether all is there, and as manifests have it; else what is not was told. */
+static bool as_expected(struct packing *p)
+{
+    firn_progress_wipe(&p->progress);
+    if (p->expect != NULL)
+        p->mismatches += firn_expect_missing(p->expect, tell_missing, p);
+    firn_pack_bags_judge(&p->bags);
+    return p->mismatches + p->bags.troubles == 0;
+}
+
 /* An output that fails part way goes without a trace; only a pipe has had its bytes already. */
 static enum firn_status pack(struct packing *p)
 {
@@ -341,11 +357,10 @@ static enum firn_status pack(struct packing *p)
         status = firn_writer_make(&p->writing, &p->fault, &p->writer);
     if (status == FIRN_OK)
         status = take_in(p);
-    if (status == FIRN_OK && p->expect != NULL) {
-        p->mismatches += firn_expect_missing(p->expect, tell_missing, p);
-        if (p->mismatches > 0)
-            return FIRN_MISMATCH;
-    }
+    if (status == FIRN_OK)
+        status = p->bags.status;
+    if (status == FIRN_OK && !as_expected(p))
+        return FIRN_MISMATCH;
     if (status == FIRN_OK)
         status = firn_writer_finish(p->writer, &p->totals);
     if (status == FIRN_OK)
@@ -375,6 +390,7 @@ static void show(struct packing *p)
     firn_view_bytes(p->view, "coded-bytes", "coded", t->coded_bytes);
     firn_view_bytes(p->view, "catalogue-bytes", "catalogue", t->catalogue_bytes);
     firn_view_bytes(p->view, "container-bytes", "container", t->container_bytes);
+    firn_pack_bags_show(&p->bags);
     firn_text_start(&text, words, sizeof words);
     firn_text_add(&text, "%s blocks, %.1f %% of them reserve", firn_text_count(t->blocks, count),
                   100.0 * (double)(t->blocks - t->data_blocks) / (double)t->blocks);
@@ -418,8 +434,9 @@ static void record(struct packing *p, enum firn_events_type type, bool fine, con
     firn_events_tell(&p->events, &event);
 }
 
-static void record_expectation(struct packing *p, bool fine)
+static void record_expectation(struct packing *p)
 {
+    bool fine = p->mismatches == 0;
     char detail[300];
     struct firn_text text;
 
@@ -430,12 +447,29 @@ static void record_expectation(struct packing *p, bool fine)
     record(p, FIRN_EVENTS_FIXITY_CHECK, fine, detail, fine ? NULL : "not as the manifest says; nothing was written");
 }
 
+static void record_bags(struct packing *p)
+{
+    for (size_t i = 0; i < p->bags.count; i++) {
+        const struct firn_pack_bag *bag = &p->bags.list[i];
+        char detail[400];
+        struct firn_text text;
+
+        if (bag->bag == NULL)
+            continue;
+        firn_text_start(&text, detail, sizeof detail);
+        firn_text_add(&text, "BagIt bag %.200s, by %s, while it was taken in", bag->operand, bag->report.algorithms);
+        record(p, FIRN_EVENTS_FIXITY_CHECK, bag->report.valid, detail,
+               bag->report.valid ? NULL : "not complete or not valid; nothing was written");
+    }
+}
+
 static void record_done(struct packing *p, int exit)
 {
     char detail[120], note[120];
     struct firn_text text;
 
-    record_expectation(p, true);
+    record_expectation(p);
+    record_bags(p);
     firn_text_start(&text, detail, sizeof detail);
     firn_text_add(&text, "%" PRIu64 " items, %" PRIu64 " bytes of content", p->totals.items, p->totals.content_bytes);
     firn_text_start(&text, note, sizeof note);
@@ -456,6 +490,7 @@ static void close_all(struct packing *p)
         p->spool.close(p->spool.self);
     firn_pattern_free(p->exclude);
     firn_expect_free(p->expect);
+    firn_pack_bags_end(&p->bags);
 }
 
 static int run(const struct firn_args *args, struct firn_view *view)
@@ -482,16 +517,17 @@ static int run(const struct firn_args *args, struct firn_view *view)
         show(&p);
         exit = intake_exit(&p.report);
         record_done(&p, exit);
-    } else if (status == FIRN_MISMATCH && p.mismatches > 0) {
+    } else if (status == FIRN_MISMATCH && p.mismatches + p.bags.troubles > 0) {
         char words[160];
         struct firn_text text;
 
         firn_text_start(&text, words, sizeof words);
-        firn_text_add(&text, "%" PRIu64 " items are not as the manifest says; nothing was written; ask the donor",
-                      p.mismatches);
+        firn_text_add(&text, "not as manifests say, %" PRIu64 " findings; nothing was written; ask the donor",
+                      p.mismatches + p.bags.troubles);
         firn_view_finding(view, "refused", p.output, words);
         exit = FIRN_EXIT_BAD_DATA;
-        record_expectation(&p, false);
+        record_expectation(&p);
+        record_bags(&p);
         record(&p, FIRN_EVENTS_PACKING, false, NULL, words);
     } else {
         record(&p, FIRN_EVENTS_PACKING, false, NULL, firn_status_text(status));
@@ -508,6 +544,7 @@ const struct firn_command firn_command_pack = {
     .about = "Stores what the paths name, with all below them and all their metadata: names,\n"
              "owners, modes, times, links, extended attributes, access lists, holes. The\n"
              "container is written under its name only when it is whole and was read back.\n"
+             "A path that is a BagIt bag (RFC 8493) is refused if it is not complete and valid.\n"
              "The sources are not changed. Keep them until a second copy of the container\n"
              "lies elsewhere and a restore was tried; your institution's policy decides.\n\n"
              "With SOURCE_DATE_EPOCH set, the same input gives the same bytes.\n",

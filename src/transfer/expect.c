@@ -5,14 +5,16 @@
 #include "base/fault.h"
 #include "base/memory.h"
 #include "base/text.h"
+#include "transfer/manifest_lines.h"
 #include "transfer/names.h"
 #include "transfer/stored_name.h"
 
 #include <errno.h>
 #include <fcntl.h>
+#include <string.h>
 #include <unistd.h>
 
-enum { DIGEST_DIGITS = 2 * FIRN_ITEM_SHA256_BYTES, PORTION_BYTES = 1 << 16, LINE_MAX_BYTES = 1 << 16 };
+enum { DIGEST_DIGITS = 2 * FIRN_ITEM_SHA256_BYTES };
 
 /* A path as the manifest means it. */
 struct listed {
@@ -62,34 +64,6 @@ void firn_expect_free(struct firn_expect *expect)
 }
 
 /* ---- one line ---- */
-
-/* Turns what a line says for LF, CR, % or \ into the byte it stands for, in place. */
-static void decode(char *path, bool backslashes)
-{
-    static const struct { const char *written; char meant; } percents[] = {
-        { "%0A", '\n' }, { "%0a", '\n' }, { "%0D", '\r' }, { "%0d", '\r' }, { "%25", '%' },
-    }, slashes[] = { { "\\n", '\n' }, { "\\r", '\r' }, { "\\\\", '\\' } };
-    char *to = path;
-
-    while (*path != '\0') {
-        char meant = *path;
-        size_t bytes = 1;
-
-        for (size_t i = 0; !backslashes && i < sizeof percents / sizeof percents[0]; i++)
-            if (strncmp(path, percents[i].written, 3) == 0) {
-                meant = percents[i].meant;
-                bytes = 3;
-            }
-        for (size_t i = 0; backslashes && i < sizeof slashes / sizeof slashes[0]; i++)
-            if (strncmp(path, slashes[i].written, 2) == 0) {
-                meant = slashes[i].meant;
-                bytes = 2;
-            }
-        *to++ = meant;
-        path += bytes;
-    }
-    *to = '\0';
-}
 
 /* Enters a path with its digest; a path that is there already must have the same. */
 static enum firn_status enter(struct firn_expect *expect, const char *path, const uint8_t *sha256, struct listed **out,
@@ -161,96 +135,33 @@ static enum firn_status take_line(struct firn_expect *expect, char *line, const 
     if (strlen(path) < sizeof raw && (path[0] == '*' || strchr(path, '%') != NULL))
         memcpy(raw, path, strlen(path) + 1);
     path += path[0] == '*';
-    decode(path, backslashes);
+    firn_manifest_lines_decode(path, backslashes);
     status = enter(expect, path, sha256, &listed, fault);
     return status == FIRN_OK && raw[0] != '\0' ? enter_alias(expect, raw, listed) : status;
 }
 
 /* ---- all lines ---- */
 
-/* What of a line has come so far. */
-struct reading {
-    struct firn_expect *expect;
-    char *line;                  /* LINE_MAX_BYTES */
-    size_t used;
-    uint64_t number;             /* of the line, from 1 */
-    bool after_cr;
-    const char *fault;
-};
-
-static enum firn_status end_line(struct reading *reading)
+static enum firn_status take(void *self, char *line, const char **fault)
 {
-    enum firn_status status = FIRN_OK;
-
-    reading->line[reading->used] = '\0';
-    if (memchr(reading->line, '\0', reading->used) != NULL) {
-        reading->fault = "a NUL in a line";
-        return FIRN_BAD_DATA;
-    }
-    if (reading->used > 0)
-        status = take_line(reading->expect, reading->line, &reading->fault);
-    reading->used = 0;
-    reading->number += status == FIRN_OK;
-    return status;
-}
-
-static enum firn_status take_byte(struct reading *reading, char byte)
-{
-    bool half_end = byte == '\n' && reading->after_cr;
-
-    reading->after_cr = byte == '\r';
-    if (half_end)
-        return FIRN_OK;
-    if (byte == '\n' || byte == '\r')
-        return end_line(reading);
-    if (reading->used == LINE_MAX_BYTES - 1) {
-        reading->fault = "a line that is too long";
-        return FIRN_BAD_DATA;
-    }
-    reading->line[reading->used++] = byte;
-    return FIRN_OK;
-}
-
-static enum firn_status read_all(struct reading *reading, int descriptor, char *portion, int *os_error)
-{
-    enum firn_status status = FIRN_OK;
-    ssize_t got = 1;
-
-    while (got != 0 && status == FIRN_OK) {
-        got = read(descriptor, portion, PORTION_BYTES);
-        if (got < 0 && errno == EINTR)
-            continue;
-        if (got < 0) {
-            *os_error = errno;
-            return FIRN_IO;
-        }
-        for (ssize_t i = 0; i < got && status == FIRN_OK; i++)
-            status = take_byte(reading, portion[i]);
-    }
-    return status == FIRN_OK ? end_line(reading) : status;
+    return take_line(self, line, fault);
 }
 
 enum firn_status firn_expect_load(int descriptor, const struct firn_memory *memory, struct firn_fault *fault,
                                   struct firn_expect **out)
 {
-    char *room = memory->get(memory->self, PORTION_BYTES + LINE_MAX_BYTES);
-    struct reading reading = { .number = 1, .fault = "" };
-    enum firn_status status = FIRN_NO_MEMORY;
-    int os_error = 0;
+    struct firn_expect *expect;
+    enum firn_status status = make(memory, &expect);
 
     *out = NULL;
-    if (room != NULL)
-        status = make(memory, &reading.expect);
-    if (status == FIRN_OK) {
-        reading.line = room + PORTION_BYTES;
-        status = read_all(&reading, descriptor, room, &os_error);
-    }
-    memory->put(memory->self, room);
+    if (status != FIRN_OK)
+        return firn_fault_tell(fault, status, 0, 0, "");
+    status = firn_manifest_lines_read(descriptor, memory, take, expect, fault);
     if (status != FIRN_OK) {
-        firn_expect_free(reading.expect);
-        return firn_fault_tell(fault, status, os_error, reading.number, reading.fault);
+        firn_expect_free(expect);
+        return status;
     }
-    *out = reading.expect;
+    *out = expect;
     return FIRN_OK;
 }
 
