@@ -85,13 +85,13 @@ void firn_scrub_words(struct firn_view *view, const struct firn_scrub_turn *turn
     char words[1024];
     struct firn_text text;
 
-    if (turn->entry.blocks == 0 || !(always || firn_scrub_turn_damaged(turn) || r->foreign_bytes > 0
-                                     || r->journal == FIRN_SCRUB_JOURNAL_WAITS))
+    if (turn->entry.blocks == 0)
         return;
     firn_text_start(&text, words, sizeof words);
     add_found(turn, &text);
     add_outcome(turn, &text);
-    firn_view_line(view, turn->path, words);
+    if (always || firn_scrub_turn_damaged(turn) || r->foreign_bytes > 0 || r->journal == FIRN_SCRUB_JOURNAL_WAITS)
+        firn_view_line(view, turn->path, words);
     if (firn_scrub_turn_grows(turn))
         warn(view, turn);
 }
