@@ -3,10 +3,10 @@
 #include "desk/commands.h"
 
 #include "base/memory.h"
-#include "desk/events.h"
 #include "desk/gentle.h"
 #include "desk/interrupt.h"
-#include "desk/progress.h"
+#include "desk/lines.h"
+#include "desk/scrub_events.h"
 #include "desk/scrub_json.h"
 #include "desk/scrub_metrics.h"
 #include "desk/scrub_page.h"
@@ -40,20 +40,13 @@ static const struct firn_args_option options[] = {
 struct scrubbing {
     const struct firn_args *args;
     struct firn_view *view;
-    struct firn_progress progress;
     int exit;                             /* the worst so far */
     struct firn_scrub_turn *turns;
     size_t count, capacity;
-    uint64_t rate_bytes, every_seconds;
-    bool timed, out_of_time;
-    struct timespec deadline;
-    uint64_t done_bytes;                  /* in this run, so that it gets somewhere however short its time is */
+    uint64_t every_seconds;
     char folder[PATH_MAX];
-    bool remembers;                       /* folder is there */
+    struct firn_scrub_job job;
     struct firn_lines report, events;
-    /* the turn at hand */
-    struct firn_scrub_turn *turn;
-    struct firn_core core;
 };
 
 /* Loss is worst, then what kept us from looking, then damage that is safe. */
@@ -80,7 +73,7 @@ static int read_rate(struct scrubbing *s)
     if (bytes < sizeof size) {
         memcpy(size, words, bytes);
         size[bytes] = '\0';
-        if (firn_text_parse_size(size, &s->rate_bytes) == FIRN_OK && s->rate_bytes >= 1000)
+        if (firn_text_parse_size(size, &s->job.rate_bytes) == FIRN_OK && s->job.rate_bytes >= 1000)
             return FIRN_EXIT_SOUND;
     }
     return firn_trouble_usage(s->view, words, "is no rate such as 50MB, or less than 1kB");
@@ -96,9 +89,9 @@ static int read_words(struct scrubbing *s)
     if (allowed != NULL) {
         if (firn_text_parse_duration(allowed, &seconds) != FIRN_OK || seconds == 0)
             return firn_trouble_usage(s->view, allowed, "is no time such as 90min or 2h");
-        s->timed = true;
-        clock_gettime(CLOCK_MONOTONIC, &s->deadline);
-        s->deadline.tv_sec += (time_t)seconds;
+        s->job.timed = true;
+        clock_gettime(CLOCK_MONOTONIC, &s->job.deadline);
+        s->job.deadline.tv_sec += (time_t)seconds;
     }
     if (every != NULL && firn_text_parse_duration(every, &s->every_seconds) != FIRN_OK)
         return firn_trouble_usage(s->view, every, "is no time such as 30d");
@@ -106,14 +99,19 @@ static int read_words(struct scrubbing *s)
 }
 
 /* A history that cannot be kept stands in the way only where something depends on it. */
+static bool needs_state(const struct scrubbing *s)
+{
+    return s->args->values[STATE] != NULL || s->job.timed || s->every_seconds > 0;
+}
+
 static int find_state(struct scrubbing *s)
 {
     const char *asked = s->args->values[STATE];
-    bool needed = asked != NULL || s->timed || s->every_seconds > 0;
+    bool needed = needs_state(s);
     struct firn_fault fault = { 0 };
     enum firn_status status = firn_state_folder(asked, s->folder, sizeof s->folder, &fault);
 
-    s->remembers = status == FIRN_OK;
+    s->job.folder = status == FIRN_OK ? s->folder : NULL;
     if (status == FIRN_NO_INPUT && needed)
         return firn_trouble_usage(s->view, "--state", "is missing, and HOME does not say where to remember the place");
     if (status != FIRN_OK && status != FIRN_NO_INPUT && needed)
@@ -167,19 +165,6 @@ static void gather_all(struct scrubbing *s)
     }
 }
 
-static enum firn_status remember(const struct scrubbing *s, struct firn_scrub_turn *turn)
-{
-    struct firn_fault fault;
-
-    return firn_history_open(s->remembers ? s->folder : NULL, turn->path, firn_memory_system(), &turn->history, &fault);
-}
-
-static void forget(struct firn_scrub_turn *turn)
-{
-    firn_history_close(turn->history);
-    turn->history = NULL;
-}
-
 static int oldest_first(const void *one, const void *other)
 {
     const struct firn_scrub_turn *a = one, *b = other;
@@ -192,13 +177,15 @@ static int oldest_first(const void *one, const void *other)
 /* With a limit of any kind it matters who comes first: whoever was not gone through for longest. */
 static void put_in_order(struct scrubbing *s)
 {
-    if (!s->timed && s->every_seconds == 0)
+    if (!s->job.timed && s->every_seconds == 0)
         return;
-    for (size_t i = 0; i < s->count; i++)
-        if (remember(s, &s->turns[i]) == FIRN_OK) {
-            s->turns[i].last_done = firn_history_last_done(s->turns[i].history);
-            forget(&s->turns[i]);
-        }
+    for (size_t i = 0; i < s->count; i++) {
+        struct firn_scrub_turn *turn = &s->turns[i];
+
+        firn_scrub_turn_remember(turn, &s->job);
+        turn->last_done = turn->history == NULL ? 0 : firn_history_last_done(turn->history);
+        firn_scrub_turn_forget(turn);
+    }
     qsort(s->turns, s->count, sizeof *s->turns, oldest_first);
 }
 
@@ -206,118 +193,6 @@ static bool is_due(const struct scrubbing *s, const struct firn_scrub_turn *turn
 {
     return s->every_seconds == 0 || turn->last_done == 0
         || (int64_t)time(NULL) - turn->last_done >= (int64_t)s->every_seconds;
-}
-
-/* ---- one turn ---- */
-
-static bool time_is_up(struct scrubbing *s)
-{
-    struct timespec now;
-
-    if (!s->timed || s->out_of_time || s->done_bytes == 0)
-        return s->out_of_time;
-    clock_gettime(CLOCK_MONOTONIC, &now);
-    s->out_of_time = now.tv_sec > s->deadline.tv_sec
-        || (now.tv_sec == s->deadline.tv_sec && now.tv_nsec >= s->deadline.tv_nsec);
-    return s->out_of_time;
-}
-
-static bool stop(void *self)
-{
-    return firn_interrupt_asked(NULL) || time_is_up(self);
-}
-
-static void step(void *self, uint64_t done, uint64_t blocks)
-{
-    struct scrubbing *s = self;
-
-    s->done_bytes += 4096;
-    s->progress.goal_bytes = blocks * 4096;
-    firn_progress_step(&s->progress, 0, done * 4096);
-}
-
-static void note_lost(void *self, uint64_t first, uint64_t count)
-{
-    struct firn_scrub_turn *turn = ((struct scrubbing *)self)->turn;
-
-    if (turn->range_count < FIRN_SCRUB_TURN_RANGES)
-        turn->ranges[turn->range_count] = (struct firn_scrub_turn_range){ first, count };
-    turn->range_count++;
-}
-
-static void note_found(void *self, uint64_t block, enum firn_scrub_found what)
-{
-    firn_core_add(&((struct scrubbing *)self)->core, block, what);
-}
-
-/* Goes on where the last run's time was up; a run without a limit looks at everything. */
-static uint64_t begin_at(void *self, const uint8_t id[8], uint64_t blocks)
-{
-    struct scrubbing *s = self;
-    struct firn_scrub_turn *turn = s->turn;
-    const struct firn_history_entry *open = NULL;
-
-    if (s->timed && turn->history != NULL)
-        open = firn_history_open_turn(turn->history, id, blocks);
-    if (open != NULL) {
-        turn->entry = *open;
-        s->core = turn->history->core;
-        s->core.next = s->core.next_lost = 0;
-        return open->reached;
-    }
-    firn_core_start(&s->core, blocks);
-    turn->entry = (struct firn_history_entry){ .began = (int64_t)time(NULL), .blocks = blocks };
-    memcpy(turn->entry.id, id, sizeof turn->entry.id);
-    return 0;
-}
-
-/* What was found goes into the history; a history that cannot be written is told of once it was asked for. */
-static void write_history(struct scrubbing *s, struct firn_scrub_turn *turn)
-{
-    const struct firn_scrub_report *r = &turn->report;
-    bool found = r->mended + r->rebuilt + r->lost > 0;
-    struct firn_fault fault = { 0 };
-    enum firn_status status;
-
-    if (turn->entry.blocks == 0)
-        return;
-    turn->entry.at = (int64_t)time(NULL);
-    turn->entry.done = r->reached == r->blocks && turn->status != FIRN_STOPPED && turn->status != FIRN_NO_MEMORY;
-    firn_history_count(&turn->entry, r, &s->core, !turn->report_only && (r->written > 0 || !found));
-    if (turn->history == NULL)
-        return;
-    status = firn_history_add(turn->history, &turn->entry, &s->core, &fault);
-    turn->trend = firn_history_trend(turn->history);
-    if (status != FIRN_OK && (s->timed || s->every_seconds > 0 || s->args->values[STATE] != NULL))
-        worsen(s, firn_trouble_tell(s->view, NULL, status, &fault));
-}
-
-static void record(struct scrubbing *s, const struct firn_scrub_turn *turn)
-{
-    const struct firn_scrub_report *r = &turn->report;
-    bool damaged = firn_scrub_turn_damaged(turn), opened = turn->entry.blocks > 0;
-    char note[200];
-    struct firn_text text;
-    struct firn_events_event event = {
-        .type = FIRN_EVENTS_FIXITY_CHECK, .container = turn->path, .id = opened ? r->id : NULL, .note = note,
-        .detail = "every block against its hash and its check words"
-    };
-
-    firn_text_start(&text, note, sizeof note);
-    firn_text_add(&text, "%" PRIu64 " of %" PRIu64 " blocks: %" PRIu64 " mendable, %" PRIu64 " to rebuild, %" PRIu64
-                  " lost", r->checked, r->blocks, r->mended, r->rebuilt, r->lost);
-    event.outcome = damaged ? FIRN_EVENTS_FAILURE : turn->entry.done ? FIRN_EVENTS_SUCCESS : FIRN_EVENTS_UNKNOWN;
-    if (!opened)
-        event.note = firn_status_text(turn->status);
-    firn_events_tell(&s->events, &event);
-    if (!damaged || turn->report_only)
-        return;
-    event.type = FIRN_EVENTS_RECOVERY;
-    event.detail = "repaired in place, from the blocks' own check words and from the reserve";
-    event.outcome = turn->status == FIRN_OK && !firn_scrub_turn_lost(turn) ? FIRN_EVENTS_SUCCESS : FIRN_EVENTS_FAILURE;
-    firn_text_start(&text, note, sizeof note);
-    firn_text_add(&text, "%" PRIu64 " blocks written, %" PRIu64 " lost", r->written + r->replayed, r->lost);
-    firn_events_tell(&s->events, &event);
 }
 
 static void tell(struct scrubbing *s, const struct firn_scrub_turn *turn, const struct firn_fault *fault)
@@ -333,7 +208,7 @@ static void tell(struct scrubbing *s, const struct firn_scrub_turn *turn, const 
         firn_scrub_json(&report, turn);
         firn_lines_end(&s->report, report.out);
     }
-    record(s, turn);
+    firn_scrub_events(&s->events, turn);
     if (turn->status != FIRN_OK)
         worsen(s, firn_trouble_tell(s->view, turn->path, turn->status, fault));
     if (firn_scrub_turn_lost(turn))
@@ -344,23 +219,12 @@ static void tell(struct scrubbing *s, const struct firn_scrub_turn *turn, const 
 
 static void scrub_one(struct scrubbing *s, struct firn_scrub_turn *turn)
 {
-    struct firn_scrub_options scrub = {
-        .path = turn->path, .memory = firn_memory_system(), .threads = s->args->threads,
-        .report_only = turn->report_only, .rate_bytes = s->rate_bytes, .self = s, .stop = stop, .progress = step,
-        .lost = note_lost, .found = note_found, .begin_at = begin_at
-    };
     struct firn_fault fault = { 0 };
 
-    s->turn = turn;
-    turn->tried = true;
-    (void)remember(s, turn);      /* without it there is none; that the path is wrong, if so, the scrub will say */
-    firn_progress_start(&s->progress, "scrubbing", 0, s->args->quiet || s->args->json);
-    turn->status = firn_scrub(&scrub, &turn->report, &fault);
-    firn_progress_wipe(&s->progress);
-    write_history(s, turn);
-    if (turn->status == FIRN_STOPPED && s->out_of_time && !firn_interrupt_asked(NULL))
-        turn->status = FIRN_OK;
+    firn_scrub_turn_take(turn, &s->job, &fault);
     tell(s, turn, &fault);
+    if (turn->kept != FIRN_OK && needs_state(s))
+        worsen(s, firn_trouble_tell(s->view, NULL, turn->kept, &turn->kept_fault));
 }
 
 /* Histories of a large shelf stay in memory only where a page is to be made of them. */
@@ -372,17 +236,17 @@ static void scrub_all(struct scrubbing *s)
     for (size_t i = 0; i < s->count; i++) {
         struct firn_scrub_turn *turn = &s->turns[i];
 
-        if (is_due(s, turn) && !stop(s))
+        if (is_due(s, turn) && !firn_scrub_turn_stop(&s->job))
             scrub_one(s, turn);
         else
             turn->waits = is_due(s, turn);
         if (keep && turn->history == NULL)
-            (void)remember(s, turn);
+            firn_scrub_turn_remember(turn, &s->job);
         if (!keep)
-            forget(turn);
+            firn_scrub_turn_forget(turn);
         waiting += turn->waits || (turn->tried && !turn->entry.done && turn->status == FIRN_OK);
     }
-    if (s->out_of_time && s->args->given[VERBOSE]) {
+    if (s->job.out_of_time && s->args->given[VERBOSE]) {
         char words[100];
         struct firn_text text;
 
@@ -422,6 +286,8 @@ static int run(const struct firn_args *args, struct firn_view *view)
         return firn_trouble_tell(view, "scrub", FIRN_NO_MEMORY, NULL);
     s->args = args;
     s->view = view;
+    s->job.threads = args->threads;
+    s->job.quiet = args->quiet || args->json;
     s->report.descriptor = s->events.descriptor = -1;
     exit = read_words(s);
     if (exit == FIRN_EXIT_SOUND)
@@ -440,7 +306,7 @@ static int run(const struct firn_args *args, struct firn_view *view)
         exit = s->exit;
     }
     for (size_t i = 0; i < s->count; i++) {
-        forget(&s->turns[i]);
+        firn_scrub_turn_forget(&s->turns[i]);
         free(s->turns[i].path);
     }
     exit = firn_lines_close(&s->events, firn_lines_close(&s->report, exit));

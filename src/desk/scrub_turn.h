@@ -1,5 +1,5 @@
 /*
- * desk/scrub_turn.h - what came of one container in one run of scrub: the facts that all views show
+ * desk/scrub_turn.h - one container's turn in a run of scrub, and what came of it: the facts that all views show
  *
  * Room: desk.
  * SPDX-License-Identifier: BSD-2-Clause
@@ -8,6 +8,9 @@
 #define FIRN_DESK_SCRUB_TURN_H
 
 #include "care/history.h"
+#include "desk/progress.h"
+
+#include <time.h>
 
 enum { FIRN_SCRUB_TURN_RANGES = 64 };
 
@@ -19,6 +22,8 @@ struct firn_scrub_turn {
     bool tried;                            /* else it waits for another run, or its time has not come yet */
     bool waits;                            /* its time has come, but the run's was up */
     enum firn_status status;               /* of the scrub; FIRN_OK too when its time was up */
+    enum firn_status kept;                 /* of writing its history down */
+    struct firn_fault kept_fault;
     struct firn_scrub_report report;       /* of this run */
     struct firn_scrub_turn_range ranges[FIRN_SCRUB_TURN_RANGES];      /* of lost blocks; of more, the first */
     uint64_t range_count;
@@ -27,6 +32,32 @@ struct firn_scrub_turn {
     struct firn_history_entry entry;       /* of the scrub that this run is part of; blocks 0: none was begun */
     struct firn_trend trend;
 };
+
+/* What all turns of a run share. */
+struct firn_scrub_job {
+    unsigned threads;
+    bool quiet;                            /* no progress */
+    uint64_t rate_bytes;                   /* a second; 0 for no limit */
+    bool timed;                            /* there is a deadline; a turn goes on where that of the last run was */
+    struct timespec deadline;
+    bool out_of_time;
+    uint64_t sheets;                       /* done in this run, which gets somewhere however short its time is */
+    const char *folder;                    /* where histories are; NULL when none are kept */
+    struct firn_progress progress;
+    /* the turn at hand */
+    struct firn_scrub_turn *turn;
+    struct firn_core core;
+};
+
+/* Whether it is time to stop: a signal asked to, or the deadline is past. */
+bool firn_scrub_turn_stop(struct firn_scrub_job *job);
+
+/* Reads the turn's history into memory; nothing happens where that cannot be, since a history only helps. */
+void firn_scrub_turn_remember(struct firn_scrub_turn *turn, const struct firn_scrub_job *job);
+void firn_scrub_turn_forget(struct firn_scrub_turn *turn);
+
+/* Scrubs. fault is that of turn->status. */
+void firn_scrub_turn_take(struct firn_scrub_turn *turn, struct firn_scrub_job *job, struct firn_fault *fault);
 
 /* Whether something was found in this run that is not as it was written. */
 bool firn_scrub_turn_damaged(const struct firn_scrub_turn *turn);

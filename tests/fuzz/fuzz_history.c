@@ -1,4 +1,4 @@
-/* tests/fuzz/fuzz_history.c - a history file that is anything: what is taken from it keeps its promises, and comes back */
+/* tests/fuzz/fuzz_history.c - a history file that is anything: what is taken from it keeps its promises */
 /* SPDX-License-Identifier: BSD-2-Clause */
 #include "care/history.h"
 
