@@ -37,6 +37,8 @@ static const struct firn_args_option options[] = {
     [STATE] = { "state", '\0', "DIR", "keep histories in DIR (default: XDG_STATE_HOME/firn)" },
 };
 
+enum { RATE_MIN_BYTES = 100000 };      /* a sheet of 128 MiB takes 22 minutes then, and a run does one at least */
+
 struct scrubbing {
     const struct firn_args *args;
     struct firn_view *view;
@@ -73,10 +75,10 @@ static int read_rate(struct scrubbing *s)
     if (bytes < sizeof size) {
         memcpy(size, words, bytes);
         size[bytes] = '\0';
-        if (firn_text_parse_size(size, &s->job.rate_bytes) == FIRN_OK && s->job.rate_bytes >= 1000)
+        if (firn_text_parse_size(size, &s->job.rate_bytes) == FIRN_OK && s->job.rate_bytes >= RATE_MIN_BYTES)
             return FIRN_EXIT_SOUND;
     }
-    return firn_trouble_usage(s->view, words, "is no rate such as 50MB, or less than 1kB");
+    return firn_trouble_usage(s->view, words, "is no rate such as 50MB, or less than 100kB");
 }
 
 static int read_words(struct scrubbing *s)
@@ -323,7 +325,8 @@ const struct firn_command firn_command_scrub = {
              "be repaired, behind a journal that makes a power cut harmless. Prints nothing when\n"
              "all is well, one line for each container otherwise, and a warning where damage comes\n"
              "faster than it used to. Folders are walked. With --time whoever was not gone through\n"
-             "for longest comes first, and a large shelf is gone through night after night.\n\n"
+             "for longest comes first, and a large shelf is gone through night after night, one\n"
+             "sheet a night at least.\n\n"
              "If this is your only copy and it is damaged, copy it before you repair it, and\n"
              "find out what is wrong with the medium: repairs do not make it young again. How\n"
              "often to scrub, and when to migrate, is for your institution's policy to say.\n\n"
