@@ -133,7 +133,7 @@ static enum firn_status take(struct firn_history *history, const struct firn_his
     newest = history->count == 0 ? NULL : &history->entries[history->count - 1];
     history->core = *core;
     history->core.places = entry->places;
-    history->core.places_lost = entry->left;
+    history->core.places_lost = entry->left;      /* for all that a later part can do about it */
     if (newest != NULL && newest->began == entry->began && same_container(newest, entry) && !newest->done) {
         *newest = *entry;
         return FIRN_OK;
@@ -359,8 +359,9 @@ void firn_history_count(struct firn_history_entry *entry, const struct firn_scru
     entry->written += report->written;
     entry->title_damaged = report->title == FIRN_SCRUB_TITLE_DAMAGED || report->title == FIRN_SCRUB_TITLE_HEALED;
     entry->end_missing = entry->done && !report->end_known;      /* only the end can tell */
+    /* in a part that goes on the core has begun with what earlier parts have left as lost */
+    entry->left = repaired ? core->places_lost : entry->left + core->places - entry->places;
     entry->places = core->places;
-    entry->left = repaired ? core->places_lost : core->places;
 }
 
 /*

@@ -17,7 +17,7 @@ static const char *const rules[] = {
     "h1{font-size:1.9rem}h2{font-size:1.3rem;margin:2.2rem 0 .8rem}h3{font-size:1.1rem;overflow-wrap:anywhere}",
     "p{margin:.4rem 0}.lead{font-size:1.05rem;max-width:46rem}.soft{color:var(--soft);font-size:.875rem}",
     ".place{color:var(--soft);font-size:.875rem;overflow-wrap:anywhere;margin:.1rem 0 0}",
-    "a{color:var(--deep)}",
+    "a{color:var(--deep)}time,code{white-space:nowrap}",
     /* the table: on a phone each row is a small card of its own */
     "table,tbody,tr,th,td{display:block}thead{display:none}",
     "table{background:var(--card);border:1px solid var(--line);border-left:.35rem solid var(--lost)}",

@@ -126,7 +126,8 @@ static const char *what_to_do(enum verdict verdict)
                          "\xE2\x80\x9C" "firn restore\xE2\x80\x9D tells file by file.";
     case FAILED:  return "Check the name, your rights, and the medium.";
     case GROWING: return "Copy this medium now, and check the copy.";
-    case LEFT:    return "If this is the only copy, copy it first; then scrub without --report-only.";
+    case LEFT:    return "If this is the only copy, copy it first; then scrub without "
+                         "<code>--report-only</code>.";
     case REBUILT: return "Every byte is safe. Look again soon, and see that the other copies are well.";
     default:      return "";
     }

@@ -192,6 +192,45 @@ static void joins_parts(void **state)
     firn_history_close(history);
 }
 
+/* A scrub in three parts: the first repairs, the second only looks, the third repairs but cannot mend all. */
+static void counts_what_is_left(void **state)
+{
+    static const struct { bool repaired; uint64_t mended_at, lost_at, left; } parts[] = {
+        { true, 10, 0, 0 }, { false, 30, 40, 2 }, { true, 50, 60, 3 }
+    };
+    struct firn_history *history = open_history(scratch_path("a.firn"));
+    struct firn_history_entry made = { .began = 5, .blocks = 100 };
+    struct firn_core core;
+
+    (void)state;
+    firn_core_start(&core, 100);
+    for (size_t i = 0; i < COUNT(parts); i++) {
+        struct firn_scrub_report report = { .blocks = 100, .reached = 30 * (i + 1), .end_known = true };
+        struct firn_fault fault;
+
+        firn_core_add(&core, parts[i].mended_at, FIRN_SCRUB_MENDED);
+        report.mended = 1;
+        if (parts[i].lost_at > 0) {
+            firn_core_add(&core, parts[i].lost_at, FIRN_SCRUB_LOST);
+            report.lost = 1;
+        }
+        made.at = (int64_t)(10 * (i + 1));
+        firn_history_count(&made, &report, &core, parts[i].repaired);
+        assert_int_equal(firn_history_add(history, &made, &core, &fault), FIRN_OK);
+        firn_history_close(history);
+        history = open_history(scratch_path("a.firn"));
+        made = *firn_history_open_turn(history, made.id, 100);
+        core = history->core;
+        assert_int_equal(made.left, parts[i].left);
+    }
+    assert_int_equal(history->count, 1);
+    assert_int_equal(made.mended, 3);
+    assert_int_equal(made.lost, 2);
+    assert_int_equal(made.places, 5);
+    assert_int_equal(made.reached, 90);
+    firn_history_close(history);
+}
+
 /* What is damaged in the file itself costs the lines concerned. */
 static void passes_over_nonsense(void **state)
 {
@@ -366,7 +405,8 @@ int main(void)
     size_t count = 0;
     static const struct CMUnitTest others[] = {
         cmocka_unit_test(slices_are_whole), cmocka_unit_test(counts_places), cmocka_unit_test(cores_come_back),
-        cmocka_unit_test(keeps_what_it_is_told), cmocka_unit_test(joins_parts), cmocka_unit_test(passes_over_nonsense),
+        cmocka_unit_test(keeps_what_it_is_told), cmocka_unit_test(joins_parts), cmocka_unit_test(counts_what_is_left),
+        cmocka_unit_test(passes_over_nonsense),
         cmocka_unit_test(forgets_the_oldest), cmocka_unit_test(lives_without_a_folder),
         cmocka_unit_test(lives_without_memory), cmocka_unit_test(warns),
     };
