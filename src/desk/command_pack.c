@@ -5,6 +5,7 @@
 #include "desk/events.h"
 #include "desk/interrupt.h"
 #include "desk/pack_bags.h"
+#include "desk/pack_words.h"
 #include "desk/progress.h"
 #include "desk/trouble.h"
 #include "firn/expect.h"
@@ -14,9 +15,7 @@
 #include <inttypes.h>
 #include <stdlib.h>
 #include <string.h>
-#include <sys/random.h>
 #include <sys/stat.h>
-#include <time.h>
 #include <unistd.h>
 
 enum option {
@@ -42,7 +41,7 @@ static const struct firn_args_option options[] = {
     [FROM_ARCHIVE] = { "from-archive", '\0', "A", "take in what archive A holds; - is standard input" },
     [KEEP_BEGINNING] = { "keep-beginning", '\0', NULL, "of a broken archive, keep what came before the break" },
     [EXCLUDE] = { "exclude", '\0', "PATTERN", "leave out what PATTERN names (may be given often)" },
-    [EXPECT] = { "expect", '\0', "MANIFEST", "check the donor's SHA-256 lines, refuse to finish on a mismatch" },
+    [EXPECT] = { "expect", '\0', "MANIFEST", "check the donor's SHA-256, SHA-512 or MD5 lines, refuse a mismatch" },
     [ACCESSION] = { "accession", '\0', "TEXT", "accession number, for the title page" },
     [TITLE] = { "title", '\0', "TEXT", "title of the collection" },
     [CUSTODIAN] = { "custodian", '\0', "TEXT", "who answers for it" },
@@ -82,74 +81,10 @@ struct packing {
 
 /* --- words --- */
 
-static int read_reserve(struct packing *p)
-{
-    const char *words = p->args->values[RESERVE], *sheet = p->args->values[SHEET];
-    uint64_t sheet_bytes = UINT64_C(128) << 20;
-    double percent = 14.3;
-    char *end;
-
-    if (words != NULL) {
-        percent = strtod(words, &end);
-        if (end == words || (*end != '\0' && strcmp(end, "%") != 0) || !(percent >= 0 && percent <= 100))
-            return firn_trouble_usage(p->view, words, "is no percentage from 0 to 100");
-    }
-    if (sheet != NULL && firn_text_parse_size(sheet, &sheet_bytes) != FIRN_OK)
-        return firn_trouble_usage(p->view, sheet, "is no size such as 128MiB");
-    if (firn_sheet_geometry_for(percent, sheet_bytes, &p->writing.geometry) != FIRN_OK)
-        return firn_trouble_usage(p->view, sheet != NULL ? sheet : words,
-                                  "makes no sheet; it is too small or too large");
-    if (sheet_bytes < (UINT64_C(1) << 20) || sheet_bytes > (UINT64_C(256) << 20))
-        return firn_trouble_usage(p->view, sheet, "is no size of a sheet: 1MiB to 256MiB");
-    if (p->writing.geometry.m == 0)
-        firn_view_finding(p->view, "no-reserve", p->output, "packed WITHOUT a reserve: a lost block will stay lost");
-    return FIRN_EXIT_SOUND;
-}
-
-static int read_effort(struct packing *p)
-{
-    static const struct { const char *word; enum firn_segment_effort effort; } efforts[] = {
-        { "none", FIRN_SEGMENT_EFFORT_NONE }, { "quick", FIRN_SEGMENT_EFFORT_QUICK },
-        { "normal", FIRN_SEGMENT_EFFORT_NORMAL }, { "thorough", FIRN_SEGMENT_EFFORT_THOROUGH }
-    };
-    const char *word = p->args->values[EFFORT];
-
-    p->writing.effort = FIRN_SEGMENT_EFFORT_NORMAL;
-    if (word == NULL)
-        return FIRN_EXIT_SOUND;
-    for (size_t i = 0; i < sizeof efforts / sizeof efforts[0]; i++)
-        if (strcmp(word, efforts[i].word) == 0) {
-            p->writing.effort = efforts[i].effort;
-            return FIRN_EXIT_SOUND;
-        }
-    return firn_trouble_usage(p->view, word, "is no effort: none, quick, normal or thorough");
-}
-
-/* With SOURCE_DATE_EPOCH the same input gives the same bytes: no clock, no chance (reproducible-builds.org). */
-static int read_date(struct packing *p)
-{
-    const char *words = getenv("SOURCE_DATE_EPOCH");
-    uint64_t seconds;
-
-    if (words == NULL || *words == '\0') {
-        p->writing.title.date = (int64_t)time(NULL);
-        if (getrandom(p->writing.nonce, sizeof p->writing.nonce, 0) != (ssize_t)sizeof p->writing.nonce) {
-            firn_view_finding(p->view, "no-random", "",
-                              "the system gives no random bytes for the container's identity");
-            return FIRN_EXIT_OS;
-        }
-        return FIRN_EXIT_SOUND;
-    }
-    if (firn_text_parse_count(words, &seconds) != FIRN_OK || seconds > INT32_MAX * UINT64_C(100))
-        return firn_trouble_usage(p->view, words, "is no number of seconds in SOURCE_DATE_EPOCH");
-    p->writing.title.date = (int64_t)seconds;
-    return FIRN_EXIT_SOUND;
-}
-
 static int read_words(struct packing *p)
 {
     const char *const *values = p->args->values;
-    int exit;
+    const struct firn_pack_words words = { p->output, values[RESERVE], values[SHEET], values[EFFORT] };
 
     if (p->output == NULL)
         return firn_trouble_usage(p->view, "--output", "is missing: say where to write the container");
@@ -159,10 +94,7 @@ static int read_words(struct packing *p)
     p->writing.title.title = values[TITLE];
     p->writing.title.custodian = values[CUSTODIAN];
     p->writing.title.note = values[NOTE];
-    exit = read_reserve(p);
-    if (exit == FIRN_EXIT_SOUND)
-        exit = read_effort(p);
-    return exit == FIRN_EXIT_SOUND ? read_date(p) : exit;
+    return firn_pack_words(&words, &p->writing, p->view);
 }
 
 /* --- findings --- */
@@ -207,9 +139,11 @@ static void see_item(void *self, const struct firn_intake_item *item)
     size_t own = p->args->values[FROM_ARCHIVE] != NULL ? strcspn(item->name, "/") : item->operand_bytes;
 
     firn_pack_bags_see(&p->bags, item);
-    if (p->expect != NULL && item->sha256 != NULL)
-        verdict = firn_expect_see(p->expect, item->name, own, item->sha256);
-    else if (p->expect != NULL && item->link != NULL)
+    if (p->expect == NULL)
+        return;
+    if (item->sha256 != NULL && (item->link == NULL || firn_expect_digests(p->expect) == 0))
+        verdict = firn_expect_see(p->expect, item->name, own, item->sha256, item->digests);
+    else if (item->link != NULL)      /* of a link the others are not known; its file comes before it */
         verdict = firn_expect_see_link(p->expect, item->name, own, item->link);
     if (verdict != FIRN_EXPECT_MISMATCH)
         return;
@@ -287,7 +221,7 @@ static enum firn_status prepare(struct packing *p)
         status = firn_expect_open(p->args->values[EXPECT], p->writing.memory, &p->fault, &p->expect);
     if (status == FIRN_OK)
         status = firn_pack_bags_open(&p->bags, p->args, p->view, &p->fault);
-    p->intake.digests = p->bags.digests;
+    p->intake.digests = p->bags.digests | (p->expect == NULL ? 0 : firn_expect_digests(p->expect));
     return status;
 }
 

@@ -1,4 +1,4 @@
-/* transfer/expect.c - holding what is taken in against the donor's SHA-256 manifest */
+/* transfer/expect.c - holding what is taken in against the donor's manifest */
 /* SPDX-License-Identifier: BSD-2-Clause */
 #include "firn/expect.h"
 
@@ -14,11 +14,19 @@
 #include <string.h>
 #include <unistd.h>
 
-enum { DIGEST_DIGITS = 2 * FIRN_ITEM_SHA256_BYTES };
+enum { DIGEST_BYTES_MAX = 64 };
+
+/* Which digest it is its length tells. */
+static const struct { size_t bytes; unsigned asked; } kinds[] = {
+    { FIRN_ITEM_SHA256_BYTES, 0 }, { 64, FIRN_INTAKE_SHA512 }, { 16, FIRN_INTAKE_MD5 }
+};
+
+enum { SHA256, SHA512, MD5, KINDS };
 
 /* A path as the manifest means it. */
 struct listed {
-    uint8_t sha256[FIRN_ITEM_SHA256_BYTES];
+    unsigned kind;
+    uint8_t digest[DIGEST_BYTES_MAX];
     bool seen;
     bool matched;                /* the last time it was seen */
 };
@@ -32,6 +40,7 @@ struct firn_expect {
     const struct firn_memory *memory;
     struct firn_names *listed;
     struct firn_names *aliases;
+    unsigned digests;            /* enum firn_intake_digest, or'ed */
 };
 
 static enum firn_status make(const struct firn_memory *memory, struct firn_expect **out)
@@ -66,8 +75,8 @@ void firn_expect_free(struct firn_expect *expect)
 /* ---- one line ---- */
 
 /* Enters a path with its digest; a path that is there already must have the same. */
-static enum firn_status enter(struct firn_expect *expect, const char *path, const uint8_t *sha256, struct listed **out,
-                              const char **fault)
+static enum firn_status enter(struct firn_expect *expect, const char *path, unsigned kind, const uint8_t *digest,
+                              struct listed **out, const char **fault)
 {
     char stored[FIRN_STORED_NAME_ROOM];
     void *record;
@@ -83,10 +92,12 @@ static enum firn_status enter(struct firn_expect *expect, const char *path, cons
         return status;
     *out = record;
     if (fresh) {
-        memcpy((*out)->sha256, sha256, FIRN_ITEM_SHA256_BYTES);
+        (*out)->kind = kind;
+        memcpy((*out)->digest, digest, kinds[kind].bytes);
+        expect->digests |= kinds[kind].asked;
         return FIRN_OK;
     }
-    if (memcmp((*out)->sha256, sha256, FIRN_ITEM_SHA256_BYTES) != 0) {
+    if ((*out)->kind != kind || memcmp((*out)->digest, digest, kinds[kind].bytes) != 0) {
         *fault = "a path named twice with different digests";
         return FIRN_BAD_DATA;
     }
@@ -111,8 +122,9 @@ static enum firn_status enter_alias(struct firn_expect *expect, const char *path
 /* One line without its end, which may be changed. */
 static enum firn_status take_line(struct firn_expect *expect, char *line, const char **fault)
 {
-    uint8_t sha256[FIRN_ITEM_SHA256_BYTES];
+    uint8_t digest[DIGEST_BYTES_MAX];
     bool backslashes = line[0] == '\\';
+    unsigned kind = SHA256;
     struct listed *listed = NULL;
     size_t digits, blanks;
     enum firn_status status;
@@ -121,8 +133,10 @@ static enum firn_status take_line(struct firn_expect *expect, char *line, const 
 
     line += backslashes;
     digits = strcspn(line, " \t");
-    if (digits != DIGEST_DIGITS || firn_text_parse_hex(line, FIRN_ITEM_SHA256_BYTES, sha256) != FIRN_OK) {
-        *fault = "no SHA-256 at the start of a line";
+    while (kind < KINDS && digits != 2 * kinds[kind].bytes)
+        kind++;
+    if (kind == KINDS || firn_text_parse_hex(line, kinds[kind].bytes, digest) != FIRN_OK) {
+        *fault = "no SHA-256, SHA-512 or MD5 at the start of a line";
         return FIRN_BAD_DATA;
     }
     blanks = strspn(line + digits, " \t");
@@ -136,7 +150,7 @@ static enum firn_status take_line(struct firn_expect *expect, char *line, const 
         memcpy(raw, path, strlen(path) + 1);
     path += path[0] == '*';
     firn_manifest_lines_decode(path, backslashes);
-    status = enter(expect, path, sha256, &listed, fault);
+    status = enter(expect, path, kind, digest, &listed, fault);
     return status == FIRN_OK && raw[0] != '\0' ? enter_alias(expect, raw, listed) : status;
 }
 
@@ -213,26 +227,40 @@ static struct listed *look_up_item(const struct firn_expect *expect, const char 
     return listed;
 }
 
+unsigned firn_expect_digests(const struct firn_expect *expect)
+{
+    return expect->digests;
+}
+
+static enum firn_expect_verdict judge(struct listed *listed, const uint8_t *digest)
+{
+    listed->seen = true;
+    listed->matched = digest != NULL && memcmp(listed->digest, digest, kinds[listed->kind].bytes) == 0;
+    return listed->matched ? FIRN_EXPECT_MATCH : FIRN_EXPECT_MISMATCH;
+}
+
 enum firn_expect_verdict firn_expect_see(struct firn_expect *expect, const char *name, size_t operand_bytes,
-                                         const uint8_t sha256[FIRN_ITEM_SHA256_BYTES])
+                                         const uint8_t sha256[FIRN_ITEM_SHA256_BYTES],
+                                         const struct firn_intake_digests *others)
 {
     struct listed *listed = look_up_item(expect, name, operand_bytes);
 
     if (listed == NULL)
         return FIRN_EXPECT_UNLISTED;
-    listed->seen = true;
-    listed->matched = memcmp(listed->sha256, sha256, FIRN_ITEM_SHA256_BYTES) == 0;
-    return listed->matched ? FIRN_EXPECT_MATCH : FIRN_EXPECT_MISMATCH;
+    if (listed->kind == SHA256)
+        return judge(listed, sha256);
+    return judge(listed, others == NULL ? NULL : listed->kind == SHA512 ? others->sha512 : others->md5);
 }
 
 enum firn_expect_verdict firn_expect_see_link(struct firn_expect *expect, const char *name, size_t operand_bytes,
                                               const char *target)
 {
     const struct listed *listed = look_up_item(expect, target, operand_bytes);
+    struct listed *link = look_up_item(expect, name, operand_bytes);
 
-    if (listed == NULL || !listed->matched)
+    if (listed == NULL || !listed->matched || link == NULL || link->kind != listed->kind)
         return FIRN_EXPECT_UNLISTED;
-    return firn_expect_see(expect, name, operand_bytes, listed->sha256);
+    return judge(link, listed->digest);
 }
 
 uint64_t firn_expect_missing(const struct firn_expect *expect, void (*missing)(void *self, const char *path),
