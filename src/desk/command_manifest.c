@@ -182,8 +182,8 @@ static int check(struct listing *l, struct firn_opening *opening, int exit)
     show_check(l, &report);
     if (report.items > 0 && report.alike == 0)
         firn_view_note(l->view, "nothing-alike", l->args->values[CHECK],
-                       "has nothing in common with the container; it stands for the folder that 'restore -C' would fill, "
-                       "or for what --below names");
+                       "has nothing in common with the container; it stands for the folder that 'restore -C' would "
+                       "fill, or for what --below names");
     if (report.findings[FIRN_MANIFEST_UNTOLD] > 0)
         exit = FIRN_EXIT_LOST;
     exit = tell_unknown(l, report.items_unknown, exit);
