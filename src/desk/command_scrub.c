@@ -224,6 +224,11 @@ static void scrub_one(struct scrubbing *s, struct firn_scrub_turn *turn)
     struct firn_fault fault = { 0 };
 
     firn_scrub_turn_take(turn, &s->job, &fault);
+    if (turn->status == FIRN_OK && turn->entry.blocks == 0) {      /* time was up before anything was looked at */
+        turn->tried = false;
+        turn->waits = true;
+        return;
+    }
     tell(s, turn, &fault);
     if (turn->kept != FIRN_OK && needs_state(s))
         worsen(s, firn_trouble_tell(s->view, NULL, turn->kept, &turn->kept_fault));
