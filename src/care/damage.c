@@ -159,7 +159,8 @@ static void start(struct spoiling *s, uint64_t seed, uint64_t trial)
 /* Whether anything happens before byte `end`, in what is left of the file. */
 static bool touched(const struct spoiling *s, uint64_t from, uint64_t end)
 {
-    bool hit = s->flips.next / 8 < end || s->losses.next < (end + LOST_BYTES - 1) / LOST_BYTES || s->chain.next / 8 < end;
+    bool hit = s->flips.next / 8 < end || s->chain.next / 8 < end ||
+               s->losses.next < (end + LOST_BYTES - 1) / LOST_BYTES;
 
     for (size_t i = 0; i < s->damage->run_count; i++)
         hit = hit || (s->run_at[i] < end && s->run_at[i] + s->damage->runs[i] > from);
