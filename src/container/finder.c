@@ -12,7 +12,7 @@ enum {
     PLAIN_TAG_BYTES = FIRN_BLOCK_TAG_BYTES - 16,      /* without the hash */
     TAG_ID_AT = 8, TAG_NUMBER_AT = 16,
     /* Bits of a tag that may be wrong. Of two unrelated tags 128 of 256 differ on average, 32 of the 64 of an id. */
-    TAG_WRONG_MAX = 64, FIELD_WRONG_MAX = 16
+    TAG_WRONG_MAX = 64, FIELD_WRONG_MAX = 16, MAGIC_WRONG_MAX = 8      /* zeros have 13 bits of the magic wrong */
 };
 
 struct finder {
@@ -130,7 +130,8 @@ static bool nearly(const uint8_t *block, const struct firn_block_tag *tag)
     uint8_t plain[PLAIN_TAG_BYTES];
 
     put_tag(tag, plain);
-    return wrong_bits(found, plain, PLAIN_TAG_BYTES) <= TAG_WRONG_MAX &&
+    return wrong_bits(found, plain, 4) <= MAGIC_WRONG_MAX &&
+           wrong_bits(found, plain, PLAIN_TAG_BYTES) <= TAG_WRONG_MAX &&
            wrong_bits(found + TAG_ID_AT, plain + TAG_ID_AT, FIRN_BLOCK_ID_BYTES) <= FIELD_WRONG_MAX &&
            wrong_bits(found + TAG_NUMBER_AT, plain + TAG_NUMBER_AT, 8) <= FIELD_WRONG_MAX;
 }
@@ -232,6 +233,7 @@ static enum firn_status take_expected(struct finder *f, bool *taken)
         tag = f->expected;
         status = tell(f, f->grid, FIRN_BLOCK_GONE, &tag);
         lock(f, f->grid, &tag);
+        f->at -= FIRN_BLOCK_BYTES - 1;      /* if bytes were lost inside of it, the next block begins before its end */
         return status;
     }
     *taken = false;
