@@ -361,7 +361,7 @@ static void sectors_that_cannot_be_read(void **state)
     bench_free(&bench);
 }
 
-/* The title page of no source is right, and its record is lost with the sheet that it is in: a page is taken unproved. */
+/* No source has a right title page, and its record is lost with the sheet that it is in: a page is taken unproved. */
 static void a_title_page_without_proof(void **state)
 {
     struct bench bench;
@@ -372,7 +372,7 @@ static void a_title_page_without_proof(void **state)
     (void)state;
     bench_make(&bench);
     copy = add_copy(&bench);
-    memset(copy + 2 * 4096, 0, (SHEET - 1) * 4096);      /* block 0 stays, block 1, with the rest of the page, does not */
+    memset(copy + 2 * 4096, 0, (SHEET - 1) * 4096);      /* block 0 stays; block 1 has the rest of the page */
     assert_int_equal(collate(&bench), FIRN_OK);
     assert_int_equal(bench.told[0].title, FIRN_COLLATE_TITLE_UNPROTECTED);
     bytes = scratch_read("out", &count);

@@ -148,7 +148,8 @@ static void survives_as_the_binomial_says(void **state)
 
 static void repeats_itself(void **state)
 {
-    struct rehearsal one = { .options = { .damage = { .flip_rate = 1e-5, .lose_rate = 0.05 }, .trials = 3, .seed = 9 } };
+    struct rehearsal one = { .options = { .damage = { .flip_rate = 1e-5, .lose_rate = 0.05 }, .trials = 3,
+                                          .seed = 9 } };
     struct rehearsal other = one;
 
     (void)state;
@@ -242,7 +243,8 @@ static void stops_when_asked(void **state)
 {
     (void)state;
     for (unsigned calls = 1; calls < 60; calls += 7) {
-        struct rehearsal r = { .options = { .damage.lose_rate = 0.02, .trials = 1000, .seed = 3 }, .stops_left = calls };
+        struct rehearsal r = { .options = { .damage.lose_rate = 0.02, .trials = 1000, .seed = 3 },
+                               .stops_left = calls };
 
         rehearse(&r);
         assert_int_equal(r.status, FIRN_STOPPED);

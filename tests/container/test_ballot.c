@@ -214,7 +214,13 @@ static void flaky_forget(void *self, uint64_t at, uint64_t bytes)
 
 static void reads_again_until_it_is_right(void **state)
 {
-    static const struct { struct flaky flaky; unsigned times; bool held; enum firn_status status; unsigned readings; } cases[] = {
+    static const struct {
+        struct flaky flaky;
+        unsigned times;
+        bool held;
+        enum firn_status status;
+        unsigned readings;
+    } cases[] = {
         { { .flips = 3000, .right_from = 3 }, 5, false, FIRN_OK, 3 },
         { { .flips = 3000, .right_from = 3 }, 2, false, FIRN_LOST, 2 },
         { { .flips = 300 }, 5, true, FIRN_OK, 5 },                      /* never right, but the majority is */
