@@ -74,9 +74,9 @@ struct firn_store_buffer { uint8_t *bytes; size_t capacity, used; };
 FIRN_API void firn_store_memory(struct firn_store_buffer *buffer, struct firn_store *store);
 
 /*
- * Puts patience in front of a store: a block that cannot be read, or does not read right, is read again up to `readings`
- * times, each time from the medium as far as the system lets us. The hash decides about each reading, and failing that
- * about what the majority of the readings says bit by bit. What the lanes can mend is left to them.
+ * Puts patience in front of a store: a block that cannot be read, or does not read right, is read again, up to
+ * `readings` times and each time from the medium as far as the system lets us. The hash decides about each reading, and
+ * failing that about what the majority of the readings says bit by bit. What the lanes can mend is left to them.
  *
  * inner  lent until the new store is closed. readings 0 .. 31.
  *

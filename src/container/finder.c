@@ -110,7 +110,7 @@ static unsigned wrong_bits(const uint8_t *a, const uint8_t *b, size_t count)
     return wrong;
 }
 
-/* What the tag of block `number` is, going by that of another block. The next sheet may be short: its t is not known. */
+/* What the tag of block `number` is, going by that of another block. A short sheet behind it has a t of its own. */
 static struct firn_block_tag tag_of(const struct firn_block_tag *like, uint64_t number)
 {
     struct firn_block_tag tag = *like;

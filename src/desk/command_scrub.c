@@ -11,10 +11,11 @@
 #include <inttypes.h>
 #include <string.h>
 
-enum option { REPORT_ONLY, VERBOSE };
+enum option { REPORT_ONLY, REREAD, VERBOSE };
 
 static const struct firn_args_option options[] = {
     [REPORT_ONLY] = { "report-only", '\0', NULL, "write nothing; works on read-only media" },
+    [REREAD] = { "reread", '\0', "N", "read a block that is not right again up to N times, 31 at most (default 0)" },
     [VERBOSE] = { "verbose", 'v', NULL, "a line for every container, sound ones too" },
 };
 
@@ -30,6 +31,7 @@ struct scrubbing {
     uint64_t range_count;
     int exit;                             /* the worst so far */
     uint64_t containers;
+    unsigned readings;
 };
 
 /* Loss is worst, then what kept us from looking, then damage that is safe. */
@@ -62,7 +64,7 @@ static bool damaged(const struct firn_scrub_report *r)
 {
     return r->mended + r->rebuilt + r->lost > 0 || r->title == FIRN_SCRUB_TITLE_DAMAGED ||
            r->title == FIRN_SCRUB_TITLE_HEALED || r->extended_bytes > 0 || !r->end_known ||
-           r->journal == FIRN_SCRUB_JOURNAL_REPLAYED;
+           r->journal == FIRN_SCRUB_JOURNAL_REPLAYED || r->reread > 0 || r->stretches > 0;
 }
 
 static void add_part(struct firn_text *text, uint64_t count, const char *one, const char *many)
@@ -92,6 +94,10 @@ static void say(struct scrubbing *s, const char *path, const struct firn_scrub_r
                       s->ranges[i].first + s->ranges[i].count - 1);
     if (s->range_count > 0)
         firn_text_add(&text, s->range_count > 4 ? ", ...)" : ")");
+    add_part(&text, r->reread, "block right only when read again", "blocks right only when read again");
+    if (r->stretches > 0)
+        firn_text_add(&text, "%sits blocks are NOT WHERE THEY BELONG, in %s piece%s", text.used > 0 ? ", " : "",
+                      firn_text_count(r->stretches, count), r->stretches == 1 ? "" : "s");
     if (r->title == FIRN_SCRUB_TITLE_DAMAGED || r->title == FIRN_SCRUB_TITLE_HEALED)
         firn_text_add(&text, "%stitle page damaged", text.used > 0 ? ", " : "");
     add_part(&text, r->extended_bytes, "byte put back at its end", "bytes put back at its end");
@@ -101,6 +107,8 @@ static void say(struct scrubbing *s, const char *path, const struct firn_scrub_r
              "blocks of a repair that was cut off put in place");
     if (text.used == 0)
         firn_text_add(&text, "sound, %s blocks", firn_text_count(r->checked, count));
+    else if (r->stretches > 0)
+        firn_text_add(&text, "; nothing written, collate makes a sound copy");
     else if (s->args->given[REPORT_ONLY])
         firn_text_add(&text, "; nothing written");
     else if (r->written > 0)
@@ -139,6 +147,8 @@ static void say_json(struct scrubbing *s, const char *path, enum firn_status sta
     firn_view_count(view, "rebuilt", NULL, r->rebuilt);
     firn_view_count(view, "lost", NULL, r->lost);
     firn_view_count(view, "unreadable", NULL, r->unreadable);
+    firn_view_count(view, "reread", NULL, r->reread);
+    firn_view_count(view, "pieces", NULL, r->stretches);
     firn_view_count(view, "written", NULL, r->written);
     firn_view_count(view, "extended-bytes", NULL, r->extended_bytes);
     firn_view_count(view, "foreign-bytes", NULL, r->foreign_bytes);
@@ -158,8 +168,8 @@ static void scrub_one(void *self, const char *path)
     struct scrubbing *s = self;
     struct firn_scrub_options scrub = {
         .path = path, .memory = firn_memory_system(), .threads = s->args->threads,
-        .report_only = s->args->given[REPORT_ONLY], .self = s, .stop = firn_interrupt_asked, .progress = step,
-        .lost = note_lost
+        .report_only = s->args->given[REPORT_ONLY], .readings = s->readings, .self = s, .stop = firn_interrupt_asked,
+        .progress = step, .lost = note_lost
     };
     struct firn_scrub_report report;
     struct firn_fault fault = { 0 };
@@ -197,7 +207,12 @@ static void tell_trouble(void *self, const char *path, int os_error)
 static int run(const struct firn_args *args, struct firn_view *view)
 {
     struct scrubbing s = { .args = args, .view = view };
+    const char *reread = args->values[REREAD];
+    uint64_t readings = 0;
 
+    if (reread != NULL && (firn_text_parse_count(reread, &readings) != FIRN_OK || readings > 31))
+        return firn_trouble_usage(view, reread, "is no number of readings from 0 to 31");
+    s.readings = (unsigned)readings;
     if (args->operand_count == 0)
         return firn_trouble_usage(view, "FILE-OR-FOLDER", "is missing: name a container or a folder of them");
     for (size_t i = 0; i < args->operand_count && !firn_interrupt_asked(NULL); i++) {
