@@ -298,7 +298,8 @@ enum firn_status firn_collate_take(struct firn_collate *collate, const char *nam
 {
     struct taking t = { .collate = collate, .name = name, .store = store, .fault = fault };
     struct firn_finder_visitor visitor = {
-        .self = &t, .block = take_block, .progress = pass_progress, .stop = pass_stop
+        .self = &t, .block = take_block, .progress = pass_progress, .stop = pass_stop,
+        .readings = collate->options->readings
     };
     struct firn_finder_report found;
     enum firn_status status = firn_finder_run(store, collate->memory, &visitor, &found, fault);

@@ -33,6 +33,20 @@ struct finder {
 
 /* --- the window --- */
 
+/* Tries to read source[at .. at + count) as often as is asked for. Returns how much of it could be had. */
+static size_t try_piece(struct finder *f, uint64_t at, uint8_t *bytes, size_t count)
+{
+    size_t got = 0;
+    int why;
+
+    for (unsigned i = 0; i <= f->visitor->readings; i++) {
+        if (f->store->read_at(f->store->self, at, bytes, count, &got, &why) == FIRN_OK)
+            return got;
+        f->store->forget(f->store->self, at, count);
+    }
+    return got;
+}
+
 /* Reads source[base + have ..] until the window is full; what cannot be read becomes zeros, block by block. */
 static void fill(struct finder *f)
 {
@@ -52,8 +66,8 @@ static void fill(struct finder *f)
         size_t step = (size_t)(FIRN_BLOCK_BYTES - at % FIRN_BLOCK_BYTES);
 
         step = step < wanted - done ? step : wanted - done;
-        if (f->store->read_at(f->store->self, at, f->window + f->have + done, step, &got, &why) != FIRN_OK ||
-            got < step) {
+        got = try_piece(f, at, f->window + f->have + done, step);
+        if (got < step) {
             memset(f->window + f->have + done + got, 0, step - got);
             f->report->unreadable_bytes += step - got;
             got = step;

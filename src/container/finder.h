@@ -27,6 +27,7 @@ struct firn_finder_visitor {
     enum firn_status (*block)(void *self, const struct firn_finder_block *block);
     void (*progress)(void *self, uint64_t at, uint64_t bytes);      /* may be NULL */
     bool (*stop)(void *self);                                       /* may be NULL */
+    unsigned readings;                 /* what cannot be read is tried so many times more */
 };
 
 struct firn_finder_report { uint64_t bytes, unreadable_bytes, good, mended, damaged; };
