@@ -70,14 +70,14 @@ static enum firn_status read_all(struct firn_store *store, struct reading *readi
 
 /* --- patience --- */
 
-/* A medium on which some blocks read wrong or not at all the first so many times; seconds are right, or votes needed. */
+/* A medium on which some blocks cannot be read, or read wrong, the first so many times. */
 struct moody {
     const uint8_t *bytes;
     size_t used;
     unsigned *tries;                   /* of each block */
-    unsigned bad_every, fails_for;     /* block n with n % bad_every == 1 fails so many times, then flips bits for ever */
-    unsigned flips_for;                /* ... or flips bits so many times */
-    unsigned flips;
+    unsigned bad_every;                /* pages n with n % bad_every == 1 are bad */
+    unsigned fails_for, flips_for;     /* they fail so often, then have so often ... */
+    unsigned flips;                    /* ... so many bits flipped, others each time */
 };
 
 static enum firn_status moody_read(void *self, uint64_t at, void *bytes, size_t count, size_t *got, int *os_error)
@@ -154,7 +154,8 @@ static void patience_pays(void **state)
         if (cases[i].whole) {
             assert_int_equal(reading.whole, packed->items);
             assert_int_equal(reading.damage.lost + reading.damage.rebuilt, 0);
-            assert_in_range(firn_store_patient_gained(&store), packed->totals.blocks / 4, packed->totals.blocks / 3 + 1);
+            assert_in_range(firn_store_patient_gained(&store), packed->totals.blocks / 4,
+                            packed->totals.blocks / 3 + 1);
         } else {
             assert_true(reading.whole < packed->items);
             assert_int_equal(firn_store_patient_gained(&store), 0);
