@@ -128,7 +128,7 @@ static void moody_forget(void *self, uint64_t at, uint64_t bytes)
 static void patience_pays(void **state)
 {
     static const struct { unsigned fails_for, flips_for, flips, readings; bool whole; } cases[] = {
-        { 0, 1000, 100, 0, false },      /* without patience nearly all is lost */
+        { 0, 1000, 3000, 0, false },     /* without patience nearly all is lost */
         { 0, 2, 3000, 3, true },         /* the third reading is right; layout and stream read some twice already */
         { 0, 1000000, 60, 9, true },     /* none is ever right; the majority of ten is */
         { 3, 0, 0, 5, true },            /* it cannot be read at first */
