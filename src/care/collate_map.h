@@ -14,6 +14,9 @@
 /* Containers of up to 32 TiB; 128 of them make a sparse file of 8 TiB, which any file system of today can hold. */
 #define FIRN_COLLATE_MAP_BLOCKS_MAX (UINT64_C(1) << 33)
 
+/* Who mends a container keeps a few bytes for each sheet; a lone block with an absurd number shall not cost memory. */
+#define FIRN_COLLATE_MAP_SHEETS_MAX (UINT64_C(1) << 20)
+
 enum { FIRN_COLLATE_MAP_NOTHING = 0, FIRN_COLLATE_MAP_GOOD = 1 };      /* more: the place of a damaged copy */
 
 struct firn_collate_map;

@@ -9,7 +9,15 @@
 #include <errno.h>
 #include <string.h>
 
-enum { CONTAINERS_MAX = 16, STRETCHES_MAX = 1 << 16 };
+enum {
+    CONTAINERS_MAX = 16, STRETCHES_MAX = 1 << 16,
+    DAMAGED_MIN = 16      /* so many damaged blocks make a container without a good one; fewer may be an accident */
+};
+
+/* Up to 16 GiB, and else up to so many times what is there. Where still more is missing, collate puts it together. */
+#define NUMBER_PLAIN (UINT64_C(1) << 22)
+#define LENGTHENED_MAX 64
+#define SHEETS_MAX (UINT64_C(1) << 20)
 
 /* Blocks first .. last lie one behind the other, the first one at byte `at`. */
 struct stretch { uint64_t first, last, at; };
@@ -19,12 +27,13 @@ struct container {
     struct firn_block_tag like;
     struct stretch *stretches;
     size_t count, capacity;
-    uint64_t good;
+    uint64_t good, known;      /* known: the damaged ones too */
 };
 
 struct search {
     const struct firn_memory *memory;
     const struct firn_store_watch *watch;
+    uint64_t inner_bytes;
     struct container containers[CONTAINERS_MAX];
     unsigned count;
 };
@@ -54,10 +63,20 @@ static struct container *container_of(struct search *search, const struct firn_b
     return &search->containers[search->count++];
 }
 
+/*
+ * Whether the aligned file may be as long as this block tells. Who reads it goes through all of it and keeps a few
+ * bytes for each sheet, and a small file with an absurd number in it shall cost neither days nor memory.
+ */
+static bool within_reason(const struct search *search, const struct firn_block_tag *tag)
+{
+    return (tag->number < NUMBER_PLAIN || tag->number / LENGTHENED_MAX < search->inner_bytes / FIRN_BLOCK_BYTES) &&
+           tag->number / firn_sheet_full_blocks(&tag->geometry) < SHEETS_MAX;
+}
+
 static enum firn_status note_block(void *self, const struct firn_finder_block *block)
 {
     struct search *search = self;
-    struct container *container = container_of(search, &block->tag);
+    struct container *container = within_reason(search, &block->tag) ? container_of(search, &block->tag) : NULL;
     struct stretch *last;
     uint64_t number = block->tag.number;
     void *stretches;
@@ -66,6 +85,7 @@ static enum firn_status note_block(void *self, const struct firn_finder_block *b
     if (container == NULL)
         return FIRN_OK;
     container->good += block->state != FIRN_BLOCK_GONE;
+    container->known++;
     last = container->count > 0 ? &container->stretches[container->count - 1] : NULL;
     if (last != NULL && number > last->last && block->at > last->at &&
         (block->at - last->at) / FIRN_BLOCK_BYTES == number - last->first &&
@@ -105,14 +125,18 @@ static bool pass_stop(void *self)
     return watch != NULL && watch->stop != NULL && watch->stop(watch->self);
 }
 
-/* The container with the most good blocks; NULL when there is none, or it lies where it should. */
+/* The container with the most good blocks, else the most damaged ones; NULL: none, or it lies where it should. */
 static struct container *choose(struct search *search)
 {
     struct container *best = NULL;
 
-    for (unsigned i = 0; i < search->count; i++)
-        if (search->containers[i].good > 0 && (best == NULL || search->containers[i].good > best->good))
-            best = &search->containers[i];
+    for (unsigned i = 0; i < search->count; i++) {
+        struct container *c = &search->containers[i];
+
+        if ((c->good > 0 || c->known >= DAMAGED_MIN) &&
+            (best == NULL || c->good > best->good || (c->good == best->good && c->known > best->known)))
+            best = c;
+    }
     if (best == NULL || (best->count == 1 &&
                          best->stretches[0].at == (best->stretches[0].first + 1) * FIRN_BLOCK_BYTES))
         return NULL;
@@ -248,11 +272,14 @@ enum firn_status firn_store_realign(struct firn_store *inner, const struct firn_
     struct realigned *r = NULL;
     struct firn_finder_report found;
     enum firn_status status;
+    int why;
 
     if (search == NULL)
         return firn_fault_tell(fault, FIRN_NO_MEMORY, 0, 0, "");
     search->memory = memory;
     search->watch = watch;
+    if (inner->size(inner->self, &search->inner_bytes, &why) != FIRN_OK)
+        search->inner_bytes = 0;      /* the finder will say what is wrong */
     status = firn_finder_run(inner, memory, &visitor, &found, fault);
     if (status == FIRN_OK) {
         chosen = choose(search);

@@ -428,6 +428,10 @@ static void absurd_numbers_are_left_alone(void **state)
     bench_make(&bench);
     memcpy(tag.id, packed->totals.id, sizeof tag.id);
     firn_block_seal(add_source(&bench, 4096), &tag);
+    tag.geometry = (struct firn_sheet_geometry){ 1, 4, 1 };      /* sheets of five blocks, two million of them */
+    tag.data_blocks = 1;
+    tag.number = UINT64_C(5) << 21;
+    firn_block_seal(add_source(&bench, 4096), &tag);
     add_copy(&bench);
     comes_out_whole(&bench);
     bench_free(&bench);

@@ -3,6 +3,7 @@
  *
  * SPDX-License-Identifier: BSD-2-Clause
  */
+#include "firn/block.h"
 #include "firn/store.h"
 
 #include "guard/random.h"
@@ -279,6 +280,41 @@ static void any_read_gives_the_same(void **state)
     free(buffer.bytes);
 }
 
+/* A block whose number would make the file absurdly long is passed over, however right its hash is. */
+static void absurd_numbers_are_left_alone(void **state)
+{
+    static const uint64_t numbers[] = { UINT64_C(144) << 50, UINT64_C(144) << 30, UINT64_C(5) << 21 };
+    size_t end = packed->buffer.used;
+
+    (void)state;
+    for (size_t i = 0; i < sizeof numbers / sizeof numbers[0]; i++) {
+        struct pieces pieces = { 1, { { 4096, 5000, end } } };
+        struct firn_store_buffer buffer = assemble(&pieces);
+        struct firn_block_tag tag = {
+            .version = FIRN_BLOCK_FORMAT_VERSION, .kind = FIRN_BLOCK_DATA, .geometry = geometry, .data_blocks = 112,
+            .number = numbers[i]
+        };
+        struct firn_store inner, store;
+        struct firn_fault fault;
+        uint64_t stretches, size = 0;
+        int why;
+
+        if (i == 2) {      /* a small number, but of sheets of five blocks */
+            tag.geometry = (struct firn_sheet_geometry){ 1, 4, 1 };
+            tag.data_blocks = 1;
+        }
+        memcpy(tag.id, packed->totals.id, sizeof tag.id);
+        firn_block_seal(buffer.bytes, &tag);
+        firn_store_memory(&buffer, &inner);
+        assert_int_equal(firn_store_realign(&inner, NULL, firn_memory_system(), &store, &stretches, &fault), FIRN_OK);
+        assert_int_equal(stretches, 1);
+        assert_int_equal(store.size(store.self, &size, &why), FIRN_OK);
+        assert_int_equal(size, end);
+        store.close(store.self);
+        free(buffer.bytes);
+    }
+}
+
 static bool stop_at_once(void *self)
 {
     (void)self;
@@ -324,6 +360,7 @@ int main(void)
         cmocka_unit_test(patience_leaves_lanes_their_work),
         cmocka_unit_test(blocks_are_put_in_order),
         cmocka_unit_test(any_read_gives_the_same),
+        cmocka_unit_test(absurd_numbers_are_left_alone),
         cmocka_unit_test(order_is_left_alone),
     };
     int failed;
