@@ -147,7 +147,8 @@ static enum firn_status find_container(struct firn_collate *collate, const struc
     const uint8_t *only = collate->options->only_id;
 
     if (tag->number >= FIRN_COLLATE_MAP_BLOCKS_MAX ||
-        tag->number / firn_sheet_full_blocks(&tag->geometry) >= FIRN_COLLATE_MAP_SHEETS_MAX || (only != NULL && memcmp(only, tag->id, sizeof tag->id) != 0))
+        tag->number / firn_sheet_full_blocks(&tag->geometry) >= FIRN_COLLATE_MAP_SHEETS_MAX ||
+        (only != NULL && memcmp(only, tag->id, sizeof tag->id) != 0))
         return FIRN_END;
     for (*index = 0; *index < collate->count; (*index)++)
         if (same_container(&collate->containers[*index]->like, tag))

@@ -9,14 +9,15 @@
 #include "desk/trouble.h"
 #include "firn/collate.h"
 
-#include <inttypes.h>
+#include <errno.h>
 #include <string.h>
 #include <sys/stat.h>
+#include <unistd.h>
 
 enum option { OUTPUT, REPLACE, REREAD, ID, SCRATCH };
 
 static const struct firn_args_option options[] = {
-    [OUTPUT] = { "output", 'o', "FILE", "the container to write; a folder (or a name with / behind it) for several" },
+    [OUTPUT] = { "output", 'o', "FILE", "the container; for several a folder, made if a / is behind its name" },
     [REPLACE] = { "replace", '\0', NULL, "files that are there may be overwritten" },
     [REREAD] = { "reread", '\0', "N", "read a damaged block again up to N times, 31 at most (default 0)" },
     [ID] = { "id", '\0', "HEX", "only the container with this identity (16 digits, see describe)" },
@@ -37,6 +38,7 @@ struct collating {
     uint64_t sources;
     bool trouble;                      /* a source that could not be opened, or not all of it be read */
     bool damaged, lost;
+    bool made_folder;
     uint8_t id[ID_BYTES];
 };
 
@@ -46,6 +48,20 @@ static bool names_folder(const char *path)
     size_t length = strlen(path);
 
     return (length > 0 && path[length - 1] == '/') || (stat(path, &facts) == 0 && S_ISDIR(facts.st_mode));
+}
+
+/* A folder that is named with a slash behind it is made if need be. */
+static enum firn_status make_folder(struct collating *c)
+{
+    struct stat facts;
+
+    if (!c->options.into_folder || stat(c->options.output, &facts) == 0)
+        return FIRN_OK;
+    c->made_folder = mkdir(c->options.output, S_IRWXU | S_IRWXG | S_IRWXO) == 0;
+    if (c->made_folder)
+        return FIRN_OK;
+    c->fault.os_error = errno;
+    return FIRN_CANNOT_CREATE;
 }
 
 static int read_words(struct collating *c)
@@ -302,6 +318,9 @@ static int run(const struct firn_args *args, struct firn_view *view)
     exit = read_words(&c);
     if (exit != FIRN_EXIT_SOUND)
         return exit;
+    c.status = make_folder(&c);
+    if (c.status != FIRN_OK)
+        return firn_trouble_tell(view, c.options.output, c.status, &c.fault);
     c.status = firn_collate_open(&c.options, &c.collate, &c.fault);
     if (c.status == FIRN_OK)
         take_all(&c);
@@ -312,6 +331,8 @@ static int run(const struct firn_args *args, struct firn_view *view)
     }
     exit = tell_end(&c);
     firn_collate_free(c.collate);
+    if (c.made_folder)
+        (void)rmdir(c.options.output);      /* if nothing went into it */
     return exit;
 }
 
@@ -327,9 +348,9 @@ const struct firn_command firn_command_collate = {
              "scrub or restore says so.\n\n"
              "Several containers are told apart by their identity. -o FILE takes one; when there\n"
              "are more, name a folder: each goes into it as IDENTITY.firn.\n\n"
-             "Sources are only read, once. Temporary files take eight bytes for each block and\n"
-             "4 KiB for each damaged one. Work on images of a failing medium, not on the medium:\n"
-             "each reading may be its last.\n\n"
+             "Sources are only read, and once but for --reread. Temporary files take eight\n"
+             "bytes for each block and 4 KiB for each damaged one. Work on images of a failing\n"
+             "medium, not on the medium: each reading may be its last.\n\n"
              "Exit status: 0 all sources were sound; 1 something was damaged, the result is whole;\n"
              "2 blocks are lost; 66 the result is whole, but a source could not be opened.\n",
     .example = "  firn collate -o quay-1931.firn copy-a.firn copy-b.firn\n"

@@ -136,8 +136,8 @@ static void add_spoiled(struct firn_text *text, const struct firn_drill_spoiled 
     const struct { uint64_t count; const char *one, *many; } parts[] = {
         { spoiled->flipped_bits, "bit flipped", "bits flipped" },
         { spoiled->burst_bits, "bit flipped around bursts", "bits flipped around bursts" },
-        { spoiled->lost_blocks, "block lost", "blocks lost" },
-        { spoiled->run_bytes, "byte lost in runs", "bytes lost in runs" },
+        { spoiled->lost_blocks, "block overwritten", "blocks overwritten" },
+        { spoiled->run_bytes, "byte overwritten in runs", "bytes overwritten in runs" },
         { spoiled->cut_bytes, "byte cut off", "bytes cut off" },
     };
     size_t before = text->used;
@@ -161,8 +161,8 @@ static void add_outcome(struct firn_text *text, const struct firn_drill_trial *t
     firn_text_add(text, trial->whole ? "whole: " : "NOT whole: ");
     before = text->used;
     add_part(text, "", trial->blocks_mended, "block mended by its lanes", "blocks mended by their lanes");
-    add_part(text, text->used > before ? ", " : "", trial->blocks_rebuilt, "rebuilt from the reserve",
-             "rebuilt from the reserve");
+    add_part(text, text->used > before ? ", " : "", trial->blocks_rebuilt, "block rebuilt from the reserve",
+             "blocks rebuilt from the reserve");
     add_part(text, text->used > before ? ", " : "", trial->blocks_lost, "block LOST", "blocks LOST");
     if (text->used == before)
         firn_text_add(text, trial->whole ? "nothing to repair" : "its title page is lost");
@@ -186,7 +186,7 @@ static void show_trial_json(struct firn_view *view, const struct firn_drill_tria
     firn_view_count(view, "bursts", NULL, spoiled->bursts);
     firn_view_count(view, "bad-bits", NULL, spoiled->bad_bits);
     firn_view_count(view, "burst-flipped-bits", NULL, spoiled->burst_bits);
-    firn_view_count(view, "lose-blocks", NULL, spoiled->lost_blocks);
+    firn_view_count(view, "overwritten-blocks", NULL, spoiled->lost_blocks);
     firn_view_count(view, "run-bytes", NULL, spoiled->run_bytes);
     firn_view_count(view, "cut-bytes", NULL, spoiled->cut_bytes);
     firn_view_switch(view, "recognised", trial->recognised);

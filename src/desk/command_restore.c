@@ -203,7 +203,7 @@ static int outcome(const struct restoring *r, const struct firn_reader_damage *d
     if (findings[FIRN_OUTLET_REFUSED] > 0 || findings[FIRN_OUTLET_LINK] > 0)
         return FIRN_EXIT_BAD_DATA;
     return damage->mended > 0 || damage->rebuilt > 0 || damage->lost > 0 || layout_exit == FIRN_EXIT_SAFE ||
-                   r->opening.stretches > 0 || firn_opening_gained(&r->opening) > 0
+                   firn_opening_gained(&r->opening) > 0
                ? FIRN_EXIT_SAFE
                : FIRN_EXIT_SOUND;
 }
@@ -258,7 +258,7 @@ static int run(const struct firn_args *args, struct firn_view *view)
         firn_loss_close(&r.loss);
         return exit;
     }
-    layout_exit = firn_opening_remark(view, r.container, firn_reader_layout_of(r.opening.reader));
+    layout_exit = firn_opening_look(view, r.container, &r.opening);
     status = restore(&r);
     firn_reader_damage_so_far(r.opening.reader, &damage);
     if (status == FIRN_OK || status == FIRN_NO_INPUT) {

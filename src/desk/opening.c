@@ -200,3 +200,13 @@ int firn_opening_remark(struct firn_view *view, const char *path, const struct f
     }
     return worst;
 }
+
+int firn_opening_look(struct firn_view *view, const char *path, const struct firn_opening *opening)
+{
+    struct firn_reader_layout layout = *firn_reader_layout_of(opening->reader);
+    int exit;
+
+    layout.title_sound = layout.title_sound || opening->stretches > 0;
+    exit = firn_opening_remark(view, path, &layout);
+    return exit == FIRN_EXIT_SOUND && opening->stretches > 0 ? FIRN_EXIT_SAFE : exit;
+}

@@ -44,4 +44,7 @@ void firn_opening_show_layout(struct firn_view *view, const struct firn_reader_l
  */
 int firn_opening_remark(struct firn_view *view, const char *path, const struct firn_reader_layout *layout);
 
+/* The same for what was opened: blocks that are not where they belong are damage too, and with them goes page 0. */
+int firn_opening_look(struct firn_view *view, const char *path, const struct firn_opening *opening);
+
 #endif
