@@ -7,10 +7,41 @@
 #include "care/scrub_store.h"
 #include "container/sheets.h"
 
-/* Whether a layout may be the plain look of a container that bytes were lost from or put into. */
-static bool odd(const struct firn_reader_layout *layout)
+#include <string.h>
+
+enum { TAIL_BLOCKS = 4 };
+
+/* Whether one of the last blocks is in its place: then nothing before them was moved. */
+static bool tail_in_place(struct firn_store *store, const struct firn_reader_layout *layout)
 {
-    return !layout->end_known || layout->blocks_missing > 0 || layout->foreign_bytes > 0;
+    uint8_t block[FIRN_BLOCK_BYTES];
+    bool found = false;
+
+    for (uint64_t i = 1; i <= TAIL_BLOCKS && i <= layout->blocks && !found; i++) {
+        uint64_t number = layout->blocks - i;
+        struct firn_block_tag tag;
+        enum firn_block_state state;
+        size_t got = 0;
+        int why;
+
+        if (store->read_at(store->self, firn_sheets_place(number), block, sizeof block, &got, &why) != FIRN_OK ||
+            got < sizeof block)
+            continue;
+        state = firn_block_open(block, false, &tag);
+        found = (state == FIRN_BLOCK_SOUND || state == FIRN_BLOCK_MENDED) && tag.number == number &&
+                memcmp(tag.id, layout->id, sizeof tag.id) == 0;
+    }
+    return found;
+}
+
+/*
+ * Whether a layout may be the plain look of a container that bytes were lost from or put into. What follows behind the
+ * end of one is no reason by itself: a device is longer than what was written to it.
+ */
+static bool odd(struct firn_store *store, const struct firn_reader_layout *layout)
+{
+    return !layout->end_known || layout->blocks_missing > 0 ||
+           (layout->foreign_bytes > 0 && !tail_in_place(store, layout));
 }
 
 static bool pass_stop(void *self)
@@ -18,6 +49,14 @@ static bool pass_stop(void *self)
     const struct firn_scrub_options *options = self;
 
     return options->stop != NULL && options->stop(options->self);
+}
+
+static void pass_progress(void *self, uint64_t at, uint64_t bytes)
+{
+    const struct firn_scrub_options *options = self;
+
+    if (options->progress != NULL)
+        options->progress(options->self, at / FIRN_BLOCK_BYTES, bytes / FIRN_BLOCK_BYTES);
 }
 
 /*
@@ -30,13 +69,13 @@ static enum firn_status put_in_order(const struct firn_scrub_options *options, s
     struct firn_sheets_options sheets_options = { store, options->memory, options->threads, options->stop,
                                                   options->self };
     struct firn_scrub_options own = *options;
-    struct firn_store_watch watch = { .self = &own, .stop = pass_stop };
+    struct firn_store_watch watch = { .self = &own, .progress = pass_progress, .stop = pass_stop };
     struct firn_sheets *sheets;
     enum firn_status status = firn_sheets_open(&sheets_options, fault, &sheets);
     bool look = status == FIRN_NOT_CONTAINER;
 
     if (status == FIRN_OK) {
-        look = odd(firn_sheets_layout(sheets));
+        look = odd(store, firn_sheets_layout(sheets));
         firn_sheets_close(sheets);
     }
     return look ? firn_store_realign(store, &watch, options->memory, realigned, stretches, fault) : FIRN_END;

@@ -113,6 +113,8 @@ static void say(struct scrubbing *s, const char *path, const struct firn_scrub_r
         firn_text_add(&text, "; nothing written");
     else if (r->written > 0)
         firn_text_add(&text, r->lost == 0 && r->end_known ? "; repaired in place" : "; the rest repaired in place");
+    if (r->reread > 0)
+        firn_text_add(&text, "; copy it while it can still be read");
     if (r->lost > 0 || !r->end_known)
         firn_text_add(&text, "; take another copy");
     if (r->foreign_bytes > 0)

@@ -4,6 +4,7 @@
 
 #include "desk/interrupt.h"
 #include "desk/opening_store.h"
+#include "desk/progress.h"
 #include "desk/trouble.h"
 
 #include <inttypes.h>
@@ -40,10 +41,13 @@ static void close_reader(struct firn_opening *opening, unsigned stores_left)
     }
 }
 
-/* Whether what was found may be the plain look of a container that bytes were lost from or put into. */
+/*
+ * Whether what was found may be the plain look of a container that bytes were lost from or put into: then its last
+ * record is not where it should be. A device, longer than what was written to it, is not looked through for nothing.
+ */
 static bool odd(const struct firn_reader_layout *layout)
 {
-    return !layout->end_known || !layout->colophon_found || layout->blocks_missing > 0 || layout->foreign_bytes > 0;
+    return !layout->end_known || !layout->colophon_found || layout->blocks_missing > 0;
 }
 
 static void tell_stretches(struct firn_view *view, const char *path, uint64_t stretches)
@@ -62,6 +66,14 @@ static void tell_stretches(struct firn_view *view, const char *path, uint64_t st
     firn_view_finding(view, "misplaced", path, words);
 }
 
+static void step(void *self, uint64_t at, uint64_t bytes)
+{
+    struct firn_progress *progress = self;
+
+    progress->goal_bytes = bytes;
+    firn_progress_step(progress, 0, at);
+}
+
 /*
  * Tries to find the blocks of a container that cannot be read as it lies there. FIRN_OK when it can be read now;
  * FIRN_END when that does not help.
@@ -69,12 +81,15 @@ static void tell_stretches(struct firn_view *view, const char *path, uint64_t st
 static enum firn_status realign(struct firn_opening *opening, const struct firn_reader_options *options,
                                 struct firn_view *view, const char *path, struct firn_fault *fault)
 {
-    struct firn_store_watch watch = { .stop = firn_interrupt_asked };
+    struct firn_progress progress;
+    struct firn_store_watch watch = { .self = &progress, .progress = step, .stop = firn_interrupt_asked };
     struct firn_store *store = &opening->stores[1];
     enum firn_status status;
 
     close_reader(opening, 1);
+    firn_progress_start(&progress, "looking for blocks", 0, view->quiet || view->json);
     status = firn_store_realign(&opening->stores[0], &watch, options->memory, store, &opening->stretches, fault);
+    firn_progress_wipe(&progress);
     if (status != FIRN_OK)
         return status;
     opening->store_count = 2;
