@@ -395,6 +395,24 @@ static void nothing_to_find(void **state)
     bench_free(&bench);
 }
 
+/* One copy with a bit in fifty wrong: beyond all repair. Nothing, or what is known to be lost, but never success. */
+static void beyond_repair(void **state)
+{
+    struct bench bench;
+
+    (void)state;
+    bench_make(&bench);
+    flip_rate(add_copy(&bench), packed->buffer.used, 0.02);
+    memcpy(bench.sources[0].bytes + 40 * 4096 + 3968, packed->buffer.bytes + 40 * 4096 + 3968, 128);
+    memcpy(bench.sources[0].bytes + 41 * 4096 + 3968, packed->buffer.bytes + 41 * 4096 + 3968, 128);
+    assert_int_equal(collate(&bench), FIRN_OK);      /* two tags are whole, and lead to all the others */
+    assert_int_equal(bench.containers, 1);
+    assert_true(bench.seen[0].damaged > packed->totals.blocks * 3 / 4);
+    assert_true(bench.told[0].path == NULL || bench.told[0].lost > packed->totals.blocks * 3 / 4);
+    assert_int_equal(scratch_entries(), bench.told[0].path != NULL);
+    bench_free(&bench);
+}
+
 static void what_is_there_stays_there(void **state)
 {
     struct bench bench;
@@ -513,6 +531,7 @@ int main(void)
         cmocka_unit_test(sectors_that_cannot_be_read),
         cmocka_unit_test(a_title_page_without_proof),
         cmocka_unit_test(nothing_to_find),
+        cmocka_unit_test(beyond_repair),
         cmocka_unit_test(what_is_there_stays_there),
         cmocka_unit_test(absurd_numbers_are_left_alone),
         cmocka_unit_test(contradictions_are_told),
