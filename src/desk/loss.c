@@ -98,10 +98,13 @@ static void add_words(struct firn_loss *loss, const struct firn_outlet_finding *
     if (finding->kind == FIRN_OUTLET_LOST) {
         firn_text_add(&text, "%s of ", firn_text_count(finding->lost_bytes, count));
         firn_text_add(&text, "%s bytes are lost", firn_text_count(finding->bytes, count));
+        firn_text_add(&text, finding->kept ? "; kept, with zeros in their place" : "; not written");
     } else {
-        firn_text_add(&text, "all blocks are there, but its bytes do not have the SHA-256 of the catalogue");
+        firn_text_add(&text, finding->kind == FIRN_OUTLET_LINK
+                                 ? "a hard link to an item that is not whole"
+                                 : "all blocks are there, but its bytes do not have the SHA-256 of the catalogue");
+        firn_text_add(&text, finding->kept ? "; given back all the same" : "; not written");
     }
-    firn_text_add(&text, finding->kept ? "; kept, with zeros in their place" : "; not written");
     fputc('\n', loss->view.out);
     firn_view_line(&loss->view, finding->path, words);
     for (uint64_t i = 0; i < finding->range_count; i++) {
@@ -116,9 +119,12 @@ static void add_words(struct firn_loss *loss, const struct firn_outlet_finding *
 
 void firn_loss_add(struct firn_loss *loss, const struct firn_outlet_finding *finding)
 {
+    static const char *const kinds[FIRN_OUTLET_KINDS] = {
+        [FIRN_OUTLET_LOST] = "lost", [FIRN_OUTLET_MISMATCH] = "mismatch", [FIRN_OUTLET_LINK] = "link"
+    };
     struct firn_view *view = &loss->view;
 
-    if (loss->stage == NULL || (finding->kind != FIRN_OUTLET_LOST && finding->kind != FIRN_OUTLET_MISMATCH))
+    if (loss->stage == NULL || kinds[finding->kind] == NULL)
         return;
     loss->items++;
     if (!view->json) {
@@ -126,7 +132,7 @@ void firn_loss_add(struct firn_loss *loss, const struct firn_outlet_finding *fin
         return;
     }
     firn_view_begin(view, "loss", NULL);
-    firn_view_words(view, "kind", NULL, finding->kind == FIRN_OUTLET_LOST ? "lost" : "mismatch");
+    firn_view_words(view, "kind", NULL, kinds[finding->kind]);
     firn_view_words(view, "path", NULL, finding->path);
     firn_view_count(view, "item", NULL, finding->number);
     firn_view_switch(view, "kept", finding->kept);
@@ -148,8 +154,9 @@ enum firn_status firn_loss_keep(struct firn_loss *loss, const struct firn_outlet
     if (loss->items == 0) {
         firn_text_add(&text, "nothing is lost");
     } else {
-        firn_text_add(&text, "%s item%s ", firn_text_count(loss->items, count), loss->items == 1 ? " has" : "s have");
-        firn_text_add(&text, "losses, %s bytes in all", firn_text_count(report->lost_bytes, count));
+        firn_text_add(&text, "%s item%s not whole, ", firn_text_count(loss->items, count),
+                      loss->items == 1 ? " is" : "s are");
+        firn_text_add(&text, "%s bytes are lost", firn_text_count(report->lost_bytes, count));
     }
     if (report->items_unknown > 0)
         firn_text_add(&text, "; of %s more items not even the names are known",
