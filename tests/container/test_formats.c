@@ -372,7 +372,7 @@ static void title_values(void **state)
 
     for (size_t i = 0; i < 512; i++)
         longest[i] = i % 80 == 7 ? ' ' : (char)('a' + i % 26);
-    assert_int_equal(firn_title_write(&title, &geometry, page, &wrong), FIRN_OK);
+    assert_int_equal(firn_title_write(&title, &geometry, NULL, page, &wrong), FIRN_OK);
     assert_int_equal(firn_title_value_read(page, "accession", value), FIRN_OK);
     assert_string_equal(value, title.accession);
     assert_int_equal(firn_title_value_read(page, "title", value), FIRN_OK);
