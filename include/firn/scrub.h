@@ -24,6 +24,7 @@ struct firn_scrub_options {
     unsigned threads;                  /* 1 .. 256 */
     bool report_only;                  /* nothing is written; the report tells what would be */
     uint64_t rate_bytes;               /* read no more than so many a second; 0: as fast as it goes */
+    unsigned readings;                 /* a block that does not read right is read again so often, 31 at most */
     /* Called now and then from the calling thread; each may be NULL. */
     void *self;
     bool (*stop)(void *self);          /* true ends the scrub with FIRN_STOPPED between two repairs */
@@ -77,6 +78,12 @@ struct firn_scrub_report {
     uint64_t refused;                  /* that the medium did not take; status FIRN_IO */
     uint64_t extended_bytes;           /* the file was cut short, and has grown by so much */
     uint64_t foreign_bytes;            /* behind the end of the container; left alone */
+    uint64_t reread;                   /* blocks that read right only when they were read again */
+    /*
+     * 0: blocks are where they belong. Else the head of the file is missing, or bytes were inserted or lost, and they
+     * lie in so many pieces: checked where they are, but nothing is written, for a repair could only make it worse.
+     */
+    uint64_t stretches;
 };
 
 /*

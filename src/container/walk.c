@@ -158,6 +158,8 @@ static enum firn_status hand_out(struct walk *walk, const uint8_t *raw, uint64_t
 /* Content that no segment tells of: never written when nothing of the catalogue is missing, else lost with it. */
 static enum firn_status hand_out_untold(struct walk *walk, uint64_t count)
 {
+    if (walk->visitor->lost_blocks != NULL)      /* nobody knows which */
+        walk->visitor->lost_blocks(walk->visitor->self, 0, 0, 0);
     return hand_out(walk, NULL, count, walk->part.complete ? FIRN_READER_LOSS_WITHDRAWN : FIRN_READER_LOSS_BLOCKS, 0);
 }
 
@@ -174,6 +176,8 @@ static enum firn_status hand_out_segment(struct walk *walk)
     count = count < left ? count : left;
     if (status == FIRN_OK)
         return hand_out(walk, segment.raw + inside, count, FIRN_READER_LOSS_BLOCKS, 0);
+    if (status == FIRN_LOST && walk->visitor->lost_blocks != NULL)
+        walk->visitor->lost_blocks(walk->visitor->self, segment.first_lost, segment.last_lost, segment.lost_blocks);
     if (status == FIRN_LOST)
         return hand_out(walk, NULL, count, FIRN_READER_LOSS_BLOCKS, segment.container_at);
     if (status == FIRN_MISMATCH)

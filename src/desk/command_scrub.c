@@ -21,10 +21,11 @@
 #include <string.h>
 #include <time.h>
 
-enum option { REPORT_ONLY, VERBOSE, RATE, TIME, EVERY, GENTLE, REPORT, METRICS, HTML, EVENTS, STATE };
+enum option { REPORT_ONLY, REREAD, VERBOSE, RATE, TIME, EVERY, GENTLE, REPORT, METRICS, HTML, EVENTS, STATE };
 
 static const struct firn_args_option options[] = {
     [REPORT_ONLY] = { "report-only", '\0', NULL, "write nothing; works on read-only media" },
+    [REREAD] = { "reread", '\0', "N", "read a block that is not right again up to N times, 31 at most (default 0)" },
     [VERBOSE] = { "verbose", 'v', NULL, "a line for every container, sound ones too" },
     [RATE] = { "rate", '\0', "SIZE", "read no more than SIZE a second, such as 50MB" },
     [TIME] = { "time", '\0', "TIME", "stop after TIME, such as 2h; the next run goes on from there" },
@@ -84,8 +85,12 @@ static int read_rate(struct scrubbing *s)
 static int read_words(struct scrubbing *s)
 {
     const char *allowed = s->args->values[TIME], *every = s->args->values[EVERY];
-    uint64_t seconds;
+    const char *reread = s->args->values[REREAD];
+    uint64_t seconds, readings = 0;
 
+    if (reread != NULL && (firn_text_parse_count(reread, &readings) != FIRN_OK || readings > 31))
+        return firn_trouble_usage(s->view, reread, "is no number of readings from 0 to 31");
+    s->job.readings = (unsigned)readings;
     if (s->args->operand_count == 0)
         return firn_trouble_usage(s->view, "FILE-OR-FOLDER", "is missing: name a container or a folder of them");
     if (allowed != NULL) {

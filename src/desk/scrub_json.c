@@ -42,6 +42,8 @@ void firn_scrub_json(struct firn_view *view, const struct firn_scrub_turn *turn)
     firn_view_count(view, "rebuilt", NULL, r->rebuilt);
     firn_view_count(view, "lost", NULL, r->lost);
     firn_view_count(view, "unreadable", NULL, r->unreadable);
+    firn_view_count(view, "reread", NULL, r->reread);
+    firn_view_count(view, "pieces", NULL, r->stretches);
     firn_view_count(view, "written", NULL, r->written);
     firn_view_count(view, "extended-bytes", NULL, r->extended_bytes);
     firn_view_count(view, "foreign-bytes", NULL, r->foreign_bytes);

@@ -109,8 +109,8 @@ void firn_scrub_turn_take(struct firn_scrub_turn *turn, struct firn_scrub_job *j
 {
     const struct firn_scrub_options scrub = {
         .path = turn->path, .memory = firn_memory_system(), .threads = job->threads, .report_only = turn->report_only,
-        .rate_bytes = job->rate_bytes, .self = job, .stop = stop, .progress = step, .lost = note_lost,
-        .found = note_found, .begin_at = begin_at
+        .readings = job->readings, .rate_bytes = job->rate_bytes, .self = job, .stop = stop, .progress = step,
+        .lost = note_lost, .found = note_found, .begin_at = begin_at
     };
 
     job->turn = turn;
@@ -137,7 +137,8 @@ bool firn_scrub_turn_damaged(const struct firn_scrub_turn *turn)
 
     return turn->entry.blocks > 0
         && (r->mended + r->rebuilt + r->lost > 0 || turn->entry.title_damaged || r->extended_bytes > 0
-            || turn->entry.end_missing || r->journal == FIRN_SCRUB_JOURNAL_REPLAYED);
+            || turn->entry.end_missing || r->journal == FIRN_SCRUB_JOURNAL_REPLAYED || r->reread > 0
+            || r->stretches > 0);
 }
 
 bool firn_scrub_turn_grows(const struct firn_scrub_turn *turn)

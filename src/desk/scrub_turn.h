@@ -36,6 +36,7 @@ struct firn_scrub_turn {
 /* What all turns of a run share. */
 struct firn_scrub_job {
     unsigned threads;
+    unsigned readings;                     /* of a block that does not read right, beyond the first */
     bool quiet;                            /* no progress */
     uint64_t rate_bytes;                   /* a second; 0 for no limit */
     bool timed;                            /* there is a deadline; a turn goes on where that of the last run was */

@@ -30,6 +30,10 @@ static void add_found(const struct firn_scrub_turn *turn, struct firn_text *text
                       turn->ranges[i].first + turn->ranges[i].count - 1);
     if (turn->range_count > 0)
         firn_text_add(text, turn->range_count > 4 ? ", ...)" : ")");
+    add_part(text, r->reread, "block right only when read again", "blocks right only when read again");
+    if (r->stretches > 0)
+        firn_text_add(text, "%sits blocks are NOT WHERE THEY BELONG, in %s piece%s", text->used > 0 ? ", " : "",
+                      firn_text_count(r->stretches, count), r->stretches == 1 ? "" : "s");
     if (r->title == FIRN_SCRUB_TITLE_DAMAGED || r->title == FIRN_SCRUB_TITLE_HEALED)
         firn_text_add(text, "%stitle page damaged", text->used > 0 ? ", " : "");
     add_part(text, r->extended_bytes, "byte put back at its end", "bytes put back at its end");
@@ -55,10 +59,14 @@ static void add_outcome(const struct firn_scrub_turn *turn, struct firn_text *te
 
     if (text->used == 0)
         add_sound(turn, text);
+    else if (r->stretches > 0)
+        firn_text_add(text, "; nothing written, collate makes a sound copy");
     else if (turn->report_only)
         firn_text_add(text, "; nothing written");
     else if (r->written > 0)
         firn_text_add(text, !firn_scrub_turn_lost(turn) ? "; repaired in place" : "; the rest repaired in place");
+    if (r->reread > 0)
+        firn_text_add(text, "; copy it while it can still be read");
     if (firn_scrub_turn_lost(turn))
         firn_text_add(text, "; take another copy");
     if (r->foreign_bytes > 0)
