@@ -2,6 +2,7 @@
 /* SPDX-License-Identifier: BSD-2-Clause */
 #include "desk/commands.h"
 
+#include "desk/events.h"
 #include "desk/interrupt.h"
 #include "desk/opening_store.h"
 #include "desk/progress.h"
@@ -10,11 +11,12 @@
 #include "firn/collate.h"
 
 #include <errno.h>
+#include <inttypes.h>
 #include <string.h>
 #include <sys/stat.h>
 #include <unistd.h>
 
-enum option { OUTPUT, REPLACE, REREAD, ID, SCRATCH };
+enum option { OUTPUT, REPLACE, REREAD, ID, SCRATCH, EVENTS };
 
 static const struct firn_args_option options[] = {
     [OUTPUT] = { "output", 'o', "FILE", "the container; for several a folder, made if a / is behind its name" },
@@ -22,6 +24,7 @@ static const struct firn_args_option options[] = {
     [REREAD] = { "reread", '\0', "N", "read a damaged block again up to N times, 31 at most (default 0)" },
     [ID] = { "id", '\0', "HEX", "only the container with this identity (16 digits, see describe)" },
     [SCRATCH] = { "scratch", '\0', "DIR", "where temporary files go (default: TMPDIR, else /tmp)" },
+    [EVENTS] = { "events", '\0', "FILE", "append what was done as PREMIS events, JSON Lines" },
 };
 
 enum { ID_BYTES = 8 };
@@ -40,6 +43,7 @@ struct collating {
     bool damaged, lost;
     bool made_folder;
     uint8_t id[ID_BYTES];
+    struct firn_lines events;
 };
 
 static bool names_folder(const char *path)
@@ -222,6 +226,33 @@ static void tell_container_json(struct firn_view *view, const struct firn_collat
     firn_view_end(view);
 }
 
+/* A container made of others is a replication; what had to be put right on the way is a recovery. */
+static void record(struct collating *c, const struct firn_collate_container *told, bool whole)
+{
+    char note[200];
+    struct firn_text text;
+    struct firn_events_event event = {
+        .type = FIRN_EVENTS_REPLICATION, .outcome = whole ? FIRN_EVENTS_SUCCESS : FIRN_EVENTS_FAILURE,
+        .container = told->path == NULL ? c->options.output : told->path, .made = true, .id = told->id, .note = note,
+        .detail = "put together block by block from all sources", .others = c->args->operands,
+        .other_count = c->args->operand_count
+    };
+
+    firn_text_start(&text, note, sizeof note);
+    firn_text_add(&text, "%" PRIu64 " blocks: %" PRIu64 " as they were found, %" PRIu64 " lost", told->blocks,
+                  told->found, told->lost);
+    firn_events_tell(&c->events, &event);
+    if (told->mended + told->reread + told->voted + told->rebuilt + told->lost == 0)
+        return;
+    event.type = FIRN_EVENTS_RECOVERY;
+    event.detail = "by the blocks' own check words, further readings, other copies, and the reserve";
+    firn_text_start(&text, note, sizeof note);
+    firn_text_add(&text, "%" PRIu64 " blocks mended, %" PRIu64 " right when read again, %" PRIu64 " put together, ",
+                  told->mended, told->reread, told->voted);
+    firn_text_add(&text, "%" PRIu64 " rebuilt, %" PRIu64 " lost", told->rebuilt, told->lost);
+    firn_events_tell(&c->events, &event);
+}
+
 static void tell_container(void *self, const struct firn_collate_container *told)
 {
     struct collating *c = self;
@@ -231,6 +262,7 @@ static void tell_container(void *self, const struct firn_collate_container *told
 
     firn_progress_wipe(&c->progress);
     c->lost = c->lost || !whole;
+    record(c, told, whole);
     c->damaged = c->damaged || told->mended + told->reread + told->voted + told->rebuilt + told->contradicting > 0;
     if (c->view->json) {
         tell_container_json(c->view, told);
@@ -318,9 +350,12 @@ static int run(const struct firn_args *args, struct firn_view *view)
     exit = read_words(&c);
     if (exit != FIRN_EXIT_SOUND)
         return exit;
+    exit = firn_lines_open(&c.events, args->values[EVENTS], view);
+    if (exit != FIRN_EXIT_SOUND)
+        return exit;
     c.status = make_folder(&c);
     if (c.status != FIRN_OK)
-        return firn_trouble_tell(view, c.options.output, c.status, &c.fault);
+        return firn_lines_close(&c.events, firn_trouble_tell(view, c.options.output, c.status, &c.fault));
     c.status = firn_collate_open(&c.options, &c.collate, &c.fault);
     if (c.status == FIRN_OK)
         take_all(&c);
@@ -333,7 +368,7 @@ static int run(const struct firn_args *args, struct firn_view *view)
     firn_collate_free(c.collate);
     if (c.made_folder)
         (void)rmdir(c.options.output);      /* if nothing went into it */
-    return exit;
+    return firn_lines_close(&c.events, exit);
 }
 
 const struct firn_command firn_command_collate = {
