@@ -22,6 +22,7 @@ struct check {
     const struct firn_manifest_check_options *options;
     struct firn_manifest_check_report *report;
     struct firn_roll roll;
+    struct firn_names *ways;              /* folders that are no items, but items lie below them; no records */
     struct firn_intake_walk *walk;
     struct firn_digest *digest;
     uint8_t *portion;                     /* PORTION_BYTES */
@@ -181,6 +182,12 @@ static bool wanted(const struct check *check)
     return patterns == NULL || firn_pattern_match(patterns, check->name);
 }
 
+/* Packing srv/intake/quay stores neither srv nor srv/intake, but restoring makes them. */
+static bool is_way(const struct check *check, const struct stat *facts)
+{
+    return S_ISDIR(facts->st_mode) && firn_names_find(check->ways, check->name, check->name_bytes) != NULL;
+}
+
 static enum firn_status take(struct check *check, int folder, const char *name)
 {
     struct firn_roll_item *item = firn_names_find(check->roll.items, check->name, check->name_bytes);
@@ -193,7 +200,7 @@ static enum firn_status take(struct check *check, int folder, const char *name)
     }
     if (item != NULL && item->chosen)
         status = compare(check, folder, name, &facts, item);
-    else if (item == NULL && wanted(check))
+    else if (item == NULL && wanted(check) && !is_way(check, &facts))
         tell_here(check, FIRN_MANIFEST_EXTRA, 0, "");
     if (status == FIRN_OK && S_ISDIR(facts.st_mode))
         status = go_into(check, firn_quietly_open(folder, name, O_RDONLY | O_DIRECTORY));
@@ -253,6 +260,29 @@ static void tell_missing(struct check *check)
     }
 }
 
+static enum firn_status gather_ways(struct check *check)
+{
+    enum firn_status status = firn_names_make(check->options->memory, 1, &check->ways);
+
+    for (size_t i = 0; status == FIRN_OK && i < firn_names_count(check->roll.items); i++) {
+        const char *name;
+        bool fresh = true;
+        size_t bytes;
+
+        (void)firn_names_at(check->roll.items, i, &name);
+        for (bytes = strlen(name); status == FIRN_OK && fresh && bytes > 0; bytes--) {
+            void *record;
+
+            if (name[bytes] != '/')
+                continue;
+            if (firn_names_find(check->roll.items, name, bytes) != NULL)
+                break;
+            status = firn_names_add(check->ways, name, bytes, &record, &fresh);
+        }
+    }
+    return status;
+}
+
 static enum firn_status start(struct check *check)
 {
     const struct firn_memory *memory = check->options->memory;
@@ -295,6 +325,8 @@ enum firn_status firn_manifest_check(struct firn_reader *reader, const struct fi
     report->items_unknown = check->roll.items_unknown;
     report->cut_short = check->roll.cut_short;
     if (status == FIRN_OK)
+        status = gather_ways(check);
+    if (status == FIRN_OK)
         status = start(check);
     if (status == FIRN_OK)
         status = open_folder(check, fault);
@@ -305,6 +337,7 @@ enum firn_status firn_manifest_check(struct firn_reader *reader, const struct fi
     firn_intake_walk_free(check->walk);
     options->memory->put(options->memory->self, check->portion);
     firn_digest_free(check->digest);
+    firn_names_free(check->ways);
     firn_roll_end(&check->roll);
     options->memory->put(options->memory->self, check);
     return status;
