@@ -1,4 +1,4 @@
-/* examples/api/forecast_years.c - how likely a loss is, for one to three copies over the years, on a medium of a file */
+/* examples/api/forecast_years.c - how likely a loss is over the years, for one to three copies, on a given medium */
 /* SPDX-License-Identifier: BSD-2-Clause */
 #include <firn/forecast.h>
 

@@ -1,4 +1,4 @@
-/* examples/api/label_check.c - shelf-marks typed by people, one a line: which are right, which slip explains the rest */
+/* examples/api/label_check.c - shelf-marks that people typed, one a line: which are right, what explains the rest */
 /* SPDX-License-Identifier: BSD-2-Clause */
 #include <firn/label.h>
 

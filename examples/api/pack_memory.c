@@ -29,8 +29,8 @@ static enum firn_status pack(const char *text, size_t bytes, struct firn_store *
                              struct firn_fault *fault)
 {
     struct firn_writer_options options = {
-        .store = store, .spool = spool, .memory = firn_memory_system(), .threads = 1, .effort = FIRN_SEGMENT_EFFORT_NORMAL,
-        .title = { .title = "Tide gauge, Marrow Quay" }, .nonce = { 'M', 'Q' }
+        .store = store, .spool = spool, .memory = firn_memory_system(), .threads = 1, .nonce = { 'M', 'Q' },
+        .effort = FIRN_SEGMENT_EFFORT_NORMAL, .title = { .title = "Tide gauge, Marrow Quay" }
     };
     const struct firn_reader_options reading = { .store = store, .memory = options.memory, .threads = 1 };
     uint8_t header[512];
@@ -62,7 +62,8 @@ int main(void)
     size_t used = 0;
 
     for (int hour = 0; hour < 8760; hour++)          /* the moon brings high water back every 12.42 hours */
-        used += (size_t)snprintf(text + used, sizeof text - used, "%d;%.2f\n", hour, 3 + 2 * sin(hour / 12.42 * 6.2832));
+        used += (size_t)snprintf(text + used, sizeof text - used, "%d;%.2f\n", hour,
+                                 3 + 2 * sin(hour / 12.42 * 6.2832));
     firn_store_memory(&buffers[0], &store);
     firn_store_memory(&buffers[1], &spool);
     status = pack(text, used, &store, &spool, &fault);
