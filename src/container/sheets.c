@@ -5,6 +5,7 @@
 #include "base/fault.h"
 #include "base/memory.h"
 #include "container/sheets_block.h"
+#include "container/sheets_kept.h"
 #include "container/sheets_layout.h"
 
 uint64_t firn_sheets_place(uint64_t number)
@@ -89,6 +90,7 @@ void firn_sheets_close(struct firn_sheets *sheets)
         return;
     memory = sheets->memory;
     firn_threads_free(sheets->threads);
+    firn_sheets_kept_free(sheets);
     if (sheets->counted != NULL)
         for (uint64_t i = 0; i < sheets->layout.sheets; i++)
             memory->put(memory->self, sheets->counted[i]);
@@ -139,6 +141,9 @@ static enum firn_status data_block(struct firn_sheets *sheets, uint64_t number, 
     uint32_t missing;
 
     if (index != sheets->sheet_index) {
+        *payload = firn_sheets_kept_find(sheets, number);
+        if (*payload != NULL)
+            return FIRN_OK;
         if (number - sheets->chunk_first >= sheets->chunk_count) {
             firn_sheets_shape(sheets, index, &shape, &first);
             load_chunk(sheets, number, &shape, first);
@@ -152,6 +157,7 @@ static enum firn_status data_block(struct firn_sheets *sheets, uint64_t number, 
     if (status != FIRN_OK)
         return status;
     first = number - sheets->sheet_first;
+    sheets->served = (uint32_t)first;
     *payload = blocks + (size_t)first * FIRN_BLOCK_BYTES;
     return findings[first] == FIRN_SHEETS_LOST ? FIRN_LOST : FIRN_OK;
 }

@@ -1,6 +1,7 @@
 /* container/sheets_mend.c - a whole sheet in memory: judged, mended, rebuilt, rescued */
 /* SPDX-License-Identifier: BSD-2-Clause */
 #include "container/sheets_block.h"
+#include "container/sheets_kept.h"
 #include "container/sheets_rescue.h"
 #include "firn/reserve.h"
 
@@ -72,7 +73,9 @@ static enum firn_status load_sheet(struct firn_sheets *sheets, uint64_t index)
 {
     uint32_t blocks;
 
+    firn_sheets_kept_save(sheets);
     sheets->sheet_index = FIRN_SHEETS_NONE;
+    sheets->served = FIRN_SHEETS_NOTHING_SERVED;
     firn_sheets_shape(sheets, index, &sheets->sheet_shape, &sheets->sheet_first);
     blocks = firn_sheets_state_count(sheets);
     for (uint32_t at = 0; at < blocks; at += READ_BLOCKS) {

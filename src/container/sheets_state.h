@@ -11,9 +11,20 @@
 #include "base/threads.h"
 #include "container/sheets.h"
 
-enum { FIRN_SHEETS_CHUNK_BLOCKS = 64 };      /* 256 KiB: in the second-level cache while it is judged */
+enum {
+    FIRN_SHEETS_CHUNK_BLOCKS = 64,      /* 256 KiB: in the second-level cache while it is judged */
+    FIRN_SHEETS_KEPT = 2
+};
 
 #define FIRN_SHEETS_NONE UINT64_MAX
+#define FIRN_SHEETS_NOTHING_SERVED UINT32_MAX
+
+/* Good data blocks `first` and those after it. */
+struct firn_sheets_kept {
+    uint8_t *blocks;
+    uint64_t first;
+    uint32_t count;
+};
 
 struct firn_sheets {
     struct firn_sheets_options options;
@@ -35,6 +46,10 @@ struct firn_sheets {
     struct firn_sheet_shape sheet_shape;
     uint64_t sheet_first;
     uint32_t sheet_missing;
+    uint32_t served;                         /* the index of the data block of it that was read last */
+    /* what is left of sheets that were mended before */
+    struct firn_sheets_kept kept[FIRN_SHEETS_KEPT];
+    unsigned kept_next;                      /* the one to be given up next */
     uint8_t *work;                           /* reserve work, one for each worker */
     /* which damaged blocks were counted already: a bit for each block, a field for each sheet that has any */
     uint8_t **counted;
