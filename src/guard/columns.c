@@ -13,8 +13,7 @@ enum {
     MOST_M = 128,
     LINE = 64,
     STRIDE = FIRN_COLUMNS_BYTES_MOST + LINE,      /* an odd number of lines, lest all runs fall into one cache set */
-    TOGETHER = FIRN_RESERVE_TOGETHER,
-    CHANCE_BITS = 10
+    TOGETHER = FIRN_RESERVE_TOGETHER
 };
 
 /* What the caller lends; the work space of the reserve stands behind it. */
@@ -59,23 +58,29 @@ static bool is_gone(const struct job *job, unsigned position)
 }
 
 /*
- * How many places of `places`, each changed in one of `ways` ways, can be tried in all combinations until the chance
- * that one of them turns a random column into a word of the code reaches 2^-CHANCE_BITS; `count` syndromes would have
- * to be right by accident.
+ * How many of `places`, each changed in one of `ways` ways, can be tried in all combinations before the chance that
+ * one of them turns a random column into a word of the code is above 2^-chance_bits; `count` syndromes would have to
+ * be 0 by accident.
  */
-static unsigned tries(unsigned places, unsigned ways, unsigned count)
+static unsigned tries(unsigned places, unsigned ways, unsigned count, unsigned chance_bits)
 {
     double words = 1;                        /* combinations, divided by 256 as often as `left` went down */
     unsigned most = 0, left = count;
 
     for (unsigned n = 1; n <= places; n++) {
+        double chance;
+
         words = words * (places - n + 1) / n * ways;
         while (words > 1 && left > 0) {
             words /= 256;
             left--;
         }
-        /* left > 1: 2^-16 at most; left = 1: words / 256 is the chance; left = 0: words is */
-        if (left == 0 ? words * (1 << CHANCE_BITS) > 1 : left == 1 && words * (1 << CHANCE_BITS) > 256)
+        chance = words;
+        for (unsigned i = 0; i < left; i++)
+            chance /= 256;
+        for (unsigned i = 0; i < chance_bits; i++)
+            chance *= 2;
+        if (chance > 1)
             break;
         most = n;
     }
@@ -88,8 +93,8 @@ static void set_bounds(struct job *job)
 
     for (unsigned i = 0; i < job->positions; i++)
         read += job->row->standings[i] == FIRN_COLUMNS_READ;
-    job->bytes_most = tries(read, 255, job->count);
-    job->bits_most = tries(8 * read, 1, job->count);
+    job->bytes_most = tries(read, 255, job->count, job->row->chance_bits);
+    job->bits_most = tries(8 * read, 1, job->count, job->row->chance_bits);
 }
 
 static void make_powers(const struct job *job)
@@ -167,7 +172,7 @@ static void find_syndromes(struct job *job)
     }
 }
 
-/* Columns whose syndromes are all 0 are solved; with a single syndrome chance would say so too often. */
+/* Columns whose syndromes are all 0 are solved. */
 static void note_clean(struct job *job)
 {
     uint8_t *any = job->work->again;
@@ -243,7 +248,7 @@ static void correct(struct job *job, const struct column *column, const uint8_t 
         changes[i] = firn_gf_multiply(scaled, firn_gf_inverse(job->gone[places[i]]));
         bits += count_ones(changes[i]);
     }
-    if (found > job->bytes_most && bits > job->bits_most)
+    if (job->row->chance_bits > 0 && found > job->bytes_most && bits > job->bits_most)
         return;
     for (unsigned i = 0; i < found; i++) {
         job->row->payloads[places[i]][column->at] ^= changes[i];
@@ -292,7 +297,7 @@ enum firn_status firn_columns_mend_by(const struct firn_reserve_engine *engine, 
     for (unsigned i = 0; i < job.positions; i++)
         if (is_gone(&job, i) && job.count-- == 0)
             return FIRN_BEYOND_REPAIR;
-    if (job.count < 2)      /* nothing that could tell right from wrong */
+    if (job.count == 0 || 8 * job.count < row->chance_bits)      /* nothing that could tell right from wrong */
         return FIRN_OK;
     firn_gf_make_tables(job.work->tables);
     firn_locator_make_logs(&job.work->logs);

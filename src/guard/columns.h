@@ -32,6 +32,7 @@ struct firn_columns_row {
     uint8_t *const *payloads;         /* k + m, data first; NULL for a data payload of zeros: known */
     const uint8_t *standings;         /* k + m, each an enum firn_columns_standing */
     size_t bytes;                     /* of each payload, at most FIRN_COLUMNS_BYTES_MOST */
+    unsigned chance_bits;             /* how sure to be, see below */
 };
 
 size_t firn_columns_work_bytes(void);
@@ -42,9 +43,10 @@ size_t firn_columns_work_bytes(void);
  * wrong   in/out  k + m counts: how many bytes of each payload were put right is added
  * work    firn_columns_work_bytes(), aligned to 64
  *
- * A column with more errors than the code can bear may be close to a word that was never written. It is left alone
- * when the chance that a random column looks as good is above 2^-10: for m = 32 with nothing gone it never is, for
- * small m it depends on how few bits would change.
+ * A column with more errors than the code can bear may be close to a word that was never written. It is left alone when
+ * the chance that a random column looks as good as it would is above 2^-chance_bits. With m = 32 and nothing gone it
+ * never is; for small m it depends on how few bits would change. With 0 every column within 2 e + f <= m
+ * is put right.
  *
  * FIRN_OK; FIRN_BEYOND_REPAIR when more than m payloads are gone; FIRN_BAD_ARGUMENT. Allocates nothing.
  */

@@ -21,7 +21,9 @@ enum {
     LANES_OF_A_BYTE = 8,
     /* Beyond so many open words of a lane, a double error has more than four pairs to choose from by accident. */
     PAIRS_OPEN_MOST = 64,
-    SOLVED_ENOUGH = 64       /* columns that tell how much of a block is wrong */
+    SOLVED_ENOUGH = 64,      /* columns that tell how much of a block is wrong */
+    /* A column believed in error spoils a few blocks, which the reserve rebuilds then: four in a row of 4000 do no harm. */
+    CHANCE_BITS = 10
 };
 
 struct work {
@@ -197,7 +199,8 @@ static void go_through_columns(struct job *job)
     const struct firn_rescue_row *row = job->row;
     uint8_t standings[MOST];
     const struct firn_columns_row columns = {
-        .k = row->k, .m = row->m, .payloads = row->blocks, .standings = standings, .bytes = PAYLOAD
+        .k = row->k, .m = row->m, .payloads = row->blocks, .standings = standings, .bytes = PAYLOAD,
+        .chance_bits = CHANCE_BITS
     };
 
     for (unsigned i = 0; i < job->positions; i++)
