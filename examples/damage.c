@@ -1,4 +1,4 @@
-/* examples/damage.c - spoils a file on purpose: flips bits, loses blocks, wipes runs. For rehearsals, on copies only. */
+/* examples/damage.c - spoils a file on purpose: flips bits, loses blocks, wipes runs. For rehearsals on copies. */
 /* SPDX-License-Identifier: BSD-2-Clause */
 #define _POSIX_C_SOURCE 200809L
 #include <inttypes.h>

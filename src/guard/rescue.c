@@ -22,7 +22,7 @@ enum {
     /* Beyond so many open words of a lane, a double error has more than four pairs to choose from by accident. */
     PAIRS_OPEN_MOST = 64,
     SOLVED_ENOUGH = 64,      /* columns that tell how much of a block is wrong */
-    /* A column believed in error spoils a few blocks, which the reserve rebuilds then: four in a row of 4000 do no harm. */
+    /* A column believed in error spoils a few blocks, which the reserve or doubt_columns see to. */
     CHANCE_BITS = 10
 };
 
@@ -40,7 +40,8 @@ struct job {
     const struct firn_rescue_row *row;
     struct work *work;
     unsigned positions;
-    size_t solved_before, solved;
+    size_t solved;
+    unsigned known_at_start;               /* blocks, when the columns were begun with */
     bool changed;
 };
 
@@ -202,18 +203,69 @@ static void go_through_columns(struct job *job)
         .k = row->k, .m = row->m, .payloads = row->blocks, .standings = standings, .bytes = PAYLOAD,
         .chance_bits = CHANCE_BITS
     };
+    size_t solved = 0;
 
     for (unsigned i = 0; i < job->positions; i++)
         standings[i] = row->states[i] == FIRN_RESCUE_READ   ? FIRN_COLUMNS_READ
                        : row->states[i] == FIRN_RESCUE_GONE ? FIRN_COLUMNS_GONE
                                                             : FIRN_COLUMNS_KNOWN;
     (void)firn_columns_mend(&columns, job->work->solved, job->work->wrong, lower_work(job));
-    job->solved_before = job->solved;
-    job->solved = 0;
     for (size_t b = 0; b < PAYLOAD; b++)
-        job->solved += job->work->solved[b];
-    job->changed = job->changed || job->solved > job->solved_before;
+        solved += job->work->solved[b];
+    job->changed = job->changed || solved > job->solved;
+    job->solved = solved;
     give_up_noise(job);
+}
+
+static unsigned count_known(const struct job *job)
+{
+    unsigned known = 0;
+
+    for (unsigned i = 0; i < job->positions; i++)
+        known += job->row->states[i] == FIRN_RESCUE_KNOWN || job->row->states[i] == FIRN_RESCUE_BACK;
+    return known;
+}
+
+/* Nothing is believed but the blocks that are known or have come back. */
+static void begin_anew(struct job *job)
+{
+    memset(job->work->solved, 0, sizeof job->work->solved);
+    memset(job->work->wrong, 0, sizeof job->work->wrong);
+    job->solved = 0;
+    job->known_at_start = count_known(job);
+    list_open_words(job);
+    for (unsigned i = 0; i < job->positions; i++)
+        if (job->row->states[i] == FIRN_RESCUE_READ)
+            take_back(job, job->row->blocks[i], job->work->read[i]);
+    job->changed = true;
+}
+
+/*
+ * For when nothing changes any more: with a small m a column may have been made a wrong word of the code. So the
+ * lanes are asked once more, about all of what every block is taken to be now, solved or not; and where that brings
+ * one back, all is begun anew: with one of its blocks known a wrong word cannot be made again.
+ */
+static void doubt_columns(struct job *job)
+{
+    uint8_t guess[FIRN_BLOCK_BYTES];
+
+    memset(job->work->is_open, 1, sizeof job->work->is_open);
+    for (unsigned byte = 0; byte < LANES_OF_A_BYTE; byte++)
+        job->work->open_count[byte] = FIRN_BLOCK_WORDS;
+    for (unsigned i = 0; i < job->positions; i++) {
+        if (job->row->states[i] != FIRN_RESCUE_READ)
+            continue;
+        memcpy(guess, job->row->blocks[i], sizeof guess);
+        memcpy(guess + FIRN_BLOCK_HASH_AT, job->work->read[i] + FIRN_BLOCK_HASH_AT,
+               sizeof guess - FIRN_BLOCK_HASH_AT);
+        memcpy(job->row->blocks[i], guess, sizeof guess);
+        mend_lanes(job->work, job->row->blocks[i]);
+        judge(job, i);
+        if (job->row->states[i] == FIRN_RESCUE_READ)
+            memcpy(job->row->blocks[i], guess, sizeof guess);
+    }
+    if (count_known(job) > job->known_at_start)
+        begin_anew(job);
 }
 
 /* --- the end --- */
@@ -238,19 +290,22 @@ static bool rebuild(struct job *job)
 
 enum firn_status firn_rescue_row(const struct firn_rescue_row *row, struct firn_rescue_report *report, uint8_t *work)
 {
-    struct job job = { .row = row, .work = (struct work *)(void *)work, .positions = row->k + row->m, .changed = true };
+    struct job job = { .row = row, .work = (struct work *)(void *)work, .positions = row->k + row->m };
     bool whole;
 
-    memset(job.work->solved, 0, sizeof job.work->solved);
-    memset(job.work->wrong, 0, sizeof job.work->wrong);
     *report = (struct firn_rescue_report){ .rounds = 0 };
     take_stock(&job);
+    begin_anew(&job);
     whole = rebuild(&job);
     while (!whole && job.changed && report->rounds < FIRN_RESCUE_ROUNDS_MOST) {
         job.changed = false;
         go_through_columns(&job);
         go_through_blocks(&job);
         whole = rebuild(&job);
+        if (!whole && !job.changed) {
+            doubt_columns(&job);
+            whole = rebuild(&job);
+        }
         report->rounds++;
     }
     report->columns_solved = job.solved;

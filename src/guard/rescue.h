@@ -44,7 +44,8 @@ struct firn_rescue_report {
 size_t firn_rescue_work_bytes(void);       /* about 2.6 MiB */
 
 /*
- * Brings back what it can of a row.
+ * Brings back what it can of a row, in at most FIRN_RESCUE_ROUNDS_MOST rounds of columns and lanes. A block is judged
+ * at most three times a round.
  *
  * work    firn_rescue_work_bytes(), aligned to 64
  * report  out; always filled in

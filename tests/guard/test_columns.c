@@ -1,10 +1,10 @@
 /*
- * tests/guard/test_columns.c - errors and erasures of columns: every pattern of tiny codes, chance patterns of large ones
+ * tests/guard/test_columns.c - errors and erasures of columns: all patterns of tiny codes, chance patterns of large
+ * ones
  *
- * The bound is that of Reed and Solomon (1960): e errors and f erasures with 2 e + f <= m come back. What is expected is
- * always what was written; where more is wrong than the code can bear, a column that is said to be solved must be a word
- * of the code, which the reserve computes independently.
- * SPDX-License-Identifier: BSD-2-Clause
+ * The bound is that of Reed and Solomon (1960): e errors and f erasures with 2 e + f <= m come back. What is expected
+ * is always what was written; where more is wrong than the code can bear, a column that is said to be solved must be
+ * a word of the code, which the reserve computes independently. SPDX-License-Identifier: BSD-2-Clause
  */
 #include "guard/columns.h"
 
@@ -208,7 +208,8 @@ static void spoil_column(struct random *random, unsigned n, size_t b, unsigned e
     }
 }
 
-static void large_row(struct random *random, const struct firn_reserve_engine *engine, unsigned k, unsigned m, unsigned f)
+static void large_row(struct random *random, const struct firn_reserve_engine *engine, unsigned k, unsigned m,
+                      unsigned f)
 {
     const unsigned n = k + m;
     unsigned gone[MOST];
