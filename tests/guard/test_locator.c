@@ -77,7 +77,7 @@ static void finds_what_was_put_in(void **state)
     }
 }
 
-/* Syndromes at random: as many as the binomial coefficients say are those of two errors or fewer; the rest is noticed. */
+/* Syndromes at random: as many as the binomial coefficients say are those of two errors or fewer. */
 static void more_errors_are_noticed_or_make_no_roots(void **state)
 {
     struct random random = random_start("too many");
