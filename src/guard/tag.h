@@ -20,7 +20,7 @@ enum {
      * one of zeros in more than this many (magic, id and sizes have their ones), one at a raw bit error rate of 1 in
      * 50 in 5.
      */
-    FIRN_TAG_STRANGE_MOST = 32
+    FIRN_TAG_STRANGE_MOST = 20
 };
 
 /* Writes all 32 bytes. */
