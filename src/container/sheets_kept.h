@@ -3,7 +3,7 @@
  *
  * Room: container. Only for the files called sheets. A reader goes through two parts of the stream by turns: the
  * catalogue at the end and the content before it. Only one sheet is in memory, and mending one anew at every turn takes
- * a second each. So the blocks that would have been read next are kept: a few MiB, for each of the last two sheets.
+ * a second each. So the blocks that would have been read next are kept: 4 MiB for each of the last two sheets.
  *
  * SPDX-License-Identifier: BSD-2-Clause
  */

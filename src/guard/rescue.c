@@ -18,6 +18,7 @@ enum {
     PAYLOAD = FIRN_BLOCK_PAYLOAD_BYTES,
     PAYLOAD_WORDS = PAYLOAD / 8,
     HASH_WORD = FIRN_BLOCK_HASH_AT / 8,
+    WORD_BYTES = 8,
     LANES_OF_A_BYTE = 8,
     /* Beyond so many open words of a lane, a double error has more than four pairs to choose from by accident. */
     PAIRS_OPEN_MOST = 64,
@@ -31,9 +32,9 @@ struct work {
     uint8_t solved[PAYLOAD], open_mask[PAYLOAD];
     uint32_t wrong[MOST];
     /* labels of the words a lane may be wrong in, by the byte of the word it lies in; and whether a label is one */
-    uint16_t open[LANES_OF_A_BYTE][FIRN_BLOCK_WORDS];
-    unsigned open_count[LANES_OF_A_BYTE];
-    uint8_t is_open[LANES_OF_A_BYTE][FIRN_BLOCK_WORDS];
+    uint16_t open[WORD_BYTES][FIRN_BLOCK_WORDS];
+    unsigned open_count[WORD_BYTES];
+    uint8_t is_open[WORD_BYTES][FIRN_BLOCK_WORDS];
 };
 
 struct job {
@@ -101,11 +102,11 @@ static void list_open_words(struct job *job)
 
     for (size_t b = 0; b < PAYLOAD; b++)
         work->open_mask[b] = work->solved[b] ? 0 : 0xFF;
-    for (unsigned byte = 0; byte < LANES_OF_A_BYTE; byte++) {
+    for (unsigned byte = 0; byte < WORD_BYTES; byte++) {
         work->open_count[byte] = 0;
         for (unsigned label = 0; label < FIRN_BLOCK_WORDS; label++) {
             const unsigned word = firn_lanes_word_of(label);
-            const bool open = word < PAYLOAD_WORDS ? !work->solved[8 * word + byte] : word >= HASH_WORD;
+            const bool open = word < PAYLOAD_WORDS ? !work->solved[WORD_BYTES * word + byte] : word >= HASH_WORD;
 
             work->is_open[byte][label] = open;
             if (open)
@@ -116,7 +117,9 @@ static void list_open_words(struct job *job)
 
 static void flip(uint8_t *block, unsigned label, unsigned lane)
 {
-    block[8 * (size_t)firn_lanes_word_of(label) + lane / LANES_OF_A_BYTE] ^= (uint8_t)(1U << lane % LANES_OF_A_BYTE);
+    uint8_t *word = block + WORD_BYTES * (size_t)firn_lanes_word_of(label);
+
+    word[lane / LANES_OF_A_BYTE] ^= (uint8_t)(1U << lane % LANES_OF_A_BYTE);
 }
 
 /* An odd lane: one flip, at its label, unless nothing can be wrong there. */
@@ -250,19 +253,20 @@ static void doubt_columns(struct job *job)
     uint8_t guess[FIRN_BLOCK_BYTES];
 
     memset(job->work->is_open, 1, sizeof job->work->is_open);
-    for (unsigned byte = 0; byte < LANES_OF_A_BYTE; byte++)
+    for (unsigned byte = 0; byte < WORD_BYTES; byte++)
         job->work->open_count[byte] = FIRN_BLOCK_WORDS;
     for (unsigned i = 0; i < job->positions; i++) {
+        uint8_t *block = job->row->blocks[i];
+
         if (job->row->states[i] != FIRN_RESCUE_READ)
             continue;
-        memcpy(guess, job->row->blocks[i], sizeof guess);
-        memcpy(guess + FIRN_BLOCK_HASH_AT, job->work->read[i] + FIRN_BLOCK_HASH_AT,
-               sizeof guess - FIRN_BLOCK_HASH_AT);
-        memcpy(job->row->blocks[i], guess, sizeof guess);
-        mend_lanes(job->work, job->row->blocks[i]);
+        memcpy(block + FIRN_BLOCK_HASH_AT, job->work->read[i] + FIRN_BLOCK_HASH_AT,
+               FIRN_BLOCK_BYTES - FIRN_BLOCK_HASH_AT);
+        memcpy(guess, block, sizeof guess);
+        mend_lanes(job->work, block);
         judge(job, i);
         if (job->row->states[i] == FIRN_RESCUE_READ)
-            memcpy(job->row->blocks[i], guess, sizeof guess);
+            memcpy(block, guess, sizeof guess);
     }
     if (count_known(job) > job->known_at_start)
         begin_anew(job);

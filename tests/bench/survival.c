@@ -67,7 +67,10 @@ static const double flip_rates[] = {
 
 static double row_by_lanes(double p) { return pow(theory_lanes(p), ROW_N); }
 static double row_by_reserve(double p) { return theory_row(ROW_N, ROW_M, 1 - theory_lanes(p)); }
+static double loss_by_lanes(double p) { return 1 - theory_lanes(p); }
+static double loss_by_reserve(double p) { return theory_loss(ROW_N, ROW_M, 1 - theory_lanes(p)); }
 static double row_by_columns(double p) { return theory_columns(ROW_N, ROW_M, p); }
+static double loss_by_columns(double p) { return 1 - theory_column(ROW_N, ROW_M, p); }
 
 static void draw_line(struct plot_panel *panel, const char *name, unsigned colour, double (*theory)(double))
 {
@@ -91,10 +94,13 @@ static void survey_flips(struct survey *survey, struct plot_panel *whole, struct
     draw_line(whole, "lanes: theory", 0, row_by_lanes);
     draw_line(whole, "reserve: theory", 1, row_by_reserve);
     draw_line(whole, "columns: theory", 2, row_by_columns);
+    draw_line(loss, "lanes: theory", 0, loss_by_lanes);
+    draw_line(loss, "reserve: theory", 1, loss_by_reserve);
+    draw_line(loss, "columns: theory", 2, loss_by_columns);
     whole->limit = loss->limit = theory_shannon_limit(rate);
     for (unsigned i = 0; i < LAYERS; i++) {
         points[i] = plot_add(whole, names[i], i, true);
-        lost[i] = plot_add(loss, names[i], i, false);
+        lost[i] = plot_add(loss, names[i], i, true);
     }
     printf("FLIPPED BITS: %u rows at each rate. Fraction of rows that come back whole, and mean part of the data lost\n"
            "(columns: part of the columns). The capacity of the channel is the rate of the code, %.4f, at %.4f.\n\n"
@@ -114,7 +120,7 @@ static void survey_flips(struct survey *survey, struct plot_panel *whole, struct
         }
         for (unsigned layer = 0; layer < LAYERS; layer++) {
             put_measured(points[layer], p, t.whole[layer], survey->trials);
-            plot_point(lost[layer], p, t.lost[layer], 0, 0);
+            plot_point(lost[layer], p, t.lost[layer], t.lost[layer], t.lost[layer]);
         }
         theory_interval(t.whole[RESCUE], survey->trials, &low, &high);
         printf("%9.2e  %-8.3g  %-9.3f  %-8.3g  %-9.3f  %-8.3g  %-9.3f  %-8.3f  %.3f..%.3f  %-8.3g %-8.3g %-8.3g %.3g\n",
@@ -130,6 +136,7 @@ static void survey_flips(struct survey *survey, struct plot_panel *whole, struct
 /* --- losses --- */
 
 static double row_by_losses(double p) { return theory_row(ROW_N, ROW_M, p); }
+static double loss_by_losses(double p) { return theory_loss(ROW_N, ROW_M, p); }
 
 /* Rows come back when at most m of their blocks are lost; the mean loss beyond that, by the same distribution. */
 static void survey_losses(struct survey *survey, struct plot_panel *panel)
@@ -140,9 +147,9 @@ static void survey_losses(struct survey *survey, struct plot_panel *panel)
     points = plot_add(panel, "reserve", 1, true);
     panel->limit = (double)ROW_M / ROW_N;
     printf("LOST BLOCKS, each by itself: %u rows at each rate; at most %u of %u may be lost.\n\n"
-           "%9s  %-8s  %-22s  %-24s  %s\n",
+           "%9s  %-8s  %-22s  %-22s  %s\n",
            10 * survey->trials, ROW_M, ROW_N, "lost", "theory", "measured  (95 %)", "a full sheet, theory",
-           "data lost");
+           "data lost: theory, measured");
     for (double p = 0.01; p < 0.205; p += 0.01) {
         unsigned whole = 0;
         double low, high, lost = 0;
@@ -162,8 +169,9 @@ static void survey_losses(struct survey *survey, struct plot_panel *panel)
         }
         put_measured(points, p, whole, 10 * survey->trials);
         theory_interval(whole, 10 * survey->trials, &low, &high);
-        printf("%9.2f  %-8.3g  %-8.3f  %.3f..%.3f  %-24.3g  %.3g\n", p, row_by_losses(p),
-               (double)whole / (10 * survey->trials), low, high, pow(row_by_losses(p), ROWS_A_SHEET), lost);
+        printf("%9.2f  %-8.3g  %-8.3f  %.3f..%.3f  %-22.3g  %-9.3g  %.3g\n", p, row_by_losses(p),
+               (double)whole / (10 * survey->trials), low, high, pow(row_by_losses(p), ROWS_A_SHEET),
+               loss_by_losses(p), lost);
     }
     printf("\n");
 }

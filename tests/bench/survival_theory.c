@@ -6,6 +6,12 @@
 
 #include <math.h>
 
+/* P(exactly i of n), 0 < p < 1. */
+static double exactly(unsigned n, double p, unsigned i)
+{
+    return exp(lgamma(n + 1.0) - lgamma(i + 1.0) - lgamma(n - i + 1.0) + i * log(p) + (n - i) * log1p(-p));
+}
+
 double theory_at_most(unsigned n, double p, unsigned most)
 {
     double sum = 0;
@@ -15,8 +21,19 @@ double theory_at_most(unsigned n, double p, unsigned most)
     if (p >= 1)
         return most >= n;
     for (unsigned i = 0; i <= most && i <= n; i++)
-        sum += exp(lgamma(n + 1.0) - lgamma(i + 1.0) - lgamma(n - i + 1.0) + i * log(p) + (n - i) * log1p(-p));
+        sum += exactly(n, p, i);
     return sum < 1 ? sum : 1;
+}
+
+double theory_loss(unsigned n, unsigned m, double fails)
+{
+    double sum = 0;
+
+    if (fails <= 0 || fails >= 1)
+        return fails >= 1;
+    for (unsigned i = m + 1; i <= n; i++)
+        sum += exactly(n, fails, i) * i / n;
+    return sum;
 }
 
 double theory_lanes(double p)
@@ -29,9 +46,14 @@ double theory_row(unsigned n, unsigned m, double fails)
     return theory_at_most(n, fails, m);
 }
 
+double theory_column(unsigned n, unsigned m, double p)
+{
+    return theory_at_most(n, -expm1(8 * log1p(-p)), m / 2);
+}
+
 double theory_columns(unsigned n, unsigned m, double p)
 {
-    return pow(theory_at_most(n, -expm1(8 * log1p(-p)), m / 2), 3968);
+    return pow(theory_column(n, m, p), 3968);
 }
 
 static double capacity(double p)

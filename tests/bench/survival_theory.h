@@ -14,7 +14,11 @@ double theory_lanes(double p);
 /* A row of n blocks of which m are reserve: at most m fail, each with probability `fails`. */
 double theory_row(unsigned n, unsigned m, double fails);
 
-/* All 3968 columns of a row of n bytes have at most m / 2 wrong bytes, at raw bit error rate p. */
+/* The mean part of such a row that is lost: what failed, in rows where more than m did. */
+double theory_loss(unsigned n, unsigned m, double fails);
+
+/* A column of n bytes has at most m / 2 wrong ones, at raw bit error rate p; and all 3968 of a row. */
+double theory_column(unsigned n, unsigned m, double p);
 double theory_columns(unsigned n, unsigned m, double p);
 
 /* The raw bit error rate at which the capacity of the channel, 1 - H(p), is down to `rate` (C. E. Shannon, 1948). */
