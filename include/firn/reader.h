@@ -67,6 +67,28 @@ FIRN_API void firn_reader_damage_so_far(const struct firn_reader *reader, struct
  */
 FIRN_API enum firn_status firn_reader_title_page(struct firn_reader *reader, uint8_t page[4096]);
 
+/*
+ * The layout of blocks, rows and records in words, as the title page has it: lines of at most 80 columns in words[0 ..
+ * room), ended by a NUL. FIRN_READER_LAYOUT_ROOM is enough.
+ */
+enum { FIRN_READER_LAYOUT_ROOM = 4096 };
+FIRN_API void firn_reader_layout_words(const struct firn_reader_layout *layout, char *words, size_t room);
+
+/* The two texts that a container carries for those who have no firn. */
+enum firn_reader_text { FIRN_READER_TEXT_SPECIFICATION, FIRN_READER_TEXT_SOURCE };
+
+/* Takes the next bytes of a text; bytes is NULL for a stretch that is lost. */
+typedef enum firn_status (firn_reader_text_taker)(void *self, const uint8_t *bytes, size_t count);
+
+/*
+ * Gives one of the texts, piece after piece. Needs neither index nor catalogue.
+ *
+ * FIRN_OK; FIRN_END when the container carries none; FIRN_LOST when some of it is lost (what there is was given) or no
+ * record of it can be found where records are lost; FIRN_NO_MEMORY, FIRN_STOPPED; else what take returned.
+ */
+FIRN_API enum firn_status firn_reader_text(struct firn_reader *reader, enum firn_reader_text which,
+                                           firn_reader_text_taker *take, void *self);
+
 /* Why a stretch of an item is missing. */
 enum firn_reader_loss {
     FIRN_READER_LOSS_BLOCKS,      /* blocks of its segment are lost */

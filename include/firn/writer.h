@@ -33,6 +33,7 @@ struct firn_writer_options {
     struct firn_sheet_geometry geometry;
     enum firn_segment_effort effort;
     struct firn_writer_title title;
+    bool carry_reader;                 /* put the specification of the format and the source of a reader in front */
     uint8_t nonce[FIRN_WRITER_NONCE_BYTES];   /* makes the id the container's own; it also depends on what is packed */
     /* asked now and then; true stops the work with FIRN_STOPPED. May be NULL. */
     bool (*stop)(void *self);

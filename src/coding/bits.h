@@ -27,6 +27,9 @@ static inline unsigned firn_bits_peek16(const struct firn_bits_reader *reader)
     uint32_t window = 0;
     size_t at = reader->at_bits / 8;
 
+    if (at + 3 <= reader->byte_count)
+        return ((uint32_t)reader->bytes[at] << 16 | (uint32_t)reader->bytes[at + 1] << 8 | reader->bytes[at + 2]) >>
+                   (8 - reader->at_bits % 8) & 0xFFFF;
     for (size_t k = 0; k < 3; k++)
         window = window << 8 | (at + k < reader->byte_count ? reader->bytes[at + k] : 0u);
     return window >> (8 - reader->at_bits % 8) & 0xFFFF;

@@ -12,13 +12,16 @@
 
 enum {
     HEAD_BYTES = FIRN_CANDIDATES_HEAD_BYTES,
-    PASSES = 3,                        /* of parse and codes in turn */
+    PASSES = 4,                        /* of parse and codes in turn */
     TRIES_THOROUGH = 48,
     TRIES_NORMAL = 12,
+    QUICK_TABLES = 6,                  /* of numbers */
     SHORT_BYTES = 1 << 16,             /* below, everything is tried */
     BRANCH_EVERY_BYTES = 200,          /* at least one turned in so many, and it is code */
     TRIAL_BYTES = 1 << 16,             /* of what looks hopeless, so much is tried before the rest is */
-    HOPELESS = 505                     /* 1/64 bits a byte */
+    HOPELESS = 505,                    /* 1/64 bits a byte */
+    REPEATED_LEAST = 64,               /* one byte in so many must lie in a repeat */
+    LITTLE = 32                        /* one bit of so many bytes */
 };
 
 static size_t cell_bytes_of(enum firn_segment_effort effort)
@@ -35,17 +38,6 @@ static size_t finish(enum firn_segment_method method, enum firn_segment_transfor
     return bytes == 0 ? 0 : bytes + HEAD_BYTES;
 }
 
-/* The bytes to be coded. */
-static const uint8_t *transformed(const uint8_t *raw, size_t raw_bytes, enum firn_segment_transform transform,
-                                  struct firn_candidates_work *w)
-{
-    if (transform == FIRN_SEGMENT_PLAIN)
-        return raw;
-    memcpy(w->turned, raw, raw_bytes);
-    firn_branches_turn(w->turned, raw_bytes);
-    return w->turned;
-}
-
 size_t firn_candidates_stretches(const uint8_t *raw, size_t raw_bytes, enum firn_segment_effort effort, uint8_t *coded,
                                  struct firn_candidates_work *w)
 {
@@ -53,47 +45,83 @@ size_t firn_candidates_stretches(const uint8_t *raw, size_t raw_bytes, enum firn
                   coded + HEAD_BYTES, raw_bytes - 1, &w->other.stretches), coded);
 }
 
-size_t firn_candidates_samples(const uint8_t *raw, size_t raw_bytes, const struct firn_samples_shape *shape,
-                               uint8_t *coded, struct firn_candidates_work *w)
+static size_t write_samples(const uint8_t *raw, size_t raw_bytes, const struct firn_samples_shape *shape,
+                            unsigned tables_max, uint8_t *coded, struct firn_candidates_work *w)
 {
     w->other.samples.logs = w->logs;
     return finish(FIRN_SEGMENT_SAMPLES, FIRN_SEGMENT_PLAIN,
-                  firn_samples_write(shape, raw, raw_bytes, FIRN_CONTEXTS_TABLES_MAX, coded + HEAD_BYTES, raw_bytes - 1,
+                  firn_samples_write(shape, raw, raw_bytes, tables_max, coded + HEAD_BYTES, raw_bytes - 1,
                                      &w->other.samples), coded);
 }
 
-/* Parse and codes in turn, each learning from the other. */
-static size_t parse_well(const uint8_t *bytes, size_t raw_bytes, struct firn_candidates_work *w)
+size_t firn_candidates_samples(const uint8_t *raw, size_t raw_bytes, const struct firn_samples_shape *shape,
+                               uint8_t *coded, struct firn_candidates_work *w)
 {
-    size_t count = 0;
+    return write_samples(raw, raw_bytes, shape, FIRN_CONTEXTS_TABLES_MAX, coded, w);
+}
+
+/* Parse and codes in turn, each learning from the other. Returns the bits of codes and streams. */
+static uint64_t parse_well(const uint8_t *bytes, size_t raw_bytes, size_t *count, struct firn_candidates_work *w)
+{
+    uint64_t bits = 0;
 
     firn_repeats_find(bytes, raw_bytes, FIRN_PARSE_REACH, TRIES_THOROUGH, &w->find.repeats);
     firn_parse_guess(&w->logs, bytes, raw_bytes, &w->parse.prices);
     for (unsigned pass = 0; pass < PASSES; pass++) {
-        count = firn_parse(bytes, raw_bytes, &w->find.repeats, w->commands, &w->parse);
-        firn_matched_make_codes(bytes, w->commands, count, FIRN_CONTEXTS_TABLES_MAX, true, &w->matched);
+        unsigned ways = pass + 1 < PASSES ? 1 : FIRN_PARSE_WAYS;       /* prices settle as well with one */
+
+        *count = firn_parse(bytes, raw_bytes, &w->find.repeats, ways, w->commands, &w->parse);
+        bits = firn_matched_make_codes(bytes, w->commands, *count, &w->matched);
+        if (bits > 8 * (uint64_t)raw_bytes - raw_bytes / LITTLE)
+            break;                     /* there is next to nothing to gain */
         firn_parse_learn(&w->matched, &w->parse.prices);
     }
-    return count;
+    return bits;
+}
+
+/* Commands and codes, not written yet. Returns the bits of codes and streams. */
+static uint64_t plan_matched(const uint8_t *bytes, size_t raw_bytes, enum firn_segment_effort effort, size_t *count,
+                             struct firn_candidates_work *w)
+{
+    bool quick = effort == FIRN_SEGMENT_EFFORT_QUICK;
+
+    w->matched.logs = w->logs;
+    if (effort == FIRN_SEGMENT_EFFORT_THOROUGH)
+        return parse_well(bytes, raw_bytes, count, w);
+    *count = firn_hasty_parse(bytes, raw_bytes, quick ? 1 : TRIES_NORMAL, w->commands, &w->find.hasty);
+    return (quick ? firn_matched_make_codes_hastily : firn_matched_make_codes)(bytes, w->commands, *count, &w->matched);
+}
+
+static size_t write_matched(const uint8_t *bytes, size_t raw_bytes, enum firn_segment_transform transform, size_t count,
+                            uint8_t *coded, struct firn_candidates_work *w)
+{
+    return finish(FIRN_SEGMENT_MATCHED, transform,
+                  firn_matched_write(bytes, w->commands, count, coded + HEAD_BYTES, raw_bytes - 1, &w->matched), coded);
 }
 
 size_t firn_candidates_matched(const uint8_t *raw, size_t raw_bytes, enum firn_segment_effort effort,
                                enum firn_segment_transform transform, uint8_t *coded, struct firn_candidates_work *w)
 {
-    const uint8_t *bytes = transformed(raw, raw_bytes, transform, w);
-    bool quick = effort == FIRN_SEGMENT_EFFORT_QUICK;
+    const uint8_t *bytes = raw;
     size_t count;
 
-    w->matched.logs = w->logs;
-    w->matched.codes.fine = 0;
-    if (effort == FIRN_SEGMENT_EFFORT_THOROUGH) {
-        count = parse_well(bytes, raw_bytes, w);
-    } else {
-        count = firn_hasty_parse(bytes, raw_bytes, quick ? 1 : TRIES_NORMAL, w->commands, &w->find.hasty);
-        firn_matched_make_codes(bytes, w->commands, count, quick ? 2 : FIRN_CONTEXTS_TABLES_MAX, !quick, &w->matched);
+    if (transform == FIRN_SEGMENT_BRANCHES) {
+        memcpy(w->turned, raw, raw_bytes);
+        firn_branches_turn(w->turned, raw_bytes);
+        bytes = w->turned;
     }
-    return finish(FIRN_SEGMENT_MATCHED, transform,
-                  firn_matched_write(bytes, w->commands, count, coded + HEAD_BYTES, raw_bytes - 1, &w->matched), coded);
+    plan_matched(bytes, raw_bytes, effort, &count, w);
+    return write_matched(bytes, raw_bytes, transform, count, coded, w);
+}
+
+/* Nearly all of what texts are made of; then a glance must tell that there are numbers. */
+static bool is_text(const uint8_t *raw, size_t raw_bytes)
+{
+    size_t others = 0;
+
+    for (size_t i = 0; i < raw_bytes; i++)
+        others += (raw[i] < 32 && raw[i] != 9 && raw[i] != 10 && raw[i] != 13) | (raw[i] > 126);
+    return others < raw_bytes / 32;
 }
 
 /* Keeps what stands in w->room when it is smaller than what was best. */
@@ -119,53 +147,92 @@ static uint32_t plain_price(const struct firn_cost_logs *logs, const uint8_t *ra
     return (uint32_t)(sum / raw_bytes);
 }
 
-/* Whether a piece out of the middle gains nothing: then the rest, which looks alike, is not tried either. */
+/* Whether hardly anything is repeated: then a better search is spared. Files of which there are two are found. */
 static bool is_hopeless(const uint8_t *raw, size_t raw_bytes, struct firn_candidates_work *w)
 {
-    size_t size;
+    size_t count, repeated = 0;
 
-    if (raw_bytes < 4 * TRIAL_BYTES)
+    if (raw_bytes < TRIAL_BYTES)
         return false;
-    size = firn_candidates_matched(raw + raw_bytes / 2, TRIAL_BYTES, FIRN_SEGMENT_EFFORT_QUICK, FIRN_SEGMENT_PLAIN,
-                                   w->room, w);
-    return size == 0 || size > TRIAL_BYTES - TRIAL_BYTES / 128;
+    count = firn_hasty_parse(raw, raw_bytes, 1, w->commands, &w->find.hasty);
+    for (size_t i = 0; i < count; i++)
+        repeated += w->commands[i].length;
+    return repeated < raw_bytes / REPEATED_LEAST;
+}
+
+/* Whether matches are far behind numbers, which came to `samples` bytes, in a piece out of the middle. */
+static bool are_behind(const uint8_t *bytes, size_t raw_bytes, size_t samples, struct firn_candidates_work *w)
+{
+    size_t count;
+
+    return raw_bytes >= 4 * TRIAL_BYTES &&
+           plan_matched(bytes + raw_bytes / 2, TRIAL_BYTES, FIRN_SEGMENT_EFFORT_QUICK, &count, w) / 8 >
+               samples / 2 * (TRIAL_BYTES / 1024) / (raw_bytes / 1024) * 3;
+}
+
+/* Whether it looks like code, by so many turned bytes; they stand in w->turned then. A piece tells for most of it. */
+static bool is_code(const uint8_t *raw, size_t raw_bytes, struct firn_candidates_work *w)
+{
+    if (raw_bytes >= 4 * TRIAL_BYTES) {
+        size_t turned = 0;
+
+        for (size_t k = 0; k < 4; k++) {
+            memcpy(w->turned, raw + raw_bytes / 4 * k, TRIAL_BYTES / 4);
+            turned += firn_branches_turn(w->turned, TRIAL_BYTES / 4);
+        }
+        if (turned < TRIAL_BYTES / (4 * BRANCH_EVERY_BYTES))
+            return false;
+    }
+    memcpy(w->turned, raw, raw_bytes);
+    return firn_branches_turn(w->turned, raw_bytes) > raw_bytes / BRANCH_EVERY_BYTES;
+}
+
+/*
+ * Matches, after numbers came to `samples` bytes, 0 if they were not tried. What numbers code well, repeats seldom code
+ * better: a hasty look tells.
+ */
+static void try_matched(const uint8_t *raw, size_t raw_bytes, enum firn_segment_effort effort, size_t samples,
+                        size_t *best, uint8_t *coded, struct firn_candidates_work *w)
+{
+    bool code = is_code(raw, raw_bytes, w);
+    const uint8_t *bytes = code ? w->turned : raw;
+    uint64_t hasty = 0;
+    size_t count;
+
+    if (samples != 0 && effort != FIRN_SEGMENT_EFFORT_THOROUGH && are_behind(bytes, raw_bytes, samples, w))
+        return;
+    if (samples != 0 || effort == FIRN_SEGMENT_EFFORT_QUICK)
+        hasty = plan_matched(bytes, raw_bytes, FIRN_SEGMENT_EFFORT_QUICK, &count, w) / 8;
+    if (samples != 0 && hasty > samples + (effort == FIRN_SEGMENT_EFFORT_QUICK ? 0 : samples / 4))
+        return;
+    if (effort != FIRN_SEGMENT_EFFORT_QUICK)
+        plan_matched(bytes, raw_bytes, effort, &count, w);
+    else if (hasty > raw_bytes)
+        return;
+    keep(write_matched(bytes, raw_bytes, code ? FIRN_SEGMENT_BRANCHES : FIRN_SEGMENT_PLAIN, count, w->room, w), best,
+         coded, w);
 }
 
 size_t firn_candidates_best(const uint8_t *raw, size_t raw_bytes, enum firn_segment_effort effort, uint8_t *coded,
                             struct firn_candidates_work *w)
 {
-    enum firn_segment_transform transform = FIRN_SEGMENT_PLAIN;
-    bool thorough = effort == FIRN_SEGMENT_EFFORT_THOROUGH;
+    bool thorough = effort == FIRN_SEGMENT_EFFORT_THOROUGH, quick = effort == FIRN_SEGMENT_EFFORT_QUICK;
     struct firn_samples_shape shape;
     size_t best = 0, samples = 0;
     uint32_t price;
 
-    if (firn_sample_is_even(raw, raw_bytes))
+    if (quick && firn_sample_is_even(raw, raw_bytes))
         return 0;
     firn_cost_prepare(&w->logs);
     price = plain_price(&w->logs, raw, raw_bytes);
-    if (firn_survey(&w->logs, raw, raw_bytes, thorough, &shape, &w->other.survey) < price) {
-        samples = firn_candidates_samples(raw, raw_bytes, &shape, w->room, w);
+    if (firn_survey(&w->logs, raw, raw_bytes, thorough && !is_text(raw, raw_bytes), &shape, &w->other.survey) < price) {
+        samples = write_samples(raw, raw_bytes, &shape, quick ? QUICK_TABLES : FIRN_CONTEXTS_TABLES_MAX, w->room, w);
         keep(samples, &best, coded, w);
     }
     if (!thorough && samples == 0 && price > HOPELESS && is_hopeless(raw, raw_bytes, w))
         return 0;
-    memcpy(w->turned, raw, raw_bytes);
-    if (firn_branches_turn(w->turned, raw_bytes) > raw_bytes / BRANCH_EVERY_BYTES)
-        transform = FIRN_SEGMENT_BRANCHES;
-    if (samples != 0) {
-        /* what numbers code well, repeats seldom code better: a hasty look tells */
-        size_t hasty = firn_candidates_matched(raw, raw_bytes, FIRN_SEGMENT_EFFORT_QUICK, transform, w->room, w);
-
-        if (hasty == 0 || hasty > samples + samples / 4)
-            return best;
-        if (effort == FIRN_SEGMENT_EFFORT_QUICK) {
-            keep(hasty, &best, coded, w);
-            return best;
-        }
-    }
-    keep(firn_candidates_matched(raw, raw_bytes, effort, transform, w->room, w), &best, coded, w);
-    if (best == 0 || best > raw_bytes / 2 || raw_bytes < SHORT_BYTES)
+    try_matched(raw, raw_bytes, effort, samples, &best, coded, w);
+    if (best == 0 || (!quick && (best > raw_bytes / 2 || raw_bytes < SHORT_BYTES)))
         keep(firn_candidates_stretches(raw, raw_bytes, effort, w->room, w), &best, coded, w);
     return best;
 }

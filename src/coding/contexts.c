@@ -15,7 +15,7 @@ enum {
     ROUNDS = 4,
     ABSENT_BITS = 12,
     TABLE_BITS = 60,                   /* a table is guessed to cost so much, and for each symbol */
-    TABLE_SYMBOL_BITS = 3
+    TABLE_SYMBOL_BITS = 6
 };
 
 /* ---- clustering ---- */
@@ -29,18 +29,35 @@ static uint64_t price_of(const struct firn_contexts_work *w, size_t context, con
     return sum;
 }
 
+/* Eight counts at once: most contexts have few symbols. */
+static inline bool are_absent(const uint32_t counts[8])
+{
+    uint32_t any = 0;
+
+    for (size_t k = 0; k < 8; k++)
+        any |= counts[k];
+    return any == 0;
+}
+
 static void gather(const uint32_t *counts, size_t contexts, size_t symbols, struct firn_contexts_work *w)
 {
     uint32_t made = 0;
 
     memset(w->sums[0], 0, sizeof w->sums[0]);
     for (size_t c = 0; c < contexts; c++) {
+        const uint32_t *row = counts + c * symbols;
+
         w->starts[c] = made;
-        for (size_t s = 0; s < symbols; s++)
-            if (counts[c * symbols + s] != 0) {
-                w->pairs[made++] = (struct firn_contexts_pair){ counts[c * symbols + s], (uint16_t)s };
-                w->sums[0][s] += counts[c * symbols + s];
+        for (size_t s = 0; s < symbols; s++) {
+            if (s + 8 <= symbols && are_absent(row + s)) {
+                s += 7;
+                continue;
             }
+            if (row[s] != 0) {
+                w->pairs[made++] = (struct firn_contexts_pair){ row[s], (uint16_t)s };
+                w->sums[0][s] += row[s];
+            }
+        }
     }
     w->starts[contexts] = made;
 }
@@ -262,6 +279,11 @@ static void tidy(size_t contexts, size_t symbols, struct firn_contexts *made, st
 
 static unsigned map_cost_bits(const struct firn_contexts *codes, size_t contexts);
 
+static unsigned tables_cost_bits(const struct firn_contexts *codes, size_t symbols)
+{
+    return firn_table_cost_bits_all(codes->lengths[0], FIRN_CONTEXTS_ALPHABET_MAX, codes->tables, symbols);
+}
+
 uint64_t firn_contexts_make(const struct firn_cost_logs *logs, const uint32_t *counts, size_t contexts, size_t symbols,
                             unsigned tables_max, unsigned limit, struct firn_contexts *made,
                             struct firn_contexts_work *work)
@@ -287,9 +309,19 @@ uint64_t firn_contexts_make(const struct firn_cost_logs *logs, const uint32_t *c
         make_codes(symbols, limit, made, work);
     }
     for (unsigned t = 0; t < made->tables; t++)
-        bits += firn_table_cost_bits_of(made->lengths[t], symbols) +
-                firn_prefix_cost_bits(work->sums[t], made->lengths[t], symbols);
-    return bits + map_cost_bits(made, contexts);
+        bits += firn_prefix_cost_bits(work->sums[t], made->lengths[t], symbols);
+    return bits + tables_cost_bits(made, symbols) + map_cost_bits(made, contexts);
+}
+
+uint64_t firn_contexts_make_one(const uint32_t *counts, size_t contexts, size_t symbols, unsigned limit,
+                                struct firn_contexts *made, struct firn_contexts_work *work)
+{
+    memcpy(work->sums[0], counts, symbols * sizeof *counts);
+    memset(made->map, 0, contexts);
+    made->tables = 1;
+    make_codes(symbols, limit, made, work);
+    return tables_cost_bits(made, symbols) +
+           firn_prefix_cost_bits(work->sums[0], made->lengths[0], symbols) + map_cost_bits(made, contexts);
 }
 
 /* ---- the map written down ---- */
@@ -380,8 +412,7 @@ void firn_contexts_write(struct firn_bits_writer *writer, const struct firn_cont
     firn_bits_put(writer, codes->tables - 1, 4);
     if (codes->tables > 1)
         write_map(writer, codes, contexts);
-    for (unsigned t = 0; t < codes->tables; t++)
-        firn_table_write_of(writer, codes->lengths[t], symbols);
+    firn_table_write_all(writer, codes->lengths[0], FIRN_CONTEXTS_ALPHABET_MAX, codes->tables, symbols);
 }
 
 static enum firn_status read_map(struct firn_bits_reader *reader, struct firn_contexts *codes, size_t contexts)
@@ -430,8 +461,5 @@ enum firn_status firn_contexts_read(struct firn_bits_reader *reader, struct firn
     memset(codes->map, 0, contexts);
     if (codes->tables > 1 && read_map(reader, codes, contexts) != FIRN_OK)
         return FIRN_BAD_DATA;
-    for (unsigned t = 0; t < codes->tables; t++)
-        if (firn_table_read_of(reader, codes->lengths[t], symbols) != FIRN_OK)
-            return FIRN_BAD_DATA;
-    return FIRN_OK;
+    return firn_table_read_all(reader, codes->lengths[0], FIRN_CONTEXTS_ALPHABET_MAX, codes->tables, symbols);
 }

@@ -63,6 +63,10 @@ uint64_t firn_contexts_make(const struct firn_cost_logs *logs, const uint32_t *c
                             unsigned tables_max, unsigned limit, struct firn_contexts *made,
                             struct firn_contexts_work *work);
 
+/* One code for all contexts; counts: of symbols, whatever their context. */
+uint64_t firn_contexts_make_one(const uint32_t *counts, size_t contexts, size_t symbols, unsigned limit,
+                                struct firn_contexts *made, struct firn_contexts_work *work);
+
 void firn_contexts_write(struct firn_bits_writer *writer, const struct firn_contexts *codes, size_t contexts,
                          size_t symbols);
 

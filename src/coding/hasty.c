@@ -13,7 +13,9 @@
 enum {
     HASHED = 4,                        /* bytes */
     GOOD_LENGTH = 48,                  /* no search for a better one */
-    PATIENCE_BITS = 6                  /* after 2^6 places without a match every second is skipped, and so on */
+    PATIENCE_BITS = 6,                 /* after 2^6 places without a match every second is skipped, and so on */
+    STRIDE_MAX = 15,                   /* skipped at a time, so that what comes twice is found between what does not */
+    STRIDE_MAX_GREEDY = 63
 };
 
 struct hasty {
@@ -108,7 +110,13 @@ size_t firn_hasty_parse(const uint8_t *raw, size_t raw_bytes, unsigned tries, st
         struct find found = look(&h, at);
 
         if (found.worth <= 0) {
-            at += 1 + ((at - start) >> PATIENCE_BITS);
+            size_t stride = (at - start) >> PATIENCE_BITS, most = tries > 1 ? STRIDE_MAX : STRIDE_MAX_GREEDY;
+            size_t next = at + 1 + (stride < most ? stride : most);
+
+            if (tries > 1)
+                for (at++; at < next && at < end; at++)
+                    enter(&h, at);
+            at = next;
             continue;
         }
         while (tries > 1 && found.length < GOOD_LENGTH && at + 1 < end) {

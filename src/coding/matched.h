@@ -32,7 +32,8 @@ enum {
     FIRN_MATCHED_DISTANCES_MAX = FIRN_MATCHED_RECENT +
                                  (2 * (FIRN_MATCHED_DISTANCE_BITS - FIRN_MATCHED_FINE_MAX) << FIRN_MATCHED_FINE_MAX),
     FIRN_MATCHED_DISTANCE_CONTEXTS = 8,
-    FIRN_MATCHED_LITERAL_CONTEXTS = 512
+    FIRN_MATCHED_LITERAL_CONTEXTS = 512,
+    FIRN_MATCHED_BATCH = 256                       /* commands decoded before they are carried out */
 };
 
 struct firn_matched_command {
@@ -131,7 +132,7 @@ struct firn_matched_counts {
     uint32_t commands[FIRN_MATCHED_COMMAND_CONTEXTS][FIRN_MATCHED_COMMANDS];
     uint32_t distances[FIRN_MATCHED_DISTANCE_CONTEXTS * FIRN_MATCHED_DISTANCES_MAX];    /* rows of the symbols in use */
     uint32_t literals[FIRN_MATCHED_LITERAL_CONTEXTS][256];
-    uint64_t more_bits;
+    uint64_t command_more_bits, distance_more_bits;
 };
 
 struct firn_matched_write_work {
@@ -144,16 +145,14 @@ struct firn_matched_write_work {
     uint32_t distance_words[FIRN_CONTEXTS_TABLES_MAX][FIRN_MATCHED_DISTANCES_MAX];
 };
 
-/* Counts what the commands take under `fine`. */
-void firn_matched_count(const uint8_t *raw, const struct firn_matched_command *commands, size_t count, unsigned fine,
-                        struct firn_matched_counts *counts);
-
 /*
- * Makes the codes for the commands, the best `fine` among them when `choose` is set, else that of w->codes. Contexts
- * are clustered into at most so many tables of literals. Returns the bits of tables and streams.
+ * Counts, and makes the codes for the commands: contexts clustered, the best `fine`; hastily, one code for each kind of
+ * symbol. Returns the bits of tables and streams.
  */
 uint64_t firn_matched_make_codes(const uint8_t *raw, const struct firn_matched_command *commands, size_t count,
-                                 unsigned tables_max, bool choose, struct firn_matched_write_work *w);
+                                 struct firn_matched_write_work *w);
+uint64_t firn_matched_make_codes_hastily(const uint8_t *raw, const struct firn_matched_command *commands, size_t count,
+                                         struct firn_matched_write_work *w);
 
 /*
  * Writes what follows the first two bytes of a segment, under w->codes. Returns the bytes written, at most room_bytes;
@@ -166,9 +165,10 @@ size_t firn_matched_write(const uint8_t *raw, const struct firn_matched_command 
 
 struct firn_matched_read_work {
     struct firn_matched_codes codes;
-    uint16_t literals[FIRN_CONTEXTS_TABLES_MAX][FIRN_MATCHED_ENTRIES];     /* symbol << 8 | next table << 4 | length */
+    uint16_t literals[FIRN_CONTEXTS_TABLES_MAX][FIRN_MATCHED_ENTRIES];
     uint32_t commands[FIRN_MATCHED_COMMAND_CONTEXTS][FIRN_MATCHED_ENTRIES];
     uint32_t distances[FIRN_MATCHED_DISTANCE_CONTEXTS][FIRN_MATCHED_ENTRIES];
+    struct firn_matched_command batch[FIRN_MATCHED_BATCH];
     uint64_t table_bits;                                               /* what map and tables took */
 };
 

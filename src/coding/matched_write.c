@@ -21,69 +21,134 @@ static void count_literals(const uint8_t *raw, size_t at, uint32_t literals, uin
         counts->literals[firn_matched_literal_context(raw, at + k, k == 0, distance)][raw[at + k]]++;
 }
 
-void firn_matched_count(const uint8_t *raw, const struct firn_matched_command *commands, size_t count, unsigned fine,
-                        struct firn_matched_counts *counts)
+/* All but the distances. */
+static void count_commands(const uint8_t *raw, const struct firn_matched_command *commands, size_t count,
+                           struct firn_matched_counts *counts)
 {
-    uint32_t recent[FIRN_MATCHED_RECENT], more, before = 0;
-    size_t at = 0, symbols = firn_matched_distances(fine);
-    unsigned more_bits;
+    uint32_t before = 0, distance = 1;
+    size_t at = 0;
 
-    memset(counts, 0, sizeof *counts);
-    firn_matched_recent_start(recent);
+    memset(counts->commands, 0, sizeof counts->commands);
+    memset(counts->literals, 0, sizeof counts->literals);
+    counts->command_more_bits = 0;
     for (size_t i = 0; i < count; i++) {
         const struct firn_matched_command *c = &commands[i];
         unsigned run = firn_matched_run_code(c->literals),
                  length = c->length == 0 ? 0 : firn_matched_length_code(c->length);
 
         counts->commands[firn_matched_command_context(before)][run * FIRN_MATCHED_LENGTH_CODES + length]++;
-        counts->more_bits += firn_matched_runs[run].bits + firn_matched_lengths[length].bits;
-        count_literals(raw, at, c->literals, recent[0], counts);
+        counts->command_more_bits += firn_matched_runs[run].bits + firn_matched_lengths[length].bits;
+        count_literals(raw, at, c->literals, distance, counts);
         at += c->literals + c->length;
         before = c->length;
-        if (c->length > 0) {
-            unsigned context = firn_matched_distance_context(c->literals, c->length);
-            unsigned symbol = firn_matched_recall(recent, c->distance);
+        distance = c->distance;
+    }
+}
 
-            if (symbol == FIRN_MATCHED_RECENT) {
-                symbol = firn_matched_distance_symbol(c->distance, fine, &more_bits, &more);
-                counts->more_bits += more_bits;
-            }
-            counts->distances[context * symbols + symbol]++;
+static void count_distances(const struct firn_matched_command *commands, size_t count, unsigned fine,
+                            struct firn_matched_counts *counts)
+{
+    uint32_t recent[FIRN_MATCHED_RECENT], more;
+    size_t symbols = firn_matched_distances(fine);
+    unsigned more_bits;
+
+    memset(counts->distances, 0, FIRN_MATCHED_DISTANCE_CONTEXTS * symbols * sizeof *counts->distances);
+    counts->distance_more_bits = 0;
+    firn_matched_recent_start(recent);
+    for (size_t i = 0; i < count && commands[i].length > 0; i++) {
+        unsigned context = firn_matched_distance_context(commands[i].literals, commands[i].length);
+        unsigned symbol = firn_matched_recall(recent, commands[i].distance);
+
+        if (symbol == FIRN_MATCHED_RECENT) {
+            symbol = firn_matched_distance_symbol(commands[i].distance, fine, &more_bits, &more);
+            counts->distance_more_bits += more_bits;
         }
+        counts->distances[context * symbols + symbol]++;
     }
 }
 
 /* ---- codes ---- */
 
-static uint64_t make_distances(struct firn_matched_write_work *w, unsigned fine)
+static uint64_t make_distances(const struct firn_matched_command *commands, size_t count, unsigned fine,
+                               struct firn_matched_write_work *w)
 {
+    count_distances(commands, count, fine, &w->counts);
     return firn_contexts_make(&w->logs, w->counts.distances, FIRN_MATCHED_DISTANCE_CONTEXTS,
                               firn_matched_distances(fine), FIRN_MATCHED_DISTANCE_CONTEXTS, FIRN_MATCHED_LIMIT,
                               &w->codes.distances, &w->contexts) +
-           w->counts.more_bits;
+           w->counts.distance_more_bits;
 }
 
 uint64_t firn_matched_make_codes(const uint8_t *raw, const struct firn_matched_command *commands, size_t count,
-                                 unsigned tables_max, bool choose, struct firn_matched_write_work *w)
+                                 struct firn_matched_write_work *w)
 {
-    unsigned best = w->codes.fine;
     uint64_t bits, least = UINT64_MAX;
+    unsigned best = 0;
 
-    for (unsigned fine = 0; choose && fine <= FIRN_MATCHED_FINE_MAX; fine++) {
-        firn_matched_count(raw, commands, count, fine, &w->counts);
-        bits = make_distances(w, fine);
+    for (unsigned fine = 0; fine <= FIRN_MATCHED_FINE_MAX; fine++) {
+        bits = make_distances(commands, count, fine, w);
         if (bits < least) {
             least = bits;
             best = fine;
         }
     }
     w->codes.fine = best;
-    firn_matched_count(raw, commands, count, best, &w->counts);
-    bits = make_distances(w, best);
+    bits = make_distances(commands, count, best, w);
+    count_commands(raw, commands, count, &w->counts);
+    bits += w->counts.command_more_bits;
     bits += firn_contexts_make(&w->logs, w->counts.commands[0], FIRN_MATCHED_COMMAND_CONTEXTS, FIRN_MATCHED_COMMANDS,
                                FIRN_MATCHED_COMMAND_CONTEXTS, FIRN_MATCHED_LIMIT, &w->codes.commands, &w->contexts);
-    return bits + firn_contexts_make(&w->logs, w->counts.literals[0], FIRN_MATCHED_LITERAL_CONTEXTS, 256, tables_max,
-                                     FIRN_MATCHED_LIMIT, &w->codes.literals, &w->contexts);
+    return bits + firn_contexts_make(&w->logs, w->counts.literals[0], FIRN_MATCHED_LITERAL_CONTEXTS, 256,
+                                     FIRN_CONTEXTS_TABLES_MAX, FIRN_MATCHED_LIMIT, &w->codes.literals, &w->contexts);
+}
+
+/* Everything in the rows of context 0. */
+static void count_hastily(const uint8_t *raw, const struct firn_matched_command *commands, size_t count,
+                          struct firn_matched_counts *counts)
+{
+    uint32_t recent[FIRN_MATCHED_RECENT], more;
+    unsigned more_bits;
+
+    memset(counts->commands[0], 0, sizeof counts->commands[0]);
+    memset(counts->literals[0], 0, sizeof counts->literals[0]);
+    memset(counts->distances, 0, FIRN_MATCHED_DISTANCES_MAX * sizeof *counts->distances);
+    counts->command_more_bits = counts->distance_more_bits = 0;
+    firn_matched_recent_start(recent);
+    for (size_t i = 0; i < count; i++) {
+        const struct firn_matched_command *c = &commands[i];
+        unsigned run = firn_matched_run_code(c->literals),
+                 length = c->length == 0 ? 0 : firn_matched_length_code(c->length), symbol;
+
+        counts->commands[0][run * FIRN_MATCHED_LENGTH_CODES + length]++;
+        counts->command_more_bits += firn_matched_runs[run].bits + firn_matched_lengths[length].bits;
+        for (uint32_t k = 0; k < c->literals; k++)
+            counts->literals[0][raw[k]]++;
+        raw += c->literals + c->length;
+        if (c->length == 0)
+            break;
+        symbol = firn_matched_recall(recent, c->distance);
+        if (symbol == FIRN_MATCHED_RECENT) {
+            symbol = firn_matched_distance_symbol(c->distance, 0, &more_bits, &more);
+            counts->distance_more_bits += more_bits;
+        }
+        counts->distances[symbol]++;
+    }
+}
+
+uint64_t firn_matched_make_codes_hastily(const uint8_t *raw, const struct firn_matched_command *commands, size_t count,
+                                         struct firn_matched_write_work *w)
+{
+    uint64_t bits;
+
+    count_hastily(raw, commands, count, &w->counts);
+    w->codes.fine = 0;
+    bits = w->counts.command_more_bits + w->counts.distance_more_bits;
+    bits += firn_contexts_make_one(w->counts.commands[0], FIRN_MATCHED_COMMAND_CONTEXTS, FIRN_MATCHED_COMMANDS,
+                                   FIRN_MATCHED_LIMIT, &w->codes.commands, &w->contexts);
+    bits += firn_contexts_make_one(w->counts.distances, FIRN_MATCHED_DISTANCE_CONTEXTS, firn_matched_distances(0),
+                                   FIRN_MATCHED_LIMIT, &w->codes.distances, &w->contexts);
+    return bits + firn_contexts_make_one(w->counts.literals[0], FIRN_MATCHED_LITERAL_CONTEXTS, 256, FIRN_MATCHED_LIMIT,
+                                         &w->codes.literals, &w->contexts);
 }
 
 static void spell(const struct firn_contexts *codes, size_t symbols, uint32_t *spelt, size_t stride)

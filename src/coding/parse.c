@@ -115,76 +115,87 @@ struct walk {
     struct firn_matched_command *commands;
     size_t made;
     uint32_t run;                      /* literals before the window that no match has followed yet */
-    uint32_t before;                   /* length of the last match before the window */
 };
 
-/* A repeat as it looks from a place: its distance and what that costs. */
+/* A repeat as it looks from a way to a place: its distance and what that costs. */
 struct offer {
     uint32_t distance, price;          /* price: of everything but distance symbol and command */
+    uint32_t from;
     unsigned symbol;
 };
 
-/* All lengths from `shortest` to `longest` of the offer, from place `at` of the window. */
-static void relax(struct firn_parse_work *w, uint32_t at, const uint32_t *row, uint32_t shortest, uint32_t longest,
-                  const struct offer *offer)
+/* Keeps the cheapest ways in order, one for each latest distance. */
+static inline void arrive(struct firn_parse_arrival *ways, unsigned count, uint32_t price, uint32_t length,
+                          uint32_t distance, uint32_t latest, uint32_t from)
 {
-    uint16_t (*distances)[FIRN_MATCHED_DISTANCES_MAX] = w->prices.distances + (w->places[at].run == 0 ? 4 : 0);
-    uint32_t length = shortest, far;
+    unsigned at = 0, last;
 
-    for (; length <= longest && length < 5; length++) {
-        uint32_t price = offer->price + distances[length - 2][offer->symbol] + row[length - 2];
-
-        if (price < w->price[at + length]) {
-            w->price[at + length] = price;
-            w->arrival[at + length] = (struct firn_parse_arrival){ length, offer->distance };
-        }
-    }
-    far = offer->price + distances[3][offer->symbol];
-    for (; length <= longest; length++) {
-        uint32_t price = far + row[w->length_codes[length]];
-
-        if (price < w->price[at + length]) {
-            w->price[at + length] = price;
-            w->arrival[at + length] = (struct firn_parse_arrival){ length, offer->distance };
-        }
-    }
+    if (price >= ways[count - 1].price)
+        return;
+    while (ways[at].price <= price)
+        if (ways[at++].latest == latest)
+            return;
+    for (last = at; last + 1 < count && ways[last].latest != latest; last++)
+        ;
+    for (; last > at; last--)
+        ways[last] = ways[last - 1];
+    ways[at] = (struct firn_parse_arrival){ price, length, distance, latest, from };
 }
 
-/* What leads on from place `at` of the window; returns the distance of a match that is to be taken at once, or 0. */
-static uint32_t step(const struct walk *walk, uint32_t at, uint32_t before, const struct firn_repeats *repeats)
+/* All lengths from `shortest` to `longest` of the offer, from place `at` of the window. */
+static void relax(struct firn_parse_work *w, uint32_t at, uint32_t run, const uint32_t *row, uint32_t shortest,
+                  uint32_t longest, const struct offer *offer)
+{
+    uint16_t (*distances)[FIRN_MATCHED_DISTANCES_MAX] = w->prices.distances + (run == 0 ? 4 : 0);
+    uint32_t length = shortest, far;
+
+    for (; length <= longest && length < 5; length++)
+        arrive(w->arrivals[at + length], w->ways, offer->price + distances[length - 2][offer->symbol] + row[length - 2],
+               length, offer->distance, offer->distance, offer->from);
+    far = offer->price + distances[3][offer->symbol];
+    for (; length <= longest; length++)
+        arrive(w->arrivals[at + length], w->ways, far + row[w->length_codes[length]], length, offer->distance,
+               offer->distance, offer->from);
+}
+
+/* What leads on from a way to place `at` of the window; returns the distance of a match to be taken at once, or 0. */
+static uint32_t step(const struct walk *walk, uint32_t at, uint32_t way, const struct firn_repeats *repeats)
 {
     struct firn_parse_work *w = walk->w;
-    struct firn_parse_place *here = &w->places[at];
+    const struct firn_parse_place *here = &w->places[at][way];
     const struct firn_parse_prices *p = &w->prices;
     size_t place = walk->start + at, left = walk->raw_bytes - place;
     const uint8_t *raw = walk->raw + place;
-    uint32_t most = left < FIRN_PARSE_REACH ? (uint32_t)left : FIRN_PARSE_REACH, known = 1, price, base;
+    uint32_t most = left < FIRN_PARSE_REACH ? (uint32_t)left : FIRN_PARSE_REACH, known = 1, recalled = 1, base;
     unsigned run_code = firn_matched_run_code(here->run), table, more_bits;
-    const uint32_t *row = p->commands[firn_matched_command_context(before)][run_code];
-    struct offer offer;
+    const uint32_t *row = p->commands[firn_matched_command_context(here->before)][run_code];
+    struct offer offer = { .from = way };
 
     table = p->literal_map[firn_matched_literal_context(walk->raw, place, here->run == 0, here->recent[0])];
-    base = w->price[at] - p->runs[run_code];
-    price = base + p->literals[table][raw[0]] + p->runs[firn_matched_run_code(here->run + 1)];
-    if (price < w->price[at + 1]) {
-        w->price[at + 1] = price;
-        w->arrival[at + 1].length = 0;
-    }
+    base = w->arrivals[at][way].price - p->runs[run_code];
+    arrive(w->arrivals[at + 1], w->ways,
+           base + p->literals[table][raw[0]] + p->runs[firn_matched_run_code(here->run + 1)], 0, 0, here->recent[0],
+           way);
     if (left < 2)
         return 0;
-    base += p->runs[0];
+    offer.price = base + p->runs[0];
     for (unsigned k = 0; k < FIRN_MATCHED_RECENT; k++) {
         uint32_t distance = here->recent[k], length;
 
         if (distance > place || firn_bytes_get16(raw) != firn_bytes_get16(raw - distance))
             continue;
         length = firn_repeats_equal(raw, raw - distance, most);
-        if (length == FIRN_PARSE_REACH)
+        if (length == FIRN_PARSE_REACH && way == 0)
             return distance;
-        offer = (struct offer){ distance, base, k };
-        relax(w, at, row, 2, length, &offer);
+        offer.distance = distance;
+        offer.symbol = k;
+        if (length > recalled)
+            relax(w, at, here->run, row, recalled + 1, length, &offer);
+        recalled = length > recalled ? length : recalled;
     }
-    for (uint32_t r = repeats->starts[place]; r < repeats->starts[place + 1]; r++) {
+    base = offer.price;
+    known = recalled;
+    for (uint32_t r = repeats->starts[place]; way == 0 && r < repeats->starts[place + 1]; r++) {
         uint32_t length = firn_repeats_length(repeats->kept[r]), distance = firn_repeats_distance(repeats->kept[r]),
                  more;
 
@@ -193,100 +204,108 @@ static uint32_t step(const struct walk *walk, uint32_t at, uint32_t before, cons
         offer.symbol = firn_matched_distance_symbol(distance, p->fine, &more_bits, &more);
         offer.price = base + more_bits * (uint32_t)BIT;
         offer.distance = distance;
-        relax(w, at, row, known + 1, length, &offer);
-        known = length;
+        if (length > known)
+            relax(w, at, here->run, row, known + 1, length, &offer);
+        known = length > known ? length : known;
     }
     return 0;
 }
 
-/* Settles a place that is reached: the run and the recent distances of the way that leads to it. */
+/* Settles a place that is reached: the run and the recent distances of each way that leads to it. */
 static void settle(struct firn_parse_work *w, uint32_t at)
 {
-    struct firn_parse_place *place = &w->places[at];
-    struct firn_parse_arrival arrival = w->arrival[at];
+    for (uint32_t way = 0; way < w->ways && w->arrivals[at][way].price < NEVER; way++) {
+        const struct firn_parse_arrival *arrival = &w->arrivals[at][way];
+        struct firn_parse_place *place = &w->places[at][way];
 
-    if (arrival.length == 0) {
-        *place = w->places[at - 1];
-        place->run++;
-    } else {
-        *place = w->places[at - arrival.length];
-        place->run = 0;
-        firn_matched_recall(place->recent, arrival.distance);
+        if (arrival->length == 0) {
+            *place = w->places[at - 1][arrival->from];
+            place->run++;
+        } else {
+            *place = w->places[at - arrival->length][arrival->from];
+            place->run = 0;
+            place->before = arrival->length;
+            firn_matched_recall(place->recent, arrival->distance);
+        }
     }
 }
 
-/* Turns the way to place `end` round and adds its commands. */
+/* Follows the cheapest way to place `end` back and adds its commands. */
 static void add_commands(struct walk *walk, uint32_t end)
 {
-    const struct firn_parse_arrival *arrival = walk->w->arrival;
-    uint32_t *next = walk->w->price;   /* of a place on the way now: where the next one is */
-    uint32_t at = end;
+    struct firn_parse_arrival *path = walk->w->path;
+    size_t steps = 0;
 
-    next[end] = end;
-    while (at > 0) {
-        uint32_t back = at - (arrival[at].length == 0 ? 1 : arrival[at].length);
-
-        next[back] = at;
-        at = back;
+    for (uint32_t at = end, way = 0; at > 0;) {
+        path[steps] = walk->w->arrivals[at][way];
+        at -= path[steps].length == 0 ? 1 : path[steps].length;
+        way = path[steps++].from;
     }
-    while (at != end) {
-        at = next[at];
-        if (arrival[at].length == 0) {
+    while (steps-- > 0) {
+        if (path[steps].length == 0) {
             walk->run++;
             continue;
         }
-        walk->commands[walk->made++] = (struct firn_matched_command){ walk->run, arrival[at].length,
-                                                                      arrival[at].distance };
-        walk->before = arrival[at].length;
+        walk->commands[walk->made++] = (struct firn_matched_command){ walk->run, path[steps].length,
+                                                                      path[steps].distance };
         walk->run = 0;
     }
 }
 
-/* A match that is longer than a window reaches. */
-static size_t add_long(struct walk *walk, size_t place, uint32_t distance, uint32_t recent[FIRN_MATCHED_RECENT])
+/* A match that is longer than a window reaches; `place` is behind it then. */
+static size_t add_long(struct walk *walk, size_t at, uint32_t distance, struct firn_parse_place *place)
 {
-    size_t left = walk->raw_bytes - place;
-    uint32_t length = firn_repeats_equal(walk->raw + place, walk->raw + place - distance, (uint32_t)left);
+    size_t left = walk->raw_bytes - at;
+    uint32_t length = firn_repeats_equal(walk->raw + at, walk->raw + at - distance, (uint32_t)left);
 
     walk->commands[walk->made++] = (struct firn_matched_command){ walk->run, length, distance };
     walk->run = 0;
-    walk->before = length;
-    firn_matched_recall(recent, distance);
-    return place + length;
+    place->run = 0;
+    place->before = length;
+    firn_matched_recall(place->recent, distance);
+    return at + length;
+}
+
+/* Nothing is reached but the first place. */
+static void start_window(struct walk *walk, uint32_t end, const struct firn_parse_place *place)
+{
+    struct firn_parse_work *w = walk->w;
+
+    for (size_t k = 0; k < end + FIRN_PARSE_REACH + 1; k++)
+        for (size_t way = 0; way < w->ways; way++)
+            w->arrivals[k][way] = (struct firn_parse_arrival){ .price = NEVER };
+    w->arrivals[0][0].price = w->prices.runs[firn_matched_run_code(place->run)];
+    w->places[0][0] = *place;
 }
 
 size_t firn_parse(const uint8_t *raw, size_t raw_bytes, const struct firn_repeats *repeats,
-                  struct firn_matched_command *commands, struct firn_parse_work *work)
+                  unsigned ways, struct firn_matched_command *commands, struct firn_parse_work *work)
 {
     struct walk walk = { .raw = raw, .raw_bytes = raw_bytes, .w = work, .commands = commands };
-    struct firn_parse_place *places = work->places;
-    uint32_t recent[FIRN_MATCHED_RECENT];
+    struct firn_parse_place place = { .run = 0 };
 
+    work->ways = ways;
     for (uint32_t length = 2; length <= FIRN_PARSE_REACH; length++)
         work->length_codes[length] = (uint8_t)firn_matched_length_code(length);
-    firn_matched_recent_start(recent);
+    firn_matched_recent_start(place.recent);
     while (walk.start < raw_bytes) {
         size_t left = raw_bytes - walk.start;
         uint32_t at = 0, end = left < FIRN_PARSE_WINDOW ? (uint32_t)left : FIRN_PARSE_WINDOW, taken = 0;
 
-        for (size_t k = 0; k < end + FIRN_PARSE_REACH + 1; k++)
-            work->price[k] = NEVER;
-        work->price[0] = work->prices.runs[firn_matched_run_code(walk.run)];
-        places[0].run = walk.run;
-        memcpy(places[0].recent, recent, sizeof recent);
+        start_window(&walk, end, &place);
         while (at < end) {
-            uint32_t before = places[at].run < at ? work->arrival[at - places[at].run].length : walk.before;
-
-            taken = step(&walk, at, before, repeats);
+            taken = step(&walk, at, 0, repeats);
             if (taken != 0)
                 break;
+            for (uint32_t way = 1; way < ways && work->arrivals[at][way].price < NEVER; way++)
+                step(&walk, at, way, repeats);
             settle(work, ++at);
         }
-        memcpy(recent, places[at].recent, sizeof recent);
+        place = work->places[at][0];
         add_commands(&walk, at);
         walk.start += at;
         if (taken != 0)
-            walk.start = add_long(&walk, walk.start, taken, recent);
+            walk.start = add_long(&walk, walk.start, taken, &place);
     }
     if (walk.run > 0 || walk.made == 0)
         commands[walk.made++] = (struct firn_matched_command){ walk.run, 0, 0 };

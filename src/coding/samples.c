@@ -4,20 +4,18 @@
  */
 #include "coding/samples.h"
 
-#include <string.h>
+#include "coding/samples_predict.h"
 
-/* Whether it needs the row above. */
-static bool looks_up(enum firn_samples_predictor predictor)
-{
-    return predictor >= FIRN_SAMPLES_UP && predictor <= FIRN_SAMPLES_BENT;
-}
+#include "base/bytes.h"
+
+#include <string.h>
 
 bool firn_samples_shape_is_sound(const struct firn_samples_shape *shape, size_t raw_bytes)
 {
     return shape->width >= 1 && shape->width <= FIRN_SAMPLES_WIDTH_MAX && shape->channels >= 1 &&
            shape->channels <= FIRN_SAMPLES_CHANNELS_MAX && (unsigned)shape->predictor < FIRN_SAMPLES_PREDICTORS &&
            shape->head_bytes <= FIRN_SAMPLES_HEAD_MAX && shape->row <= FIRN_SAMPLES_ROW_MAX &&
-           (shape->row > shape->channels || (shape->row == 0 && !looks_up(shape->predictor))) &&
+           (shape->row > shape->channels || (shape->row == 0 && !firn_samples_predict_looks_up(shape->predictor))) &&
            shape->row % shape->channels == 0 &&
            (!shape->floats || shape->width == 4) && (!shape->lean || shape->channels > 1) &&
            raw_bytes >= shape->head_bytes + (size_t)shape->width * shape->channels * FIRN_SAMPLES_PARTS;
@@ -77,69 +75,6 @@ void firn_samples_store(const struct firn_samples_shape *shape, const int32_t *x
 
 /* ---- predictions ---- */
 
-/* Written so that compilers make no jumps of it. */
-static inline int32_t middle(int32_t a, int32_t b, int32_t c)
-{
-    int32_t low = a < b ? a : b, high = a < b ? b : a, below = c < high ? c : high;
-
-    return below > low ? below : low;
-}
-
-/* Sums wrap round, so they are made without sign. */
-static int32_t wrap(uint32_t value)
-{
-    return (int32_t)value;
-}
-
-/* What x[i] is expected to be; i >= channels, and i >= row + channels for predictors that look up. */
-static inline int32_t predict(enum firn_samples_predictor predictor, const int32_t *x, size_t i, size_t c, size_t row)
-{
-    uint32_t w = (uint32_t)x[i - c], n = (uint32_t)x[i - row], nw = (uint32_t)x[i - row - c];
-
-    switch (predictor) {
-    case FIRN_SAMPLES_UP:
-        return wrap(n);
-    case FIRN_SAMPLES_PLANE:
-        return wrap(w + n - nw);
-    case FIRN_SAMPLES_MEDIAN:
-        return middle(wrap(w), wrap(n), wrap(w + n - nw));
-    case FIRN_SAMPLES_MEAN:
-        return (int32_t)(((int64_t)wrap(w) + wrap(n)) >> 1);
-    case FIRN_SAMPLES_BENT:
-        return (int32_t)((3 * (int64_t)wrap(w) + 3 * (int64_t)wrap(n) - 2 * (int64_t)wrap(nw)) >> 2);
-    case FIRN_SAMPLES_LINE:
-        return wrap(2 * w - (uint32_t)(i >= 2 * c ? x[i - 2 * c] : x[i - c]));
-    case FIRN_SAMPLES_CURVE:
-        if (i < 3 * c)
-            return wrap(w);
-        return wrap(3 * w - 3 * (uint32_t)x[i - 2 * c] + (uint32_t)x[i - 3 * c]);
-    default:
-        return wrap(w);
-    }
-}
-
-/* The prediction at the edges too: nothing in front; the left one as long as what is looked for is not there. */
-static inline int32_t expected(const struct firn_samples_shape *shape, const int32_t *x, size_t i)
-{
-    if (shape->predictor == FIRN_SAMPLES_NOTHING || i < shape->channels)
-        return 0;
-    if (!looks_up(shape->predictor))
-        return predict(shape->predictor, x, i, shape->channels, 0);
-    if (i < shape->row + shape->channels)
-        return x[i - shape->channels];
-    return predict(shape->predictor, x, i, shape->channels, shape->row);
-}
-
-void firn_samples_differ(const struct firn_samples_shape *shape, const int32_t *x, size_t count, int32_t *residuals)
-{
-    for (size_t i = 0; i < count; i++)
-        residuals[i] = wrap((uint32_t)x[i] - (uint32_t)expected(shape, x, i));
-    if (shape->lean)
-        for (size_t i = count; i-- > 0;)
-            if (i % shape->channels != 0)
-                residuals[i] = wrap((uint32_t)residuals[i] - (uint32_t)residuals[i - 1]);
-}
-
 /* A number of one byte stays within 0 .. 255; a wider one is sign-extended. */
 static inline int32_t fit(uint32_t value, unsigned width)
 {
@@ -148,36 +83,90 @@ static inline int32_t fit(uint32_t value, unsigned width)
     return width == 1 ? (int32_t)(value & 255) : (int32_t)(value << spare) >> spare;
 }
 
+/* Leaning residuals become those of their own channel. */
+static void straighten(const struct firn_samples_shape *shape, size_t count, int32_t *x)
+{
+    for (size_t i = 1, channel = 1; i < count; i++) {
+        x[i] = channel == 0 ? x[i] : firn_samples_predict_wrap((uint32_t)x[i] + (uint32_t)x[i - 1]);
+        channel = channel + 1 == shape->channels ? 0 : channel + 1;
+    }
+}
+
+/* Numbers of two bytes without rows, from `start` on: the last ones of each channel stay in registers. */
+static inline void restore_short(enum firn_samples_predictor predictor, size_t c, bool big, size_t start, size_t count,
+                                 const int32_t *x, uint8_t *raw)
+{
+    uint32_t w[2] = { 0 }, ww[2] = { 0 }, www[2] = { 0 };
+
+    for (size_t k = 0; k < c; k++) {
+        w[k] = (uint32_t)x[start - c + k];
+        ww[k] = (uint32_t)x[start - 2 * c + k];
+        www[k] = (uint32_t)x[start - 3 * c + k];
+    }
+    for (size_t i = start; i < count; i += c)
+        for (size_t k = 0; k < c; k++) {
+            uint32_t prediction = predictor == FIRN_SAMPLES_LEFT ? w[k]
+                                : predictor == FIRN_SAMPLES_LINE ? 2 * w[k] - ww[k] : 3 * (w[k] - ww[k]) + www[k];
+            uint16_t number = (uint16_t)((uint32_t)x[i + k] + prediction);
+
+            www[k] = ww[k];
+            ww[k] = w[k];
+            w[k] = number;             /* what is above two bytes never comes down */
+            firn_bytes_put16(raw + 2 * (i + k), big ? (uint16_t)(number << 8 | number >> 8) : number);
+        }
+}
+
+/* A loop for each of what sound is made of. */
+static void restore_sound(const struct firn_samples_shape *shape, size_t start, size_t count, const int32_t *x,
+                          uint8_t *raw)
+{
+    enum firn_samples_predictor predictor = shape->predictor;
+
+    if (shape->channels == 1 && predictor == FIRN_SAMPLES_LEFT)
+        restore_short(FIRN_SAMPLES_LEFT, 1, shape->big, start, count, x, raw);
+    else if (shape->channels == 1 && predictor == FIRN_SAMPLES_LINE)
+        restore_short(FIRN_SAMPLES_LINE, 1, shape->big, start, count, x, raw);
+    else if (shape->channels == 1)
+        restore_short(FIRN_SAMPLES_CURVE, 1, shape->big, start, count, x, raw);
+    else if (predictor == FIRN_SAMPLES_LEFT)
+        restore_short(FIRN_SAMPLES_LEFT, 2, shape->big, start, count, x, raw);
+    else if (predictor == FIRN_SAMPLES_LINE)
+        restore_short(FIRN_SAMPLES_LINE, 2, shape->big, start, count, x, raw);
+    else
+        restore_short(FIRN_SAMPLES_CURVE, 2, shape->big, start, count, x, raw);
+}
+
 /* From where the predictor finds all it looks for; a loop for each. */
 static inline void restore_from(enum firn_samples_predictor predictor, const struct firn_samples_shape *shape,
                                 size_t start, size_t count, int32_t *x)
 {
-    size_t c = shape->channels, row = looks_up(predictor) ? shape->row : 0;
+    size_t c = shape->channels, row = firn_samples_predict_looks_up(predictor) ? shape->row : 0;
     unsigned width = shape->width;
 
-    if (width == 2 && c == 1)
+    if (width == 2)
         for (size_t i = start; i < count; i++)
-            x[i] = fit((uint32_t)x[i] + (uint32_t)predict(predictor, x, i, 1, row), 2);
-    else if (width == 2 && c == 2)
-        for (size_t i = start; i < count; i++)
-            x[i] = fit((uint32_t)x[i] + (uint32_t)predict(predictor, x, i, 2, row), 2);
+            x[i] = fit((uint32_t)x[i] + (uint32_t)firn_samples_predict(predictor, x, i, c, row), 2);
     else
         for (size_t i = start; i < count; i++)
-            x[i] = fit((uint32_t)x[i] + (uint32_t)predict(predictor, x, i, c, row), width);
+            x[i] = fit((uint32_t)x[i] + (uint32_t)firn_samples_predict(predictor, x, i, c, row), width);
 }
 
-void firn_samples_restore(const struct firn_samples_shape *shape, size_t count, int32_t *x)
+void firn_samples_restore(const struct firn_samples_shape *shape, size_t count, int32_t *x, uint8_t *raw)
 {
-    size_t edge = (looks_up(shape->predictor) ? shape->row : 0) + 3 * (size_t)shape->channels;
+    size_t edge = (firn_samples_predict_looks_up(shape->predictor) ? shape->row : 0) + 3 * (size_t)shape->channels;
+    bool sound = shape->width == 2 && shape->channels <= 2 && (shape->predictor == FIRN_SAMPLES_LEFT ||
+                 shape->predictor == FIRN_SAMPLES_LINE || shape->predictor == FIRN_SAMPLES_CURVE);
 
     edge = edge < count ? edge : count;
     if (shape->lean)
-        for (size_t i = 1, channel = 1; i < count; i++) {
-            x[i] = channel == 0 ? x[i] : wrap((uint32_t)x[i] + (uint32_t)x[i - 1]);
-            channel = channel + 1 == shape->channels ? 0 : channel + 1;
-        }
+        straighten(shape, count, x);
     for (size_t i = 0; i < edge; i++)
-        x[i] = fit((uint32_t)x[i] + (uint32_t)expected(shape, x, i), shape->width);
+        x[i] = fit((uint32_t)x[i] + (uint32_t)firn_samples_predict_number(shape, x, i), shape->width);
+    if (sound && edge < count) {
+        firn_samples_store(shape, x, edge, raw);
+        restore_sound(shape, edge, count, x, raw);
+        return;
+    }
     switch (shape->predictor) {
     case FIRN_SAMPLES_LEFT:
         restore_from(FIRN_SAMPLES_LEFT, shape, edge, count, x);
@@ -193,148 +182,171 @@ void firn_samples_restore(const struct firn_samples_shape *shape, size_t count, 
         break;
     default:
         for (size_t i = edge; i < count; i++)
-            x[i] = fit((uint32_t)x[i] + (uint32_t)expected(shape, x, i), shape->width);
+            x[i] = fit((uint32_t)x[i] + (uint32_t)firn_samples_predict_number(shape, x, i), shape->width);
         break;
     }
+    firn_samples_store(shape, x, count, raw);
 }
 
-/* One number of one byte; w, n, nw as in predict. */
-static inline uint8_t predict_byte(enum firn_samples_predictor predictor, int w, int n, int nw)
+/* ---- numbers of one byte ---- */
+
+/* A line of residuals, channel after channel, and where its numbers go; what came before them stands there. */
+struct byte_line {
+    uint8_t *residuals;
+    size_t width, row;                 /* width: pixels */
+    uint8_t lean;                      /* 255 if they lean, else 0 */
+    uint8_t *raw;
+};
+
+/* What stands around the channel whose number goes to `to`. */
+static inline struct firn_samples_predict_around look_around(enum firn_samples_predictor predictor, const uint8_t *to,
+                                                             size_t c, size_t row)
 {
-    switch (predictor) {
-    case FIRN_SAMPLES_UP:
-        return (uint8_t)n;
-    case FIRN_SAMPLES_PLANE:
-        return (uint8_t)(w + n - nw);
-    case FIRN_SAMPLES_MEDIAN:
-        return (uint8_t)middle(w, n, w + n - nw);
-    case FIRN_SAMPLES_MEAN:
-        return (uint8_t)((w + n) / 2);
-    case FIRN_SAMPLES_BENT:
-        return (uint8_t)((3 * (w + n) - 2 * nw) >> 2);
-    default:
-        return (uint8_t)w;
+    bool up = firn_samples_predict_looks_up(predictor),
+         far = predictor == FIRN_SAMPLES_LINE || predictor == FIRN_SAMPLES_CURVE;
+
+    return (struct firn_samples_predict_around){
+        .w = *(to - c), .ww = far ? *(to - 2 * c) : 0, .www = far ? *(to - 3 * c) : 0, .nw = up ? *(to - row - c) : 0
+    };
+}
+
+/* Makes the number of a residual, and goes on to the next pixel. */
+static inline void restore_number(enum firn_samples_predictor predictor, struct firn_samples_predict_around *a,
+                                  uint8_t residual, size_t row, uint8_t *to)
+{
+    uint8_t number;
+
+    if (firn_samples_predict_looks_up(predictor))
+        a->n = *(to - row);
+    number = (uint8_t)(residual + firn_samples_predict_byte(predictor, a));
+    a->www = a->ww;
+    a->ww = a->w;
+    a->w = number;
+    a->nw = a->n;
+    *to = number;
+}
+
+static inline void restore_one(enum firn_samples_predictor predictor, const struct byte_line *line, size_t from)
+{
+    struct firn_samples_predict_around a = look_around(predictor, line->raw + from, 1, line->row);
+
+    for (size_t x = from; x < line->width; x++)
+        restore_number(predictor, &a, line->residuals[x], line->row, line->raw + x);
+}
+
+/* Three channels in turn, side by side. */
+static inline void restore_three(enum firn_samples_predictor predictor, const struct byte_line *line, size_t from)
+{
+    const uint8_t *ra = line->residuals, *rb = ra + line->width, *rc = rb + line->width;
+    size_t row = line->row, width = line->width;
+    uint8_t *to = line->raw + 3 * from, lean = line->lean;
+    struct firn_samples_predict_around a = look_around(predictor, to, 3, row),
+                                       b = look_around(predictor, to + 1, 3, row),
+                                       c = look_around(predictor, to + 2, 3, row);
+
+    for (size_t x = from; x < width; x++, to += 3) {
+        uint8_t second = (uint8_t)(rb[x] + (ra[x] & lean)), third = (uint8_t)(rc[x] + (second & lean));
+
+        restore_number(predictor, &a, ra[x], row, to);
+        restore_number(predictor, &b, second, row, to + 1);
+        restore_number(predictor, &c, third, row, to + 2);
     }
 }
 
-/* One channel: the number to the left stays in a register. */
-static inline void restore_one(enum firn_samples_predictor predictor, const uint8_t *residuals, size_t start,
-                               size_t end, size_t row, uint8_t *raw)
+/* Any number of channels, one after the other. */
+static inline void restore_many(enum firn_samples_predictor predictor, const struct firn_samples_shape *shape,
+                                const struct byte_line *line, size_t from)
 {
-    uint8_t w = raw[start - 1], nw = looks_up(predictor) ? raw[start - row - 1] : 0;
+    size_t c = shape->channels, width = line->width;
+    uint8_t *residuals = line->residuals;
 
-    for (size_t i = start; i < end; i++) {
-        uint8_t n = looks_up(predictor) ? raw[i - row] : 0;
+    for (size_t k = 0; k < c; k++) {
+        struct firn_samples_predict_around a = look_around(predictor, line->raw + from * c + k, c, line->row);
 
-        w = (uint8_t)(residuals[i] + predict_byte(predictor, w, n, nw));
-        raw[i] = w;
-        nw = n;
+        for (size_t x = from; x < width; x++) {
+            if (k != 0)
+                residuals[k * width + x] = (uint8_t)(residuals[k * width + x] +
+                                                     (residuals[(k - 1) * width + x] & line->lean));
+            restore_number(predictor, &a, residuals[k * width + x], line->row, line->raw + x * c + k);
+        }
     }
 }
 
-/* Three channels in turn, without a look at which is next. */
-static inline void restore_three(enum firn_samples_predictor predictor, const uint8_t *residuals, size_t start,
-                                 size_t end, size_t row, bool lean, uint8_t *raw)
-{
-    bool up = looks_up(predictor);
-    uint8_t a = raw[start - 3], b = raw[start - 2], c = raw[start - 1];
-    uint8_t na = up ? raw[start - row - 3] : 0, nb = up ? raw[start - row - 2] : 0, nc = up ? raw[start - row - 1] : 0;
-
-    for (size_t i = start; i + 3 <= end; i += 3) {
-        uint8_t la = na, lb = nb, lc = nc, residual = residuals[i];
-
-        if (up)
-            na = raw[i - row], nb = raw[i + 1 - row], nc = raw[i + 2 - row];
-        a = (uint8_t)(residual + predict_byte(predictor, a, na, la));
-        raw[i] = a;
-        residual = (uint8_t)(residuals[i + 1] + (lean ? residual : 0));
-        b = (uint8_t)(residual + predict_byte(predictor, b, nb, lb));
-        raw[i + 1] = b;
-        residual = (uint8_t)(residuals[i + 2] + (lean ? residual : 0));
-        c = (uint8_t)(residual + predict_byte(predictor, c, nc, lc));
-        raw[i + 2] = c;
-    }
-}
-
-/* Any number of channels; leaning residuals are summed up along a pixel. */
-static inline void restore_many(enum firn_samples_predictor predictor, const uint8_t *residuals, size_t start,
-                                size_t end, size_t row, size_t c, bool lean, uint8_t *raw)
-{
-    size_t channel = start % c;
-    uint8_t residual = 0;
-
-    for (size_t k = 0; lean && k < channel; k++)
-        residual = (uint8_t)(residual + residuals[start - channel + k]);
-    for (size_t i = start; i < end; i++) {
-        residual = (uint8_t)(residuals[i] + (lean && channel != 0 ? residual : 0));
-        raw[i] = (uint8_t)(residual + predict_byte(predictor, raw[i - c], looks_up(predictor) ? raw[i - row] : 0,
-                                                   looks_up(predictor) ? raw[i - row - c] : 0));
-        channel = channel + 1 == c ? 0 : channel + 1;
-    }
-}
-
-static inline void restore_by(enum firn_samples_predictor predictor, const struct firn_samples_shape *shape,
-                              const uint8_t *residuals, size_t start, size_t end, uint8_t *raw)
+/* From pixel `from` of a line on, where all that the predictor looks for is there. */
+static inline void restore_pixels(enum firn_samples_predictor predictor, const struct firn_samples_shape *shape,
+                                  const struct byte_line *line, size_t from)
 {
     if (shape->channels == 1)
-        restore_one(predictor, residuals, start, end, shape->row, raw);
-    else if (shape->channels == 3 && shape->lean)
-        restore_three(predictor, residuals, start, end, shape->row, true, raw);
+        restore_one(predictor, line, from);
     else if (shape->channels == 3)
-        restore_three(predictor, residuals, start, end, shape->row, false, raw);
+        restore_three(predictor, line, from);
     else
-        restore_many(predictor, residuals, start, end, shape->row, shape->channels, shape->lean, raw);
+        restore_many(predictor, shape, line, from);
 }
 
-/* Numbers start .. end, one by one, whatever is around them. */
-static void restore_edge(const struct firn_samples_shape *shape, const uint8_t *residuals, size_t start, size_t end,
-                         uint8_t *raw)
+/* The first pixels of all, up to `end` of the line, of which number `at` is the first: not everything is there yet. */
+static void restore_first(const struct firn_samples_shape *shape, const struct byte_line *line, size_t at, size_t end)
 {
     size_t c = shape->channels;
-    uint8_t residual = 0;
 
-    for (size_t i = start; i < end; i++) {
-        int w = i < c ? 0 : raw[i - c];
+    for (size_t x = 0; x < end; x++) {
+        uint8_t residual = 0;
 
-        residual = (uint8_t)(residuals[i] + (shape->lean && i % c != 0 ? residual : 0));
-        if (shape->predictor == FIRN_SAMPLES_LINE && i >= c)
-            w = 2 * w - (i >= 2 * c ? raw[i - 2 * c] : w);
-        else if (shape->predictor == FIRN_SAMPLES_CURVE && i >= 3 * c)
-            w = 3 * w - 3 * raw[i - 2 * c] + raw[i - 3 * c];
-        else if (shape->predictor == FIRN_SAMPLES_NOTHING)
-            w = 0;
-        raw[i] = (uint8_t)(residual + w);
+        for (size_t k = 0; k < c; k++) {
+            uint8_t *to = line->raw + x * c + k;
+            size_t i = at + x * c + k;
+            struct firn_samples_predict_around a = { 0 };
+
+            a.w = i < c ? 0 : *(to - c);
+            a.ww = i < 2 * c ? a.w : *(to - 2 * c);
+            a.www = i < 3 * c ? 0 : *(to - 3 * c);
+            residual = (uint8_t)(line->residuals[k * line->width + x] + (residual & (k == 0 ? 0 : line->lean)));
+            if (firn_samples_predict_looks_up(shape->predictor) ||
+                (shape->predictor == FIRN_SAMPLES_CURVE && i < 3 * c))
+                *to = (uint8_t)(residual + a.w);
+            else
+                *to = (uint8_t)(residual + firn_samples_predict_byte(shape->predictor, &a));
+        }
     }
 }
 
-void firn_samples_restore_bytes(const struct firn_samples_shape *shape, const uint8_t *residuals, size_t count,
-                                uint8_t *raw)
+void firn_samples_restore_line(const struct firn_samples_shape *shape, uint8_t *residuals, size_t width, size_t at,
+                               uint8_t *raw)
 {
-    size_t edge = looks_up(shape->predictor) ? shape->row + shape->channels
-                : shape->predictor == FIRN_SAMPLES_LEFT ? shape->channels : count;
+    size_t c = shape->channels, edge = firn_samples_predict_looks_up(shape->predictor) ? shape->row / c + 1 : 3, from;
+    struct byte_line line = { residuals, width, shape->row, shape->lean ? UINT8_MAX : 0, raw };
 
-    edge = edge < count ? edge : count;
-    restore_edge(shape, residuals, 0, edge, raw);
-    if (edge == count)
+    from = at / c >= edge ? 0 : edge - at / c < width ? edge - at / c : width;
+    restore_first(shape, &line, at, from);
+    if (from == width)
         return;
     switch (shape->predictor) {
     case FIRN_SAMPLES_UP:
-        restore_by(FIRN_SAMPLES_UP, shape, residuals, edge, count, raw);
+        restore_pixels(FIRN_SAMPLES_UP, shape, &line, from);
         break;
     case FIRN_SAMPLES_PLANE:
-        restore_by(FIRN_SAMPLES_PLANE, shape, residuals, edge, count, raw);
+        restore_pixels(FIRN_SAMPLES_PLANE, shape, &line, from);
         break;
     case FIRN_SAMPLES_MEDIAN:
-        restore_by(FIRN_SAMPLES_MEDIAN, shape, residuals, edge, count, raw);
+        restore_pixels(FIRN_SAMPLES_MEDIAN, shape, &line, from);
         break;
     case FIRN_SAMPLES_MEAN:
-        restore_by(FIRN_SAMPLES_MEAN, shape, residuals, edge, count, raw);
+        restore_pixels(FIRN_SAMPLES_MEAN, shape, &line, from);
         break;
     case FIRN_SAMPLES_BENT:
-        restore_by(FIRN_SAMPLES_BENT, shape, residuals, edge, count, raw);
+        restore_pixels(FIRN_SAMPLES_BENT, shape, &line, from);
+        break;
+    case FIRN_SAMPLES_LINE:
+        restore_pixels(FIRN_SAMPLES_LINE, shape, &line, from);
+        break;
+    case FIRN_SAMPLES_CURVE:
+        restore_pixels(FIRN_SAMPLES_CURVE, shape, &line, from);
+        break;
+    case FIRN_SAMPLES_NOTHING:
+        restore_pixels(FIRN_SAMPLES_NOTHING, shape, &line, from);
         break;
     default:
-        restore_by(FIRN_SAMPLES_LEFT, shape, residuals, edge, count, raw);
+        restore_pixels(FIRN_SAMPLES_LEFT, shape, &line, from);
         break;
     }
 }

@@ -150,17 +150,34 @@ static inline unsigned firn_samples_token(uint32_t folded, unsigned *more_bits)
     return 4 * exponent + (folded >> (exponent - 2) & 3);
 }
 
+/* The extra bits of a token. */
+static inline unsigned firn_samples_more(unsigned token)
+{
+    return token < 16 ? 0 : token / 4 - 2;
+}
+
 /* Numbers out of bytes and back; x[i] is sign-extended, floats put in order. */
 void firn_samples_load(const struct firn_samples_shape *shape, const uint8_t *raw, size_t count, int32_t *x);
 void firn_samples_store(const struct firn_samples_shape *shape, const int32_t *x, size_t count, uint8_t *raw);
 
-/* residuals[i] = x[i] - prediction, less the residual of the channel before when they lean; and back, in place. */
+/* residuals[i] = x[i] - prediction, less the residual of the channel before when they lean. */
 void firn_samples_differ(const struct firn_samples_shape *shape, const int32_t *x, size_t count, int32_t *residuals);
-void firn_samples_restore(const struct firn_samples_shape *shape, size_t count, int32_t *x);
 
-/* The same for numbers of one byte; residuals and raw do not overlap. */
-void firn_samples_restore_bytes(const struct firn_samples_shape *shape, const uint8_t *residuals, size_t count,
-                                uint8_t *raw);
+/* The same for numbers of one byte. */
+void firn_samples_differ_bytes(const struct firn_samples_shape *shape, const uint8_t *raw, size_t count,
+                               uint8_t *residuals);
+
+/* And back, into bytes; count is that of whole pixels. x is used up. */
+void firn_samples_restore(const struct firn_samples_shape *shape, size_t count, int32_t *x, uint8_t *raw);
+
+/*
+ * The same for a line of numbers of one byte, in the order they have.
+ *
+ * residuals  channel after channel, `width` of each; used up
+ * at         how many numbers stand before the line, from raw - at on
+ */
+void firn_samples_restore_line(const struct firn_samples_shape *shape, uint8_t *residuals, size_t width, size_t at,
+                               uint8_t *raw);
 
 /* The context of wider numbers: tokens of late, in 1/8, and the one above if there are rows. */
 static inline unsigned firn_samples_level(unsigned mean, unsigned above, bool rows, unsigned channel)
@@ -173,6 +190,7 @@ static inline unsigned firn_samples_level(unsigned mean, unsigned above, bool ro
 struct firn_samples_write_work {
     struct firn_cost_logs logs;
     int32_t x[FIRN_SEGMENT_RAW_MAX], residuals[FIRN_SEGMENT_RAW_MAX];
+    uint8_t byte_residuals[FIRN_SEGMENT_RAW_MAX];
     struct firn_samples_lines lines;
     uint8_t tokens[FIRN_SEGMENT_RAW_MAX];          /* in the order of the streams */
     uint16_t contexts[FIRN_SEGMENT_RAW_MAX];
@@ -192,10 +210,10 @@ struct firn_samples_read_work {
     struct firn_contexts codes;
     uint16_t entries[FIRN_CONTEXTS_TABLES_MAX * FIRN_SAMPLES_ENTRIES];
     uint16_t places[FIRN_SAMPLES_CONTEXTS];        /* of a context: the first entry of its table */
+    uint32_t bases[128];                           /* of the tokens of wider numbers: the least folded residual */
     struct firn_samples_lines lines[FIRN_SAMPLES_PARTS];
     uint16_t contexts[FIRN_SAMPLES_PARTS][FIRN_SAMPLES_ROW_MAX + FIRN_SAMPLES_LINE_PIXELS];
-    uint8_t now[FIRN_SAMPLES_PARTS][FIRN_SAMPLES_ROW_MAX + FIRN_SAMPLES_LINE_PIXELS];
-    uint8_t tokens[FIRN_SEGMENT_RAW_MAX];
+    uint8_t tokens[FIRN_SEGMENT_RAW_MAX];          /* of one byte: lines, channel after channel in each */
     int32_t x[FIRN_SEGMENT_RAW_MAX];
     uint64_t table_bits;
 };

@@ -15,12 +15,16 @@ enum {
     CODES_BYTES = FIRN_CONTEXTS_COST_MAX_BITS / 8 + 1
 };
 
-static unsigned token_of(const struct firn_samples_shape *shape, int32_t residual, unsigned *more_bits)
+static void take_channel(const uint8_t *from, size_t c, size_t width, uint8_t *to)
 {
-    *more_bits = 0;
-    if (shape->width == 1)
-        return (uint8_t)residual;
-    return firn_samples_token(firn_samples_fold((uint32_t)residual, shape->width), more_bits);
+    if (c == 1)
+        memcpy(to, from, width);
+    else if (c == 3)
+        for (size_t x = 0; x < width; x++)
+            to[x] = from[3 * x];
+    else
+        for (size_t x = 0; x < width; x++)
+            to[x] = from[c * x];
 }
 
 /* Residuals of one byte, line by line and channel by channel. */
@@ -35,8 +39,7 @@ static size_t order_lines(const struct firn_samples_shape *shape, size_t start, 
 
         firn_samples_lines_next(&w->lines, shape);
         for (unsigned channel = 0; channel < c; channel++, made += width) {
-            for (size_t x = 0; x < width; x++)
-                w->tokens[made + x] = (uint8_t)w->residuals[(at + x) * c + channel];
+            take_channel(w->byte_residuals + at * c + channel, c, width, w->tokens + made);
             firn_samples_lines_look(&w->lines, shape, channel, width, w->contexts + made);
             firn_samples_lines_tell(&w->lines, shape, channel, width, w->tokens + made);
         }
@@ -44,21 +47,25 @@ static size_t order_lines(const struct firn_samples_shape *shape, size_t start, 
     return made;
 }
 
-/* Tokens of wider numbers, in the order of the numbers. */
-static size_t order_numbers(const struct firn_samples_shape *shape, size_t start, size_t end,
-                            struct firn_samples_write_work *w)
+/* Tokens of wider numbers, in the order of the numbers; their folded residuals stand in w->residuals then. */
+static void order_numbers(const struct firn_samples_shape *shape, size_t start, size_t end,
+                          struct firn_samples_write_work *w)
 {
-    unsigned mean[FIRN_SAMPLES_CHANNELS_MAX] = { 0 }, more_bits;
-    size_t c = shape->channels;
+    unsigned means[FIRN_SAMPLES_CHANNELS_MAX] = { 0 }, more_bits, c = shape->channels;
+    bool rows = shape->row != 0;
 
-    for (size_t i = start * c; i < end * c; i++) {
-        unsigned above = shape->row != 0 && i - start * c >= shape->row ? w->tokens[i - shape->row] : 0;
+    for (size_t pixel = start; pixel < end; pixel++)
+        for (unsigned channel = 0; channel < c; channel++) {
+            size_t i = pixel * c + channel;
+            unsigned above = rows && i - start * c >= shape->row ? w->tokens[i - shape->row] : 0, token;
+            uint32_t folded = firn_samples_fold((uint32_t)w->residuals[i], shape->width);
 
-        w->contexts[i] = (uint16_t)firn_samples_level(mean[i % c], above, shape->row != 0, (unsigned)(i % c));
-        w->tokens[i] = (uint8_t)token_of(shape, w->residuals[i], &more_bits);
-        mean[i % c] += w->tokens[i] - (mean[i % c] >> 3);
-    }
-    return end * c;
+            token = firn_samples_token(folded, &more_bits);
+            w->contexts[i] = (uint16_t)firn_samples_level(means[channel], above, rows, channel);
+            w->tokens[i] = (uint8_t)token;
+            w->residuals[i] = (int32_t)folded;
+            means[channel] += token - (means[channel] >> 3);
+        }
 }
 
 static void make_tokens(const struct firn_samples_shape *shape, const uint8_t *raw, size_t pixels,
@@ -66,12 +73,19 @@ static void make_tokens(const struct firn_samples_shape *shape, const uint8_t *r
 {
     size_t count = pixels * shape->channels, made = 0;
 
-    firn_samples_load(shape, raw + shape->head_bytes, count, w->x);
-    firn_samples_differ(shape, w->x, count, w->residuals);
+    if (shape->width == 1) {
+        firn_samples_differ_bytes(shape, raw + shape->head_bytes, count, w->byte_residuals);
+    } else {
+        firn_samples_load(shape, raw + shape->head_bytes, count, w->x);
+        firn_samples_differ(shape, w->x, count, w->residuals);
+    }
     for (size_t part = 0; part < FIRN_SAMPLES_PARTS; part++) {
         size_t start = firn_samples_part(pixels, part), end = firn_samples_part(pixels, part + 1);
 
-        made = shape->width == 1 ? order_lines(shape, start, end, made, w) : order_numbers(shape, start, end, w);
+        if (shape->width == 1)
+            made = order_lines(shape, start, end, made, w);
+        else
+            order_numbers(shape, start, end, w);
     }
     memset(w->counts, 0, sizeof w->counts);
     for (size_t i = 0; i < count; i++)
@@ -81,15 +95,18 @@ static void make_tokens(const struct firn_samples_shape *shape, const uint8_t *r
 static void put_part(const struct firn_samples_shape *shape, size_t start, size_t end,
                      const struct firn_samples_write_work *w, struct firn_words_writer *s)
 {
-    unsigned more_bits;
+    const uint8_t *map = w->codes.map;
 
+    if (shape->width == 1) {
+        for (size_t i = start; i < end && s->at < s->end; i++)
+            firn_words_put_spelt(s, w->words[map[w->contexts[i]]][w->tokens[i]]);
+        return;
+    }
     for (size_t i = start; i < end && s->at < s->end; i++) {
-        firn_words_put_spelt(s, w->words[w->codes.map[w->contexts[i]]][w->tokens[i]]);
-        if (shape->width == 1)
-            continue;
-        token_of(shape, w->residuals[i], &more_bits);
-        firn_words_put(s, firn_samples_fold((uint32_t)w->residuals[i], shape->width) & ((UINT32_C(1) << more_bits) - 1),
-                       more_bits);
+        unsigned more_bits = firn_samples_more(w->tokens[i]);
+
+        firn_words_put_spelt(s, w->words[map[w->contexts[i]]][w->tokens[i]]);
+        firn_words_put(s, (uint32_t)w->residuals[i] & ((UINT32_C(1) << more_bits) - 1), more_bits);
     }
 }
 

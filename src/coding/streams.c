@@ -4,6 +4,9 @@
  */
 #include "coding/streams.h"
 
+#include "coding/spread.h"
+#include "coding/words.h"
+
 #include "base/bytes.h"
 
 #include <string.h>
@@ -12,29 +15,6 @@ enum {
     PER_REFILL = 5,                    /* 5 words of at most 11 bits fit the 56 bits that a refill always gives */
     REFILL_ADVANCE_BYTES = 7           /* 5 * 11 + 7 bits already used of the first byte: 62 bits, so 7 whole bytes */
 };
-
-static uint64_t swap64(uint64_t v)
-{
-    v = (v & UINT64_C(0x00FF00FF00FF00FF)) << 8 | (v >> 8 & UINT64_C(0x00FF00FF00FF00FF));
-    v = (v & UINT64_C(0x0000FFFF0000FFFF)) << 16 | (v >> 16 & UINT64_C(0x0000FFFF0000FFFF));
-    return v << 32 | v >> 32;
-}
-
-static unsigned trailing_zeros(uint64_t v)         /* v is not 0 */
-{
-#if defined(__GNUC__)
-    return (unsigned)__builtin_ctzll(v);
-#else
-    unsigned count = 0;
-
-    for (unsigned step = 32; step > 0; step /= 2)
-        if ((v & ((UINT64_C(1) << step) - 1)) == 0) {
-            v >>= step;
-            count += step;
-        }
-    return count;
-#endif
-}
 
 size_t firn_streams_write(const uint8_t *raw, size_t raw_bytes, const uint8_t lengths[FIRN_TABLE_SYMBOLS],
                           const uint16_t words[FIRN_TABLE_SYMBOLS], uint8_t *room, size_t room_bytes)
@@ -54,7 +34,7 @@ size_t firn_streams_write(const uint8_t *raw, size_t raw_bytes, const uint8_t le
         ab = ab << ((c + d) & 63) | cd;
         held = held << ((a + b + c + d) & 63) | ab;
         held_bits += (a + b + c + d) & 63;
-        firn_bytes_put64(to, swap64(held << (64 - held_bits)));
+        firn_bytes_put64(to, firn_words_swap64(held << (64 - held_bits)));
         to += held_bits / 8;
         held_bits %= 8;
     }
@@ -68,65 +48,16 @@ size_t firn_streams_write(const uint8_t *raw, size_t raw_bytes, const uint8_t le
     return (size_t)(to - room);
 }
 
-/* Writes the entry span times; span is 1, 2 or a multiple of 4. */
-static inline uint16_t *spread(uint16_t *to, unsigned entry, size_t span)
-{
-    uint64_t four = entry * UINT64_C(0x0001000100010001);
-
-    if (span < 4)
-        memcpy(to, &four, span * sizeof *to);
-    else
-        for (size_t k = 0; k < span; k += 4)
-            memcpy(to + k, &four, sizeof four);
-    return to + span;
-}
-
-/*
- * Symbols are sorted by length first, so that the long loops are of one kind each; canonical order is the order of
- * entries.
- */
 void firn_streams_prepare(const uint8_t lengths[FIRN_TABLE_SYMBOLS], uint16_t entries[FIRN_STREAMS_ENTRIES])
 {
-    uint16_t places[FIRN_TABLE_LENGTH_LIMIT + 2] = { 0 };
-    uint8_t sorted[FIRN_TABLE_SYMBOLS];
-    size_t at;
+    uint16_t values[FIRN_TABLE_SYMBOLS];
 
-    for (size_t s = 0; s < FIRN_TABLE_SYMBOLS; s++)
-        places[lengths[s] + 1]++;
-    for (unsigned l = 1; l <= FIRN_TABLE_LENGTH_LIMIT; l++)
-        places[l] = (uint16_t)(places[l] + places[l - 1]);
-    at = places[1];
-    for (size_t s = 0; s < FIRN_TABLE_SYMBOLS; s++)
-        sorted[places[lengths[s]]++] = (uint8_t)s;
-    for (unsigned l = 1; l < FIRN_TABLE_LENGTH_LIMIT - 1; l++)
-        for (; at < places[l]; at++)
-            entries = spread(entries, (unsigned)sorted[at] << 8 | l, (size_t)1 << (FIRN_TABLE_LENGTH_LIMIT - l));
-    for (; at < places[FIRN_TABLE_LENGTH_LIMIT - 1]; at++)
-        entries = spread(entries, (unsigned)sorted[at] << 8 | (FIRN_TABLE_LENGTH_LIMIT - 1), 2);
-    for (; at < places[FIRN_TABLE_LENGTH_LIMIT]; at++)
-        entries = spread(entries, (unsigned)sorted[at] << 8 | FIRN_TABLE_LENGTH_LIMIT, 1);
+    for (unsigned s = 0; s < FIRN_TABLE_SYMBOLS; s++)
+        values[s] = (uint16_t)(s << 8);
+    firn_spread16(lengths, FIRN_TABLE_SYMBOLS, values, entries);
 }
 
-/*
- * One stream under way: `bits` is a refill, the 8 bytes at `at` with the lowest bit set to 1, less the bits that are
- * taken already. The 1 takes no part in any of the five look-ups after a refill (of 64 - 7 bits the last is never
- * among the first 55), and its place tells how many bits are taken: so the lengths need not be added up. To begin
- * with, bits is 1 and nothing was read yet.
- */
-struct stream {
-    const uint8_t *at;
-    uint64_t bits;
-};
-
-static inline void refill(struct stream *s)
-{
-    unsigned taken = trailing_zeros(s->bits);
-
-    s->at += taken / 8;
-    s->bits = (swap64(firn_bytes_get64(s->at)) | 1) << taken % 8;
-}
-
-static inline void step(struct stream *s, const uint16_t *entries, uint8_t *to)
+static inline void step(struct firn_words_reader *s, const uint16_t *entries, uint8_t *to)
 {
     unsigned entry = entries[s->bits >> (64 - FIRN_TABLE_LENGTH_LIMIT)];
 
@@ -139,9 +70,9 @@ static inline void step(struct stream *s, const uint16_t *entries, uint8_t *to)
  * (from 0) reads 8 bytes from b + 7 r at most on, where b is its place now, and they lie in front of end as long as 7
  * r <= end - 8 - b.
  */
-static size_t rounds_safe(const struct stream *s, const uint8_t *end)
+static size_t rounds_safe(const struct firn_words_reader *s, const uint8_t *end)
 {
-    ptrdiff_t left = end - s->at - trailing_zeros(s->bits) / 8;
+    ptrdiff_t left = end - s->at - firn_words_trailing_zeros(s->bits) / 8;
 
     return left < 8 ? 0 : (size_t)(left - 8) / REFILL_ADVANCE_BYTES + 1;
 }
@@ -154,9 +85,11 @@ static size_t rounds_safe(const struct stream *s, const uint8_t *end)
  * stream from done + 5 r of its part on, and a batch has at most (each - done) / 5 rounds, so they end at `each` or
  * before, and no part is shorter than that. Look-ups: the index has 11 bits.
  */
-static size_t hurry_six(struct stream *streams, const uint8_t *end, const uint16_t *entries, uint8_t *raw, size_t each)
+static size_t hurry_six(struct firn_words_reader *streams, const uint8_t *end, const uint16_t *entries, uint8_t *raw,
+                        size_t each)
 {
-    struct stream a = streams[0], b = streams[1], c = streams[2], d = streams[3], e = streams[4], f = streams[5];
+    struct firn_words_reader a = streams[0], b = streams[1], c = streams[2], d = streams[3], e = streams[4],
+                             f = streams[5];
     size_t done = 0;
 
     for (;;) {
@@ -171,7 +104,8 @@ static size_t hurry_six(struct stream *streams, const uint8_t *end, const uint16
         if (rounds == 0)
             return done;
         for (stop = done + rounds * PER_REFILL; done < stop; done += PER_REFILL) {
-            refill(&a), refill(&b), refill(&c), refill(&d), refill(&e), refill(&f);
+            firn_words_refill_within(&a), firn_words_refill_within(&b), firn_words_refill_within(&c);
+            firn_words_refill_within(&d), firn_words_refill_within(&e), firn_words_refill_within(&f);
             for (unsigned k = 0; k < PER_REFILL; k++) {
                 step(&a, entries, raw + done + k);
                 step(&b, entries, raw + each + done + k);
@@ -185,7 +119,8 @@ static size_t hurry_six(struct stream *streams, const uint8_t *end, const uint16
 }
 
 /* The same for one stream. */
-static size_t hurry_one(struct stream *s, const uint8_t *end, const uint16_t *entries, uint8_t *raw, size_t each)
+static size_t hurry_one(struct firn_words_reader *s, const uint8_t *end, const uint16_t *entries, uint8_t *raw,
+                        size_t each)
 {
     size_t done = 0;
 
@@ -196,7 +131,7 @@ static size_t hurry_one(struct stream *s, const uint8_t *end, const uint16_t *en
         if (rounds == 0)
             return done;
         for (stop = done + rounds * PER_REFILL; done < stop; done += PER_REFILL) {
-            refill(s);
+            firn_words_refill_within(s);
             for (unsigned k = 0; k < PER_REFILL; k++)
                 step(s, entries, raw + done + k);
         }
@@ -218,17 +153,17 @@ static enum firn_status finish(struct firn_bits_reader *reader, const uint16_t *
 enum firn_status firn_streams_read(const uint8_t *coded, size_t coded_bytes, const size_t *starts, unsigned streams,
                                    const uint16_t entries[FIRN_STREAMS_ENTRIES], uint8_t *raw, size_t raw_bytes)
 {
-    struct stream stream[FIRN_STREAMS_MAX];
+    struct firn_words_reader stream[FIRN_STREAMS_MAX];
     size_t each = raw_bytes / streams, done;
 
     for (unsigned k = 0; k < streams; k++)
-        stream[k] = (struct stream){ coded + starts[k], 1 };
+        stream[k] = firn_words_open(coded + starts[k], starts[k + 1] - starts[k]);
     done = (streams == 1 ? hurry_one : hurry_six)(stream, coded + coded_bytes, entries, raw, each);
     for (unsigned k = 0; k < streams; k++) {
         struct firn_bits_reader reader = { coded + starts[k], starts[k + 1] - starts[k], 0 };
         size_t part = k + 1 < streams ? each : raw_bytes - k * each;
 
-        reader.at_bits = 8 * (size_t)(stream[k].at - reader.bytes) + trailing_zeros(stream[k].bits);
+        reader.at_bits = 8 * (size_t)(stream[k].at - reader.bytes) + firn_words_trailing_zeros(stream[k].bits);
         if (finish(&reader, entries, raw + k * each + done, part - done) != FIRN_OK)
             return FIRN_BAD_DATA;
     }

@@ -58,51 +58,54 @@ static size_t tokenise(const uint8_t *lengths, size_t symbols, struct token *tok
     return made;
 }
 
-/* The tokens' own code; returns the bits the table takes. */
-static unsigned plan(const struct token *tokens, size_t count, uint8_t *token_lengths)
+/* Adds what the tokens weigh; returns the bits of what follows them. */
+static unsigned weigh(const struct token *tokens, size_t count, uint32_t weights[FIRN_TABLE_TOKENS])
 {
-    uint32_t weights[FIRN_TABLE_TOKENS] = { 0 };
-    uint64_t work[256];                /* firn_prefix_work_bytes(14) is well below: the test of this file checks it */
-    unsigned bits = FIRN_TABLE_TOKENS * TOKEN_LENGTH_BITS;
+    unsigned bits = 0;
 
     for (size_t i = 0; i < count; i++) {
         weights[tokens[i].kind]++;
         if (tokens[i].kind >= ABSENT_RUN)
             bits += gamma_bits(tokens[i].count);
     }
+    return bits;
+}
+
+/* The tokens' own code, shared by all tables; returns the bits that everything takes. */
+static unsigned plan(const uint8_t *lengths, size_t stride, size_t tables, size_t symbols,
+                     uint8_t token_lengths[FIRN_TABLE_TOKENS])
+{
+    struct token tokens[FIRN_TABLE_ALPHABET_MAX];
+    uint32_t weights[FIRN_TABLE_TOKENS] = { 0 };
+    uint64_t work[256];                /* firn_prefix_work_bytes(14) is well below: the test of this file checks it */
+    unsigned bits = FIRN_TABLE_TOKENS * TOKEN_LENGTH_BITS;
+
+    for (size_t t = 0; t < tables; t++)
+        bits += weigh(tokens, tokenise(lengths + t * stride, symbols, tokens), weights);
     firn_prefix_lengths(weights, FIRN_TABLE_TOKENS, FIRN_TABLE_TOKEN_LIMIT, token_lengths, work);
     return bits + (unsigned)firn_prefix_cost_bits(weights, token_lengths, FIRN_TABLE_TOKENS);
 }
 
-unsigned firn_table_cost_bits_of(const uint8_t *lengths, size_t symbols)
+unsigned firn_table_cost_bits_all(const uint8_t *lengths, size_t stride, size_t tables, size_t symbols)
 {
-    struct token tokens[FIRN_TABLE_ALPHABET_MAX];
     uint8_t token_lengths[FIRN_TABLE_TOKENS];
 
-    return plan(tokens, tokenise(lengths, symbols, tokens), token_lengths);
+    return plan(lengths, stride, tables, symbols, token_lengths);
 }
 
 unsigned firn_table_cost_bits(const uint8_t lengths[FIRN_TABLE_SYMBOLS])
 {
-    return firn_table_cost_bits_of(lengths, FIRN_TABLE_SYMBOLS);
+    return firn_table_cost_bits_all(lengths, FIRN_TABLE_SYMBOLS, 1, FIRN_TABLE_SYMBOLS);
 }
 
 void firn_table_write(struct firn_bits_writer *writer, const uint8_t lengths[FIRN_TABLE_SYMBOLS])
 {
-    firn_table_write_of(writer, lengths, FIRN_TABLE_SYMBOLS);
+    firn_table_write_all(writer, lengths, FIRN_TABLE_SYMBOLS, 1, FIRN_TABLE_SYMBOLS);
 }
 
-void firn_table_write_of(struct firn_bits_writer *writer, const uint8_t *lengths, size_t symbols)
+static void write_tokens(struct firn_bits_writer *writer, const struct token *tokens, size_t count,
+                         const uint8_t token_lengths[FIRN_TABLE_TOKENS], const uint16_t words[FIRN_TABLE_TOKENS])
 {
-    struct token tokens[FIRN_TABLE_ALPHABET_MAX];
-    uint8_t token_lengths[FIRN_TABLE_TOKENS];
-    uint16_t words[FIRN_TABLE_TOKENS];
-    size_t count = tokenise(lengths, symbols, tokens);
-
-    plan(tokens, count, token_lengths);
-    firn_prefix_assign(token_lengths, FIRN_TABLE_TOKENS, words);
-    for (size_t t = 0; t < FIRN_TABLE_TOKENS; t++)
-        firn_bits_put(writer, token_lengths[t], TOKEN_LENGTH_BITS);
     for (size_t i = 0; i < count; i++) {
         firn_bits_put(writer, words[tokens[i].kind], token_lengths[tokens[i].kind]);
         if (tokens[i].kind >= ABSENT_RUN) {
@@ -112,6 +115,21 @@ void firn_table_write_of(struct firn_bits_writer *writer, const uint8_t *lengths
             firn_bits_put(writer, tokens[i].count, bits / 2 + 1);
         }
     }
+}
+
+void firn_table_write_all(struct firn_bits_writer *writer, const uint8_t *lengths, size_t stride, size_t tables,
+                          size_t symbols)
+{
+    struct token tokens[FIRN_TABLE_ALPHABET_MAX];
+    uint8_t token_lengths[FIRN_TABLE_TOKENS];
+    uint16_t words[FIRN_TABLE_TOKENS];
+
+    plan(lengths, stride, tables, symbols, token_lengths);
+    firn_prefix_assign(token_lengths, FIRN_TABLE_TOKENS, words);
+    for (size_t t = 0; t < FIRN_TABLE_TOKENS; t++)
+        firn_bits_put(writer, token_lengths[t], TOKEN_LENGTH_BITS);
+    for (size_t t = 0; t < tables; t++)
+        write_tokens(writer, tokens, tokenise(lengths + t * stride, symbols, tokens), token_lengths, words);
 }
 
 /* 0 when it is no gamma word of at most GAMMA_ZEROS_MAX zeros */
@@ -145,19 +163,12 @@ static enum firn_status read_token_code(struct firn_bits_reader *reader, uint8_t
     return FIRN_OK;
 }
 
-enum firn_status firn_table_read(struct firn_bits_reader *reader, uint8_t lengths[FIRN_TABLE_SYMBOLS])
+static enum firn_status read_one(struct firn_bits_reader *reader, const uint8_t decode[1 << FIRN_TABLE_TOKEN_LIMIT],
+                                 uint8_t *lengths, size_t symbols)
 {
-    return firn_table_read_of(reader, lengths, FIRN_TABLE_SYMBOLS);
-}
-
-enum firn_status firn_table_read_of(struct firn_bits_reader *reader, uint8_t *lengths, size_t symbols)
-{
-    uint8_t decode[1 << FIRN_TABLE_TOKEN_LIMIT];
     unsigned filled = 0, last = 0;
     size_t s = 0;
 
-    if (read_token_code(reader, decode) != FIRN_OK)
-        return FIRN_BAD_DATA;
     memset(lengths, 0, symbols);
     while (filled < FULL) {
         unsigned entry = decode[firn_bits_peek16(reader) >> (16 - FIRN_TABLE_TOKEN_LIMIT)], count = 1;
@@ -178,9 +189,30 @@ enum firn_status firn_table_read_of(struct firn_bits_reader *reader, uint8_t *le
             return FIRN_BAD_DATA;                   /* under-full: the symbols end before the code does */
         if (length != 0)
             filled += count << (FIRN_TABLE_LENGTH_LIMIT - length);
-        memset(lengths + s, (int)length, count);
+        if (count == 1)                            /* nearly always */
+            lengths[s] = (uint8_t)length;
+        else
+            memset(lengths + s, (int)length, count);
         s += count;
         last = length;
     }
     return filled == FULL ? FIRN_OK : FIRN_BAD_DATA;       /* else over-full */
+}
+
+enum firn_status firn_table_read_all(struct firn_bits_reader *reader, uint8_t *lengths, size_t stride, size_t tables,
+                                     size_t symbols)
+{
+    uint8_t decode[1 << FIRN_TABLE_TOKEN_LIMIT];
+
+    if (read_token_code(reader, decode) != FIRN_OK)
+        return FIRN_BAD_DATA;
+    for (size_t t = 0; t < tables; t++)
+        if (read_one(reader, decode, lengths + t * stride, symbols) != FIRN_OK)
+            return FIRN_BAD_DATA;
+    return FIRN_OK;
+}
+
+enum firn_status firn_table_read(struct firn_bits_reader *reader, uint8_t lengths[FIRN_TABLE_SYMBOLS])
+{
+    return firn_table_read_all(reader, lengths, FIRN_TABLE_SYMBOLS, 1, FIRN_TABLE_SYMBOLS);
 }

@@ -37,9 +37,14 @@ void firn_table_write(struct firn_bits_writer *writer, const uint8_t lengths[FIR
 /* FIRN_OK: a full code of at least two symbols. FIRN_BAD_DATA: over-full, under-full, or not a table. */
 enum firn_status firn_table_read(struct firn_bits_reader *reader, uint8_t lengths[FIRN_TABLE_SYMBOLS]);
 
-/* The same for an alphabet of `symbols` symbols, at most FIRN_TABLE_ALPHABET_MAX. */
-unsigned firn_table_cost_bits_of(const uint8_t *lengths, size_t symbols);
-void firn_table_write_of(struct firn_bits_writer *writer, const uint8_t *lengths, size_t symbols);
-enum firn_status firn_table_read_of(struct firn_bits_reader *reader, uint8_t *lengths, size_t symbols);
+/*
+ * The same for several tables, `stride` apart, of an alphabet of `symbols` symbols, at most FIRN_TABLE_ALPHABET_MAX.
+ * Their tokens share a code.
+ */
+unsigned firn_table_cost_bits_all(const uint8_t *lengths, size_t stride, size_t tables, size_t symbols);
+void firn_table_write_all(struct firn_bits_writer *writer, const uint8_t *lengths, size_t stride, size_t tables,
+                          size_t symbols);
+enum firn_status firn_table_read_all(struct firn_bits_reader *reader, uint8_t *lengths, size_t stride, size_t tables,
+                                     size_t symbols);
 
 #endif

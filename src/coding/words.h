@@ -17,6 +17,17 @@
 
 enum { FIRN_WORDS_NUMBER_BYTES = 3 };  /* of a number below 2^21 */
 
+static inline uint64_t firn_words_swap64(uint64_t v)
+{
+#if defined(__GNUC__)
+    return __builtin_bswap64(v);       /* firn_bytes_get64 is little-endian on every machine */
+#else
+    v = (v & UINT64_C(0x00FF00FF00FF00FF)) << 8 | (v >> 8 & UINT64_C(0x00FF00FF00FF00FF));
+    v = (v & UINT64_C(0x0000FFFF0000FFFF)) << 16 | (v >> 16 & UINT64_C(0x0000FFFF0000FFFF));
+    return v << 32 | v >> 32;
+#endif
+}
+
 /* ---- writing ---- */
 
 struct firn_words_writer {
@@ -25,11 +36,23 @@ struct firn_words_writer {
     unsigned held_bits;
 };
 
-static inline void firn_words_flush(struct firn_words_writer *w)
+static inline void firn_words_flush_end(struct firn_words_writer *w)
 {
     for (; w->held_bits >= 8 && w->at < w->end; w->held_bits -= 8)
         *w->at++ = (uint8_t)(w->held >> (w->held_bits - 8));
     w->held_bits &= 63;                /* no room: what is held is lost, and close says so */
+}
+
+/* Whole bytes go out, where there is room eight at a time, of which some will be written again. */
+static inline void firn_words_flush(struct firn_words_writer *w)
+{
+    if (w->end - w->at < 8) {
+        firn_words_flush_end(w);
+    } else if (w->held_bits > 0) {
+        firn_bytes_put64(w->at, firn_words_swap64(w->held << (64 - w->held_bits)));
+        w->at += w->held_bits / 8;
+        w->held_bits %= 8;
+    }
 }
 
 /* count <= 32, and value has no more bits */
@@ -70,24 +93,15 @@ static inline void firn_words_put_number(uint8_t **to, size_t value)
 
 /* ---- reading ---- */
 
-/* Zeros behind the end. At least 56 bits are held after a refill. */
+/*
+ * `bits` is a refill, the eight bytes at `at` with the lowest bit set to 1, less the bits that are taken already. That
+ * 1 takes no part in the 56 bits a refill is good for, and its place tells how many were taken: nothing else is
+ * counted. Zeros follow behind the end.
+ */
 struct firn_words_reader {
-    const uint8_t *bytes;
-    size_t byte_count, at;             /* at: of the next byte to load; may run past byte_count */
-    uint64_t bits;
-    unsigned held;
+    const uint8_t *at, *end;
+    uint64_t bits;                     /* 1 to begin with */
 };
-
-static inline uint64_t firn_words_swap64(uint64_t v)
-{
-#if defined(__GNUC__)
-    return __builtin_bswap64(v);       /* firn_bytes_get64 is little-endian on every machine */
-#else
-    v = (v & UINT64_C(0x00FF00FF00FF00FF)) << 8 | (v >> 8 & UINT64_C(0x00FF00FF00FF00FF));
-    v = (v & UINT64_C(0x0000FFFF0000FFFF)) << 16 | (v >> 16 & UINT64_C(0x0000FFFF0000FFFF));
-    return v << 32 | v >> 32;
-#endif
-}
 
 static inline unsigned firn_words_trailing_zeros(uint64_t v)           /* v is not 0 */
 {
@@ -112,47 +126,69 @@ static inline uint64_t firn_words_load(const uint8_t *at, const uint8_t *end)
     return word;
 }
 
-static inline uint64_t firn_words_load_end(const struct firn_words_reader *r)
+static inline struct firn_words_reader firn_words_open(const uint8_t *bytes, size_t byte_count)
 {
-    uint64_t word = 0;
+    return (struct firn_words_reader){ bytes, bytes + byte_count, 1 };
+}
 
-    for (size_t k = 0; k < 8; k++)
-        word = word << 8 | (r->at < r->byte_count && k < r->byte_count - r->at ? r->bytes[r->at + k] : 0u);
-    return word;
+/* The refill for where there are no eight bytes any more. A stream that is used up beyond its end stays there. */
+static inline void firn_words_refill_end(struct firn_words_reader *r)
+{
+    unsigned taken = firn_words_trailing_zeros(r->bits);
+    size_t left = (size_t)(r->end - r->at), step = taken / 8;
+
+    if (step > left) {                 /* bits that are not there were taken: no more come, and it is never used up */
+        r->at = r->end;
+        r->bits = UINT64_C(1) << 8;    /* 55 bits more can be taken without losing the 1 */
+        return;
+    }
+    r->at += step;
+    r->bits = (firn_words_load(r->at, r->end) | 1) << taken % 8;
+}
+
+/* For where eight bytes are left for sure. */
+static inline void firn_words_refill_within(struct firn_words_reader *r)
+{
+    unsigned taken = firn_words_trailing_zeros(r->bits);
+
+    r->at += taken / 8;
+    r->bits = (firn_words_swap64(firn_bytes_get64(r->at)) | 1) << taken % 8;
 }
 
 static inline void firn_words_refill(struct firn_words_reader *r)
 {
-    uint64_t word = r->at + 8 <= r->byte_count ? firn_words_swap64(firn_bytes_get64(r->bytes + r->at))
-                                               : firn_words_load_end(r);
+    if (r->end - r->at >= 16)
+        firn_words_refill_within(r);
+    else
+        firn_words_refill_end(r);
+}
 
-    r->bits |= word >> r->held;
-    r->at += (63 - r->held) >> 3;
-    r->held |= 56;
+/* After a first refill: sees to it that `count` bits are held, at most 56; cheaper where they mostly are. */
+static inline void firn_words_need(struct firn_words_reader *r, unsigned count)
+{
+    if (r->bits << count == 0)         /* the 1 would be gone */
+        firn_words_refill(r);
 }
 
 static inline void firn_words_drop(struct firn_words_reader *r, unsigned count)
 {
     r->bits <<= count;
-    r->held -= count;
 }
 
-/* count <= 32 */
-static inline uint32_t firn_words_take(struct firn_words_reader *r, unsigned count)
+/* The first bits, not taken; count <= 32 */
+static inline uint32_t firn_words_peek(uint64_t bits, unsigned count)
 {
-    uint32_t value = (uint32_t)(r->bits >> 1 >> (63 - count));
-
-    firn_words_drop(r, count);
-    return value;
+    return (uint32_t)(bits >> 1 >> (63 - count));
 }
 
-/* Used up but for less than eight zero bits. */
-static inline bool firn_words_used_up(struct firn_words_reader *r)
+/* All but less than eight zero bits taken, and none beyond. */
+static inline bool firn_words_used_up(const struct firn_words_reader *r)
 {
-    size_t used_bits = 8 * r->at - r->held, end_bits = 8 * r->byte_count;
+    size_t used_bits = firn_words_trailing_zeros(r->bits), all_bits = 8 * (size_t)(r->end - r->at);
 
-    firn_words_refill(r);
-    return used_bits <= end_bits && end_bits - used_bits < 8 && (r->bits >> 56) == 0;
+    if (used_bits > all_bits || all_bits - used_bits >= 8)
+        return false;
+    return all_bits == used_bits || (uint8_t)(r->end[-1] << (8 - (all_bits - used_bits))) == 0;
 }
 
 /* False at the end, after three bytes, or when there are more bytes than it takes. */

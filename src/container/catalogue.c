@@ -4,11 +4,12 @@
 
 #include "base/bytes.h"
 #include "base/limits.h"
+#include "container/slim.h"
 #include "firn/segment.h"
 #include "guard/hash.h"
 
 enum { SEALED_AT = FIRN_HASH_BYTES };      /* a sealed body is the hash of the rest, then the rest */
-enum { FLAG_CONTENT = 1, FLAG_EXTENTS = 2 };
+enum { FLAG_CONTENT = 1, FLAG_EXTENTS = 2, FLAG_SLIM = 4 };
 
 /* Holes are digested as zeros; beyond this, a few bytes of catalogue could keep a reader busy for days. */
 #define HOLE_BYTES_MAX (UINT64_C(1) << 43)
@@ -75,13 +76,14 @@ void firn_catalogue_put_entry(const struct firn_item *item, uint8_t *entry)
     firn_bytes_put32(entry, (uint32_t)firn_catalogue_entry_bytes(item));
     firn_bytes_put32(entry + 4, (uint32_t)item->pax_bytes);
     firn_bytes_put32(entry + 8, (uint32_t)extents);
-    firn_bytes_put32(entry + 12, (item->has_content ? FLAG_CONTENT : 0) | (listed ? FLAG_EXTENTS : 0));
     firn_bytes_put64(entry + 16, item->bytes);
     for (size_t i = 0; i < extents; i++, at += FIRN_CATALOGUE_EXTENT_BYTES) {
         firn_bytes_put64(at, item->extents[i].at);
         firn_bytes_put64(at + 8, item->extents[i].bytes);
     }
     memcpy(at, item->pax, item->pax_bytes);
+    firn_bytes_put32(entry + 12, (item->has_content ? FLAG_CONTENT : 0) | (listed ? FLAG_EXTENTS : 0) |
+                                     (firn_slim_down(at, item->pax_bytes, item->bytes) ? FLAG_SLIM : 0));
 }
 
 void firn_catalogue_seal_batch(const struct firn_catalogue_batch *batch, uint8_t *body)
@@ -113,6 +115,34 @@ enum firn_status firn_catalogue_open_batch(const uint8_t *body, size_t body_byte
     return FIRN_OK;
 }
 
+/* Whether sizes of an entry agree with one another and with what is left. */
+static bool sizes_agree(const uint8_t *entry, size_t left)
+{
+    size_t bytes, pax, extents;
+
+    if (left < FIRN_CATALOGUE_ENTRY_HEAD_BYTES)
+        return false;
+    bytes = firn_bytes_get32(entry);
+    pax = firn_bytes_get32(entry + 4);
+    extents = firn_bytes_get32(entry + 8);
+    return bytes <= left && bytes <= FIRN_LIMIT_ENTRY_BYTES && extents <= FIRN_ITEM_EXTENTS_MAX && pax != 0 &&
+           pax % 512 == 0 && pax <= FIRN_LIMIT_ENTRY_BYTES &&
+           bytes == FIRN_CATALOGUE_ENTRY_HEAD_BYTES + extents * FIRN_CATALOGUE_EXTENT_BYTES + pax;
+}
+
+/* Headers get back what was left out of them; an entry that makes no sense ends it, and is met again later. */
+static void fill_headers(uint8_t *raw, size_t left)
+{
+    while (sizes_agree(raw, left)) {
+        size_t bytes = firn_bytes_get32(raw), pax = firn_bytes_get32(raw + 4);
+
+        if ((firn_bytes_get32(raw + 12) & FLAG_SLIM) != 0)
+            firn_slim_fill(raw + bytes - pax, pax, firn_bytes_get64(raw + 16));
+        raw += bytes;
+        left -= bytes;
+    }
+}
+
 enum firn_status firn_catalogue_decode_batch(const struct firn_catalogue_batch *batch, uint8_t *raw, void *work)
 {
     const uint8_t *from = batch->coded;
@@ -136,7 +166,10 @@ enum firn_status firn_catalogue_decode_batch(const struct firn_catalogue_batch *
         left -= 4 + coded;
         done += piece;
     }
-    return left == 0 ? FIRN_OK : FIRN_BAD_DATA;
+    if (left != 0)
+        return FIRN_BAD_DATA;
+    fill_headers(raw, batch->raw_bytes);
+    return FIRN_OK;
 }
 
 void firn_catalogue_cursor_start(const struct firn_catalogue_batch *batch, const uint8_t *raw,
@@ -172,7 +205,7 @@ enum firn_status firn_catalogue_next(struct firn_catalogue_cursor *cursor, struc
 
     if (cursor->items_left == 0)
         return cursor->left == 0 ? FIRN_END : FIRN_BAD_DATA;
-    if (cursor->left < FIRN_CATALOGUE_ENTRY_HEAD_BYTES)
+    if (!sizes_agree(raw, cursor->left))
         return FIRN_BAD_DATA;
     entry = firn_bytes_get32(raw);
     flags = firn_bytes_get32(raw + 12);
@@ -181,12 +214,9 @@ enum firn_status firn_catalogue_next(struct firn_catalogue_cursor *cursor, struc
         .number = cursor->number, .pax_bytes = firn_bytes_get32(raw + 4), .has_content = (flags & FLAG_CONTENT) != 0,
         .bytes = firn_bytes_get64(raw + 16), .extent_count = extents, .content_at = cursor->content_at
     };
-    if (entry > cursor->left || entry > FIRN_LIMIT_ENTRY_BYTES || extents > FIRN_ITEM_EXTENTS_MAX ||
-        item->pax_bytes == 0 || item->pax_bytes % 512 != 0 || item->pax_bytes > FIRN_LIMIT_ENTRY_BYTES ||
-        entry != FIRN_CATALOGUE_ENTRY_HEAD_BYTES + extents * FIRN_CATALOGUE_EXTENT_BYTES + item->pax_bytes)
-        return FIRN_BAD_DATA;
-    if (flags > (FLAG_CONTENT | FLAG_EXTENTS) || (extents > 0 && (flags & FLAG_EXTENTS) == 0) ||
-        item->bytes > UINT64_MAX / 4 || (!item->has_content && (item->bytes > 0 || flags != 0)))
+    if (flags > (FLAG_CONTENT | FLAG_EXTENTS | FLAG_SLIM) || (extents > 0 && (flags & FLAG_EXTENTS) == 0) ||
+        item->bytes > UINT64_MAX / 4 ||
+        (!item->has_content && (item->bytes > 0 || (flags & FLAG_EXTENTS) != 0)))
         return FIRN_BAD_DATA;
     if (!read_extents(cursor, raw, (flags & FLAG_EXTENTS) != 0, item))
         return FIRN_BAD_DATA;

@@ -112,6 +112,60 @@ enum firn_status firn_reader_title_page(struct firn_reader *reader, uint8_t page
     return FIRN_LOST;
 }
 
+void firn_reader_layout_words(const struct firn_reader_layout *layout, char *words, size_t room)
+{
+    struct firn_text text;
+
+    firn_text_start(&text, words, room);
+    firn_title_layout(&layout->geometry, &text);
+}
+
+/* The record of a text stands before the first BATCH. */
+static enum firn_status find_text(struct firn_reader *reader, enum firn_record_type type, struct firn_record *record)
+{
+    uint64_t at = firn_record_span(FIRN_TITLE_PAGE_BYTES), limit = firn_sheets_stream_bytes(reader->sheets);
+    bool skipped = false;
+
+    for (;;) {
+        enum firn_status status = firn_parts_find_record(reader->sheets, at, limit, record, &skipped);
+
+        if (status == FIRN_OK && record->type == type)
+            return FIRN_OK;
+        if (status == FIRN_OK && record->type < FIRN_RECORD_BATCH) {
+            at = record->at + firn_record_span(record->body_bytes);
+            continue;
+        }
+        return status != FIRN_OK && status != FIRN_END ? status : skipped ? FIRN_LOST : FIRN_END;
+    }
+}
+
+enum firn_status firn_reader_text(struct firn_reader *reader, enum firn_reader_text which,
+                                  firn_reader_text_taker *take, void *self)
+{
+    struct firn_record record;
+    enum firn_status status = find_text(reader, which == FIRN_READER_TEXT_SOURCE ? FIRN_RECORD_READER
+                                                                                : FIRN_RECORD_SPEC, &record);
+    bool whole = true;
+
+    for (uint64_t at = 0; status == FIRN_OK && at < record.body_bytes;) {
+        uint8_t bytes[FIRN_BLOCK_PAYLOAD_BYTES];
+        uint64_t from = record.at + FIRN_RECORD_HEADER_BYTES + at, left = record.body_bytes - at;
+        size_t step = FIRN_BLOCK_PAYLOAD_BYTES - (size_t)(from % FIRN_BLOCK_PAYLOAD_BYTES);   /* one block at a time */
+        struct firn_sheets_gap gap;
+
+        step = left < step ? (size_t)left : step;
+        status = firn_sheets_read(reader->sheets, from, bytes, step, &gap);
+        if (status == FIRN_END || status == FIRN_LOST) {
+            whole = false;
+            status = take(self, NULL, step);
+        } else if (status == FIRN_OK) {
+            status = take(self, bytes, step);
+        }
+        at += step;
+    }
+    return status == FIRN_OK && !whole ? FIRN_LOST : status;
+}
+
 /* --- foresight: a first walk that only notes what is lost --- */
 
 struct foreseen { uint64_t item, lost_bytes; };

@@ -3,6 +3,8 @@
 #include "container/title.h"
 
 #include "base/text.h"
+#include "container/record.h"
+#include "firn/block.h"
 
 #include <inttypes.h>
 #include <string.h>
@@ -74,34 +76,29 @@ static void put_date(struct firn_text *text, int64_t seconds)
     put_value(text, "packed by", "firn " FIRN_VERSION_TEXT);
 }
 
-static void put_layout(struct firn_text *text, const struct firn_sheet_geometry *g)
+void firn_title_layout(const struct firn_sheet_geometry *g, struct firn_text *text)
 {
     firn_text_add(text,
+        "Behind this page lie blocks of 4096 bytes; numbers are little-endian. A block\n"
+        "is 3968 bytes of payload, 48 of tag, 80 of guard. Tag: \"FIRN\"; version (1\n"
+        "byte); kind, 1 data, 2 reserve (1); k (1); m (1); id of the container (8);\n"
+        "number of the block from 0 (8); t, data blocks in its sheet (4); D, rows of a\n"
+        "full sheet (2); zero (2); XXH3-128 of the first 4000 bytes, low half first (16).\n"
         "\n"
-        "HOW IT IS LAID OUT\n"
-        "\n"
-        "Behind this page the file is a sequence of blocks of 4096 bytes; numbers are\n"
-        "little-endian. A block is 3968 bytes of payload, 48 bytes of tag and 80 bytes\n"
-        "of guard. The tag: \"FIRN\"; version (1 byte); kind, 1 data, 2 reserve (1);\n"
-        "k (1); m (1); id of the container (8); number of the block from 0 (8); t, data\n"
-        "blocks in its sheet (4); D, rows of a full sheet (2); zero (2); XXH3-128 of the\n"
-        "first 4000 bytes, low half first (16).\n"
-        "\n"
-        "Guard: see a block as 512 words of 64 bits. Each of the first 502 words has as\n"
-        "its label the next integer from 3 on that is no power of two; the next nine\n"
-        "words have 1, 2, 4 .. 256 and make the XOR of all words whose label has that\n"
-        "bit zero; the last word makes the XOR of all 512 zero. So one flipped bit in\n"
-        "each of the 64 bit positions is found and mended (extended Hamming code).\n"
+        "Guard: a block is 512 words of 64 bits. The first 502 have as their labels the\n"
+        "integers from 3 on that are no powers of two; the next nine, labelled 1, 2, 4\n"
+        ".. 256, make the XOR of all words whose label has that bit zero; the last makes\n"
+        "the XOR of all 512 zero. So one flipped bit in each of the 64 bit positions is\n"
+        "found and mended (extended Hamming code).\n"
         "\n");
     if (g->m > 0)
         firn_text_add(text,
-            "A full sheet is %" PRIu32 " data blocks, then %" PRIu32 " reserve blocks. Block q of a\n"
-            "sheet is in row q mod %u. A row is a Reed-Solomon code word over GF(256), field\n"
-            "polynomial 0x11D, of k = %u data and m = %u reserve payloads: any %u blocks of\n"
-            "a row can be lost. At each byte offset there is one polynomial of degree below\n"
-            "%u with the value of data payload i at point %u+i, zero at points from %u on,\n"
-            "and the value of reserve payload j at point j. A last, shorter sheet has fewer\n"
-            "rows or columns.\n",
+            "A full sheet is %" PRIu32 " data blocks, then %" PRIu32 " reserve blocks. Block q of a sheet\n"
+            "is in row q mod %u, a Reed-Solomon code word over GF(256), polynomial 0x11D, of\n"
+            "k = %u data and m = %u reserve payloads: any %u of its blocks can be lost. At\n"
+            "each byte offset one polynomial of degree below %u has the value of data\n"
+            "payload i at point %u+i, zero at points from %u on, and the value of reserve\n"
+            "payload j at point j. A shorter last sheet has fewer rows or columns.\n",
             firn_sheet_full_data(g), firn_sheet_full_blocks(g) - firn_sheet_full_data(g), (unsigned)g->depth,
             (unsigned)g->k, (unsigned)g->m, (unsigned)g->m, 256U - g->m, (unsigned)g->m, (unsigned)g->m + g->k);
     else
@@ -110,16 +107,53 @@ static void put_layout(struct firn_text *text, const struct firn_sheet_geometry 
     firn_text_add(text,
         "\n"
         "The payloads of the data blocks, end to end, are the stream: records that begin\n"
-        "at multiples of 32. A record header is \"FREC\"; type (2 bytes); zero (2);\n"
-        "length of the body (8); place of the header in the stream (8); low half of the\n"
-        "XXH3-128 of these 24 bytes (8). Types: 1 this page; 2 format specification and\n"
-        "3 source of a reader, as text; 4 catalogue entries (pax headers, POSIX.1-2001);\n"
-        "5 a coded stretch of content; 6 SHA-256 of items; 7 the catalogue again;\n"
-        "8 colophon, text, the last record, with the totals.\n");
+        "at multiples of 32. Record header: \"FREC\"; type (2 bytes); zero (2); length of\n"
+        "the body (8); place of the header in the stream (8); low half of the XXH3-128\n"
+        "of these 24 bytes (8). Types: 1 this page; 2 format specification and 3 source\n"
+        "of a reader, as text; 4 catalogue entries (pax headers, POSIX.1-2001); 5 coded\n"
+        "content; 6 SHA-256 of items; 7 the catalogue again; 8 colophon, text, the last.\n");
+}
+
+/*
+ * What a shell has to do to get the two texts out: the payloads of the first blocks, end to end, and two cuts out of
+ * them. A payload is 31 times 128 bytes, so dd needs no more than that. In a sheet of few data blocks the loop has to
+ * pass over the reserve.
+ */
+static void put_commands(struct firn_text *text, const struct firn_sheet_geometry *g,
+                         const struct firn_title_texts *texts)
+{
+    uint64_t specification_at = firn_record_span(FIRN_TITLE_PAGE_BYTES) + FIRN_RECORD_HEADER_BYTES;
+    uint64_t reader_at = specification_at + firn_record_span(texts->specification_bytes);
+    uint64_t blocks = (reader_at + texts->reader_bytes + FIRN_BLOCK_PAYLOAD_BYTES - 1) / FIRN_BLOCK_PAYLOAD_BYTES;
+    uint32_t data = firn_sheet_full_data(g);
+
+    firn_text_add(text,
+        "\n"
+        "HOW TO READ IT WITHOUT THE PROGRAM THAT WROTE IT\n"
+        "\n"
+        "It carries the specification of its format and a reader in C. In a POSIX shell,\n"
+        "with this file as FILE:\n"
+        "\n"
+        "  n=0; while [ $n -lt %" PRIu64 " ]; do ", blocks);
+    if (blocks <= data)
+        firn_text_add(text, "dd if=FILE bs=128 count=31 skip=$((n*32+32))\n");
+    else
+        firn_text_add(text, "q=$((n/%" PRIu32 "*%" PRIu32 "+n%%%" PRIu32 "+1))\n"
+            "  dd if=FILE bs=128 count=31 skip=$((q*32))\n", data, firn_sheet_full_blocks(g), data);
+    firn_text_add(text,
+        "  n=$((n+1)); done >stream 2>/dev/null\n"
+        "  dd if=stream bs=32 skip=%" PRIu64 " | head -c %zu >specification.txt\n"
+        "  dd if=stream bs=32 skip=%" PRIu64 " | head -c %zu >reader.c\n"
+        "  cc -O2 -o reader reader.c && ./reader FILE\n"
+        "\n"
+        "This shows the tag of block 0:   od -A d -t x1 -j 8064 -N 48 FILE\n",
+        specification_at / FIRN_RECORD_ALIGNMENT, texts->specification_bytes, reader_at / FIRN_RECORD_ALIGNMENT,
+        texts->reader_bytes);
 }
 
 enum firn_status firn_title_write(const struct firn_writer_title *title, const struct firn_sheet_geometry *geometry,
-                                  uint8_t page[FIRN_TITLE_PAGE_BYTES], const char **wrong)
+                                  const struct firn_title_texts *texts, uint8_t page[FIRN_TITLE_PAGE_BYTES],
+                                  const char **wrong)
 {
     const struct { const char *label, *value; } values[] = {
         { "accession", title->accession }, { "title", title->title }, { "custodian", title->custodian },
@@ -140,7 +174,10 @@ enum firn_status firn_title_write(const struct firn_writer_title *title, const s
         put_value(&text, values[i].label, values[i].value);
     }
     put_date(&text, title->date);
-    put_layout(&text, geometry);
+    if (texts != NULL)
+        put_commands(&text, geometry, texts);
+    firn_text_add(&text, "\nHOW IT IS LAID OUT\n\n");
+    firn_title_layout(geometry, &text);
     *wrong = "title, custodian and note together";
     if (text.cut)
         return FIRN_BAD_ARGUMENT;

@@ -183,6 +183,12 @@ size_t firn_window_work_bytes(void)
     return rounded(firn_segment_encode_work_bytes()) + rounded(firn_segment_decode_work_bytes()) + FIRN_SEGMENT_RAW_MAX;
 }
 
+/* Entries are few bytes and much alike: effort costs little there and saves much. */
+static enum firn_segment_effort effort_of(const struct firn_window *window, size_t job, enum firn_segment_effort effort)
+{
+    return job >= window->cut_count && effort < FIRN_SEGMENT_EFFORT_NORMAL ? FIRN_SEGMENT_EFFORT_NORMAL : effort;
+}
+
 void firn_window_code(struct firn_window *window, size_t job, enum firn_segment_effort effort, uint8_t *work)
 {
     struct firn_window_cut *cut = job < window->cut_count ? &window->cuts[job]
@@ -190,6 +196,7 @@ void firn_window_code(struct firn_window *window, size_t job, enum firn_segment_
     uint8_t *decode_work = work + rounded(firn_segment_encode_work_bytes());
     uint8_t *again = decode_work + rounded(firn_segment_decode_work_bytes());
 
+    effort = effort_of(window, job, effort);
     firn_hash_put(cut->raw, cut->raw_bytes, cut->hash);
     if (firn_segment_encode(cut->raw, cut->raw_bytes, effort, cut->coded, &cut->coded_bytes, work) == FIRN_OK &&
         firn_segment_decode(cut->coded, cut->coded_bytes, again, cut->raw_bytes, decode_work) == FIRN_OK &&

@@ -7,6 +7,7 @@
 #include "base/limits.h"
 #include "base/memory.h"
 #include "base/text.h"
+#include "container/carried.h"
 #include "container/digest.h"
 #include "container/press.h"
 #include "container/record.h"
@@ -272,9 +273,21 @@ static enum firn_status make_rooms(struct firn_writer *writer, const uint8_t *pa
     return writer->work == NULL ? FIRN_NO_MEMORY : FIRN_OK;
 }
 
+/* What a stranger needs comes first, as plain text, where the title page says it is. */
+static enum firn_status put_texts(struct firn_writer *writer)
+{
+    enum firn_status status = put_record(writer, FIRN_RECORD_SPEC, firn_carried_specification,
+                                         firn_carried_specification_bytes);
+
+    if (status == FIRN_OK)
+        status = put_record(writer, FIRN_RECORD_READER, firn_carried_reader, firn_carried_reader_bytes);
+    return status;
+}
+
 enum firn_status firn_writer_make(const struct firn_writer_options *options, struct firn_fault *fault,
                                   struct firn_writer **out)
 {
+    const struct firn_title_texts texts = { firn_carried_specification_bytes, firn_carried_reader_bytes };
     uint8_t page[FIRN_TITLE_PAGE_BYTES];
     const char *wrong = "the sheet";
     struct firn_writer *writer;
@@ -283,7 +296,7 @@ enum firn_status firn_writer_make(const struct firn_writer_options *options, str
     *out = NULL;
     if (!firn_sheet_geometry_valid(&options->geometry))
         return firn_fault_tell(fault, FIRN_BAD_ARGUMENT, 0, 0, wrong);
-    status = firn_title_write(&options->title, &options->geometry, page, &wrong);
+    status = firn_title_write(&options->title, &options->geometry, options->carry_reader ? &texts : NULL, page, &wrong);
     if (status != FIRN_OK)
         return firn_fault_tell(fault, status, 0, 0, wrong);
     writer = firn_memory_get_zeroed(options->memory, 1, sizeof *writer);
@@ -297,6 +310,8 @@ enum firn_status firn_writer_make(const struct firn_writer_options *options, str
     if (status == FIRN_OK) {
         writer->filling = &writer->windows[0];
         status = put_record(writer, FIRN_RECORD_TITLE, page, sizeof page);
+        if (status == FIRN_OK && options->carry_reader)
+            status = put_texts(writer);
     }
     if (status != FIRN_OK) {
         firn_writer_free(writer);

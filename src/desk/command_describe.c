@@ -11,11 +11,13 @@
 #include <stdlib.h>
 #include <string.h>
 
-enum option { TABLES, PAGE };
+enum option { TABLES, PAGE, SPEC, READER };
 
 static const struct firn_args_option options[] = {
     [TABLES] = { "tables", '\0', NULL, "show the codes in use: symbols, lengths, cost beside entropy" },
     [PAGE] = { "page", '\0', NULL, "print the title page" },
+    [SPEC] = { "spec", '\0', NULL, "print the format specification that the container carries" },
+    [READER] = { "reader", '\0', NULL, "print the C source of a reader that the container carries" },
 };
 
 struct tables {
@@ -204,6 +206,43 @@ static void show(struct firn_view *view, const char *container, const struct fir
     firn_view_end(view);
 }
 
+/* The layout in the words of the title page, for people. */
+static void show_words(const struct firn_reader_layout *layout)
+{
+    char words[FIRN_READER_LAYOUT_ROOM];
+
+    firn_reader_layout_words(layout, words, sizeof words);
+    printf("\n%s", words);
+}
+
+static enum firn_status print_text(void *self, const uint8_t *bytes, size_t count)
+{
+    (void)self;
+    if (bytes == NULL)
+        printf("\n[here %zu bytes are lost]\n", count);
+    else
+        fwrite(bytes, 1, count, stdout);      /* whether standard output took it all is asked at the end */
+    return FIRN_OK;
+}
+
+static int show_text(struct firn_view *view, struct firn_opening *opening, const char *container,
+                     enum firn_reader_text which)
+{
+    enum firn_status status = firn_reader_text(opening->reader, which, print_text, NULL);
+
+    if (status == FIRN_OK)
+        return FIRN_EXIT_SOUND;
+    if (status == FIRN_END) {
+        firn_view_finding(view, "no-text", container, "carries neither specification nor reader: it was packed with "
+                                                      "--no-reader");
+        return FIRN_EXIT_BAD_DATA;
+    }
+    if (status != FIRN_LOST)
+        return firn_trouble_tell(view, container, status, NULL);
+    firn_view_finding(view, "text-lost", container, "some or all of the text is lost; take it from another container");
+    return FIRN_EXIT_LOST;
+}
+
 static int run(const struct firn_args *args, struct firn_view *view)
 {
     struct firn_opening opening;
@@ -212,6 +251,8 @@ static int run(const struct firn_args *args, struct firn_view *view)
 
     if (args->operand_count != 1)
         return firn_trouble_usage(view, "FILE", "name one container");
+    if (args->given[PAGE] + args->given[SPEC] + args->given[READER] > 1)
+        return firn_trouble_usage(view, "--page, --spec, --reader", "print one text each: choose one");
     container = args->operands[0];
     exit = firn_opening_make(&opening, container, args, view);
     if (exit != FIRN_EXIT_SOUND)
@@ -223,8 +264,13 @@ static int run(const struct firn_args *args, struct firn_view *view)
         if (firn_reader_title_page(opening.reader, page) != FIRN_OK)
             firn_view_finding(view, "title-page", container, "its protected copy is lost; this is page 0 as it stands");
         fwrite(page, 1, sizeof page, stdout);
+    } else if (args->given[SPEC] || args->given[READER]) {
+        more = show_text(view, &opening, container, args->given[SPEC] ? FIRN_READER_TEXT_SPECIFICATION
+                                                                      : FIRN_READER_TEXT_SOURCE);
     } else {
         show(view, container, firn_reader_layout_of(opening.reader));
+        if (!view->json && !args->quiet)
+            show_words(firn_reader_layout_of(opening.reader));
     }
     if (args->given[TABLES])
         more = show_tables(view, &opening, container);
@@ -235,11 +281,13 @@ static int run(const struct firn_args *args, struct firn_view *view)
 const struct firn_command firn_command_describe = {
     .name = "describe",
     .summary = "tell how a container is laid out and protected, and what is in it",
-    .usage = "FILE [--tables] [--page]",
+    .usage = "FILE [--tables] [--page | --spec | --reader]",
     .about = "Layout, protection, identity and totals. With --tables also every code: for each\n"
              "stretch of content the symbols by code length, and what the code costs beside\n"
              "the entropy of its bytes each for itself, in bits for each byte of content;\n"
-             "matches and contexts go below that.\n",
+             "matches and contexts go below that.\n\n"
+             "A container carries the specification of its format and the source of a reader\n"
+             "for those who have no firn; --spec and --reader print them.\n",
     .example = "  firn describe quay-1931.firn\n",
     .options = options, .option_count = sizeof options / sizeof options[0], .run = run
 };

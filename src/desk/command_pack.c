@@ -30,6 +30,7 @@ enum option {
     RESERVE,
     SHEET,
     EFFORT,
+    NO_READER,
     REPLACE,
     NO_READ_BACK
 };
@@ -47,6 +48,7 @@ static const struct firn_args_option options[] = {
     [RESERVE] = { "reserve", '\0', "PERCENT", "reserve on top of the data, 0 to 100 (default 14.3)" },
     [SHEET] = { "sheet", '\0', "SIZE", "size of a sheet, 1MiB to 256MiB (default 128MiB)" },
     [EFFORT] = { "effort", '\0', "WORD", "none, quick, normal or thorough (default normal)" },
+    [NO_READER] = { "no-reader", '\0', NULL, "leave out the specification and the reader's source (some 200 KiB)" },
     [REPLACE] = { "replace", '\0', NULL, "FILE may be overwritten" },
     [NO_READ_BACK] = { "no-read-back", '\0', NULL, "do not read the container back when it is written" },
 };
@@ -149,6 +151,7 @@ static int read_words(struct packing *p)
         return firn_trouble_usage(p->view, "--output", "is missing: say where to write the container");
     if ((p->args->operand_count == 0) == (values[FROM_ARCHIVE] == NULL))
         return firn_trouble_usage(p->view, "PATH", "name what to pack: paths, or one archive with --from-archive");
+    p->writing.carry_reader = !p->args->given[NO_READER];
     p->writing.title.accession = values[ACCESSION];
     p->writing.title.title = values[TITLE];
     p->writing.title.custodian = values[CUSTODIAN];

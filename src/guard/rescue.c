@@ -24,7 +24,7 @@ enum {
     PAIRS_OPEN_MOST = 64,
     SOLVED_ENOUGH = 64,      /* columns that tell how much of a block is wrong */
     /* A column believed in error spoils a few blocks, which the reserve or doubt_columns see to. */
-    CHANCE_BITS = 10
+    CHANCE_BITS = 5
 };
 
 struct work {

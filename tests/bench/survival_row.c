@@ -173,7 +173,7 @@ static void try_columns(struct row *row, struct row_outcomes *outcomes)
     static uint8_t solved[FIRN_COLUMNS_BYTES_MOST];
     uint32_t wrong[ROW_N] = { 0 };
     uint8_t standings[ROW_N];
-    const struct firn_columns_row columns = { ROW_K, ROW_M, row->blocks, standings, sizeof solved, 10 };
+    const struct firn_columns_row columns = { ROW_K, ROW_M, row->blocks, standings, sizeof solved, 5 };
     unsigned count = 0;
 
     memcpy(row->trial, row->read, sizeof row->trial);

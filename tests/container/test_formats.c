@@ -288,11 +288,12 @@ static void title_pages(void **state)
                  "found in the loft of the old customs house",
         .date = 0
     };
+    const struct firn_title_texts texts = { 100000, 70000 };
     uint8_t page[FIRN_TITLE_PAGE_BYTES + 1] = { 0 };
     const char *wrong;
     size_t columns = 0;
 
-    assert_int_equal(firn_title_write(&title, &geometry, page, &wrong), FIRN_OK);
+    assert_int_equal(firn_title_write(&title, &geometry, NULL, page, &wrong), FIRN_OK);
     assert_true(firn_title_looks_right(page));
     for (size_t i = 0; i < FIRN_TITLE_PAGE_BYTES; i++) {
         columns = page[i] == '\n' ? 0 : columns + 1;
@@ -302,11 +303,21 @@ static void title_pages(void **state)
     assert_non_null(strstr((char *)page, "\n  accession   MQ 1931/7\n"));
     assert_non_null(strstr((char *)page, "\n  packed on   1970-01-01T00:00:00Z\n"));
     assert_non_null(strstr((char *)page, "k = 224 data and m = 32 reserve"));
+    title.custodian = title.note = title.title;
+    assert_int_equal(firn_title_write(&title, &geometry, &texts, page, &wrong), FIRN_OK);
+    for (size_t i = 0; i < FIRN_TITLE_PAGE_BYTES; i++) {
+        columns = page[i] == '\n' ? 0 : columns + 1;
+        assert_true(columns <= 80);
+    }
+    /* the body of SPEC begins at 4128 + 32; 100 000 bytes of it and READER's header end at 104 192, 3256 times 32 */
+    assert_non_null(strstr((char *)page, "skip=130 | head -c 100000 >specification.txt\n"));
+    assert_non_null(strstr((char *)page, "skip=3256 | head -c 70000 >reader.c\n"));
+    assert_non_null(strstr((char *)page, "while [ $n -lt 44 ]"));       /* (104 192 + 70 000) / 3968, rounded up */
     title.note = "bell \a";
-    assert_int_equal(firn_title_write(&title, &geometry, page, &wrong), FIRN_BAD_ARGUMENT);
+    assert_int_equal(firn_title_write(&title, &geometry, NULL, page, &wrong), FIRN_BAD_ARGUMENT);
     assert_string_equal(wrong, "note");
     title.note = "no utf-8 \xE9";
-    assert_int_equal(firn_title_write(&title, &geometry, page, &wrong), FIRN_BAD_ARGUMENT);
+    assert_int_equal(firn_title_write(&title, &geometry, NULL, page, &wrong), FIRN_BAD_ARGUMENT);
     (void)state;
 }
 

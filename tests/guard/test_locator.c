@@ -15,7 +15,7 @@
 
 static struct firn_locator_logs logs;
 
-/* format-spec/sheet.md, section 6; computed from the definition by a few lines of Python. */
+/* format-spec/sheet.md, section 7; computed from the definition by a few lines of Python. */
 static void the_examples_of_the_specification(void **state)
 {
     static const uint8_t two[4] = { 0x84, 0x0D, 0x7A, 0x69 }, one[3] = { 0x04, 0x10, 0x40 };

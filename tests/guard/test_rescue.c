@@ -136,6 +136,28 @@ static void flips_and_lost_blocks_come_back(void **state)
     }
 }
 
+/* Two or three syndromes are all that is left to tell flips from none: then only changes of one bit are believed. */
+static void few_syndromes_are_enough_for_few_flips(void **state)
+{
+    static const struct { unsigned k, m, gone; double rate; } rows[] = {
+        { 224, 32, 29, 3e-4 }, { 224, 32, 30, 1e-4 }, { 252, 4, 2, 1e-4 }, { 27, 4, 2, 1e-3 }
+    };
+    struct random random = random_start("few syndromes");
+
+    (void)state;
+    for (size_t i = 0; i < sizeof rows / sizeof rows[0]; i++)
+        for (unsigned trial = 0; trial < 4; trial++) {
+            unsigned lost[32];
+
+            write_row(&random, rows[i].k, rows[i].m, NOWHERE);
+            (void)spoil_bits(&random, spoilt[0], sizeof spoilt, rows[i].rate);
+            random_choose(&random, rows[i].k + rows[i].m, rows[i].gone, lost);
+            for (unsigned j = 0; j < rows[i].gone; j++)
+                random_fill(&random, spoilt[lost[j]], FIRN_BLOCK_BYTES);
+            assert_int_equal(rescue(rows[i].k, rows[i].m), FIRN_OK);
+        }
+}
+
 /* Twelve payloads are noise under tags that look right: the columns find them out, and count them as erasures then. */
 static void noise_under_a_right_tag_is_found_out(void **state)
 {
@@ -199,6 +221,7 @@ int main(void)
     const struct CMUnitTest tests[] = {
         cmocka_unit_test(flips_at_rates_come_back),
         cmocka_unit_test(flips_and_lost_blocks_come_back),
+        cmocka_unit_test(few_syndromes_are_enough_for_few_flips),
         cmocka_unit_test(noise_under_a_right_tag_is_found_out),
         cmocka_unit_test(swapped_blocks_count_as_lost),
         cmocka_unit_test(losses_alone),

@@ -2,7 +2,7 @@
 # SPDX-License-Identifier: BSD-2-Clause
 cmake_minimum_required(VERSION 3.22)
 file(GLOB_RECURSE files ${ROOT}/src/*.c ${ROOT}/src/*.h ${ROOT}/src/*.inc ${ROOT}/include/*.h ${ROOT}/tests/*.c ${ROOT}/tests/*.h
-     ${ROOT}/examples/*.c)
+     ${ROOT}/examples/*.c ${ROOT}/format-spec/*.c)
 string(CONCAT open_words "(^|[^A-Z])(TO" "DO|FIX" "ME|XX" "X)([^A-Z]|$)")
 foreach(file ${files})
     file(STRINGS ${file} lines REGEX "${open_words}|^#if 0")
