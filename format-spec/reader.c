@@ -1313,8 +1313,25 @@ static uint64_t extent_bytes(const struct item *item, uint32_t i)
 
 static uint64_t largest_holes = UINT64_C(1) << 43;
 
-/* Table 2. The entry at the front of `left` bytes: how long it is; 0 if it breaks a rule. *stored: content it takes. */
-static size_t read_entry(const byte *entry, size_t left, struct item *item, uint64_t *stored)
+static void put_octal(byte *field, unsigned digits, uint64_t value)
+{
+    for (; digits > 0; value >>= 3)
+        field[--digits] = (byte)('0' + (value & 7));
+}
+
+static void put_sum(byte *header) /* over all bytes, those of the sum taken as spaces */
+{
+    unsigned sum = 8 * ' ';
+    for (unsigned i = 0; i < 512; i++)
+        sum += i < 148 || i >= 156 ? header[i] : 0u;
+    put_octal(header + 148, 6, sum);
+}
+
+/*
+ * Table 2. The entry at the front of `left` bytes: how long it is; 0 if it breaks a rule. *stored: content it takes.
+ * Digits that are left out of its headers are put back.
+ */
+static size_t read_entry(byte *entry, size_t left, struct item *item, uint64_t *stored)
 {
     if (left < 24) return 0;
     uint64_t bytes = get(entry, 4), end = 0;
@@ -1327,6 +1344,12 @@ static size_t read_entry(const byte *entry, size_t left, struct item *item, uint
     if (bytes > left || bytes > 2097152 || item->extent_count > 65536 || (!item->listed && item->extent_count > 0) ||
         24 + 16 * (uint64_t)item->extent_count + item->pax_bytes != bytes)
         return 0;
+    if ((flags & 4) != 0 && item->pax_bytes >= 512) {
+        byte *last = entry + bytes - 512;
+        put_octal(last + 124, 11, item->size);
+        put_sum(last);
+        put_sum(entry + 24 + 16 * item->extent_count);
+    }
     item->extents = entry + 24;
     item->pax = entry + 24 + 16 * item->extent_count;
     item->extent_count = item->listed ? item->extent_count : item->has_content && item->size > 0;

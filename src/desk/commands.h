@@ -12,5 +12,6 @@
 
 extern const struct firn_command firn_command_pack, firn_command_restore, firn_command_scrub, firn_command_inventory,
     firn_command_describe;
+extern const struct firn_command firn_command_forecast, firn_command_label;
 
 #endif

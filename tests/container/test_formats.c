@@ -5,7 +5,9 @@
 #include "container/catalogue.h"
 #include "container/digest.h"
 #include "container/record.h"
+#include "base/bytes.h"
 #include "container/title.h"
+#include "container/title_value.h"
 #include "firn/segment.h"
 #include "guard/hash.h"
 
@@ -149,11 +151,43 @@ static void entries(void **state)
     (void)state;
 }
 
+/*
+ * An entry whose header lacks its digits, through a batch. The whole header is that of facts known from outside: name
+ * "a", mode 0644, size 3, all else zero, has the sum 007341 (recomputed from IEEE Std 1003.1-2001, pax, by hand).
+ */
+static void headers_are_filled(void **state)
+{
+    static struct firn_item_extent read_extents[FIRN_ITEM_EXTENTS_MAX];
+    uint8_t raw[ROOM], coded[ROOM + 8] = { 0 }, entry[ROOM];
+    struct firn_catalogue_batch batch = { .items = 1, .coded = coded };
+    struct firn_catalogue_cursor cursor;
+    struct firn_item read;
+    size_t count;
+    const uint8_t *vector = catalogue_vector("entry-slim", &count);
+    void *work = malloc(firn_segment_decode_work_bytes());
+
+    assert_non_null(work);
+    batch.raw_bytes = (uint32_t)count;
+    batch.coded_bytes = 4 + 2 + count;             /* one piece, stored */
+    firn_bytes_put32(coded, (uint32_t)(2 + count));
+    memcpy(coded + 6, vector, count);
+    assert_int_equal(firn_catalogue_decode_batch(&batch, raw, work), FIRN_OK);
+    firn_catalogue_cursor_start(&batch, raw, read_extents, &cursor);
+    assert_int_equal(firn_catalogue_next(&cursor, &read), FIRN_OK);
+    assert_true(read.bytes == 3 && read.pax_bytes == 512);
+    assert_string_equal((const char *)read.pax + 124, "00000000003");
+    assert_string_equal((const char *)read.pax + 148, "007341");
+    firn_catalogue_put_entry(&read, entry);        /* and out again */
+    assert_memory_equal(entry, vector, count);
+    free(work);
+    (void)state;
+}
+
 /* Any single field of an entry made absurd: refused. Offsets as in format-spec/catalogue.md, table 2. */
 static const struct { const char *what; size_t at; uint8_t byte; } absurd[] = {
     { "entry shorter than its parts", 0, 1 }, { "entry of half a gigabyte", 3, 0x20 }, { "no pax header", 5, 0 },
     { "pax header of 513 bytes", 4, 1 }, { "pax header of 16 MiB", 7, 1 }, { "an extent that is not there", 8, 1 },
-    { "16 million extents", 11, 1 }, { "unknown flag", 12, 5 }, { "flag without content", 12, 2 },
+    { "16 million extents", 11, 1 }, { "unknown flag", 12, 9 }, { "flag without content", 12, 2 },
     { "content without its flag", 12, 0 }, { "an exbibyte and more", 23, 0x7F }, { "hole of 2^55 bytes", 22, 0x80 },
 };
 
@@ -321,12 +355,67 @@ static void title_pages(void **state)
     (void)state;
 }
 
+/* What was written on a page comes back, long values put together again; nothing is found where nothing was given. */
+static void title_values(void **state)
+{
+    const struct firn_sheet_geometry geometry = { .k = 224, .m = 32, .depth = 128 };
+    char longest[513] = "";
+    struct firn_writer_title title = {
+        .accession = "MQ 1931/7",
+        .title = "Ledgers of Marrow Quay, with the letters of the harbour master, \xC3\xA9t\xC3\xA9 1931, and all that "
+                 "was found in the loft  of the old customs house",
+        .note = longest, .date = 86400
+    };
+    uint8_t page[FIRN_TITLE_PAGE_BYTES];
+    char value[FIRN_TITLE_VALUE_ROOM];
+    const char *wrong;
+
+    for (size_t i = 0; i < 512; i++)
+        longest[i] = i % 80 == 7 ? ' ' : (char)('a' + i % 26);
+    assert_int_equal(firn_title_write(&title, &geometry, NULL, page, &wrong), FIRN_OK);
+    assert_int_equal(firn_title_value_read(page, "accession", value), FIRN_OK);
+    assert_string_equal(value, title.accession);
+    assert_int_equal(firn_title_value_read(page, "title", value), FIRN_OK);
+    assert_string_equal(value, title.title);
+    assert_int_equal(firn_title_value_read(page, "note", value), FIRN_OK);
+    assert_string_equal(value, longest);
+    assert_int_equal(firn_title_value_read(page, "packed on", value), FIRN_OK);
+    assert_string_equal(value, "1970-01-02T00:00:00Z");
+    assert_int_equal(firn_title_value_read(page, "custodian", value), FIRN_END);
+    assert_string_equal(value, "");
+    assert_int_equal(firn_title_value_read(page, "pack", value), FIRN_END);
+    (void)state;
+}
+
+/* A page as a broken medium gives it: no value runs away, and none carries a control character out. */
+static void title_values_of_broken_pages(void **state)
+{
+    uint8_t page[FIRN_TITLE_PAGE_BYTES];
+    char value[FIRN_TITLE_VALUE_ROOM];
+
+    memset(page, 'x', sizeof page);
+    assert_int_equal(firn_title_value_read(page, "title", value), FIRN_END);
+    memset(page, ' ', sizeof page);
+    assert_int_equal(firn_title_value_read(page, "title", value), FIRN_END);
+    for (size_t i = 0; i + 80 <= sizeof page; i += 80)
+        memcpy(page + i, i == 0 ? "\n  title       \x1B[2J\xFF" : "\n              more", 20);
+    page[sizeof page - 1] = '\n';
+    assert_int_equal(firn_title_value_read(page, "title", value), FIRN_NO_ROOM);
+    assert_memory_equal(value, "?[2J?", 5);
+    assert_int_equal(strlen(value), FIRN_TITLE_VALUE_ROOM - 1);
+    memcpy(page, "HOW IT IS LAID OUT\n", 19);
+    assert_int_equal(firn_title_value_read(page, "title", value), FIRN_END);
+    (void)state;
+}
+
 int main(void)
 {
     const struct CMUnitTest tests[] = {
         cmocka_unit_test(record_headers), cmocka_unit_test(record_spans), cmocka_unit_test(segment_heads),
-        cmocka_unit_test(entries), cmocka_unit_test(absurd_entries_are_refused), cmocka_unit_test(sums),
+        cmocka_unit_test(entries), cmocka_unit_test(headers_are_filled),
+        cmocka_unit_test(absurd_entries_are_refused), cmocka_unit_test(sums),
         cmocka_unit_test(index_parts), cmocka_unit_test(digests), cmocka_unit_test(title_pages),
+        cmocka_unit_test(title_values), cmocka_unit_test(title_values_of_broken_pages),
     };
 
     return cmocka_run_group_tests_name("formats", tests, NULL, NULL);

@@ -279,13 +279,14 @@ static void catalogue(void **state)
     static const struct { const char *label, *path; char type; uint64_t size, stored; unsigned extents; } cases[] = {
         { "entry-folder:", "d/", '5', 0, 0, 0 },
         { "entry-file:", "d/a.nt", '0', 37, 37, 1 },
-        { "entry-holes:", "d/a.nt", '0', 1000000, 8192, 2 }
+        { "entry-holes:", "d/a.nt", '0', 1000000, 8192, 2 },
+        { "entry-slim:", "a", '0', 3, 3, 1 }
     };
     char *text = page("vectors/catalogue.txt");
     byte bytes[2048], index[2048];
 
     (void)state;
-    for (size_t i = 0; i < 3; i++) {
+    for (size_t i = 0; i < 4; i++) {
         size_t count = pages_labelled(text, cases[i].label, bytes, sizeof bytes);
         struct item item = { 0 };
         uint64_t stored;
