@@ -1213,7 +1213,7 @@ struct item {
     uint64_t number, content_at, size;
     const byte *pax, *extents; /* of these 16 bytes each */
     uint32_t pax_bytes, extent_count;
-    bool has_content, listed;
+    bool has_content, listed, in_front;
     char ustar_path[257], ustar_link[101];
     const char *path, *link; /* not ended by a zero */
     size_t path_bytes, link_bytes;
@@ -1341,6 +1341,7 @@ static size_t read_entry(byte *entry, size_t left, struct item *item, uint64_t *
     item->size = get(entry + 16, 8);
     item->has_content = (flags & 1) != 0;
     item->listed = (flags & 2) != 0;
+    item->in_front = (flags & 8) != 0;
     if (bytes > left || bytes > 2097152 || item->extent_count > 65536 || (!item->listed && item->extent_count > 0) ||
         24 + 16 * (uint64_t)item->extent_count + item->pax_bytes != bytes)
         return 0;
@@ -1626,10 +1627,23 @@ static void miss(struct task *task, uint64_t from, uint64_t to)
     task->unknown += from < to ? to - from : 0;
 }
 
+/* How much of a batch's content lies in front of the rest. */
+static uint64_t front_of(byte *entries, size_t bytes, uint64_t items)
+{
+    uint64_t front = 0, stored;
+    struct item item;
+    for (size_t at = 0, step; items > 0; items--, at += step) {
+        step = read_entry(entries + at, bytes - at, &item, &stored);
+        if (step == 0) break;
+        front += item.in_front ? stored : 0;
+    }
+    return front;
+}
+
 /* Items in the order of their numbers, each from the first copy of its batch that is whole. */
 static void do_items(struct container *c, struct task *task)
 {
-    uint64_t next = 0, items, place, stored;
+    uint64_t next = 0, items, place, front, stored;
     size_t bytes, step;
     for (size_t r = 0; r < c->batches.count && !task->failed; r++) {
         const struct ref *ref = &c->batches.refs[r];
@@ -1637,13 +1651,16 @@ static void do_items(struct container *c, struct task *task)
         if (entries == NULL) continue;
         miss(task, next, ref->key);
         next = ref->key;
+        front = place;
+        place += front_of(entries, bytes, items);
         for (size_t at = 0; items > 0 && !task->failed; items--, at += step) {
-            struct item item = { .number = next, .content_at = place };
+            struct item item = { .number = next };
             step = read_entry(entries + at, bytes - at, &item, &stored);
             if (step == 0) break;
+            item.content_at = item.in_front ? front : place;
+            *(item.in_front ? &front : &place) += stored;
             do_item(c, task, &item);
             next++;
-            place += stored;
         }
         free(entries);
     }

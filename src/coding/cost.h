@@ -7,6 +7,8 @@
 #ifndef FIRN_CODING_COST_H
 #define FIRN_CODING_COST_H
 
+#include "base/log2.h"
+
 #include <stddef.h>
 #include <stdint.h>
 
@@ -25,14 +27,8 @@ void firn_cost_prepare(struct firn_cost_logs *logs);
 /* 64 log2(n), n >= 1, by the nine leading bits of n. */
 static inline uint32_t firn_cost_log(const struct firn_cost_logs *logs, uint32_t n)
 {
-    uint32_t whole = 0;
+    uint32_t whole = firn_log2(n);
 
-#if defined(__GNUC__)
-    whole = 31u - (uint32_t)__builtin_clz(n);
-#else
-    for (uint32_t rest = n; rest > 1; rest >>= 1)
-        whole++;
-#endif
     return whole * FIRN_COST_BIT + logs->part[((uint64_t)n << 32 >> whole >> 24) & (FIRN_COST_LOG_STEPS - 1)];
 }
 

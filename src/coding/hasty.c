@@ -7,6 +7,7 @@
 #include "coding/repeats.h"
 
 #include "base/bytes.h"
+#include "base/log2.h"
 
 #include <string.h>
 
@@ -34,19 +35,6 @@ struct find {
 static uint32_t hash_of(const uint8_t *at)
 {
     return firn_bytes_get32(at) * 2654435761u >> (32 - FIRN_HASTY_HASH_BITS);
-}
-
-static int log_of(uint32_t distance)
-{
-#if defined(__GNUC__)
-    return 31 - __builtin_clz(distance);
-#else
-    int log = 0;
-
-    for (; distance > 1; distance >>= 1)
-        log++;
-    return log;
-#endif
 }
 
 /* Puts the place into the table; returns the place before of the same hash, plus one. */
@@ -82,7 +70,7 @@ static struct find look(struct hasty *h, size_t at)
         if (firn_bytes_get32(h->raw + other) == word &&
             (best.length == 0 || best.length >= most || h->raw[other + best.length] == here[best.length])) {
             uint32_t length = HASHED + firn_repeats_equal(here + HASHED, h->raw + other + HASHED, most - HASHED);
-            int worth = (int)(6 * length) - log_of((uint32_t)(at - other)) - 8;
+            int worth = (int)(6 * length) - (int)firn_log2((uint32_t)(at - other)) - 8;
 
             if (worth > best.worth)
                 best = (struct find){ length, (uint32_t)(at - other), worth };

@@ -12,6 +12,7 @@
 
 #include "coding/contexts.h"
 
+#include "base/log2.h"
 #include "firn/status.h"
 
 #include <stdbool.h>
@@ -85,14 +86,8 @@ static inline unsigned firn_matched_distance_symbol(uint32_t distance, unsigned 
                                                     uint32_t *more)
 {
     uint32_t far = (distance - 1) >> fine, near = (distance - 1) & ((1u << fine) - 1), high = far + 2;
-    unsigned exponent = 0;
+    unsigned exponent = firn_log2(high);
 
-#if defined(__GNUC__)
-    exponent = 31u - (unsigned)__builtin_clz(high);
-#else
-    for (uint32_t rest = high; rest > 1; rest >>= 1)
-        exponent++;
-#endif
     *more_bits = exponent - 1;
     *more = high & ((1u << (exponent - 1)) - 1);
     return FIRN_MATCHED_RECENT + ((2 * (exponent - 1) + (high >> (exponent - 1) & 1)) << fine) + near;

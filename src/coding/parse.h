@@ -18,7 +18,7 @@
 
 enum {
     FIRN_PARSE_WINDOW = 1 << 15,
-    FIRN_PARSE_REACH = 96,             /* matches so long or longer are taken at once */
+    FIRN_PARSE_REACH = 160,            /* matches so long or longer are taken at once */
     FIRN_PARSE_WAYS = 3,               /* kept to each place: a dearer one may leave a better distance to recall */
     FIRN_PARSE_COMMANDS_MAX = FIRN_SEGMENT_RAW_MAX / FIRN_MATCHED_LENGTH_MIN + 1
 };

@@ -17,6 +17,13 @@ enum {
     PIECES = 64,
     PIECE_BYTES = 512,
     FEWEST_BYTES = 2 * PIECES * PIECE_BYTES,
+    GLANCE_BYTES = 1 << 16,
+    PACKED_LEAST_BYTES = 128,
+    SHORT_BYTES = 2000,
+    PACKED = 486,                                  /* bits a byte in 1/64: 7.6 */
+    PACKED_SHORT = 378,                            /* 5.9 */
+    EVEN_BITS = 505,                               /* 7.9 */
+    MILLER = 46,                                   /* 1 / (2 ln 2) bits for each symbol but one */
     PIECE_SQUARES_MAX = 1534 + 5 * 2 * 23,
     SAMPLE_SQUARES_MAX = 4226944 + 6 * 2 * 1448
 };
@@ -43,4 +50,25 @@ bool firn_sample_is_even(const uint8_t *raw, size_t raw_bytes)
     for (size_t b = 0; b < 256; b++)
         squares += (uint64_t)sum[b] * sum[b];
     return squares <= SAMPLE_SQUARES_MAX;
+}
+
+bool firn_sample_is_packed(const struct firn_cost_logs *logs, const uint8_t *raw, size_t raw_bytes)
+{
+    size_t count = raw_bytes < GLANCE_BYTES ? raw_bytes : GLANCE_BYTES;
+    uint32_t counts[256], all, most;
+    uint64_t sum = 0, distinct = 0;
+
+    if (count < PACKED_LEAST_BYTES)
+        return false;
+    firn_histogram_count(raw, count, counts);
+    all = firn_cost_log(logs, (uint32_t)count);
+    for (size_t b = 0; b < 256; b++)
+        if (counts[b] != 0) {
+            sum += (uint64_t)counts[b] * (all - firn_cost_log(logs, counts[b]));
+            distinct++;
+        }
+    if (sum + MILLER * (distinct - 1) > (uint64_t)PACKED * count)
+        return true;
+    most = all < EVEN_BITS ? all : EVEN_BITS;
+    return count < SHORT_BYTES && sum > (uint64_t)PACKED_SHORT * count && 100 * sum > 93 * (uint64_t)most * count;
 }

@@ -9,6 +9,8 @@
 #ifndef FIRN_CODING_SAMPLE_H
 #define FIRN_CODING_SAMPLE_H
 
+#include "coding/cost.h"
+
 #include <stdbool.h>
 #include <stddef.h>
 #include <stdint.h>
@@ -19,5 +21,12 @@
  * could then save less than a thousandth. False for fewer than 64 KiB.
  */
 bool firn_sample_is_even(const uint8_t *raw, size_t raw_bytes);
+
+/*
+ * True when a file, or its beginning, looks packed by the entropy of its bytes, with G. A. Miller's correction for
+ * short samples (1955, from memory): more than 7.6 bits a byte, or nearly all that so few bytes can have. A guess that
+ * decides who is whose neighbour, and nothing else. `logs` is prepared.
+ */
+bool firn_sample_is_packed(const struct firn_cost_logs *logs, const uint8_t *raw, size_t raw_bytes);
 
 #endif

@@ -12,6 +12,7 @@
 
 #include "coding/contexts.h"
 
+#include "base/log2.h"
 #include "firn/segment.h"
 #include "firn/status.h"
 
@@ -135,17 +136,12 @@ static inline uint32_t firn_samples_unfold(uint32_t folded)
  */
 static inline unsigned firn_samples_token(uint32_t folded, unsigned *more_bits)
 {
-    unsigned exponent = 0;
+    unsigned exponent;
 
     *more_bits = 0;
     if (folded < 16)
         return folded;
-#if defined(__GNUC__)
-    exponent = 31u - (unsigned)__builtin_clz(folded);
-#else
-    for (uint32_t rest = folded; rest > 1; rest >>= 1)
-        exponent++;
-#endif
+    exponent = firn_log2(folded);
     *more_bits = exponent - 2;
     return 4 * exponent + (folded >> (exponent - 2) & 3);
 }

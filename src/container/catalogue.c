@@ -9,7 +9,7 @@
 #include "guard/hash.h"
 
 enum { SEALED_AT = FIRN_HASH_BYTES };      /* a sealed body is the hash of the rest, then the rest */
-enum { FLAG_CONTENT = 1, FLAG_EXTENTS = 2, FLAG_SLIM = 4 };
+enum { FLAG_CONTENT = 1, FLAG_EXTENTS = 2, FLAG_SLIM = 4, FLAG_FRONT = 8, FLAGS = 15 };
 
 /* Holes are digested as zeros; beyond this, a few bytes of catalogue could keep a reader busy for days. */
 #define HOLE_BYTES_MAX (UINT64_C(1) << 43)
@@ -172,12 +172,47 @@ enum firn_status firn_catalogue_decode_batch(const struct firn_catalogue_batch *
     return FIRN_OK;
 }
 
+void firn_catalogue_move_to_front(uint8_t *entry)
+{
+    firn_bytes_put32(entry + 12, firn_bytes_get32(entry + 12) | FLAG_FRONT);
+}
+
+/* Stored bytes that an entry tells of, sound or not: what is not is met again when the entry is read. */
+static uint64_t stored_bytes_of(const uint8_t *entry)
+{
+    const uint8_t *at = entry + FIRN_CATALOGUE_ENTRY_HEAD_BYTES;
+    uint64_t stored = 0;
+
+    if ((firn_bytes_get32(entry + 12) & FLAG_EXTENTS) == 0)
+        return firn_bytes_get64(entry + 16);
+    for (uint32_t i = firn_bytes_get32(entry + 8); i > 0; i--, at += FIRN_CATALOGUE_EXTENT_BYTES)
+        stored += firn_bytes_get64(at + 8);
+    return stored;
+}
+
+/* Content of the entries that lie in front. */
+static uint64_t front_bytes(const uint8_t *raw, size_t left)
+{
+    uint64_t bytes = 0;
+
+    while (sizes_agree(raw, left)) {
+        size_t entry = firn_bytes_get32(raw);
+
+        if ((firn_bytes_get32(raw + 12) & FLAG_FRONT) != 0)
+            bytes += stored_bytes_of(raw);
+        raw += entry;
+        left -= entry;
+    }
+    return bytes;
+}
+
 void firn_catalogue_cursor_start(const struct firn_catalogue_batch *batch, const uint8_t *raw,
                                  struct firn_item_extent *extents, struct firn_catalogue_cursor *cursor)
 {
     *cursor = (struct firn_catalogue_cursor){
         .raw = raw, .left = batch->raw_bytes, .items_left = batch->items, .number = batch->first_item,
-        .content_at = batch->content_at, .extents = extents
+        .front_at = batch->content_at, .content_at = batch->content_at + front_bytes(raw, batch->raw_bytes),
+        .extents = extents
     };
 }
 
@@ -201,6 +236,7 @@ enum firn_status firn_catalogue_next(struct firn_catalogue_cursor *cursor, struc
 {
     const uint8_t *raw = cursor->raw;
     size_t entry, extents;
+    uint64_t *at;
     uint32_t flags;
 
     if (cursor->items_left == 0)
@@ -212,11 +248,11 @@ enum firn_status firn_catalogue_next(struct firn_catalogue_cursor *cursor, struc
     extents = firn_bytes_get32(raw + 8);
     *item = (struct firn_item){
         .number = cursor->number, .pax_bytes = firn_bytes_get32(raw + 4), .has_content = (flags & FLAG_CONTENT) != 0,
-        .bytes = firn_bytes_get64(raw + 16), .extent_count = extents, .content_at = cursor->content_at
+        .bytes = firn_bytes_get64(raw + 16), .extent_count = extents
     };
-    if (flags > (FLAG_CONTENT | FLAG_EXTENTS | FLAG_SLIM) || (extents > 0 && (flags & FLAG_EXTENTS) == 0) ||
+    if (flags > FLAGS || (extents > 0 && (flags & FLAG_EXTENTS) == 0) ||
         item->bytes > UINT64_MAX / 4 ||
-        (!item->has_content && (item->bytes > 0 || (flags & FLAG_EXTENTS) != 0)))
+        (!item->has_content && (item->bytes > 0 || (flags & (FLAG_EXTENTS | FLAG_FRONT)) != 0)))
         return FIRN_BAD_DATA;
     if (!read_extents(cursor, raw, (flags & FLAG_EXTENTS) != 0, item))
         return FIRN_BAD_DATA;
@@ -225,8 +261,10 @@ enum firn_status firn_catalogue_next(struct firn_catalogue_cursor *cursor, struc
     cursor->left -= entry;
     cursor->items_left--;
     cursor->number++;
-    cursor->content_at += item->stored_bytes;
-    return cursor->content_at > UINT64_MAX / 2 ? FIRN_BAD_DATA : FIRN_OK;
+    at = (flags & FLAG_FRONT) != 0 ? &cursor->front_at : &cursor->content_at;
+    item->content_at = *at;
+    *at += item->stored_bytes;
+    return item->content_at > UINT64_MAX / 2 || *at > UINT64_MAX / 2 ? FIRN_BAD_DATA : FIRN_OK;
 }
 
 void firn_catalogue_put_sums(const struct firn_catalogue_sum *sums, uint32_t count, uint8_t *body)

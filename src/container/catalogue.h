@@ -29,6 +29,9 @@ enum {
 size_t firn_catalogue_entry_bytes(const struct firn_item *item);
 void firn_catalogue_put_entry(const struct firn_item *item, uint8_t *entry);
 
+/* The content of an entry that was put lies in front of that of all others of the batch, in order among its like. */
+void firn_catalogue_move_to_front(uint8_t *entry);
+
 /* --- the head of a batch --- */
 
 struct firn_catalogue_batch {
@@ -52,7 +55,8 @@ struct firn_catalogue_cursor {
     const uint8_t *raw;
     size_t left;
     uint32_t items_left;
-    uint64_t number, content_at;
+    uint64_t number;
+    uint64_t front_at, content_at;         /* where the next content lies, of an item in front and of any other */
     struct firn_item_extent *extents;      /* lent: FIRN_ITEM_EXTENTS_MAX of them */
 };
 void firn_catalogue_cursor_start(const struct firn_catalogue_batch *batch, const uint8_t *raw,

@@ -7,13 +7,16 @@
 #include "firn/segment.h"
 #include "guard/hash.h"
 
-enum { SLOTS = 8 };      /* 8 MiB raw and as much coded: the window of the writer */
+enum { AHEAD_MAX = 8, SLOTS = AHEAD_MAX + 4 };     /* MiB raw, and as much coded */
 
 struct slot {
     uint8_t *body, *raw;
     struct firn_catalogue_place place;
     enum firn_status status;
     uint64_t container_at;
+    bool held;                         /* it has place number `index` of the part */
+    size_t index;
+    uint64_t used;                     /* when it was asked for last */
 };
 
 struct firn_decoder {
@@ -22,7 +25,9 @@ struct firn_decoder {
     struct firn_threads *threads;
     uint8_t *work;                     /* decoder work, one for each worker */
     struct slot slots[SLOTS];
-    size_t first, count;               /* slots hold places[first .. first + count) */
+    uint64_t clock;
+    struct slot *job[AHEAD_MAX];       /* slots to be decoded by the threads */
+    size_t jobs;
     size_t ahead;                      /* how many to read next time */
 };
 
@@ -78,7 +83,8 @@ void firn_decoder_free(struct firn_decoder *decoder)
 
 void firn_decoder_forget(struct firn_decoder *decoder)
 {
-    decoder->first = decoder->count = 0;
+    for (size_t i = 0; i < SLOTS; i++)
+        decoder->slots[i].held = false;
 }
 
 /* Reads the body of a place. What is wrong with it stands in the slot; returned are only reasons to give up. */
@@ -109,7 +115,7 @@ static enum firn_status read_slot(struct firn_decoder *decoder, const struct fir
 static void decode_slot(void *self, size_t index, unsigned worker)
 {
     struct firn_decoder *decoder = self;
-    struct slot *slot = &decoder->slots[index];
+    struct slot *slot = decoder->job[index];
     uint8_t *work = decoder->work + worker * firn_segment_decode_work_bytes();
 
     if (slot->status != FIRN_OK)
@@ -121,42 +127,69 @@ static void decode_slot(void *self, size_t index, unsigned worker)
         slot->status = FIRN_MISMATCH;
 }
 
-/* Reads on doubles while places are asked for in order, so that a single wanted item does not cost its neighbours. */
+static struct slot *find(struct firn_decoder *decoder, size_t index)
+{
+    for (size_t i = 0; i < SLOTS; i++)
+        if (decoder->slots[i].held && decoder->slots[i].index == index)
+            return &decoder->slots[i];
+    return NULL;
+}
+
+/* The slot that was not used for longest. */
+static struct slot *oldest(struct firn_decoder *decoder)
+{
+    struct slot *found = &decoder->slots[0];
+
+    for (size_t i = 1; i < SLOTS; i++)
+        if (decoder->slots[i].used < found->used)
+            found = &decoder->slots[i];
+    return found;
+}
+
+/*
+ * Reads on doubles while places are asked for in order, so that a single wanted item does not cost its neighbours.
+ * Items take turns between two stretches of a part; there are slots enough to keep where the other one stands.
+ */
 static enum firn_status load(struct firn_decoder *decoder, const struct firn_catalogue_place *places, size_t count,
                              size_t index)
 {
-    bool in_order = index == decoder->first + decoder->count;
-    size_t left = count - index;
+    bool in_order = index > 0 && find(decoder, index - 1) != NULL;
 
     decoder->ahead = in_order ? 2 * decoder->ahead : 1;
-    decoder->ahead = decoder->ahead < SLOTS ? decoder->ahead : SLOTS;
-    decoder->first = index;
-    decoder->count = 0;
-    while (decoder->count < decoder->ahead && decoder->count < left) {
-        enum firn_status status = read_slot(decoder, &places[index + decoder->count], &decoder->slots[decoder->count]);
+    decoder->ahead = decoder->ahead < AHEAD_MAX ? decoder->ahead : AHEAD_MAX;
+    decoder->jobs = 0;
+    for (size_t k = index; k < count && k - index < decoder->ahead && find(decoder, k) == NULL; k++) {
+        struct slot *slot = oldest(decoder);
+        enum firn_status status;
 
+        slot->held = false;
+        status = read_slot(decoder, &places[k], slot);
         if (status != FIRN_OK) {
-            decoder->count = 0;
+            firn_decoder_forget(decoder);
             return status;
         }
-        decoder->count++;
+        slot->held = true;
+        slot->index = k;
+        slot->used = ++decoder->clock;
+        decoder->job[decoder->jobs++] = slot;
     }
-    firn_threads_run(decoder->threads, decode_slot, decoder, decoder->count);
+    firn_threads_run(decoder->threads, decode_slot, decoder, decoder->jobs);
     return FIRN_OK;
 }
 
 enum firn_status firn_decoder_get(struct firn_decoder *decoder, const struct firn_catalogue_place *places, size_t count,
                                   size_t index, struct firn_decoder_segment *segment)
 {
-    const struct slot *slot;
+    struct slot *slot = find(decoder, index);
 
-    if (index - decoder->first >= decoder->count) {
+    if (slot == NULL) {
         enum firn_status status = load(decoder, places, count, index);
 
         if (status != FIRN_OK)
             return status;
+        slot = find(decoder, index);
     }
-    slot = &decoder->slots[index - decoder->first];
+    slot->used = ++decoder->clock;
     *segment = (struct firn_decoder_segment){
         .raw = slot->raw, .coded = slot->body + FIRN_CATALOGUE_SEGMENT_HEAD_BYTES,
         .coded_bytes = slot->place.body_bytes - FIRN_CATALOGUE_SEGMENT_HEAD_BYTES, .container_at = slot->container_at

@@ -73,6 +73,7 @@ static enum firn_status keep_item(struct walk *walk, const struct firn_item *ite
     walk->item.pax = walk->pax;
     walk->item.extents = walk->extents;
     walk->stored_at = walk->extent_at = walk->digested = 0;
+    walk->place = 0;                   /* contents need not lie in the order of items */
     walk->extent = 0;
     walk->outcome = (struct firn_reader_outcome){ .lost_bytes = 0 };
     return FIRN_OK;

@@ -4,6 +4,7 @@
 
 #include "base/limits.h"
 #include "base/memory.h"
+#include "container/arrange.h"
 #include "guard/hash.h"
 
 enum { ENTRIES_ROOM = FIRN_WINDOW_ENTRY_BYTES + FIRN_LIMIT_ENTRY_BYTES };
@@ -49,7 +50,7 @@ void firn_window_free(struct firn_window *window)
 void firn_window_clear(struct firn_window *window)
 {
     window->raw_used = window->cut_from = window->cut_count = 0;
-    window->entries_used = window->piece_count = window->sum_count = 0;
+    window->entries_used = window->piece_count = window->sum_count = window->item_count = 0;
     window->batch = (struct firn_catalogue_batch){ .items = 0 };
 }
 
@@ -69,7 +70,7 @@ void firn_window_mark(const struct firn_window *window, struct firn_window_mark 
 {
     *mark = (struct firn_window_mark){
         .raw_used = window->raw_used, .cut_from = window->cut_from, .cut_count = window->cut_count,
-        .entries_used = window->entries_used, .sum_count = window->sum_count,
+        .entries_used = window->entries_used, .sum_count = window->sum_count, .item_count = window->item_count,
         .cut_content_at = window->cut_content_at, .items = window->batch.items
     };
 }
@@ -81,6 +82,7 @@ void firn_window_return(struct firn_window *window, const struct firn_window_mar
     window->cut_count = mark->cut_count;
     window->entries_used = mark->entries_used;
     window->sum_count = mark->sum_count;
+    window->item_count = mark->item_count;
     window->cut_content_at = mark->cut_content_at;
     window->batch.items = mark->items;
 }
@@ -103,6 +105,7 @@ void firn_window_add_entry(struct firn_window *window, const struct firn_item *i
         window->batch.first_item = item->number;
         window->batch.content_at = item->content_at;
     }
+    window->entry_at = window->entries_used;
     firn_catalogue_put_entry(item, window->entries + window->entries_used);
     window->entries_used += firn_catalogue_entry_bytes(item);
     window->batch.items++;
@@ -125,6 +128,14 @@ size_t firn_window_add_content(struct firn_window *window, const uint8_t *bytes,
             firn_window_cut_here(window, window->cut_content_at + FIRN_SEGMENT_RAW_MAX);
     }
     return added;
+}
+
+void firn_window_item_whole(struct firn_window *window, size_t raw_bytes)
+{
+    if (raw_bytes > 0)
+        window->items[window->item_count++] = (struct firn_window_item){
+            .entry_at = window->entry_at, .raw_at = window->raw_used - raw_bytes, .raw_bytes = raw_bytes
+        };
 }
 
 enum firn_status firn_window_add_sum(struct firn_window *window, const struct firn_catalogue_sum *sum)
@@ -155,6 +166,7 @@ size_t firn_window_close(struct firn_window *window)
     uint8_t *to = window->coded;
 
     firn_window_cut_here(window, 0);
+    firn_arrange(window);
     for (size_t i = 0; i < window->cut_count; i++) {
         window->cuts[i].coded = to;
         to += window->cuts[i].raw_bytes + slack;

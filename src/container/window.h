@@ -19,6 +19,7 @@ enum {
     FIRN_WINDOW_ENTRY_BYTES = 1 << 20,      /* entries that fill a window; one more entry may go over it */
     FIRN_WINDOW_CUTS = 64,                  /* a cut is ended only when a large item begins or ends, or at 1 MiB */
     FIRN_WINDOW_LARGE_BYTES = 256 << 10,    /* a file of this size starts its own segment */
+    FIRN_WINDOW_ITEMS = FIRN_WINDOW_ENTRY_BYTES / (FIRN_CATALOGUE_ENTRY_HEAD_BYTES + 512) + 2,
     FIRN_WINDOW_PIECES = 4                  /* 1 MiB pieces of entries: 1 MiB and one entry of at most 2 MiB */
 };
 
@@ -32,6 +33,11 @@ struct firn_window_cut {
     size_t coded_bytes;
 };
 
+/* An item whose content lies whole in the window, and is not empty. */
+struct firn_window_item {
+    size_t entry_at, raw_at, raw_bytes;
+};
+
 struct firn_window {
     const struct firn_memory *memory;
     uint8_t *raw, *coded;                   /* content, and room for it coded */
@@ -39,6 +45,8 @@ struct firn_window {
     uint64_t cut_content_at;                /* where the open cut begins in content space */
     struct firn_window_cut cuts[FIRN_WINDOW_CUTS];
     size_t cut_count;
+    struct firn_window_item items[FIRN_WINDOW_ITEMS];
+    size_t item_count, entry_at;            /* entry_at: of the latest */
     uint8_t *entries, *entries_coded;
     size_t entries_used;
     struct firn_window_cut pieces[FIRN_WINDOW_PIECES];
@@ -50,7 +58,7 @@ struct firn_window {
 
 /* Where a window stood when an item began. */
 struct firn_window_mark {
-    size_t raw_used, cut_from, cut_count, entries_used, sum_count;
+    size_t raw_used, cut_from, cut_count, entries_used, sum_count, item_count;
     uint64_t cut_content_at;
     uint32_t items;
 };
@@ -77,12 +85,18 @@ void firn_window_add_entry(struct firn_window *window, const struct firn_item *i
 /* Adds as much of the content as fits before the window is full; returns how much. */
 size_t firn_window_add_content(struct firn_window *window, const uint8_t *bytes, size_t count);
 
+/* The latest entry's content is whole: its last raw_bytes, all in this window. */
+void firn_window_item_whole(struct firn_window *window, size_t raw_bytes);
+
 enum firn_status firn_window_add_sum(struct firn_window *window, const struct firn_catalogue_sum *sum);
 
 /* Moves the open cut, unfinished, into an empty window. */
 void firn_window_carry(struct firn_window *from, struct firn_window *to);
 
-/* Ends the open cut, lays out all cuts and pieces for coding; returns the number of jobs for firn_window_code. */
+/*
+ * Ends the open cut, moves packed small files to the front (container/arrange.h), lays out all cuts and pieces for
+ * coding; returns the number of jobs for firn_window_code.
+ */
 size_t firn_window_close(struct firn_window *window);
 
 /*

@@ -475,6 +475,8 @@ enum firn_status firn_writer_end(struct firn_writer *writer, uint8_t *sha256)
         writer->totals.content_bytes += writer->item.bytes;
         writer->totals.stored_bytes += writer->item.stored_bytes;
     }
+    if (writer->item_serial == writer->filling_serial)
+        firn_window_item_whole(writer->filling, (size_t)writer->item.stored_bytes);
     leave_item(writer);
     return status == FIRN_OK ? FIRN_OK : firn_fault_tell(writer->fault, status, 0, 0, "the digests of items");
 }

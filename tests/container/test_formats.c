@@ -187,7 +187,7 @@ static void headers_are_filled(void **state)
 static const struct { const char *what; size_t at; uint8_t byte; } absurd[] = {
     { "entry shorter than its parts", 0, 1 }, { "entry of half a gigabyte", 3, 0x20 }, { "no pax header", 5, 0 },
     { "pax header of 513 bytes", 4, 1 }, { "pax header of 16 MiB", 7, 1 }, { "an extent that is not there", 8, 1 },
-    { "16 million extents", 11, 1 }, { "unknown flag", 12, 9 }, { "flag without content", 12, 2 },
+    { "16 million extents", 11, 1 }, { "unknown flag", 12, 17 }, { "flag without content", 12, 2 },
     { "content without its flag", 12, 0 }, { "an exbibyte and more", 23, 0x7F }, { "hole of 2^55 bytes", 22, 0x80 },
 };
 

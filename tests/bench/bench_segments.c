@@ -1,13 +1,13 @@
 /*
- * tests/bench/density.c - how dense and how fast: firn's segments beside the libraries', in one run, as a table
+ * tests/bench/bench_segments.c - how dense and how fast: firn's segments beside the libraries', in one run, as a table
  *
- * Usage: density [--every N] [--only NAME,...] FOLDER...
+ * Usage: bench_segments [--ratios] [--speeds] [--every N] [--only NAME,...] FOLDER...
  *
  * Each folder is a class of the corpus; its files, in the order of their names, are cut into segments of at most 1 MiB
  * that are coded one by one through each coder's C API, one thread, and decoded and compared. Files below 4 KiB are
- * joined end to end (bundles). --every N takes every N-th segment only. The listing's hash (FNV-1a, 64 bits, over names
- * and contents of what was measured) says whether two tables are about the same bytes. Times are processor time, of one
- * pass; of decoding, the best of three.
+ * joined end to end (bundles). --ratios and --speeds print one of the two tables only. --every N takes every N-th
+ * segment only. The listing's hash (FNV-1a, 64 bits, over names and contents of what was measured) says whether two
+ * tables are about the same bytes. Times are processor time, of one pass; of decoding, the best of three.
  *
  * SPDX-License-Identifier: BSD-2-Clause
  */
@@ -40,7 +40,7 @@ static double now(void)
 static void stop_if(bool wrong, const char *what)
 {
     if (wrong) {
-        fprintf(stderr, "density: %s\n", what);
+        fprintf(stderr, "bench_segments: %s\n", what);
         exit(1);
     }
 }
@@ -261,7 +261,7 @@ static void speeds(const char *title, const struct sum *of, bool in)
     printf("\n");
 }
 
-static void table(size_t classes, char **names)
+static void table(size_t classes, char **names, bool ratios, bool times)
 {
     printf("zlib %s, zstd %s, lzma %s, brotli %u.%u.%u; every %zu; corpus %016llx\n%-22s", zlibVersion(),
            ZSTD_versionString(), lzma_version_string(), BrotliEncoderVersion() >> 24,
@@ -270,15 +270,15 @@ static void table(size_t classes, char **names)
         if (wanted[c])
             printf(" %10s", coders[c].name);
     printf("\n");
-    for (size_t k = 0; k <= classes; k++)
+    for (size_t k = 0; ratios && k <= classes; k++)
         rows(k < classes ? names[k] : "all", sums[k < classes ? k : CLASSES_MAX]);
-    for (size_t k = 0; k <= classes; k++) {
+    for (size_t k = 0; times && k <= classes; k++) {
         char title[64];
 
         snprintf(title, sizeof title, "in MB/s %s", k < classes ? names[k] : "all");
         speeds(title, sums[k < classes ? k : CLASSES_MAX], true);
     }
-    for (size_t k = 0; k <= classes; k++) {
+    for (size_t k = 0; times && k <= classes; k++) {
         char title[64];
 
         snprintf(title, sizeof title, "out MB/s %s", k < classes ? names[k] : "all");
@@ -300,6 +300,7 @@ int main(int argc, char **argv)
 {
     char *names[CLASSES_MAX];
     size_t classes = 0;
+    bool ratios = false, times = false;
 
     encode_work = aligned_alloc(64, (firn_segment_encode_work_bytes() + 63) / 64 * 64);
     decode_work = aligned_alloc(64, (firn_segment_decode_work_bytes() + 63) / 64 * 64);
@@ -313,6 +314,10 @@ int main(int argc, char **argv)
             choose(argv[++a]);
         } else if (strcmp(argv[a], "--loud") == 0) {
             loud = true;
+        } else if (strcmp(argv[a], "--ratios") == 0) {
+            ratios = true;
+        } else if (strcmp(argv[a], "--speeds") == 0) {
+            times = true;
         } else {
             char *slash = strrchr(argv[a], '/');
 
@@ -328,8 +333,9 @@ int main(int argc, char **argv)
             classes++;
         }
     }
-    stop_if(classes == 0, "usage: density [--every N] [--only NAME,...] [--loud] FOLDER...");
-    table(classes, names);
+    stop_if(classes == 0,
+            "usage: bench_segments [--ratios] [--speeds] [--every N] [--only NAME,...] [--loud] FOLDER...");
+    table(classes, names, ratios || !times, times || !ratios);
     free(encode_work);
     free(decode_work);
     return 0;
