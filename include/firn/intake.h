@@ -48,6 +48,12 @@ struct firn_intake_finding {
     const char *detail;           /* a phrase, or "" */
 };
 
+/* Digests beyond SHA-256 that may be asked for, as donors' manifests have them; they are not stored. */
+enum firn_intake_digest { FIRN_INTAKE_SHA512 = 1, FIRN_INTAKE_SHA1 = 2, FIRN_INTAKE_MD5 = 4 };
+
+/* Of a file, holes as zeros; what was not asked for is zero. */
+struct firn_intake_digests { uint8_t sha512[64], sha1[20], md5[16]; };
+
 /* An item that was stored. */
 struct firn_intake_item {
     const char *name;             /* stored name */
@@ -56,6 +62,7 @@ struct firn_intake_item {
     uint64_t bytes;               /* of the file, holes included */
     const char *link;             /* target of a hard link (a stored name), else NULL */
     const uint8_t *sha256;        /* of a regular file, or of the file a hard link leads to when known; else NULL */
+    const struct firn_intake_digests *digests;      /* of a regular file, when any were asked for; else NULL */
 };
 
 struct firn_intake_file { uint64_t device, inode; };
@@ -66,6 +73,7 @@ struct firn_intake_options {
     struct firn_pattern *exclude;              /* items whose stored names it matches are left out */
     const struct firn_intake_file *own;        /* files never to be taken in: the container being written */
     size_t own_count;
+    unsigned digests;                          /* enum firn_intake_digest, or'ed */
     bool keep_beginning;                       /* of a damaged archive: what came before the damage is kept */
     void *self;
     void (*finding)(void *self, const struct firn_intake_finding *finding);
@@ -100,8 +108,9 @@ FIRN_API uint64_t firn_intake_left_out(const struct firn_intake_report *report);
  *         count once each time then, and bytes are those that the files claim.
  * report  always filled in
  *
- * FIRN_OK also when there are findings; FIRN_NO_MEMORY; FIRN_STOPPED; FIRN_BAD_ARGUMENT for an empty path; what the
- * writer's calls return. The writer is not finished.
+ * FIRN_OK also when there are findings; FIRN_NO_MEMORY; FIRN_STOPPED; FIRN_BAD_ARGUMENT for an empty path;
+ * FIRN_FOREIGN_FORMAT when this system's libcrypto is kept from a digest that was asked for; what the writer's calls
+ * return. The writer is not finished.
  */
 FIRN_API enum firn_status firn_intake_paths(struct firn_writer *writer, const char *const *paths, size_t count,
                                             const struct firn_intake_options *options, struct firn_fault *fault,

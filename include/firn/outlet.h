@@ -33,6 +33,8 @@ struct firn_outlet_range {
     uint64_t at, bytes;           /* in the file */
     enum firn_reader_loss why;
     uint64_t container_at;        /* of the first block concerned */
+    /* FIRN_READER_LOSS_BLOCKS: first and last block that is lost, and how many from one to the other are; 0: unknown */
+    uint64_t first_block, last_block, lost_blocks;
 };
 
 struct firn_outlet_finding {

@@ -124,6 +124,11 @@ struct firn_reader_visitor {
                             enum firn_reader_loss why, uint64_t container_at);
     enum firn_status (*end)(void *self, const struct firn_item *item, const struct firn_reader_outcome *outcome);
     /*
+     * Told before the calls of gap for one lost stretch of content: the first and the last block that is lost of it,
+     * and how many of those from the first to the last are; 0, 0, 0 when nobody knows. May be NULL.
+     */
+    void (*lost_blocks)(void *self, uint64_t first, uint64_t last, uint64_t count);
+    /*
      * Asks to know at begin whether all content can be had, at the price of reading it twice: for outputs that cannot
      * take a beginning back.
      */

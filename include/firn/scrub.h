@@ -16,17 +16,29 @@
 
 #include <stdbool.h>
 
+/* What a block that is not sound was found to be. */
+enum firn_scrub_found { FIRN_SCRUB_MENDED, FIRN_SCRUB_REBUILT, FIRN_SCRUB_LOST };
+
 struct firn_scrub_options {
     const char *path;
     const struct firn_memory *memory;
     unsigned threads;                  /* 1 .. 256 */
     bool report_only;                  /* nothing is written; the report tells what would be */
+    uint64_t rate_bytes;               /* read no more than so many a second; 0: as fast as it goes */
+    unsigned readings;                 /* a block that does not read right is read again so often, 31 at most */
     /* Called now and then from the calling thread; each may be NULL. */
     void *self;
     bool (*stop)(void *self);          /* true ends the scrub with FIRN_STOPPED between two repairs */
     void (*progress)(void *self, uint64_t blocks_done, uint64_t blocks);
     /* A run of lost blocks; runs come in ascending order and do not touch. Block n is at 4096 * (n + 1) of the file. */
     void (*lost)(void *self, uint64_t first_block, uint64_t count);
+    /* A block that is not sound; in ascending order. */
+    void (*found)(void *self, uint64_t block, enum firn_scrub_found what);
+    /*
+     * Once, before any block is told of: what the container is, as far as its blocks tell. Returns the first block to
+     * check: sheets that begin before it are left out, an earlier scrub has checked them.
+     */
+    uint64_t (*begin_at)(void *self, const uint8_t id[8], uint64_t blocks);
 };
 
 /* What came of the title page, the first 4096 bytes. */
@@ -51,7 +63,8 @@ struct firn_scrub_report {
     struct firn_sheet_geometry geometry;
     uint64_t file_bytes;               /* before */
     uint64_t blocks;                   /* that the container has, as far as its tags tell */
-    uint64_t checked;                  /* of these; less than blocks only when stopped */
+    uint64_t checked;                  /* of these; less than blocks when stopped, or begun at a later one */
+    uint64_t reached;                  /* the first block that was not checked, where a sheet begins; else blocks */
     bool end_known;                    /* false: the last sheets may be gone, so nobody knows how much there was */
     /* of the blocks checked; what mended and rebuilt count is mendable only, unless written says otherwise */
     uint64_t mended;                   /* had stray bits that their own lanes put right */
@@ -66,6 +79,12 @@ struct firn_scrub_report {
     uint64_t refused;                  /* that the medium did not take; status FIRN_IO */
     uint64_t extended_bytes;           /* the file was cut short, and has grown by so much */
     uint64_t foreign_bytes;            /* behind the end of the container; left alone */
+    uint64_t reread;                   /* blocks that read right only when they were read again */
+    /*
+     * 0: blocks are where they belong. Else the head of the file is missing, or bytes were inserted or lost, and they
+     * lie in so many pieces: checked where they are, but nothing is written, for a repair could only make it worse.
+     */
+    uint64_t stretches;
 };
 
 /*

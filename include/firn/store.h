@@ -74,6 +74,43 @@ struct firn_store_buffer { uint8_t *bytes; size_t capacity, used; };
 FIRN_API void firn_store_memory(struct firn_store_buffer *buffer, struct firn_store *store);
 
 /*
+ * Puts patience in front of a store: a block that cannot be read, or does not read right, is read again, up to
+ * `readings` times and each time from the medium as far as the system lets us. The hash decides about each reading, and
+ * failing that about what the majority of the readings says bit by bit. What the lanes can mend is left to them.
+ *
+ * inner  lent until the new store is closed. readings 0 .. 31.
+ *
+ * FIRN_OK, FIRN_NO_MEMORY.
+ */
+FIRN_API enum firn_status firn_store_patient(struct firn_store *inner, unsigned readings,
+                                             const struct firn_memory *memory, struct firn_store *store);
+
+/* How many blocks read right only when they were read again; 0 for a store of another kind. */
+FIRN_API uint64_t firn_store_patient_gained(const struct firn_store *store);
+
+/* What a call that may take long tells, and by what it may be stopped; each function may be NULL. */
+struct firn_store_watch {
+    void *self;
+    void (*progress)(void *self, uint64_t at, uint64_t bytes);
+    bool (*stop)(void *self);
+};
+
+/*
+ * Looks for the blocks of a container that are not where they belong, because the head of the file is missing, or bytes
+ * were inserted or lost in it. Goes through all of it once; then shows each block in its place, read-only. Places that
+ * no block is known for read as zeros. Where several containers are found, it is the one with the most good blocks.
+ *
+ * inner      lent until the new store is closed
+ * watch      may be NULL
+ * stretches  out  how many pieces it is in
+ *
+ * FIRN_OK; FIRN_END: no block is there, or all of them are where they belong; FIRN_IO, FIRN_NO_MEMORY, FIRN_STOPPED
+ */
+FIRN_API enum firn_status firn_store_realign(struct firn_store *inner, const struct firn_store_watch *watch,
+                                             const struct firn_memory *memory, struct firn_store *store,
+                                             uint64_t *stretches, struct firn_fault *fault);
+
+/*
  * A file that appears under its name only when it is whole. Nameless until kept where the system can do that; else
  * under a temporary name beside it.
  */

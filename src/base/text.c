@@ -115,6 +115,32 @@ enum firn_status firn_text_parse_size(const char *words, uint64_t *bytes)
     return FIRN_BAD_ARGUMENT;
 }
 
+static const struct period { const char *name; uint64_t seconds; } periods[] = {
+    { "s", 1 }, { "min", 60 }, { "h", 3600 }, { "d", 86400 }, { "w", 604800 },
+};
+
+enum firn_status firn_text_parse_duration(const char *words, uint64_t *seconds)
+{
+    uint64_t number = 0;
+    const char *at = words;
+
+    for (; *at >= '0' && *at <= '9'; at++) {
+        if (number > UINT32_MAX)
+            return FIRN_BAD_ARGUMENT;
+        number = number * 10 + (uint64_t)(*at - '0');
+    }
+    if (at == words)
+        return FIRN_BAD_ARGUMENT;
+    while (*at == ' ')
+        at++;
+    for (size_t i = 0; i < sizeof periods / sizeof periods[0]; i++)
+        if (strcmp(at, periods[i].name) == 0) {
+            *seconds = number * periods[i].seconds;
+            return FIRN_OK;
+        }
+    return FIRN_BAD_ARGUMENT;
+}
+
 enum firn_status firn_text_parse_count(const char *words, uint64_t *count)
 {
     uint64_t value = 0;

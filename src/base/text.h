@@ -42,6 +42,9 @@ const char *firn_text_count(uint64_t count, char buffer[FIRN_TEXT_COUNT_ROOM]);
 /* "512", "4KiB", "128MiB", "25GB", "1.5 TB": IEC and SI units to the letter. FIRN_OK or FIRN_BAD_ARGUMENT. */
 enum firn_status firn_text_parse_size(const char *words, uint64_t *bytes);
 
+/* "45s", "90min", "2h", "30d", "2w": a whole number, its unit, a blank between. FIRN_OK or FIRN_BAD_ARGUMENT. */
+enum firn_status firn_text_parse_duration(const char *words, uint64_t *seconds);
+
 /* A whole decimal number without sign, and nothing behind it. FIRN_OK or FIRN_BAD_ARGUMENT. */
 enum firn_status firn_text_parse_count(const char *words, uint64_t *count);
 

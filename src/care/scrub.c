@@ -3,7 +3,8 @@
 #include "firn/scrub.h"
 
 #include "care/mend_file.h"
-#include "care/scrub_store.h"
+#include "care/pace.h"
+#include "care/scrub_order.h"
 
 enum firn_status firn_scrub(const struct firn_scrub_options *options, struct firn_scrub_report *report,
                             struct firn_fault *fault)
@@ -11,6 +12,7 @@ enum firn_status firn_scrub(const struct firn_scrub_options *options, struct fir
     enum firn_store_use use = options->report_only ? FIRN_STORE_READ : FIRN_STORE_MEND;
     struct firn_mend_file *file = NULL;
     struct firn_store store;
+    struct firn_pace pace;
     enum firn_status status;
 
     *report = (struct firn_scrub_report){ .title = FIRN_SCRUB_TITLE_UNKNOWN };
@@ -23,7 +25,8 @@ enum firn_status firn_scrub(const struct firn_scrub_options *options, struct fir
     if (status == FIRN_OK)
         status = firn_mend_file_make(options->path, &store, options->memory, &file, fault);
     if (status == FIRN_OK)
-        status = firn_scrub_store(options, &store, &file->place, report, fault);
+        status = firn_scrub_order(options, options->rate_bytes == 0 ? &store : firn_pace_store(&pace, &store, options),
+                                  &file->place, report, fault);
     firn_mend_file_free(file);
     store.close(store.self);
     return status;

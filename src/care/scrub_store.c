@@ -12,6 +12,7 @@ struct run {
     struct firn_sheets_options sheets_options;
     struct firn_sheets *sheets;
     struct firn_scrub_report *report;
+    uint64_t first_block;               /* to be checked */
     bool repairing;                     /* until something stands in the way */
     /* what did, first; checking goes on all the same */
     enum firn_status trouble;
@@ -116,6 +117,12 @@ static unsigned stray_bits(const struct run *run, uint64_t number, const uint8_t
     return bits;
 }
 
+static void tell_found(const struct run *run, uint64_t number, enum firn_scrub_found what)
+{
+    if (run->options->found != NULL)
+        run->options->found(run->options->self, number, what);
+}
+
 /* Counts what a sheet was found to be. Returns how many of its blocks can be repaired. */
 static uint64_t count_findings(struct run *run, const uint8_t *blocks, const enum firn_sheets_finding *findings,
                                uint64_t first, uint32_t count)
@@ -128,13 +135,16 @@ static uint64_t count_findings(struct run *run, const uint8_t *blocks, const enu
         case FIRN_SHEETS_MENDED:
             report->mended++;
             report->mended_bits += stray_bits(run, first + i, blocks + (size_t)i * FIRN_BLOCK_BYTES);
+            tell_found(run, first + i, FIRN_SCRUB_MENDED);
             break;
         case FIRN_SHEETS_REBUILT:
             report->rebuilt++;
+            tell_found(run, first + i, FIRN_SCRUB_REBUILT);
             break;
         case FIRN_SHEETS_LOST:
             report->lost++;
             add_lost(run, first + i);
+            tell_found(run, first + i, FIRN_SCRUB_LOST);
             break;
         default:
             break;
@@ -153,6 +163,8 @@ static enum firn_status scrub_sheet(struct run *run, uint64_t index, struct firn
     bool clean;
 
     firn_sheets_shape(run->sheets, index, &shape, &first);
+    if (first < run->first_block)
+        return FIRN_OK;
     count = shape.data_blocks + shape.reserve_blocks;
     status = firn_sheets_check(run->sheets, index, &clean);
     if (status == FIRN_OK && !clean) {
@@ -166,6 +178,7 @@ static enum firn_status scrub_sheet(struct run *run, uint64_t index, struct firn
     if (status != FIRN_OK)
         return firn_fault_tell(fault, status, 0, firn_sheets_place(first), run->options->path);
     run->report->checked += count;
+    run->report->reached = first + count;
     if (run->options->progress != NULL)
         run->options->progress(run->options->self, run->report->checked, run->report->blocks);
     return FIRN_OK;
@@ -282,6 +295,9 @@ static enum firn_status scrub_all(struct run *run, struct firn_fault *fault)
         status = resume(run, fault);
     }
     if (status == FIRN_OK) {
+        if (run->options->begin_at != NULL)
+            run->first_block = run->options->begin_at(run->options->self, run->report->id, run->report->blocks);
+        run->report->reached = run->first_block;
         sheets = firn_sheets_layout(run->sheets)->sheets;
         for (uint64_t i = 0; i < sheets && status == FIRN_OK; i++)
             status = scrub_sheet(run, i, fault);

@@ -13,7 +13,7 @@ struct slot {
     uint8_t *body, *raw;
     struct firn_catalogue_place place;
     enum firn_status status;
-    uint64_t container_at;
+    uint64_t container_at, first_lost, last_lost, lost_blocks;
     bool held;                         /* it has place number `index` of the part */
     size_t index;
     uint64_t used;                     /* when it was asked for last */
@@ -87,6 +87,26 @@ void firn_decoder_forget(struct firn_decoder *decoder)
         decoder->slots[i].held = false;
 }
 
+/* Goes on reading behind a gap, to find out which blocks of the place are lost. Returns only reasons to give up. */
+static enum firn_status count_lost(struct firn_decoder *decoder, const struct firn_catalogue_place *place,
+                                   struct firn_sheets_gap gap, struct slot *slot)
+{
+    uint64_t at, end = place->at + FIRN_RECORD_HEADER_BYTES + place->body_bytes;
+    enum firn_status status = FIRN_LOST;
+
+    slot->first_lost = gap.container_at / FIRN_BLOCK_BYTES - 1;
+    slot->lost_blocks = 0;
+    while (status == FIRN_LOST) {
+        slot->last_lost = gap.container_at / FIRN_BLOCK_BYTES - 1;
+        slot->lost_blocks++;
+        at = gap.resume;
+        if (at >= end)
+            return FIRN_OK;
+        status = firn_sheets_read(decoder->sheets, at, slot->body, (size_t)(end - at), &gap);
+    }
+    return status == FIRN_NO_MEMORY || status == FIRN_STOPPED ? status : FIRN_OK;
+}
+
 /* Reads the body of a place. What is wrong with it stands in the slot; returned are only reasons to give up. */
 static enum firn_status read_slot(struct firn_decoder *decoder, const struct firn_catalogue_place *place,
                                   struct slot *slot)
@@ -95,15 +115,17 @@ static enum firn_status read_slot(struct firn_decoder *decoder, const struct fir
     struct firn_catalogue_place told;
 
     slot->place = *place;
-    slot->container_at = 0;
+    slot->container_at = slot->first_lost = slot->last_lost = slot->lost_blocks = 0;
     slot->status = firn_sheets_read(decoder->sheets, place->at + FIRN_RECORD_HEADER_BYTES, slot->body,
                                     place->body_bytes, &gap);
     if (slot->status == FIRN_NO_MEMORY || slot->status == FIRN_STOPPED)
         return slot->status;
     if (slot->status != FIRN_OK) {
+        enum firn_status why = slot->status;
+
         slot->container_at = gap.container_at;
         slot->status = FIRN_LOST;
-        return FIRN_OK;
+        return why == FIRN_LOST ? count_lost(decoder, place, gap, slot) : FIRN_OK;
     }
     told = *place;
     if (firn_catalogue_get_segment(slot->body, &told) != FIRN_OK || told.raw_bytes != place->raw_bytes ||
@@ -192,7 +214,8 @@ enum firn_status firn_decoder_get(struct firn_decoder *decoder, const struct fir
     slot->used = ++decoder->clock;
     *segment = (struct firn_decoder_segment){
         .raw = slot->raw, .coded = slot->body + FIRN_CATALOGUE_SEGMENT_HEAD_BYTES,
-        .coded_bytes = slot->place.body_bytes - FIRN_CATALOGUE_SEGMENT_HEAD_BYTES, .container_at = slot->container_at
+        .coded_bytes = slot->place.body_bytes - FIRN_CATALOGUE_SEGMENT_HEAD_BYTES, .container_at = slot->container_at,
+        .first_lost = slot->first_lost, .last_lost = slot->last_lost, .lost_blocks = slot->lost_blocks
     };
     return slot->status;
 }

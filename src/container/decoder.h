@@ -27,6 +27,7 @@ struct firn_decoder_segment {
     const uint8_t *coded;          /* what it was decoded from */
     size_t coded_bytes;
     uint64_t container_at;         /* on FIRN_LOST: file offset of the first block that is lost */
+    uint64_t first_lost, last_lost, lost_blocks;      /* their numbers, and how many there are; 0 when nobody knows */
 };
 
 /*

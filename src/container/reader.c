@@ -253,6 +253,14 @@ static enum firn_status pass_end(void *self, const struct firn_item *item, const
     return visitor->end == NULL ? FIRN_OK : visitor->end(visitor->self, item, outcome);
 }
 
+static void pass_lost_blocks(void *self, uint64_t first, uint64_t last, uint64_t count)
+{
+    const struct firn_reader_visitor *visitor = ((struct foresight *)self)->visitor;
+
+    if (visitor->lost_blocks != NULL)
+        visitor->lost_blocks(visitor->self, first, last, count);
+}
+
 static enum firn_status walk_foreseeing(struct firn_reader *reader, const struct firn_reader_visitor *visitor,
                                         struct firn_reader_walk_report *report)
 {
@@ -262,7 +270,7 @@ static enum firn_status walk_foreseeing(struct firn_reader *reader, const struct
     };
     struct firn_reader_visitor second = {
         .self = &foresight, .wants = pass_wants, .begin = begin_foreseen, .bytes = pass_bytes, .gap = pass_gap,
-        .end = pass_end
+        .end = pass_end, .lost_blocks = pass_lost_blocks
     };
     enum firn_status status = firn_walk(reader->parts, reader->decoder, reader->memory, &first, report);
 

@@ -100,6 +100,23 @@ static void find_sum(struct walk *walk)
     }
 }
 
+/*
+ * Looks for the digest of an item that goes on in the parts that follow: it stands in the one where the item ends. Only
+ * the last item of a part goes on, and the first part with items of its own is the last one that can tell.
+ */
+static enum firn_status seek_sum(struct walk *walk)
+{
+    enum firn_status status = FIRN_OK;
+
+    while (status == FIRN_OK && !walk->item.summed && !walk->ended && walk->cursor.items_left == 0) {
+        status = next_part(walk);
+        status = status == FIRN_END ? FIRN_OK : status;
+        if (status == FIRN_OK && !walk->ended)
+            find_sum(walk);
+    }
+    return status;
+}
+
 /* --- handing out --- */
 
 /*
@@ -142,6 +159,8 @@ static enum firn_status hand_out(struct walk *walk, const uint8_t *raw, uint64_t
 /* Content that no segment tells of: never written when nothing of the catalogue is missing, else lost with it. */
 static enum firn_status hand_out_untold(struct walk *walk, uint64_t count)
 {
+    if (walk->visitor->lost_blocks != NULL)      /* nobody knows which */
+        walk->visitor->lost_blocks(walk->visitor->self, 0, 0, 0);
     return hand_out(walk, NULL, count, walk->part.complete ? FIRN_READER_LOSS_WITHDRAWN : FIRN_READER_LOSS_BLOCKS, 0);
 }
 
@@ -158,6 +177,8 @@ static enum firn_status hand_out_segment(struct walk *walk)
     count = count < left ? count : left;
     if (status == FIRN_OK)
         return hand_out(walk, segment.raw + inside, count, FIRN_READER_LOSS_BLOCKS, 0);
+    if (status == FIRN_LOST && walk->visitor->lost_blocks != NULL)
+        walk->visitor->lost_blocks(walk->visitor->self, segment.first_lost, segment.last_lost, segment.lost_blocks);
     if (status == FIRN_LOST)
         return hand_out(walk, NULL, count, FIRN_READER_LOSS_BLOCKS, segment.container_at);
     if (status == FIRN_MISMATCH)
@@ -207,7 +228,9 @@ static enum firn_status visit(struct walk *walk)
     find_sum(walk);
     if (visitor->wants != NULL && !visitor->wants(visitor->self, &walk->item))
         return FIRN_OK;
-    if (visitor->begin != NULL)
+    if (!content && visitor->digests && walk->item.has_content)
+        status = seek_sum(walk);
+    if (status == FIRN_OK && visitor->begin != NULL)
         status = visitor->begin(visitor->self, &walk->item, 0);
     if (status == FIRN_OK && content) {
         firn_digest_start(walk->digest);

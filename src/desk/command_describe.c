@@ -257,7 +257,7 @@ static int run(const struct firn_args *args, struct firn_view *view)
     exit = firn_opening_make(&opening, container, args, view);
     if (exit != FIRN_EXIT_SOUND)
         return exit;
-    exit = firn_opening_remark(view, container, firn_reader_layout_of(opening.reader));
+    exit = firn_opening_look(view, container, &opening);
     if (args->given[PAGE]) {
         uint8_t page[4096];
 

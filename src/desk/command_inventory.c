@@ -129,7 +129,7 @@ static int list(struct listing *l, struct firn_opening *opening)
         .self = l, .begin = list_item, .digests = l->args->given[DIGESTS] || l->view->json
     };
     const char *container = l->args->operands[0];
-    int exit = firn_opening_remark(l->view, container, firn_reader_layout_of(opening->reader));
+    int exit = firn_opening_look(l->view, container, opening);
     struct firn_reader_walk_report report;
     struct firn_fault fault = { 0 };
     enum firn_status status = firn_reader_walk(opening->reader, &visitor, &fault, &report);

@@ -2,7 +2,10 @@
 /* SPDX-License-Identifier: BSD-2-Clause */
 #include "desk/commands.h"
 
+#include "desk/events.h"
 #include "desk/interrupt.h"
+#include "desk/pack_bags.h"
+#include "desk/pack_words.h"
 #include "desk/progress.h"
 #include "desk/trouble.h"
 #include "firn/expect.h"
@@ -12,9 +15,7 @@
 #include <inttypes.h>
 #include <stdlib.h>
 #include <string.h>
-#include <sys/random.h>
 #include <sys/stat.h>
-#include <time.h>
 #include <unistd.h>
 
 enum option {
@@ -32,7 +33,8 @@ enum option {
     EFFORT,
     NO_READER,
     REPLACE,
-    NO_READ_BACK
+    NO_READ_BACK,
+    EVENTS
 };
 
 static const struct firn_args_option options[] = {
@@ -40,7 +42,7 @@ static const struct firn_args_option options[] = {
     [FROM_ARCHIVE] = { "from-archive", '\0', "A", "take in what archive A holds; - is standard input" },
     [KEEP_BEGINNING] = { "keep-beginning", '\0', NULL, "of a broken archive, keep what came before the break" },
     [EXCLUDE] = { "exclude", '\0', "PATTERN", "leave out what PATTERN names (may be given often)" },
-    [EXPECT] = { "expect", '\0', "MANIFEST", "check the donor's SHA-256 lines, refuse to finish on a mismatch" },
+    [EXPECT] = { "expect", '\0', "MANIFEST", "check the donor's SHA-256, SHA-512 or MD5 lines, refuse a mismatch" },
     [ACCESSION] = { "accession", '\0', "TEXT", "accession number, for the title page" },
     [TITLE] = { "title", '\0', "TEXT", "title of the collection" },
     [CUSTODIAN] = { "custodian", '\0', "TEXT", "who answers for it" },
@@ -51,6 +53,7 @@ static const struct firn_args_option options[] = {
     [NO_READER] = { "no-reader", '\0', NULL, "leave out the specification and the reader's source (some 200 KiB)" },
     [REPLACE] = { "replace", '\0', NULL, "FILE may be overwritten" },
     [NO_READ_BACK] = { "no-read-back", '\0', NULL, "do not read the container back when it is written" },
+    [EVENTS] = { "events", '\0', "FILE", "append what was done as PREMIS events, JSON Lines" },
 };
 
 /* All that one run needs; freed in one place. */
@@ -72,80 +75,18 @@ struct packing {
     struct firn_pattern *exclude;
     struct firn_expect *expect;
     uint64_t mismatches;
+    struct firn_pack_bags bags;
     struct firn_writer_totals totals;
     bool read_back;
+    struct firn_lines events;
 };
 
 /* --- words --- */
 
-static int read_reserve(struct packing *p)
-{
-    const char *words = p->args->values[RESERVE], *sheet = p->args->values[SHEET];
-    uint64_t sheet_bytes = UINT64_C(128) << 20;
-    double percent = 14.3;
-    char *end;
-
-    if (words != NULL) {
-        percent = strtod(words, &end);
-        if (end == words || (*end != '\0' && strcmp(end, "%") != 0) || !(percent >= 0 && percent <= 100))
-            return firn_trouble_usage(p->view, words, "is no percentage from 0 to 100");
-    }
-    if (sheet != NULL && firn_text_parse_size(sheet, &sheet_bytes) != FIRN_OK)
-        return firn_trouble_usage(p->view, sheet, "is no size such as 128MiB");
-    if (firn_sheet_geometry_for(percent, sheet_bytes, &p->writing.geometry) != FIRN_OK)
-        return firn_trouble_usage(p->view, sheet != NULL ? sheet : words,
-                                  "makes no sheet; it is too small or too large");
-    if (sheet_bytes < (UINT64_C(1) << 20) || sheet_bytes > (UINT64_C(256) << 20))
-        return firn_trouble_usage(p->view, sheet, "is no size of a sheet: 1MiB to 256MiB");
-    if (p->writing.geometry.m == 0)
-        firn_view_finding(p->view, "no-reserve", p->output, "packed WITHOUT a reserve: a lost block will stay lost");
-    return FIRN_EXIT_SOUND;
-}
-
-static int read_effort(struct packing *p)
-{
-    static const struct { const char *word; enum firn_segment_effort effort; } efforts[] = {
-        { "none", FIRN_SEGMENT_EFFORT_NONE }, { "quick", FIRN_SEGMENT_EFFORT_QUICK },
-        { "normal", FIRN_SEGMENT_EFFORT_NORMAL }, { "thorough", FIRN_SEGMENT_EFFORT_THOROUGH }
-    };
-    const char *word = p->args->values[EFFORT];
-
-    p->writing.effort = FIRN_SEGMENT_EFFORT_NORMAL;
-    if (word == NULL)
-        return FIRN_EXIT_SOUND;
-    for (size_t i = 0; i < sizeof efforts / sizeof efforts[0]; i++)
-        if (strcmp(word, efforts[i].word) == 0) {
-            p->writing.effort = efforts[i].effort;
-            return FIRN_EXIT_SOUND;
-        }
-    return firn_trouble_usage(p->view, word, "is no effort: none, quick, normal or thorough");
-}
-
-/* With SOURCE_DATE_EPOCH the same input gives the same bytes: no clock, no chance (reproducible-builds.org). */
-static int read_date(struct packing *p)
-{
-    const char *words = getenv("SOURCE_DATE_EPOCH");
-    uint64_t seconds;
-
-    if (words == NULL || *words == '\0') {
-        p->writing.title.date = (int64_t)time(NULL);
-        if (getrandom(p->writing.nonce, sizeof p->writing.nonce, 0) != (ssize_t)sizeof p->writing.nonce) {
-            firn_view_finding(p->view, "no-random", "",
-                              "the system gives no random bytes for the container's identity");
-            return FIRN_EXIT_OS;
-        }
-        return FIRN_EXIT_SOUND;
-    }
-    if (firn_text_parse_count(words, &seconds) != FIRN_OK || seconds > INT32_MAX * UINT64_C(100))
-        return firn_trouble_usage(p->view, words, "is no number of seconds in SOURCE_DATE_EPOCH");
-    p->writing.title.date = (int64_t)seconds;
-    return FIRN_EXIT_SOUND;
-}
-
 static int read_words(struct packing *p)
 {
     const char *const *values = p->args->values;
-    int exit;
+    const struct firn_pack_words words = { p->output, values[RESERVE], values[SHEET], values[EFFORT] };
 
     if (p->output == NULL)
         return firn_trouble_usage(p->view, "--output", "is missing: say where to write the container");
@@ -156,10 +97,7 @@ static int read_words(struct packing *p)
     p->writing.title.title = values[TITLE];
     p->writing.title.custodian = values[CUSTODIAN];
     p->writing.title.note = values[NOTE];
-    exit = read_reserve(p);
-    if (exit == FIRN_EXIT_SOUND)
-        exit = read_effort(p);
-    return exit == FIRN_EXIT_SOUND ? read_date(p) : exit;
+    return firn_pack_words(&words, &p->writing, p->view);
 }
 
 /* --- findings --- */
@@ -203,9 +141,12 @@ static void see_item(void *self, const struct firn_intake_item *item)
     /* a bag in an archive has a folder around it, and its manifest is told from inside that */
     size_t own = p->args->values[FROM_ARCHIVE] != NULL ? strcspn(item->name, "/") : item->operand_bytes;
 
-    if (p->expect != NULL && item->sha256 != NULL)
-        verdict = firn_expect_see(p->expect, item->name, own, item->sha256);
-    else if (p->expect != NULL && item->link != NULL)
+    firn_pack_bags_see(&p->bags, item);
+    if (p->expect == NULL)
+        return;
+    if (item->sha256 != NULL && (item->link == NULL || firn_expect_digests(p->expect) == 0))
+        verdict = firn_expect_see(p->expect, item->name, own, item->sha256, item->digests);
+    else if (item->link != NULL)      /* of a link the others are not known; its file comes before it */
         verdict = firn_expect_see_link(p->expect, item->name, own, item->link);
     if (verdict != FIRN_EXPECT_MISMATCH)
         return;
@@ -281,6 +222,9 @@ static enum firn_status prepare(struct packing *p)
         p->intake.exclude = p->exclude;
     if (status == FIRN_OK && p->args->values[EXPECT] != NULL)
         status = firn_expect_open(p->args->values[EXPECT], p->writing.memory, &p->fault, &p->expect);
+    if (status == FIRN_OK)
+        status = firn_pack_bags_open(&p->bags, p->args, p->view, &p->fault);
+    p->intake.digests = p->bags.digests | (p->expect == NULL ? 0 : firn_expect_digests(p->expect));
     return status;
 }
 
@@ -329,6 +273,16 @@ static enum firn_status read_back(struct packing *p)
     return status;
 }
 
+/* Whether all is there, and as manifests have it; else what is not was told. */
+static bool as_expected(struct packing *p)
+{
+    firn_progress_wipe(&p->progress);
+    if (p->expect != NULL)
+        p->mismatches += firn_expect_missing(p->expect, tell_missing, p);
+    firn_pack_bags_judge(&p->bags);
+    return p->mismatches + p->bags.troubles == 0;
+}
+
 /* An output that fails part way goes without a trace; only a pipe has had its bytes already. */
 static enum firn_status pack(struct packing *p)
 {
@@ -340,11 +294,10 @@ static enum firn_status pack(struct packing *p)
         status = firn_writer_make(&p->writing, &p->fault, &p->writer);
     if (status == FIRN_OK)
         status = take_in(p);
-    if (status == FIRN_OK && p->expect != NULL) {
-        p->mismatches += firn_expect_missing(p->expect, tell_missing, p);
-        if (p->mismatches > 0)
-            return FIRN_MISMATCH;
-    }
+    if (status == FIRN_OK)
+        status = p->bags.status;
+    if (status == FIRN_OK && !as_expected(p))
+        return FIRN_MISMATCH;
     if (status == FIRN_OK)
         status = firn_writer_finish(p->writer, &p->totals);
     if (status == FIRN_OK)
@@ -374,6 +327,7 @@ static void show(struct packing *p)
     firn_view_bytes(p->view, "coded-bytes", "coded", t->coded_bytes);
     firn_view_bytes(p->view, "catalogue-bytes", "catalogue", t->catalogue_bytes);
     firn_view_bytes(p->view, "container-bytes", "container", t->container_bytes);
+    firn_pack_bags_show(&p->bags);
     firn_text_start(&text, words, sizeof words);
     firn_text_add(&text, "%s blocks, %.1f %% of them reserve", firn_text_count(t->blocks, count),
                   100.0 * (double)(t->blocks - t->data_blocks) / (double)t->blocks);
@@ -400,6 +354,69 @@ static int intake_exit(const struct firn_intake_report *report)
     return report->findings[FIRN_INTAKE_CHANGED] > 0 ? FIRN_EXIT_TRY_AGAIN : FIRN_EXIT_SOUND;
 }
 
+/* ---- events ---- */
+
+static void record(struct packing *p, enum firn_events_type type, bool fine, const char *detail, const char *note)
+{
+    const char *archive = p->args->values[FROM_ARCHIVE];
+    bool packing = type == FIRN_EVENTS_PACKING, digests = type == FIRN_EVENTS_DIGEST_CALCULATION;
+    const struct firn_events_event event = {
+        .type = type, .outcome = fine ? FIRN_EVENTS_SUCCESS : FIRN_EVENTS_FAILURE, .detail = detail, .note = note,
+        .container = p->output, .made = packing, .id = p->totals.blocks > 0 ? p->totals.id : NULL,
+        .others = archive != NULL ? &archive : p->args->operands,
+        .other_count = !packing ? 0 : archive != NULL ? 1 : p->args->operand_count,
+        .catalogue_sha256 = digests ? p->totals.catalogue_sha256 : NULL
+    };
+
+    firn_events_tell(&p->events, &event);
+}
+
+static void record_expectation(struct packing *p)
+{
+    bool fine = p->mismatches == 0;
+    char detail[300];
+    struct firn_text text;
+
+    if (p->expect == NULL)
+        return;
+    firn_text_start(&text, detail, sizeof detail);
+    firn_text_add(&text, "what was taken in, held against %.200s", p->args->values[EXPECT]);
+    record(p, FIRN_EVENTS_FIXITY_CHECK, fine, detail, fine ? NULL : "not as the manifest says; nothing was written");
+}
+
+static void record_bags(struct packing *p)
+{
+    for (size_t i = 0; i < p->bags.count; i++) {
+        const struct firn_pack_bag *bag = &p->bags.list[i];
+        char detail[400];
+        struct firn_text text;
+
+        if (bag->bag == NULL)
+            continue;
+        firn_text_start(&text, detail, sizeof detail);
+        firn_text_add(&text, "BagIt bag %.200s, by %s, while it was taken in", bag->operand, bag->report.algorithms);
+        record(p, FIRN_EVENTS_FIXITY_CHECK, bag->report.valid, detail,
+               bag->report.valid ? NULL : "not complete or not valid; nothing was written");
+    }
+}
+
+static void record_done(struct packing *p, int exit)
+{
+    char detail[120], note[120];
+    struct firn_text text;
+
+    record_expectation(p);
+    record_bags(p);
+    firn_text_start(&text, detail, sizeof detail);
+    firn_text_add(&text, "%" PRIu64 " items, %" PRIu64 " bytes of content", p->totals.items, p->totals.content_bytes);
+    firn_text_start(&text, note, sizeof note);
+    firn_text_add(&text, "%" PRIu64 " items of the sources were left out", firn_intake_left_out(&p->report));
+    record(p, FIRN_EVENTS_PACKING, exit == FIRN_EXIT_SOUND, detail, exit == FIRN_EXIT_SOUND ? NULL : note);
+    record(p, FIRN_EVENTS_DIGEST_CALCULATION, true, "SHA-256 of every file, and of the catalogue that has them", NULL);
+    if (p->read_back)
+        record(p, FIRN_EVENTS_FIXITY_CHECK, true, "the container, read back when it was written", NULL);
+}
+
 static void close_all(struct packing *p)
 {
     firn_writer_free(p->writer);
@@ -410,6 +427,7 @@ static void close_all(struct packing *p)
         p->spool.close(p->spool.self);
     firn_pattern_free(p->exclude);
     firn_expect_free(p->expect);
+    firn_pack_bags_end(&p->bags);
 }
 
 static int run(const struct firn_args *args, struct firn_view *view)
@@ -426,6 +444,8 @@ static int run(const struct firn_args *args, struct firn_view *view)
         .item = see_item, .progress = step, .stop = firn_interrupt_asked
     };
     exit = read_words(&p);
+    if (exit == FIRN_EXIT_SOUND)
+        exit = firn_lines_open(&p.events, args->values[EVENTS], view);
     if (exit != FIRN_EXIT_SOUND)
         return exit;
     status = pack(&p);
@@ -433,20 +453,25 @@ static int run(const struct firn_args *args, struct firn_view *view)
     if (status == FIRN_OK) {
         show(&p);
         exit = intake_exit(&p.report);
-    } else if (status == FIRN_MISMATCH && p.mismatches > 0) {
+        record_done(&p, exit);
+    } else if (status == FIRN_MISMATCH && p.mismatches + p.bags.troubles > 0) {
         char words[160];
         struct firn_text text;
 
         firn_text_start(&text, words, sizeof words);
-        firn_text_add(&text, "%" PRIu64 " items are not as the manifest says; nothing was written; ask the donor",
-                      p.mismatches);
+        firn_text_add(&text, "not as manifests say, %" PRIu64 " findings; nothing was written; ask the donor",
+                      p.mismatches + p.bags.troubles);
         firn_view_finding(view, "refused", p.output, words);
         exit = FIRN_EXIT_BAD_DATA;
+        record_expectation(&p);
+        record_bags(&p);
+        record(&p, FIRN_EVENTS_PACKING, false, NULL, words);
     } else {
+        record(&p, FIRN_EVENTS_PACKING, false, NULL, firn_status_text(status));
         exit = firn_trouble_tell(view, p.fault.what[0] != '\0' ? NULL : p.output, status, &p.fault);
     }
     close_all(&p);
-    return exit;
+    return firn_lines_close(&p.events, exit);
 }
 
 const struct firn_command firn_command_pack = {
@@ -456,6 +481,7 @@ const struct firn_command firn_command_pack = {
     .about = "Stores what the paths name, with all below them and all their metadata: names,\n"
              "owners, modes, times, links, extended attributes, access lists, holes. The\n"
              "container is written under its name only when it is whole and was read back.\n"
+             "A path that is a BagIt bag (RFC 8493) is refused if it is not complete and valid.\n"
              "The sources are not changed. Keep them until a second copy of the container\n"
              "lies elsewhere and a restore was tried; your institution's policy decides.\n\n"
              "With SOURCE_DATE_EPOCH set, the same input gives the same bytes.\n",

@@ -2,7 +2,9 @@
 /* SPDX-License-Identifier: BSD-2-Clause */
 #include "desk/commands.h"
 
+#include "desk/events.h"
 #include "desk/interrupt.h"
+#include "desk/loss.h"
 #include "desk/opening.h"
 #include "desk/progress.h"
 #include "desk/trouble.h"
@@ -15,7 +17,7 @@
 #include <sys/stat.h>
 #include <unistd.h>
 
-enum option { DIRECTORY, TO_TAR, INCOMPLETE, REPLACE, OWNER, DEVICES };
+enum option { DIRECTORY, TO_TAR, INCOMPLETE, REPLACE, OWNER, DEVICES, REREAD, REPORT, EVENTS };
 
 static const struct firn_args_option options[] = {
     [DIRECTORY] = { "directory", 'C', "DIR", "restore into DIR, which is made if need be (default: here)" },
@@ -24,6 +26,9 @@ static const struct firn_args_option options[] = {
     [REPLACE] = { "replace", '\0', NULL, "files that are there may be overwritten" },
     [OWNER] = { "owner", '\0', "WORD", "none, names or numbers (default names for root, else none)" },
     [DEVICES] = { "devices", '\0', NULL, "make device nodes too" },
+    [REREAD] = { "reread", '\0', "N", "read a block that is not right again up to N times, 31 at most (default 0)" },
+    [REPORT] = { "report", '\0', "FILE", "write the account of loss to FILE; JSON Lines with --json" },
+    [EVENTS] = { "events", '\0', "FILE", "append what was done as PREMIS events, JSON Lines" },
 };
 
 struct restoring {
@@ -35,12 +40,17 @@ struct restoring {
     struct firn_outlet_options outlet;
     struct firn_outlet_report report;
     struct firn_store_stage *stage;
+    struct firn_loss loss;
+    unsigned readings;
     struct firn_fault fault;
+    struct firn_lines events;
 };
 
 static int read_words(struct restoring *r)
 {
     const char *incomplete = r->args->values[INCOMPLETE], *owner = r->args->values[OWNER];
+    const char *reread = r->args->values[REREAD];
+    uint64_t readings = 0;
 
     if (r->args->operand_count == 0)
         return firn_trouble_usage(r->view, "FILE", "is missing: name the container");
@@ -58,31 +68,12 @@ static int read_words(struct restoring *r)
         r->outlet.owner = FIRN_OUTLET_OWNER_NUMBERS;
     else if (owner != NULL)
         return firn_trouble_usage(r->view, owner, "is neither none, names nor numbers");
+    if (reread != NULL && (firn_text_parse_count(reread, &readings) != FIRN_OK || readings > 31))
+        return firn_trouble_usage(r->view, reread, "is no number of readings from 0 to 31");
+    r->readings = (unsigned)readings;
     r->outlet.replace = r->args->given[REPLACE];
     r->outlet.devices = r->args->given[DEVICES];
     return FIRN_EXIT_SOUND;
-}
-
-static const char *loss_words(enum firn_reader_loss why)
-{
-    switch (why) {
-    case FIRN_READER_LOSS_BLOCKS:    return "blocks";
-    case FIRN_READER_LOSS_WITHDRAWN: return "withdrawn";
-    case FIRN_READER_LOSS_CONTENT:   return "content";
-    }
-    return "unknown";
-}
-
-static void tell_ranges(struct restoring *r, const struct firn_outlet_finding *finding)
-{
-    FILE *out = r->view->out;
-
-    fprintf(out, ",\"bytes\":%" PRIu64 ",\"lost-bytes\":%" PRIu64 ",\"ranges\":[", finding->bytes, finding->lost_bytes);
-    for (uint64_t i = 0; i < finding->range_count; i++)
-        fprintf(out, "%s{\"at\":%" PRIu64 ",\"bytes\":%" PRIu64 ",\"why\":\"%s\",\"container-at\":%" PRIu64 "}",
-                i > 0 ? "," : "", finding->ranges[i].at, finding->ranges[i].bytes, loss_words(finding->ranges[i].why),
-                finding->ranges[i].container_at);
-    fputc(']', out);
 }
 
 static void lost_words(const struct firn_outlet_finding *finding, struct firn_text *text)
@@ -120,6 +111,7 @@ static void tell_finding(void *self, const struct firn_outlet_finding *finding)
     struct firn_text text;
 
     firn_progress_wipe(&r->progress);
+    firn_loss_add(&r->loss, finding);
     firn_text_start(&text, words, sizeof words);
     firn_text_add(&text, "%s", kinds[finding->kind].words);
     if (finding->kind == FIRN_OUTLET_LOST)
@@ -137,7 +129,7 @@ static void tell_finding(void *self, const struct firn_outlet_finding *finding)
         firn_view_words(r->view, "words", NULL, words);
         firn_view_count(r->view, "item", NULL, finding->number);
         firn_view_switch(r->view, "kept", finding->kept);
-        tell_ranges(r, finding);
+        firn_loss_ranges(r->view, finding);
         firn_view_end(r->view);
     } else if (finding->kind < FIRN_OUTLET_METADATA) {
         firn_view_finding(r->view, kinds[finding->kind].kind, finding->path, words);
@@ -213,7 +205,8 @@ static int outcome(const struct restoring *r, const struct firn_reader_damage *d
         return FIRN_EXIT_CANNOT_CREATE;
     if (findings[FIRN_OUTLET_REFUSED] > 0 || findings[FIRN_OUTLET_LINK] > 0)
         return FIRN_EXIT_BAD_DATA;
-    return damage->mended > 0 || damage->rebuilt > 0 || damage->lost > 0 || layout_exit == FIRN_EXIT_SAFE
+    return damage->mended > 0 || damage->rebuilt > 0 || damage->lost > 0 || layout_exit == FIRN_EXIT_SAFE ||
+                   firn_opening_gained(&r->opening) > 0
                ? FIRN_EXIT_SAFE
                : FIRN_EXIT_SOUND;
 }
@@ -241,7 +234,45 @@ static void show(struct restoring *r, const struct firn_reader_damage *damage)
     firn_view_count(r->view, "blocks-mended", damaged ? "mended" : NULL, damage->mended);
     firn_view_count(r->view, "blocks-rebuilt", damaged ? "rebuilt" : NULL, damage->rebuilt);
     firn_view_count(r->view, "blocks-lost", damaged ? "lost blocks" : NULL, damage->lost);
+    firn_view_count(r->view, "blocks-reread", firn_opening_gained(&r->opening) > 0 ? "reread" : NULL,
+                    firn_opening_gained(&r->opening));
     firn_view_end(r->view);
+}
+
+/* Blocks that were put right in memory are a recovery; what was given back is an unpacking. */
+static void record(struct restoring *r, const struct firn_reader_damage *damage, enum firn_status status, int exit)
+{
+    const char *place = r->args->values[TO_TAR] != NULL ? r->args->values[TO_TAR] : r->args->values[DIRECTORY];
+    char detail[120], note[160];
+    struct firn_text text;
+    bool fine = exit == FIRN_EXIT_SOUND || exit == FIRN_EXIT_SAFE;
+    struct firn_events_event event = {
+        .type = FIRN_EVENTS_RECOVERY, .outcome = damage->lost == 0 ? FIRN_EVENTS_SUCCESS : FIRN_EVENTS_FAILURE,
+        .container = r->container, .id = firn_reader_layout_of(r->opening.reader)->id, .note = note,
+        .detail = "on reading, in memory; the container itself was not written to"
+    };
+
+    firn_text_start(&text, note, sizeof note);
+    firn_text_add(&text, "%" PRIu64 " blocks mended, %" PRIu64 " rebuilt, %" PRIu64 " lost", damage->mended,
+                  damage->rebuilt, damage->lost);
+    if (damage->mended + damage->rebuilt + damage->lost > 0)
+        firn_events_tell(&r->events, &event);
+    place = place == NULL ? "." : place;
+    event.type = FIRN_EVENTS_UNPACKING;
+    event.outcome = fine ? FIRN_EVENTS_SUCCESS : FIRN_EVENTS_FAILURE;
+    event.others = &place;
+    event.other_count = 1;
+    event.detail = detail;
+    firn_text_start(&text, detail, sizeof detail);
+    firn_text_add(&text, "%" PRIu64 " items, %" PRIu64 " bytes", r->report.written, r->report.bytes);
+    firn_text_start(&text, note, sizeof note);
+    if (status != FIRN_OK)
+        firn_text_add(&text, "%s", firn_status_text(status));
+    else
+        firn_text_add(&text, "%" PRIu64 " items not given back whole, %" PRIu64 " bytes lost",
+                      r->report.findings[FIRN_OUTLET_LOST] + r->report.items_unknown, r->report.lost_bytes);
+    event.note = fine ? NULL : note;
+    firn_events_tell(&r->events, &event);
 }
 
 static int run(const struct firn_args *args, struct firn_view *view)
@@ -258,23 +289,39 @@ static int run(const struct firn_args *args, struct firn_view *view)
     if (exit != FIRN_EXIT_SOUND)
         return exit;
     r.container = args->operands[0];
-    exit = firn_opening_make(&r.opening, r.container, args, view);
+    exit = firn_lines_open(&r.events, args->values[EVENTS], view);
     if (exit != FIRN_EXIT_SOUND)
         return exit;
-    layout_exit = firn_opening_remark(view, r.container, firn_reader_layout_of(r.opening.reader));
+    status = firn_loss_open(&r.loss, args->values[REPORT], r.container, &r.outlet, args->json, &r.fault);
+    if (status != FIRN_OK)
+        return firn_lines_close(&r.events, firn_trouble_tell(view, NULL, status, &r.fault));
+    exit = firn_opening_make_patient(&r.opening, r.container, r.readings, args, view);
+    if (exit != FIRN_EXIT_SOUND) {
+        firn_loss_close(&r.loss);
+        return firn_lines_close(&r.events, exit);
+    }
+    layout_exit = firn_opening_look(view, r.container, &r.opening);
     status = restore(&r);
     firn_reader_damage_so_far(r.opening.reader, &damage);
     if (status == FIRN_OK || status == FIRN_NO_INPUT) {
+        enum firn_status kept = firn_loss_keep(&r.loss, &r.report, &r.fault);
+
         show(&r, &damage);
+        if (kept != FIRN_OK)
+            (void)firn_trouble_tell(view, NULL, kept, &r.fault);
         exit = outcome(&r, &damage, layout_exit);
         if (status == FIRN_NO_INPUT && exit < FIRN_EXIT_LOST)
             exit = FIRN_EXIT_NO_INPUT;
+        if (kept != FIRN_OK && exit < FIRN_EXIT_LOST)
+            exit = firn_trouble_exit(kept);
     } else {
         exit = firn_trouble_tell(view, r.fault.what[0] != '\0' ? NULL : r.container, status, &r.fault);
     }
+    record(&r, &damage, status, exit);
+    firn_loss_close(&r.loss);
     firn_store_stage_close(r.stage);
     firn_opening_close(&r.opening);
-    return exit;
+    return firn_lines_close(&r.events, exit);
 }
 
 const struct firn_command firn_command_restore = {
@@ -284,10 +331,14 @@ const struct firn_command firn_command_restore = {
     .about = "Restores all items, or those that the patterns name, with all their metadata.\n"
              "Damaged blocks are repaired in memory; the container is not written to. Only\n"
              "what is proved whole by its hashes is given back; what is lost is listed, byte\n"
-             "by byte with --json. Nothing outside DIR is touched. Restore to a place of its\n"
-             "own first and look at it before anything is replaced.\n\n"
+             "by byte with --json or --report. Nothing outside DIR is touched. Restore to a\n"
+             "place of its own first and look at it before anything is replaced.\n\n"
+             "FILE may be a device, a pipe, or - for standard input; what cannot be searched is\n"
+             "copied to a temporary file first. Blocks that are not where they belong, since\n"
+             "the head is missing or bytes were lost or put in, are found where they are.\n\n"
              "Exit status: 0 intact; 1 damage was met and everything was given back; 2 bytes\n"
              "are lost.\n",
-    .example = "  firn restore quay-1931.firn -C /srv/reading-room 'quay/ledgers'\n",
+    .example = "  firn restore quay-1931.firn -C /srv/reading-room 'quay/ledgers'\n"
+               "  firn restore --reread 5 --incomplete keep --report lost.txt /dev/sdx -C rescued\n",
     .options = options, .option_count = sizeof options / sizeof options[0], .run = run
 };

@@ -11,7 +11,8 @@
 #include "desk/view.h"
 
 extern const struct firn_command firn_command_pack, firn_command_restore, firn_command_scrub, firn_command_inventory,
-    firn_command_describe;
+    firn_command_describe, firn_command_manifest;
+extern const struct firn_command firn_command_collate, firn_command_drill;
 extern const struct firn_command firn_command_forecast, firn_command_label;
 
 #endif

@@ -9,7 +9,7 @@
 
 static const struct firn_command *const commands[] = {
     &firn_command_pack, &firn_command_restore, &firn_command_scrub, &firn_command_inventory, &firn_command_describe,
-    &firn_command_forecast, &firn_command_label,
+    &firn_command_manifest, &firn_command_collate, &firn_command_drill, &firn_command_forecast, &firn_command_label,
 };
 
 static void help(FILE *out)

@@ -3,41 +3,144 @@
 #include "desk/opening.h"
 
 #include "desk/interrupt.h"
+#include "desk/opening_store.h"
+#include "desk/progress.h"
 #include "desk/trouble.h"
 
 #include <inttypes.h>
-#include <string.h>
-#include <unistd.h>
 
-int firn_opening_make(struct firn_opening *opening, const char *path, const struct firn_args *args,
-                      struct firn_view *view)
+static struct firn_store *top(struct firn_opening *opening)
+{
+    return &opening->stores[opening->store_count - 1];
+}
+
+/* Opens the reader on the last store, with a patient one in front of it if that is asked for. */
+static enum firn_status open_reader(struct firn_opening *opening, const struct firn_reader_options *like,
+                                    struct firn_fault *fault)
+{
+    struct firn_reader_options options = *like;
+    enum firn_status status = FIRN_OK;
+
+    if (opening->readings > 0) {
+        status = firn_store_patient(top(opening), opening->readings, options.memory,
+                                    &opening->stores[opening->store_count]);
+        opening->store_count += status == FIRN_OK;
+    }
+    options.store = top(opening);
+    return status == FIRN_OK ? firn_reader_open(&options, fault, &opening->reader) : status;
+}
+
+/* Back to the store at the bottom. */
+static void close_reader(struct firn_opening *opening, unsigned stores_left)
+{
+    firn_reader_free(opening->reader);
+    opening->reader = NULL;
+    while (opening->store_count > stores_left) {
+        top(opening)->close(top(opening)->self);
+        opening->store_count--;
+    }
+}
+
+/*
+ * Whether what was found may be the plain look of a container that bytes were lost from or put into: then its last
+ * record is not where it should be. A device, longer than what was written to it, is not looked through for nothing.
+ */
+static bool odd(const struct firn_reader_layout *layout)
+{
+    return !layout->end_known || !layout->colophon_found || layout->blocks_missing > 0;
+}
+
+static void tell_stretches(struct firn_view *view, const char *path, uint64_t stretches)
+{
+    char words[300], count[FIRN_TEXT_COUNT_ROOM];
+    struct firn_text text;
+
+    firn_text_start(&text, words, sizeof words);
+    if (stretches == 1)
+        firn_text_add(&text, "its blocks are not where they belong: its head is missing or was put behind something");
+    else
+        firn_text_add(&text, "its blocks are not where they belong: bytes were lost or put in, it is in %s pieces",
+                      firn_text_count(stretches, count));
+    firn_text_add(&text, "; read from where they are, places told below are those they should have; collate makes "
+                         "a sound copy");
+    firn_view_finding(view, "misplaced", path, words);
+}
+
+static void step(void *self, uint64_t at, uint64_t bytes)
+{
+    struct firn_progress *progress = self;
+
+    progress->goal_bytes = bytes;
+    firn_progress_step(progress, 0, at);
+}
+
+/*
+ * Tries to find the blocks of a container that cannot be read as it lies there. FIRN_OK when it can be read now;
+ * FIRN_END when that does not help.
+ */
+static enum firn_status realign(struct firn_opening *opening, const struct firn_reader_options *options,
+                                struct firn_view *view, const char *path, struct firn_fault *fault)
+{
+    struct firn_progress progress;
+    struct firn_store_watch watch = { .self = &progress, .progress = step, .stop = firn_interrupt_asked };
+    struct firn_store *store = &opening->stores[1];
+    enum firn_status status;
+
+    close_reader(opening, 1);
+    firn_progress_start(&progress, "looking for blocks", 0, view->quiet || view->json);
+    status = firn_store_realign(&opening->stores[0], &watch, options->memory, store, &opening->stretches, fault);
+    firn_progress_wipe(&progress);
+    if (status != FIRN_OK)
+        return status;
+    opening->store_count = 2;
+    status = open_reader(opening, options, fault);
+    if (status == FIRN_OK)
+        tell_stretches(view, path, opening->stretches);
+    return status;
+}
+
+int firn_opening_make_patient(struct firn_opening *opening, const char *path, unsigned readings,
+                              const struct firn_args *args, struct firn_view *view)
 {
     struct firn_reader_options options = {
-        .store = &opening->store, .memory = firn_memory_system(), .threads = args->threads, .stop = firn_interrupt_asked
+        .memory = firn_memory_system(), .threads = args->threads, .stop = firn_interrupt_asked
     };
     struct firn_fault fault = { 0 };
     enum firn_status status;
 
-    *opening = (struct firn_opening){ .reader = NULL };
-    if (strcmp(path, "-") == 0)
-        status = firn_store_spool(STDIN_FILENO, options.memory, &opening->store, &fault);
-    else
-        status = firn_store_open(path, FIRN_STORE_READ, options.memory, &opening->store, &fault);
-    opening->store_open = status == FIRN_OK;
+    *opening = (struct firn_opening){ .readings = readings };
+    status = firn_opening_store(view, path, options.memory, &opening->stores[0], &fault);
+    opening->store_count = status == FIRN_OK;
     if (status == FIRN_OK)
-        status = firn_reader_open(&options, &fault, &opening->reader);
+        status = open_reader(opening, &options, &fault);
+    if (status == FIRN_NOT_CONTAINER || (status == FIRN_OK && odd(firn_reader_layout_of(opening->reader)))) {
+        enum firn_status before = status;
+
+        status = realign(opening, &options, view, path, &fault);
+        if (status == FIRN_END)      /* as it was, then */
+            status = before == FIRN_OK ? open_reader(opening, &options, &fault) : before;
+    }
     if (status == FIRN_OK)
         return FIRN_EXIT_SOUND;
     firn_opening_close(opening);
     return firn_trouble_tell(view, path, status, &fault);
 }
 
+int firn_opening_make(struct firn_opening *opening, const char *path, const struct firn_args *args,
+                      struct firn_view *view)
+{
+    return firn_opening_make_patient(opening, path, 0, args, view);
+}
+
 void firn_opening_close(struct firn_opening *opening)
 {
-    firn_reader_free(opening->reader);
-    if (opening->store_open)
-        opening->store.close(opening->store.self);
+    close_reader(opening, 0);
     *opening = (struct firn_opening){ .reader = NULL };
+}
+
+uint64_t firn_opening_gained(const struct firn_opening *opening)
+{
+    return opening->store_count == 0 ? 0 : firn_store_patient_gained(&opening->stores[opening->store_count - 1]);
 }
 
 void firn_opening_show_layout(struct firn_view *view, const struct firn_reader_layout *layout)
@@ -111,4 +214,14 @@ int firn_opening_remark(struct firn_view *view, const char *path, const struct f
         worst = worst == FIRN_EXIT_SOUND ? FIRN_EXIT_SAFE : worst;
     }
     return worst;
+}
+
+int firn_opening_look(struct firn_view *view, const char *path, const struct firn_opening *opening)
+{
+    struct firn_reader_layout layout = *firn_reader_layout_of(opening->reader);
+    int exit;
+
+    layout.title_sound = layout.title_sound || opening->stretches > 0;
+    exit = firn_opening_remark(view, path, &layout);
+    return exit == FIRN_EXIT_SOUND && opening->stretches > 0 ? FIRN_EXIT_SAFE : exit;
 }

@@ -18,6 +18,7 @@ struct shelf {
     firn_shelf_teller *tell;
     void (*trouble)(void *self, const char *path, int os_error);
     void *self;
+    bool all;      /* files of any kind */
 };
 
 static int by_bytes(const struct dirent **a, const struct dirent **b)
@@ -64,7 +65,7 @@ static enum firn_status visit(const struct shelf *shelf, const char *folder, con
         shelf->trouble(shelf->self, path, errno);
     else if (S_ISDIR(there.st_mode))
         status = walk_folder(shelf, path);
-    else if (S_ISREG(there.st_mode) && looks_like_container(path))
+    else if (S_ISREG(there.st_mode) && (shelf->all || looks_like_container(path)))
         shelf->tell(shelf->self, path);
     free(path);
     return status;
@@ -92,14 +93,28 @@ static enum firn_status walk_folder(const struct shelf *shelf, const char *path)
     return status;
 }
 
+static enum firn_status walk(const struct shelf *shelf, const char *path)
+{
+    struct stat there;
+
+    if (path[0] != '\0' && stat(path, &there) == 0 && S_ISDIR(there.st_mode))
+        return walk_folder(shelf, path);
+    shelf->tell(shelf->self, path);
+    return FIRN_OK;
+}
+
 enum firn_status firn_shelf_walk(const char *path, firn_shelf_teller *tell,
                                  void (*trouble)(void *self, const char *path, int os_error), void *self)
 {
     struct shelf shelf = { .tell = tell, .trouble = trouble, .self = self };
-    struct stat there;
 
-    if (path[0] != '\0' && stat(path, &there) == 0 && S_ISDIR(there.st_mode))
-        return walk_folder(&shelf, path);
-    tell(self, path);
-    return FIRN_OK;
+    return walk(&shelf, path);
+}
+
+enum firn_status firn_shelf_files(const char *path, firn_shelf_teller *tell,
+                                  void (*trouble)(void *self, const char *path, int os_error), void *self)
+{
+    struct shelf shelf = { .tell = tell, .trouble = trouble, .self = self, .all = true };
+
+    return walk(&shelf, path);
 }

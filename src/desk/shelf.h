@@ -21,4 +21,8 @@ typedef void (firn_shelf_teller)(void *self, const char *path);
 enum firn_status firn_shelf_walk(const char *path, firn_shelf_teller *tell,
                                  void (*trouble)(void *self, const char *path, int os_error), void *self);
 
+/* The same, but for every regular file, whatever it is. */
+enum firn_status firn_shelf_files(const char *path, firn_shelf_teller *tell,
+                                  void (*trouble)(void *self, const char *path, int os_error), void *self);
+
 #endif

@@ -2,6 +2,8 @@
 /* SPDX-License-Identifier: BSD-2-Clause */
 #include "desk/view.h"
 
+#include "desk/json.h"
+
 #include <inttypes.h>
 #include <string.h>
 
@@ -32,13 +34,9 @@ static void put_json(struct firn_view *view, const char *field, const char *word
 {
     char buffer[WORDS_ROOM];
     struct firn_text text;
-    bool exact;
 
     put_field(view, field);
-    firn_text_start(&text, buffer, sizeof buffer);
-    exact = firn_text_add_json(&text, words);
-    fputs(buffer, view->out);
-    if (exact)
+    if (firn_json_string(view->out, words))
         return;
     firn_text_start(&text, buffer, sizeof buffer);
     firn_text_add_hex(&text, (const uint8_t *)words, strlen(words));

@@ -1,22 +1,32 @@
-/* transfer/expect.c - holding what is taken in against the donor's SHA-256 manifest */
+/* transfer/expect.c - holding what is taken in against the donor's manifest */
 /* SPDX-License-Identifier: BSD-2-Clause */
 #include "firn/expect.h"
 
 #include "base/fault.h"
 #include "base/memory.h"
 #include "base/text.h"
+#include "transfer/manifest_lines.h"
 #include "transfer/names.h"
 #include "transfer/stored_name.h"
 
 #include <errno.h>
 #include <fcntl.h>
+#include <string.h>
 #include <unistd.h>
 
-enum { DIGEST_DIGITS = 2 * FIRN_ITEM_SHA256_BYTES, PORTION_BYTES = 1 << 16, LINE_MAX_BYTES = 1 << 16 };
+enum { DIGEST_BYTES_MAX = 64 };
+
+/* Which digest it is its length tells. */
+static const struct { size_t bytes; unsigned asked; } kinds[] = {
+    { FIRN_ITEM_SHA256_BYTES, 0 }, { 64, FIRN_INTAKE_SHA512 }, { 16, FIRN_INTAKE_MD5 }
+};
+
+enum { SHA256, SHA512, MD5, KINDS };
 
 /* A path as the manifest means it. */
 struct listed {
-    uint8_t sha256[FIRN_ITEM_SHA256_BYTES];
+    unsigned kind;
+    uint8_t digest[DIGEST_BYTES_MAX];
     bool seen;
     bool matched;                /* the last time it was seen */
 };
@@ -30,6 +40,7 @@ struct firn_expect {
     const struct firn_memory *memory;
     struct firn_names *listed;
     struct firn_names *aliases;
+    unsigned digests;            /* enum firn_intake_digest, or'ed */
 };
 
 static enum firn_status make(const struct firn_memory *memory, struct firn_expect **out)
@@ -63,37 +74,9 @@ void firn_expect_free(struct firn_expect *expect)
 
 /* ---- one line ---- */
 
-/* Turns what a line says for LF, CR, % or \ into the byte it stands for, in place. */
-static void decode(char *path, bool backslashes)
-{
-    static const struct { const char *written; char meant; } percents[] = {
-        { "%0A", '\n' }, { "%0a", '\n' }, { "%0D", '\r' }, { "%0d", '\r' }, { "%25", '%' },
-    }, slashes[] = { { "\\n", '\n' }, { "\\r", '\r' }, { "\\\\", '\\' } };
-    char *to = path;
-
-    while (*path != '\0') {
-        char meant = *path;
-        size_t bytes = 1;
-
-        for (size_t i = 0; !backslashes && i < sizeof percents / sizeof percents[0]; i++)
-            if (strncmp(path, percents[i].written, 3) == 0) {
-                meant = percents[i].meant;
-                bytes = 3;
-            }
-        for (size_t i = 0; backslashes && i < sizeof slashes / sizeof slashes[0]; i++)
-            if (strncmp(path, slashes[i].written, 2) == 0) {
-                meant = slashes[i].meant;
-                bytes = 2;
-            }
-        *to++ = meant;
-        path += bytes;
-    }
-    *to = '\0';
-}
-
 /* Enters a path with its digest; a path that is there already must have the same. */
-static enum firn_status enter(struct firn_expect *expect, const char *path, const uint8_t *sha256, struct listed **out,
-                              const char **fault)
+static enum firn_status enter(struct firn_expect *expect, const char *path, unsigned kind, const uint8_t *digest,
+                              struct listed **out, const char **fault)
 {
     char stored[FIRN_STORED_NAME_ROOM];
     void *record;
@@ -109,10 +92,12 @@ static enum firn_status enter(struct firn_expect *expect, const char *path, cons
         return status;
     *out = record;
     if (fresh) {
-        memcpy((*out)->sha256, sha256, FIRN_ITEM_SHA256_BYTES);
+        (*out)->kind = kind;
+        memcpy((*out)->digest, digest, kinds[kind].bytes);
+        expect->digests |= kinds[kind].asked;
         return FIRN_OK;
     }
-    if (memcmp((*out)->sha256, sha256, FIRN_ITEM_SHA256_BYTES) != 0) {
+    if ((*out)->kind != kind || memcmp((*out)->digest, digest, kinds[kind].bytes) != 0) {
         *fault = "a path named twice with different digests";
         return FIRN_BAD_DATA;
     }
@@ -137,8 +122,9 @@ static enum firn_status enter_alias(struct firn_expect *expect, const char *path
 /* One line without its end, which may be changed. */
 static enum firn_status take_line(struct firn_expect *expect, char *line, const char **fault)
 {
-    uint8_t sha256[FIRN_ITEM_SHA256_BYTES];
+    uint8_t digest[DIGEST_BYTES_MAX];
     bool backslashes = line[0] == '\\';
+    unsigned kind = SHA256;
     struct listed *listed = NULL;
     size_t digits, blanks;
     enum firn_status status;
@@ -147,8 +133,10 @@ static enum firn_status take_line(struct firn_expect *expect, char *line, const 
 
     line += backslashes;
     digits = strcspn(line, " \t");
-    if (digits != DIGEST_DIGITS || firn_text_parse_hex(line, FIRN_ITEM_SHA256_BYTES, sha256) != FIRN_OK) {
-        *fault = "no SHA-256 at the start of a line";
+    while (kind < KINDS && digits != 2 * kinds[kind].bytes)
+        kind++;
+    if (kind == KINDS || firn_text_parse_hex(line, kinds[kind].bytes, digest) != FIRN_OK) {
+        *fault = "no SHA-256, SHA-512 or MD5 at the start of a line";
         return FIRN_BAD_DATA;
     }
     blanks = strspn(line + digits, " \t");
@@ -161,96 +149,33 @@ static enum firn_status take_line(struct firn_expect *expect, char *line, const 
     if (strlen(path) < sizeof raw && (path[0] == '*' || strchr(path, '%') != NULL))
         memcpy(raw, path, strlen(path) + 1);
     path += path[0] == '*';
-    decode(path, backslashes);
-    status = enter(expect, path, sha256, &listed, fault);
+    firn_manifest_lines_decode(path, backslashes);
+    status = enter(expect, path, kind, digest, &listed, fault);
     return status == FIRN_OK && raw[0] != '\0' ? enter_alias(expect, raw, listed) : status;
 }
 
 /* ---- all lines ---- */
 
-/* What of a line has come so far. */
-struct reading {
-    struct firn_expect *expect;
-    char *line;                  /* LINE_MAX_BYTES */
-    size_t used;
-    uint64_t number;             /* of the line, from 1 */
-    bool after_cr;
-    const char *fault;
-};
-
-static enum firn_status end_line(struct reading *reading)
+static enum firn_status take(void *self, char *line, const char **fault)
 {
-    enum firn_status status = FIRN_OK;
-
-    reading->line[reading->used] = '\0';
-    if (memchr(reading->line, '\0', reading->used) != NULL) {
-        reading->fault = "a NUL in a line";
-        return FIRN_BAD_DATA;
-    }
-    if (reading->used > 0)
-        status = take_line(reading->expect, reading->line, &reading->fault);
-    reading->used = 0;
-    reading->number += status == FIRN_OK;
-    return status;
-}
-
-static enum firn_status take_byte(struct reading *reading, char byte)
-{
-    bool half_end = byte == '\n' && reading->after_cr;
-
-    reading->after_cr = byte == '\r';
-    if (half_end)
-        return FIRN_OK;
-    if (byte == '\n' || byte == '\r')
-        return end_line(reading);
-    if (reading->used == LINE_MAX_BYTES - 1) {
-        reading->fault = "a line that is too long";
-        return FIRN_BAD_DATA;
-    }
-    reading->line[reading->used++] = byte;
-    return FIRN_OK;
-}
-
-static enum firn_status read_all(struct reading *reading, int descriptor, char *portion, int *os_error)
-{
-    enum firn_status status = FIRN_OK;
-    ssize_t got = 1;
-
-    while (got != 0 && status == FIRN_OK) {
-        got = read(descriptor, portion, PORTION_BYTES);
-        if (got < 0 && errno == EINTR)
-            continue;
-        if (got < 0) {
-            *os_error = errno;
-            return FIRN_IO;
-        }
-        for (ssize_t i = 0; i < got && status == FIRN_OK; i++)
-            status = take_byte(reading, portion[i]);
-    }
-    return status == FIRN_OK ? end_line(reading) : status;
+    return take_line(self, line, fault);
 }
 
 enum firn_status firn_expect_load(int descriptor, const struct firn_memory *memory, struct firn_fault *fault,
                                   struct firn_expect **out)
 {
-    char *room = memory->get(memory->self, PORTION_BYTES + LINE_MAX_BYTES);
-    struct reading reading = { .number = 1, .fault = "" };
-    enum firn_status status = FIRN_NO_MEMORY;
-    int os_error = 0;
+    struct firn_expect *expect;
+    enum firn_status status = make(memory, &expect);
 
     *out = NULL;
-    if (room != NULL)
-        status = make(memory, &reading.expect);
-    if (status == FIRN_OK) {
-        reading.line = room + PORTION_BYTES;
-        status = read_all(&reading, descriptor, room, &os_error);
-    }
-    memory->put(memory->self, room);
+    if (status != FIRN_OK)
+        return firn_fault_tell(fault, status, 0, 0, "");
+    status = firn_manifest_lines_read(descriptor, memory, take, expect, fault);
     if (status != FIRN_OK) {
-        firn_expect_free(reading.expect);
-        return firn_fault_tell(fault, status, os_error, reading.number, reading.fault);
+        firn_expect_free(expect);
+        return status;
     }
-    *out = reading.expect;
+    *out = expect;
     return FIRN_OK;
 }
 
@@ -302,26 +227,40 @@ static struct listed *look_up_item(const struct firn_expect *expect, const char 
     return listed;
 }
 
+unsigned firn_expect_digests(const struct firn_expect *expect)
+{
+    return expect->digests;
+}
+
+static enum firn_expect_verdict judge(struct listed *listed, const uint8_t *digest)
+{
+    listed->seen = true;
+    listed->matched = digest != NULL && memcmp(listed->digest, digest, kinds[listed->kind].bytes) == 0;
+    return listed->matched ? FIRN_EXPECT_MATCH : FIRN_EXPECT_MISMATCH;
+}
+
 enum firn_expect_verdict firn_expect_see(struct firn_expect *expect, const char *name, size_t operand_bytes,
-                                         const uint8_t sha256[FIRN_ITEM_SHA256_BYTES])
+                                         const uint8_t sha256[FIRN_ITEM_SHA256_BYTES],
+                                         const struct firn_intake_digests *others)
 {
     struct listed *listed = look_up_item(expect, name, operand_bytes);
 
     if (listed == NULL)
         return FIRN_EXPECT_UNLISTED;
-    listed->seen = true;
-    listed->matched = memcmp(listed->sha256, sha256, FIRN_ITEM_SHA256_BYTES) == 0;
-    return listed->matched ? FIRN_EXPECT_MATCH : FIRN_EXPECT_MISMATCH;
+    if (listed->kind == SHA256)
+        return judge(listed, sha256);
+    return judge(listed, others == NULL ? NULL : listed->kind == SHA512 ? others->sha512 : others->md5);
 }
 
 enum firn_expect_verdict firn_expect_see_link(struct firn_expect *expect, const char *name, size_t operand_bytes,
                                               const char *target)
 {
     const struct listed *listed = look_up_item(expect, target, operand_bytes);
+    struct listed *link = look_up_item(expect, name, operand_bytes);
 
-    if (listed == NULL || !listed->matched)
+    if (listed == NULL || !listed->matched || link == NULL || link->kind != listed->kind)
         return FIRN_EXPECT_UNLISTED;
-    return firn_expect_see(expect, name, operand_bytes, listed->sha256);
+    return judge(link, listed->digest);
 }
 
 uint64_t firn_expect_missing(const struct firn_expect *expect, void (*missing)(void *self, const char *path),

@@ -1,6 +1,5 @@
 /* transfer/intake.c - taking in files and folders */
 /* SPDX-License-Identifier: BSD-2-Clause */
-#define _GNU_SOURCE     /* O_NOATIME */
 #include "firn/intake.h"
 
 #include "base/fault.h"
@@ -10,6 +9,7 @@
 #include "transfer/intake_walk.h"
 #include "transfer/names.h"
 #include "transfer/operands.h"
+#include "transfer/quietly.h"
 #include "transfer/stored_name.h"
 
 #include <errno.h>
@@ -98,16 +98,7 @@ static bool go_to(struct job *job, size_t folder_bytes, const char *name)
     return true;
 }
 
-/* ---- opening ---- */
-
-static int open_quietly(int folder, const char *name, int flags)
-{
-    int descriptor = openat(folder, name, flags | O_NOATIME | O_NOFOLLOW | O_NONBLOCK | O_NOCTTY | O_CLOEXEC);
-
-    if (descriptor < 0 && errno == EPERM)      /* only its owner may keep the access time */
-        descriptor = openat(folder, name, flags | O_NOFOLLOW | O_NONBLOCK | O_NOCTTY | O_CLOEXEC);
-    return descriptor;
-}
+/* ---- what stands in the way ---- */
 
 /* Why something that was there a moment ago cannot be opened. */
 static enum firn_intake_kind kind_of(int os_error)
@@ -361,7 +352,7 @@ static enum firn_status store_file(struct job *job, int descriptor, const struct
 
 static enum firn_status take_file(struct job *job, int folder, const char *name)
 {
-    int descriptor = open_quietly(folder, name, O_RDONLY);
+    int descriptor = firn_quietly_open(folder, name, O_RDONLY);
     const struct link_record *record;
     struct stat facts;
     enum firn_status status = FIRN_OK;
@@ -394,7 +385,7 @@ static void count_file(struct job *job, const struct stat *facts)
 
 static enum firn_status take_folder(struct job *job, int folder, const char *name, struct stat *facts)
 {
-    int descriptor = open_quietly(folder, name, O_RDONLY | O_DIRECTORY);
+    int descriptor = firn_quietly_open(folder, name, O_RDONLY | O_DIRECTORY);
     enum firn_status status = FIRN_OK;
     int error = errno;
 

@@ -27,13 +27,17 @@ enum firn_status firn_intake_run_start(struct firn_intake_run *run, struct firn_
     };
     run->buffer = run->memory->get(run->memory->self, FIRN_INTAKE_RUN_BUFFER_BYTES);
     status = run->buffer == NULL ? FIRN_NO_MEMORY : firn_pax_make(run->memory, &run->pax);
+    if (status == FIRN_OK && options->digests != 0)
+        status = firn_intake_more_make(options->digests, run->memory, &run->more);
     return status == FIRN_OK ? FIRN_OK : firn_fault_tell(fault, status, 0, 0, "");
 }
 
 void firn_intake_run_end(struct firn_intake_run *run)
 {
+    firn_intake_more_free(run->more);
     firn_pax_free(run->pax);
     run->memory->put(run->memory->self, run->buffer);
+    run->more = NULL;
     run->pax = NULL;
     run->buffer = NULL;
 }
@@ -77,6 +81,8 @@ enum firn_status firn_intake_run_announce(struct firn_intake_run *run, struct ar
         firn_intake_run_tell(run, FIRN_INTAKE_UNSUPPORTED, path, 0, "metadata that a pax header cannot hold");
         return FIRN_END;
     }
+    if (run->more != NULL && firn_intake_more_start(run->more, item) != FIRN_OK)
+        return firn_fault_tell(run->fault, FIRN_NO_MEMORY, 0, 0, path);
     return firn_writer_item(run->writer, &announced);
 }
 
@@ -89,6 +95,8 @@ enum firn_status firn_intake_run_content(struct firn_intake_run *run, const uint
         size_t portion = bytes == NULL && count > sizeof zeros ? sizeof zeros : (size_t)count;
 
         status = firn_writer_content(run->writer, bytes == NULL ? zeros : bytes, portion);
+        if (run->more != NULL)
+            firn_intake_more_add(run->more, bytes == NULL ? zeros : bytes, portion);
         count -= portion;
         if (bytes != NULL)
             bytes += portion;
@@ -108,6 +116,8 @@ enum firn_status firn_intake_run_stored(struct firn_intake_run *run, struct firn
         return status;
     if (told->has_content)
         told->sha256 = digest;
+    if (told->has_content && run->more != NULL)
+        told->digests = firn_intake_more_finish(run->more);
     run->report->items++;
     run->report->hard_links += told->link != NULL;
     if (run->options->item != NULL)

@@ -9,6 +9,7 @@
 #define FIRN_TRANSFER_INTAKE_RUN_H
 
 #include "firn/intake.h"
+#include "transfer/intake_more.h"
 #include "transfer/pax.h"
 
 enum { FIRN_INTAKE_RUN_BUFFER_BYTES = 1 << 20 };
@@ -21,9 +22,10 @@ struct firn_intake_run {
     struct firn_intake_report *report;
     struct firn_pax *pax;
     uint8_t *buffer;                     /* FIRN_INTAKE_RUN_BUFFER_BYTES, for content on its way */
+    struct firn_intake_more *more;       /* digests beyond SHA-256, NULL when none are asked for */
 };
 
-/* report is zeroed. FIRN_OK or FIRN_NO_MEMORY; to be ended in either case. */
+/* report is zeroed. FIRN_OK, FIRN_NO_MEMORY, FIRN_FOREIGN_FORMAT; to be ended in any case. */
 enum firn_status firn_intake_run_start(struct firn_intake_run *run, struct firn_writer *writer,
                                        const struct firn_intake_options *options, struct firn_fault *fault,
                                        struct firn_intake_report *report);

@@ -237,6 +237,19 @@ struct firn_outlet_target *firn_outlet_run_link(struct firn_outlet_run *run)
     return NULL;
 }
 
+/* Two stretches may share a block, where one ends and the next one begins. */
+static void add_blocks(struct firn_outlet_run *run, struct firn_outlet_range *range)
+{
+    if (run->lost_blocks == 0)
+        return;
+    if (range->lost_blocks == 0)
+        range->first_block = run->first_block;
+    else if (range->last_block == run->first_block)
+        range->lost_blocks--;
+    range->last_block = run->last_block;
+    range->lost_blocks += run->lost_blocks;
+}
+
 enum firn_status firn_outlet_run_gap(struct firn_outlet_run *run, uint64_t at, uint64_t count,
                                      enum firn_reader_loss why, uint64_t container_at)
 {
@@ -247,6 +260,7 @@ enum firn_status firn_outlet_run_gap(struct firn_outlet_run *run, uint64_t at, u
     run->lost_bytes += count;
     if (last != NULL && last->why == why && last->at + last->bytes == at) {
         last->bytes += count;
+        add_blocks(run, last);
         return FIRN_OK;
     }
     status = firn_memory_grow(run->memory, &array, &run->range_capacity, run->range_count + 1, sizeof *run->ranges);
@@ -256,7 +270,16 @@ enum firn_status firn_outlet_run_gap(struct firn_outlet_run *run, uint64_t at, u
     run->ranges[run->range_count++] = (struct firn_outlet_range){
         .at = at, .bytes = count, .why = why, .container_at = container_at
     };
+    if (why == FIRN_READER_LOSS_BLOCKS)
+        add_blocks(run, &run->ranges[run->range_count - 1]);
     return FIRN_OK;
+}
+
+void firn_outlet_run_lost_blocks(struct firn_outlet_run *run, uint64_t first, uint64_t last, uint64_t count)
+{
+    run->first_block = first;
+    run->last_block = last;
+    run->lost_blocks = count;
 }
 
 enum firn_outlet_verdict firn_outlet_run_judge(const struct firn_outlet_run *run,

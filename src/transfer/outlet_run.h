@@ -38,6 +38,7 @@ struct firn_outlet_run {
     struct firn_outlet_target *link;        /* if it is a hard link: where it leads; NULL if nowhere */
     struct firn_outlet_range *ranges;       /* that are gone */
     size_t range_count, range_capacity;
+    uint64_t first_block, last_block, lost_blocks;      /* of the stretch that the next gap is about */
     uint64_t lost_bytes;
 };
 
@@ -66,6 +67,9 @@ struct firn_outlet_target *firn_outlet_run_link(struct firn_outlet_run *run);
 /* Notes a gap of the item at hand; adjoining ones become one. FIRN_OK or FIRN_NO_MEMORY. */
 enum firn_status firn_outlet_run_gap(struct firn_outlet_run *run, uint64_t at, uint64_t count,
                                      enum firn_reader_loss why, uint64_t container_at);
+
+/* Notes the blocks that the next gaps are about. */
+void firn_outlet_run_lost_blocks(struct firn_outlet_run *run, uint64_t first, uint64_t last, uint64_t count);
 
 /* What the outcome means; nothing is told yet. */
 enum firn_outlet_verdict firn_outlet_run_judge(const struct firn_outlet_run *run,

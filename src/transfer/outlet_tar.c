@@ -298,6 +298,13 @@ static enum firn_status visit_gap(void *self, const struct firn_item *item, uint
     return firn_outlet_run_gap(&job->run, at, count, why, container_at);
 }
 
+static void visit_lost_blocks(void *self, uint64_t first, uint64_t last, uint64_t count)
+{
+    struct job *job = self;
+
+    firn_outlet_run_lost_blocks(&job->run, first, last, count);
+}
+
 static enum firn_status visit_end(void *self, const struct firn_item *item, const struct firn_reader_outcome *outcome)
 {
     struct job *job = self;
@@ -325,7 +332,7 @@ static enum firn_status write_archive(struct job *job, struct firn_reader *reade
 {
     const struct firn_reader_visitor visitor = {
         .self = job, .wants = visit_wants, .begin = visit_begin, .bytes = visit_bytes, .gap = visit_gap,
-        .end = visit_end, .foresight = true
+        .end = visit_end, .lost_blocks = visit_lost_blocks, .foresight = true
     };
     enum firn_status status;
 

@@ -83,6 +83,25 @@ static void counts_are_whole_numbers(void **state)
     (void)state;
 }
 
+static void durations_have_units(void **state)
+{
+    static const struct { const char *words; enum firn_status status; uint64_t seconds; } durations[] = {
+        { "45s", FIRN_OK, 45 }, { "90min", FIRN_OK, 5400 }, { "2h", FIRN_OK, 7200 }, { "30 d", FIRN_OK, 2592000 },
+        { "2w", FIRN_OK, 1209600 }, { "0s", FIRN_OK, 0 }, { "4294967295w", FIRN_OK, UINT64_C(2597596220016000) },
+        { "2", FIRN_BAD_ARGUMENT, 0 }, { "h", FIRN_BAD_ARGUMENT, 0 }, { "", FIRN_BAD_ARGUMENT, 0 },
+        { "-2h", FIRN_BAD_ARGUMENT, 0 }, { "1.5h", FIRN_BAD_ARGUMENT, 0 }, { "2h ", FIRN_BAD_ARGUMENT, 0 },
+        { "2H", FIRN_BAD_ARGUMENT, 0 }, { "99999999999999999999s", FIRN_BAD_ARGUMENT, 0 },
+    };
+
+    (void)state;
+    for (size_t i = 0; i < sizeof durations / sizeof durations[0]; i++) {
+        uint64_t seconds = 0;
+
+        assert_int_equal(firn_text_parse_duration(durations[i].words, &seconds), durations[i].status);
+        assert_true(seconds == durations[i].seconds);
+    }
+}
+
 /* RFC 3629, section 3 and 4: shortest form only, no surrogates, nothing above U+10FFFF */
 static const struct { const char *bytes; size_t length;
 } characters[] = {
@@ -215,7 +234,8 @@ int main(void)
 {
     const struct CMUnitTest tests[] = {
         cmocka_unit_test(parses_sizes), cmocka_unit_test(shows_sizes), cmocka_unit_test(groups_counts),
-        cmocka_unit_test(counts_are_whole_numbers), cmocka_unit_test(knows_utf8), cmocka_unit_test(shows_names_safely),
+        cmocka_unit_test(counts_are_whole_numbers),
+        cmocka_unit_test(durations_have_units), cmocka_unit_test(knows_utf8), cmocka_unit_test(shows_names_safely),
         cmocka_unit_test(never_leaves_its_buffer), cmocka_unit_test(hexadecimal_both_ways),
         cmocka_unit_test(bytes_are_little_endian), cmocka_unit_test(every_status_has_its_phrase),
         cmocka_unit_test(faults_are_filled_in),

@@ -253,6 +253,95 @@ static void tells_what_is_lost(void **state)
     ward_free(&ward);
 }
 
+/* --- in parts --- */
+
+struct parts {
+    struct ward ward;
+    uint64_t begin;                /* what begin_at says */
+    unsigned opened;
+    uint64_t found[3], next;       /* by kind; no block comes twice or out of order */
+};
+
+static uint64_t tell_begin(void *self, const uint8_t id[8], uint64_t all)
+{
+    struct parts *parts = self;
+
+    assert_memory_equal(id, packed->totals.id, 8);
+    assert_int_equal(all, blocks);
+    parts->opened++;
+    return parts->begin;
+}
+
+static void note_found(void *self, uint64_t block, enum firn_scrub_found what)
+{
+    struct parts *parts = self;
+
+    assert_true(block >= parts->next && block < blocks);
+    parts->next = block + 1;
+    parts->found[what]++;
+}
+
+/* Sheet by sheet in any parts: together they find and repair what one scrub does, and nothing twice. */
+static void goes_on_where_it_is_told(void **state)
+{
+    const uint64_t begins[] = { 0, SHEET, SHEET + 1, 2 * SHEET, 3 * SHEET, blocks };
+
+    (void)state;
+    for (size_t i = 0; i < sizeof begins / sizeof begins[0]; i++) {
+        uint64_t first = (begins[i] + SHEET - 1) / SHEET * SHEET;      /* of the first sheet that is checked */
+        int rebuilt = (first <= SHEET ? 5 : 0) + (first <= 2 * SHEET ? RUN - 4 : 0);
+        struct parts parts = { .begin = begins[i] };
+        struct ward *ward = &parts.ward;
+
+        ward_make(ward, packed->buffer.bytes, whole_bytes);
+        ward->options.self = &parts;
+        ward->options.begin_at = tell_begin;
+        ward->options.found = note_found;
+        flip(ward, 3, 9);
+        flip(ward, 2 * SHEET, 9);
+        wipe(ward, SHEET + 3, 5);
+        wipe(ward, 2 * SHEET + 20, RUN + 1);      /* five of them are lost, as below */
+        set_down(ward);
+        assert_int_equal(scrub(ward), FIRN_OK);
+        assert_int_equal(parts.opened, 1);
+        assert_int_equal(ward->report.reached, blocks);
+        assert_int_equal(ward->report.checked, first < blocks ? blocks - first : 0);
+        assert_int_equal(parts.found[FIRN_SCRUB_MENDED], (first == 0) + (first <= 2 * SHEET));
+        assert_int_equal(parts.found[FIRN_SCRUB_REBUILT], rebuilt);
+        assert_int_equal(parts.found[FIRN_SCRUB_LOST], first <= 2 * SHEET ? 5 : 0);
+        assert_int_equal(parts.found[FIRN_SCRUB_MENDED], ward->report.mended);
+        assert_int_equal(parts.found[FIRN_SCRUB_REBUILT], ward->report.rebuilt);
+        assert_int_equal(parts.found[FIRN_SCRUB_LOST], ward->report.lost);
+        ward_free(ward);
+    }
+}
+
+/* Stopped after any question: what it says it has reached is where a sheet begins, and has been repaired. */
+static void tells_how_far_it_came(void **state)
+{
+    uint64_t last = 0;
+
+    (void)state;
+    for (unsigned stops = 1; last < blocks; stops += 7) {
+        struct ward ward;
+        enum firn_status status;
+
+        ward_make(&ward, packed->buffer.bytes, whole_bytes);
+        for (uint64_t n = 0; n < blocks; n += SHEET)
+            flip(&ward, n, 5);
+        set_down(&ward);
+        ward.stops_left = stops;
+        status = scrub(&ward);
+        assert_true(status == FIRN_OK || status == FIRN_STOPPED);
+        assert_true(ward.report.reached % SHEET == 0 || ward.report.reached == blocks);
+        assert_int_equal(ward.report.checked, ward.report.reached);
+        assert_true(ward.report.reached >= last);
+        last = ward.report.reached;
+        assert_memory_equal(ward.container.now.bytes + 4096, packed->buffer.bytes + 4096, last * 4096);
+        ward_free(&ward);
+    }
+}
+
 static void joins_lost_blocks_to_runs(void **state)
 {
     struct ward ward;
@@ -852,6 +941,7 @@ int main(void)
     static const struct CMUnitTest singles[] = {
         cmocka_unit_test(is_silent_when_all_is_well), cmocka_unit_test(mends_stray_bits),
         cmocka_unit_test(rebuilds_a_run_from_the_reserve), cmocka_unit_test(tells_what_is_lost),
+        cmocka_unit_test(goes_on_where_it_is_told), cmocka_unit_test(tells_how_far_it_came),
         cmocka_unit_test(joins_lost_blocks_to_runs), cmocka_unit_test(heals_the_title_page),
         cmocka_unit_test(grows_what_was_cut_short), cmocka_unit_test(leaves_what_is_not_its_own),
         cmocka_unit_test(knows_the_end_of_a_last_sheet_that_is_full), cmocka_unit_test(mends_what_has_no_reserve),

@@ -6,6 +6,7 @@ umask 022
 : "${FIRN:?names the program}" "${DAMAGE:?names the tool that spoils files}"
 scratch=$(mktemp -d "${TMPDIR:-/tmp}/firn-end.XXXXXX")
 cd "$scratch" || exit 1
+export XDG_STATE_HOME=$scratch/state
 checks=0 failures=0
 trap 'chmod -R u+rwX "$scratch" 2>/dev/null; rm -rf "$scratch"' EXIT
 

@@ -2,6 +2,7 @@
 /* SPDX-License-Identifier: BSD-2-Clause */
 #include "firn/expect.h"
 
+#include "base/text.h"
 #include "help/fault_memory.h"
 #include "help/scratch.h"
 
@@ -18,6 +19,11 @@
 /* SHA-256 of "" and of "abc": FIPS 180-2 (2002), appendix B, and RFC 6234, section 8.5 */
 #define EMPTY "e3b0c44298fc1c149afbf4c8996fb92427ae41e4649b934ca495991b7852b855"
 #define ABC "ba7816bf8f01cfea414140de5dae2223b00361a396177a9cb410ff61f20015ad"
+
+/* SHA-512 of "abc": FIPS 180-2, appendix C.1; MD5: RFC 1321, appendix A.5 */
+#define ABC512 "ddaf35a193617abacc417349ae20413112e6fa4e89a97ea20a9eeee64b55d39a" \
+               "2192992a274fc1a836ba3c23a3feebbd454d4423643ce80e2a9ac94fa54ca49f"
+#define ABCMD5 "900150983cd24fb0d6963f7d28e17f72"
 
 static const uint8_t abc[32] = {
     0xba, 0x78, 0x16, 0xbf, 0x8f, 0x01, 0xcf, 0xea, 0x41, 0x41, 0x40, 0xde, 0x5d, 0xae, 0x22, 0x23,
@@ -80,8 +86,36 @@ static void holds_against(void **state)
     listed = firn_expect_count(expect);
     assert_int_equal(listed, c->text[0] != '\0');
     assert_int_equal(firn_expect_missing(expect, NULL, NULL), listed);
-    assert_int_equal(firn_expect_see(expect, c->name, c->operand_bytes, abc), c->verdict);
+    assert_int_equal(firn_expect_see(expect, c->name, c->operand_bytes, abc, NULL), c->verdict);
     assert_int_equal(firn_expect_missing(expect, NULL, NULL), c->verdict == FIRN_EXPECT_UNLISTED ? listed : 0);
+    firn_expect_free(expect);
+}
+
+/* Each digest is asked for only where a line has it, and each is held against its own. */
+static void knows_other_digests(void **state)
+{
+    static const char text[] = ABC512 "  one\n" ABCMD5 "  two\n" ABC "  three\n" ABC512 "  link\n" ABCMD5 "  odd\n";
+    struct firn_intake_digests digests = { .sha512 = { 0 } };
+    struct firn_fault fault = { 0 };
+    struct firn_expect *expect;
+
+    (void)state;
+    assert_int_equal(load(ABC "  one\n", strlen(ABC "  one\n"), firn_memory_system(), &fault, &expect), FIRN_OK);
+    assert_int_equal(firn_expect_digests(expect), 0);
+    firn_expect_free(expect);
+    assert_int_equal(load(text, sizeof text - 1, firn_memory_system(), &fault, &expect), FIRN_OK);
+    assert_int_equal(firn_expect_digests(expect), FIRN_INTAKE_SHA512 | FIRN_INTAKE_MD5);
+    assert_int_equal(firn_expect_see(expect, "one", 0, abc, &digests), FIRN_EXPECT_MISMATCH);
+    assert_int_equal(firn_expect_see(expect, "one", 0, abc, NULL), FIRN_EXPECT_MISMATCH);
+    assert_int_equal(firn_text_parse_hex(ABC512, 64, digests.sha512), FIRN_OK);
+    assert_int_equal(firn_expect_see(expect, "one", 0, abc, &digests), FIRN_EXPECT_MATCH);
+    assert_int_equal(firn_expect_see(expect, "two", 0, abc, &digests), FIRN_EXPECT_MISMATCH);
+    assert_int_equal(firn_text_parse_hex(ABCMD5, 16, digests.md5), FIRN_OK);
+    assert_int_equal(firn_expect_see(expect, "two", 0, abc, &digests), FIRN_EXPECT_MATCH);
+    assert_int_equal(firn_expect_see(expect, "three", 0, abc, &digests), FIRN_EXPECT_MATCH);
+    assert_int_equal(firn_expect_see_link(expect, "link", 0, "one"), FIRN_EXPECT_MATCH);
+    assert_int_equal(firn_expect_see_link(expect, "odd", 0, "one"), FIRN_EXPECT_UNLISTED);
+    assert_int_equal(firn_expect_missing(expect, NULL, NULL), 1);
     firn_expect_free(expect);
 }
 
@@ -126,7 +160,7 @@ static void tells_missing(void **state)
     (void)state;
     assert_int_equal(load(text, sizeof text - 1, firn_memory_system(), &fault, &expect), FIRN_OK);
     assert_int_equal(firn_expect_count(expect), 3);
-    assert_int_equal(firn_expect_see(expect, "two", 0, abc), FIRN_EXPECT_MATCH);
+    assert_int_equal(firn_expect_see(expect, "two", 0, abc, NULL), FIRN_EXPECT_MATCH);
     assert_int_equal(firn_expect_missing(expect, note_missing, missing), 2);
     assert_string_equal(missing, "one;three;");
     firn_expect_free(expect);
@@ -141,7 +175,7 @@ static void follows_links(void **state)
     (void)state;
     assert_int_equal(load(text, sizeof text - 1, firn_memory_system(), &fault, &expect), FIRN_OK);
     assert_int_equal(firn_expect_see_link(expect, "link", 0, "one"), FIRN_EXPECT_UNLISTED);      /* not seen yet */
-    assert_int_equal(firn_expect_see(expect, "one", 0, abc), FIRN_EXPECT_MATCH);
+    assert_int_equal(firn_expect_see(expect, "one", 0, abc, NULL), FIRN_EXPECT_MATCH);
     assert_int_equal(firn_expect_see_link(expect, "link", 0, "one"), FIRN_EXPECT_MATCH);
     assert_int_equal(firn_expect_see_link(expect, "wrong link", 0, "one"), FIRN_EXPECT_MISMATCH);
     assert_int_equal(firn_expect_see_link(expect, "link to nothing", 0, "unlisted"), FIRN_EXPECT_UNLISTED);
@@ -166,7 +200,7 @@ static void reads_sha256sum(void **state)
     assert_int_equal(firn_expect_open("sums", firn_memory_system(), &fault, &expect), FIRN_OK);
     assert_int_equal(firn_expect_count(expect), sizeof names / sizeof names[0]);
     for (size_t i = 0; i < sizeof names / sizeof names[0]; i++)
-        assert_int_equal(firn_expect_see(expect, names[i], 0, abc), FIRN_EXPECT_MATCH);
+        assert_int_equal(firn_expect_see(expect, names[i], 0, abc, NULL), FIRN_EXPECT_MATCH);
     assert_int_equal(firn_expect_missing(expect, NULL, NULL), 0);
     firn_expect_free(expect);
 }
@@ -222,7 +256,8 @@ int main(void)
     struct CMUnitTest tests[64];
     size_t count = 0;
     static const struct CMUnitTest others[] = {
-        cmocka_unit_test(tells_missing), cmocka_unit_test(follows_links), cmocka_unit_test(reads_sha256sum),
+        cmocka_unit_test(knows_other_digests), cmocka_unit_test(tells_missing), cmocka_unit_test(follows_links),
+        cmocka_unit_test(reads_sha256sum),
         cmocka_unit_test(says_when_it_cannot), cmocka_unit_test(lives_without_memory),
     };
 
