@@ -2,8 +2,10 @@
  * firn/reader.h - reading a container: its layout, its items, their content, repaired on the way
  *
  * Room: container. Nothing is handed out as good unless a 128-bit hash of exactly those bytes says so. Damaged blocks
- * are mended from themselves, else rebuilt from their sheet, else told of as lost. The container is never written to.
- * Memory is bounded by one sheet and a few segments.
+ * are mended from themselves, else rebuilt from their sheet, even where no block of it is intact any more, else told
+ * of as lost. The container is never written to. Memory is bounded by one sheet, a few segments, 8 MiB of good blocks
+ * that are kept when another sheet is loaded, and 2.6 MiB for each thread while a sheet is mended that has more damage
+ * than its reserve was made for.
  *
  * SPDX-License-Identifier: BSD-2-Clause
  */

@@ -1,9 +1,10 @@
 /*
  * firn/scrub.h - looking after a container: every block checked, what can be mended is mended in place
  *
- * Room: care. Damage is a finding and stands in the report. Only blocks whose right bytes are known (by their own lanes
- * and hash, or from the reserve) are written, through a journal beside the container, so that a power cut never leaves
- * it worse. Memory is bounded by one sheet.
+ * Room: care. Damage is a finding and stands in the report. Only blocks whose right bytes are known (by their own
+ * lanes and hash, or from the reserve; where no block is intact any more, with a chance of error below 2^-81) are
+ * written, through a journal beside the container, so that a power cut never leaves it worse. Memory is bounded by
+ * one sheet.
  *
  * SPDX-License-Identifier: BSD-2-Clause
  */

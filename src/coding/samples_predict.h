@@ -84,27 +84,28 @@ static inline int32_t firn_samples_predict_number(const struct firn_samples_shap
 
 /* What stands around a number: to the left, two and three to the left, above, above to the left. */
 struct firn_samples_predict_around {
-    uint8_t w, ww, www, n, nw;
+    int w, ww, www, n, nw;
 };
 
-static inline uint8_t firn_samples_predict_byte(enum firn_samples_predictor predictor,
-                                                const struct firn_samples_predict_around *a)
+/* Of which the low eight bits count. */
+static inline int firn_samples_predict_byte(enum firn_samples_predictor predictor,
+                                            const struct firn_samples_predict_around *a)
 {
     switch (predictor) {
     case FIRN_SAMPLES_UP:
         return a->n;
     case FIRN_SAMPLES_PLANE:
-        return (uint8_t)(a->w + a->n - a->nw);
+        return a->w + a->n - a->nw;
     case FIRN_SAMPLES_MEDIAN:
-        return (uint8_t)firn_samples_predict_middle(a->w, a->n, a->w + a->n - a->nw);
+        return firn_samples_predict_middle(a->w, a->n, a->w + a->n - a->nw);
     case FIRN_SAMPLES_MEAN:
-        return (uint8_t)((a->w + a->n) / 2);
+        return (a->w + a->n) / 2;
     case FIRN_SAMPLES_BENT:
-        return (uint8_t)((3 * (a->w + a->n) - 2 * a->nw) >> 2);
+        return (3 * (a->w + a->n) - 2 * a->nw) >> 2;
     case FIRN_SAMPLES_LINE:
-        return (uint8_t)(2 * a->w - a->ww);
+        return 2 * a->w - a->ww;
     case FIRN_SAMPLES_CURVE:
-        return (uint8_t)(3 * (a->w - a->ww) + a->www);
+        return 3 * (a->w - a->ww) + a->www;
     case FIRN_SAMPLES_NOTHING:
         return 0;
     default:

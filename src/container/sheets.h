@@ -2,7 +2,8 @@
  * container/sheets.h - the blocks of a container in its store, judged, mended, rebuilt
  *
  * Room: container. Used by the reader (stream by stream) and by care (sheet by sheet). Finds the layout from any one
- * good block; the title page is in the first 4096 bytes, block n at 4096 * (n + 1).
+ * good block, else from what the tags of all blocks have in common; the title page is in the first 4096 bytes, block
+ * n at 4096 * (n + 1).
  *
  * SPDX-License-Identifier: BSD-2-Clause
  */
@@ -26,8 +27,8 @@ struct firn_sheets_options {
 /* What one block was found to be. */
 enum firn_sheets_finding {
     FIRN_SHEETS_SOUND,
-    FIRN_SHEETS_MENDED,          /* by its own lanes; the good bytes are in memory */
-    FIRN_SHEETS_REBUILT,         /* from the reserve; the good bytes are in memory */
+    FIRN_SHEETS_MENDED,          /* by its own lanes, deep repair included; the good bytes are in memory */
+    FIRN_SHEETS_REBUILT,         /* from the reserve, column rescue included; the good bytes are in memory */
     FIRN_SHEETS_LOST
 };
 

@@ -6,6 +6,8 @@
  */
 #include "guard/gf.h"
 
+#include <string.h>
+
 const uint8_t firn_gf_power[255] = {
       1,   2,   4,   8,  16,  32,  64, 128,  29,  58, 116, 232, 205, 135,  19,  38,
      76, 152,  45,  90, 180, 117, 234, 201, 143,   3,   6,  12,  24,  48,  96, 192,
@@ -58,4 +60,19 @@ uint8_t firn_gf_inverse(uint8_t a)
     unsigned log = firn_gf_log[a];
 
     return firn_gf_power[log == 0 ? 0 : 255 - log];
+}
+
+/* By lines through 0: what is linear is known from its values at the powers of two. */
+void firn_gf_make_tables(uint8_t tables[256][FIRN_GF_TABLE_BYTES])
+{
+    memset(tables[0], 0, FIRN_GF_TABLE_BYTES);
+    for (unsigned bit = 0; bit < 8; bit++)
+        for (unsigned i = 0; i < 16; i++) {
+            tables[1U << bit][i] = firn_gf_multiply((uint8_t)(1U << bit), (uint8_t)i);
+            tables[1U << bit][16 + i] = firn_gf_multiply((uint8_t)(1U << bit), (uint8_t)(i << 4));
+        }
+    for (unsigned c = 3; c < 256; c++)
+        if ((c & (c - 1)) != 0)
+            for (unsigned i = 0; i < FIRN_GF_TABLE_BYTES; i++)
+                tables[c][i] = tables[c & (c - 1)][i] ^ tables[c & (0 - c)][i];
 }

@@ -64,7 +64,7 @@ const struct firn_reserve_engine *const firn_reserve_engines[] = {
     NULL,
 };
 
-static const struct firn_reserve_engine *engine_here(void)
+const struct firn_reserve_engine *firn_reserve_engine_here(void)
 {
     unsigned i = 0;
 
@@ -76,21 +76,6 @@ static const struct firn_reserve_engine *engine_here(void)
 static size_t least(size_t a, size_t b)
 {
     return a < b ? a : b;
-}
-
-/* By lines through 0: what is linear is known from its values at the powers of two. */
-static void make_tables(struct work *work)
-{
-    memset(work->tables[0], 0, sizeof work->tables[0]);
-    for (unsigned bit = 0; bit < 8; bit++)
-        for (unsigned i = 0; i < 16; i++) {
-            work->tables[1U << bit][i] = firn_gf_multiply((uint8_t)(1U << bit), (uint8_t)i);
-            work->tables[1U << bit][16 + i] = firn_gf_multiply((uint8_t)(1U << bit), (uint8_t)(i << 4));
-        }
-    for (unsigned c = 3; c < POINTS; c++)
-        if ((c & (c - 1)) != 0)
-            for (unsigned i = 0; i < FIRN_RESERVE_TABLE_BYTES; i++)
-                work->tables[c][i] = work->tables[c & (c - 1)][i] ^ work->tables[c & (0 - c)][i];
 }
 
 /* S_0(x) = x, and S_(j+1) is S_j (S_j + 1), scaled to be 1 at 2^(j+1). */
@@ -122,7 +107,7 @@ static struct job start_job(const struct firn_reserve_engine *engine, unsigned k
         job.levels++;
     job.bytes = TILE_ALL / m < TILE_MOST ? TILE_ALL / m : TILE_MOST;
     job.stride = job.bytes + LINE;
-    make_tables(job.work);
+    firn_gf_make_tables(job.work->tables);
     make_values(job.work);
     memset(job.work->zeros, 0, sizeof job.work->zeros);
     return job;
@@ -437,11 +422,11 @@ size_t firn_reserve_work_bytes(void)
 enum firn_status firn_reserve_encode(unsigned k, unsigned m, const uint8_t *const *data, uint8_t *const *reserve,
                                      size_t bytes, uint8_t *work)
 {
-    return firn_reserve_encode_by(engine_here(), k, m, data, reserve, bytes, work);
+    return firn_reserve_encode_by(firn_reserve_engine_here(), k, m, data, reserve, bytes, work);
 }
 
 enum firn_status firn_reserve_rebuild(unsigned k, unsigned m, uint8_t *const *payloads, const unsigned *lost,
                                       unsigned lost_count, size_t bytes, uint8_t *work)
 {
-    return firn_reserve_rebuild_by(engine_here(), k, m, payloads, lost, lost_count, bytes, work);
+    return firn_reserve_rebuild_by(firn_reserve_engine_here(), k, m, payloads, lost, lost_count, bytes, work);
 }

@@ -1,10 +1,10 @@
 /*
  * guard/reserve_engine.h - the hot loops of the reserve, by several engines
  *
- * Room: guard. Pure. Used by guard/reserve.c. A factor of GF(2^8) comes as its table of 32 bytes: its products with 0
- * .. 15, then with 0, 16 .. 240; the product with any byte is one of the first half XOR one of the second. Pointers
- * need no alignment. from[i] may be to[i], and otherwise nothing overlaps. Every engine gives the answer of the plain
- * one.
+ * Room: guard. Pure. Used by guard/reserve.c and guard/columns.c. A factor of GF(2^8) comes as its table of 32 bytes:
+ * its products with 0 .. 15, then with 0, 16 .. 240; the product with any byte is one of the first half XOR one of
+ * the second. Pointers need no alignment. from[i] may be to[i], and otherwise nothing overlaps. Every engine gives
+ * the answer of the plain one.
  *
  * SPDX-License-Identifier: BSD-2-Clause
  */
@@ -12,10 +12,11 @@
 #define FIRN_GUARD_RESERVE_ENGINE_H
 
 #include "firn/reserve.h"
+#include "guard/gf.h"
 
 #include <stdbool.h>
 
-enum { FIRN_RESERVE_TABLE_BYTES = 32, FIRN_RESERVE_TOGETHER = 4, FIRN_RESERVE_SOURCES = 128 };
+enum { FIRN_RESERVE_TABLE_BYTES = FIRN_GF_TABLE_BYTES, FIRN_RESERVE_TOGETHER = 4, FIRN_RESERVE_SOURCES = 128 };
 
 /*
  * A step of a transform on two runs of bytes, u and v, with one factor, or two levels of steps on four with three.
@@ -35,8 +36,8 @@ struct firn_reserve_engine {
     firn_reserve_step *forward4;      /* undoes inverse4 */
 
     /*
-     * to[i] = the sum over j < count of factor i * count + j times from[j], for i < FIRN_RESERVE_TOGETHER; count is at
-     * most FIRN_RESERVE_SOURCES.
+     * to[i] = the sum over j < count of factor i * count + j times from[j], for i < FIRN_RESERVE_TOGETHER; count is
+     * at most FIRN_RESERVE_SOURCES.
      */
     void (*combine)(const uint8_t *const *from, unsigned count, const uint8_t *const *tables, uint8_t *const *to,
                     size_t bytes);
@@ -49,6 +50,9 @@ extern const struct firn_reserve_engine firn_reserve_ssse3, firn_reserve_avx2;
 extern const struct firn_reserve_engine firn_reserve_neon;
 #endif
 extern const struct firn_reserve_engine *const firn_reserve_engines[];      /* fastest first, plain, NULL */
+
+/* The first engine that the processor at hand can run. */
+const struct firn_reserve_engine *firn_reserve_engine_here(void);
 
 /* What firn/reserve.h promises, by a given engine. */
 enum firn_status firn_reserve_encode_by(const struct firn_reserve_engine *engine, unsigned k, unsigned m,
