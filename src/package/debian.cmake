@@ -26,6 +26,7 @@ Containers are checked and repaired in place, put together again from several
 damaged copies, and carry their own specification and the source of a reader.")
 set(CPACK_DEBIAN_LIBRARY_PACKAGE_NAME libfirn0)
 set(CPACK_DEBIAN_LIBRARY_PACKAGE_SECTION libs)
+set(CPACK_DEBIAN_LIBRARY_PACKAGE_CONTROL_EXTRA ${CMAKE_CURRENT_LIST_DIR}/triggers)
 set(CPACK_DEBIAN_LIBRARY_DESCRIPTION "${PROJECT_DESCRIPTION}, shared library
 What programs that are linked to libfirn need. The program firn does not.")
 set(CPACK_DEBIAN_DEVELOPMENT_PACKAGE_NAME libfirn-dev)
