@@ -9,11 +9,9 @@
  *
  *     reader FILE               lists what is in the container
  *     reader FILE -c            reads everything, compares every digest, says what is lost
- *     reader FILE -t ARCHIVE    writes a pax archive of everything that is whole; tar can unpack it
- *     reader FILE -x FOLDER     writes the files into FOLDER, which must be there, each under its number and the last
- *                               part of its name, for standard C can make no folders: the list has the whole name.
- *                               Damaged files are written too, with zeros for what is lost, and .damaged behind the
- *                               name. Title page, specification and the source of this program come along.
+ *     reader FILE -t ARCHIVE    writes a pax archive of what is whole; tar can unpack it, with names, dates and modes
+ *     reader FILE -d ARCHIVE    writes one of the files that are not whole, with zeros for what is lost
+ *     reader FILE -1            prints the title page; -2, the specification; -3, the source of this program
  *
  * It never writes to FILE, and over nothing that is there. Exit status: 0 all is intact; 1 there is damage, and every
  * byte was brought back; 2 bytes are lost, and it says which; 64 and up: it could not work.
@@ -66,31 +64,21 @@ static void *room(void *old, uint64_t bytes) /* memory, or the end of the progra
 
 /* ---- hash.md: XXH3-128, in the letters of that page ------------------------------------------------------------ */
 
-#define P1 UINT64_C(0x9E3779B185EBCA87)
-#define P2 UINT64_C(0xC2B2AE3D27D4EB4F)
-#define P3 UINT64_C(0x165667B19E3779F9)
-#define P4 UINT64_C(0x85EBCA77C2B2AE63)
-#define P5 UINT64_C(0x27D4EB2F165667C5)
-#define M1 UINT64_C(0x165667919E3779F9)
-#define M2 UINT64_C(0x9FB21C651E98DF25)
-#define Q1 UINT64_C(0x9E3779B1)
-#define Q2 UINT64_C(0x85EBCA77)
-#define Q3 UINT64_C(0xC2B2AE3D)
-#define LOW32 UINT64_C(0xFFFFFFFF)
+static const uint64_t P1 = UINT64_C(0x9E3779B185EBCA87), P2 = UINT64_C(0xC2B2AE3D27D4EB4F),
+                      P3 = UINT64_C(0x165667B19E3779F9), P4 = UINT64_C(0x85EBCA77C2B2AE63),
+                      P5 = UINT64_C(0x27D4EB2F165667C5), M1 = UINT64_C(0x165667919E3779F9),
+                      M2 = UINT64_C(0x9FB21C651E98DF25), LOW32 = UINT64_C(0xFFFFFFFF),
+                      Q1 = UINT64_C(0x9E3779B1), Q2 = UINT64_C(0x85EBCA77), Q3 = UINT64_C(0xC2B2AE3D);
 
-static const byte S[192] = {
-    0xB8, 0xFE, 0x6C, 0x39, 0x23, 0xA4, 0x4B, 0xBE, 0x7C, 0x01, 0x81, 0x2C, 0xF7, 0x21, 0xAD, 0x1C, 0xDE, 0xD4, 0x6D,
-    0xE9, 0x83, 0x90, 0x97, 0xDB, 0x72, 0x40, 0xA4, 0xA4, 0xB7, 0xB3, 0x67, 0x1F, 0xCB, 0x79, 0xE6, 0x4E, 0xCC, 0xC0,
-    0xE5, 0x78, 0x82, 0x5A, 0xD0, 0x7D, 0xCC, 0xFF, 0x72, 0x21, 0xB8, 0x08, 0x46, 0x74, 0xF7, 0x43, 0x24, 0x8E, 0xE0,
-    0x35, 0x90, 0xE6, 0x81, 0x3A, 0x26, 0x4C, 0x3C, 0x28, 0x52, 0xBB, 0x91, 0xC3, 0x00, 0xCB, 0x88, 0xD0, 0x65, 0x8B,
-    0x1B, 0x53, 0x2E, 0xA3, 0x71, 0x64, 0x48, 0x97, 0xA2, 0x0D, 0xF9, 0x4E, 0x38, 0x19, 0xEF, 0x46, 0xA9, 0xDE, 0xAC,
-    0xD8, 0xA8, 0xFA, 0x76, 0x3F, 0xE3, 0x9C, 0x34, 0x3F, 0xF9, 0xDC, 0xBB, 0xC7, 0xC7, 0x0B, 0x4F, 0x1D, 0x8A, 0x51,
-    0xE0, 0x4B, 0xCD, 0xB4, 0x59, 0x31, 0xC8, 0x9F, 0x7E, 0xC9, 0xD9, 0x78, 0x73, 0x64, 0xEA, 0xC5, 0xAC, 0x83, 0x34,
-    0xD3, 0xEB, 0xC3, 0xC5, 0x81, 0xA0, 0xFF, 0xFA, 0x13, 0x63, 0xEB, 0x17, 0x0D, 0xDD, 0x51, 0xB7, 0xF0, 0xDA, 0x49,
-    0xD3, 0x16, 0x55, 0x26, 0x29, 0xD4, 0x68, 0x9E, 0x2B, 0x16, 0xBE, 0x58, 0x7D, 0x47, 0xA1, 0xFC, 0x8F, 0xF8, 0xB8,
-    0xD1, 0x7A, 0xD0, 0x31, 0xCE, 0x45, 0xCB, 0x3A, 0x8F, 0x95, 0x16, 0x04, 0x28, 0xAF, 0xD7, 0xFB, 0xCA, 0xBB, 0x4B,
-    0x40, 0x7E
-};
+static const byte S[193] =
+    "\xB8\xFE\x6C\x39\x23\xA4\x4B\xBE\x7C\x01\x81\x2C\xF7\x21\xAD\x1C\xDE\xD4\x6D\xE9\x83\x90\x97\xDB"
+    "\x72\x40\xA4\xA4\xB7\xB3\x67\x1F\xCB\x79\xE6\x4E\xCC\xC0\xE5\x78\x82\x5A\xD0\x7D\xCC\xFF\x72\x21"
+    "\xB8\x08\x46\x74\xF7\x43\x24\x8E\xE0\x35\x90\xE6\x81\x3A\x26\x4C\x3C\x28\x52\xBB\x91\xC3\x00\xCB"
+    "\x88\xD0\x65\x8B\x1B\x53\x2E\xA3\x71\x64\x48\x97\xA2\x0D\xF9\x4E\x38\x19\xEF\x46\xA9\xDE\xAC\xD8"
+    "\xA8\xFA\x76\x3F\xE3\x9C\x34\x3F\xF9\xDC\xBB\xC7\xC7\x0B\x4F\x1D\x8A\x51\xE0\x4B\xCD\xB4\x59\x31"
+    "\xC8\x9F\x7E\xC9\xD9\x78\x73\x64\xEA\xC5\xAC\x83\x34\xD3\xEB\xC3\xC5\x81\xA0\xFF\xFA\x13\x63\xEB"
+    "\x17\x0D\xDD\x51\xB7\xF0\xDA\x49\xD3\x16\x55\x26\x29\xD4\x68\x9E\x2B\x16\xBE\x58\x7D\x47\xA1\xFC"
+    "\x8F\xF8\xB8\xD1\x7A\xD0\x31\xCE\x45\xCB\x3A\x8F\x95\x16\x04\x28\xAF\xD7\xFB\xCA\xBB\x4B\x40\x7E";
 
 struct pair { uint64_t low, high; };
 
@@ -198,8 +186,8 @@ static void stripe(uint64_t A[8], const byte *x, unsigned s)
 
 static uint64_t merge(const uint64_t A[8], unsigned s, uint64_t t)
 {
-    for (unsigned e = 0; e < 4; e++)
-        t += fold(A[2 * e] ^ s64(s + 16 * e), A[2 * e + 1] ^ s64(s + 16 * e + 8));
+    for (unsigned e = 0; e < 8; e += 2)
+        t += fold(A[e] ^ s64(s + 8 * e), A[e + 1] ^ s64(s + 8 * e + 8));
     return mix(t);
 }
 
@@ -227,6 +215,10 @@ static bool hash_is(const byte *stored, const byte *x, size_t n)
 
 struct sha { uint32_t h[8]; uint64_t bytes; byte block[64]; };
 
+static const struct sha sha_empty = {
+    { 0x6a09e667, 0xbb67ae85, 0x3c6ef372, 0xa54ff53a, 0x510e527f, 0x9b05688c, 0x1f83d9ab, 0x5be0cd19 }, 0, { 0 }
+};
+
 static const uint32_t sha_k[64] = {
     0x428a2f98, 0x71374491, 0xb5c0fbcf, 0xe9b5dba5, 0x3956c25b, 0x59f111f1, 0x923f82a4, 0xab1c5ed5, 0xd807aa98,
     0x12835b01, 0x243185be, 0x550c7dc3, 0x72be5d74, 0x80deb1fe, 0x9bdc06a7, 0xc19bf174, 0xe49b69c1, 0xefbe4786,
@@ -246,13 +238,13 @@ static uint32_t turn(uint32_t x, unsigned by) /* rotates to the right */
 static void sha_block(struct sha *sha)
 {
     uint32_t w[64], v[8];
-    for (unsigned i = 0; i < 16; i++)
-        w[i] = (uint32_t)swap(get(sha->block + 4 * i, 4), 4);
-    for (unsigned i = 16; i < 64; i++)
-        w[i] = (turn(w[i - 2], 17) ^ turn(w[i - 2], 19) ^ w[i - 2] >> 10) + w[i - 7]
-               + (turn(w[i - 15], 7) ^ turn(w[i - 15], 18) ^ w[i - 15] >> 3) + w[i - 16];
     memcpy(v, sha->h, sizeof v);
     for (unsigned i = 0; i < 64; i++) {
+        if (i < 16)
+            w[i] = (uint32_t)swap(get(sha->block + 4 * i, 4), 4);
+        else
+            w[i] = (turn(w[i - 2], 17) ^ turn(w[i - 2], 19) ^ w[i - 2] >> 10) + w[i - 7]
+                   + (turn(w[i - 15], 7) ^ turn(w[i - 15], 18) ^ w[i - 15] >> 3) + w[i - 16];
         uint32_t t1 = v[7] + (turn(v[4], 6) ^ turn(v[4], 11) ^ turn(v[4], 25)) + ((v[4] & v[5]) ^ (~v[4] & v[6]));
         uint32_t most = (v[0] & v[1]) ^ (v[0] & v[2]) ^ (v[1] & v[2]);
         uint32_t t2 = (turn(v[0], 2) ^ turn(v[0], 13) ^ turn(v[0], 22)) + most;
@@ -263,14 +255,6 @@ static void sha_block(struct sha *sha)
     }
     for (unsigned i = 0; i < 8; i++)
         sha->h[i] += v[i];
-}
-
-static void sha_start(struct sha *sha)
-{
-    static const uint32_t first[8] = { 0x6a09e667, 0xbb67ae85, 0x3c6ef372, 0xa54ff53a,
-                                       0x510e527f, 0x9b05688c, 0x1f83d9ab, 0x5be0cd19 };
-    memcpy(sha->h, first, sizeof first);
-    sha->bytes = 0;
 }
 
 static void sha_add(struct sha *sha, const byte *x, uint64_t n)
@@ -308,19 +292,18 @@ static bool mend_lanes(byte *block) /* flips what the lanes propose; true when t
         for (unsigned j = 0; j < 9; j++)
             s[j] ^= (label >> j & 1) != 0 ? word : 0;
     }
-    for (unsigned b = 0; b < 64; b++)
-        if ((p >> b & 1) != 0) {
-            unsigned label = 0;
-            for (unsigned j = 0; j < 9; j++)
-                label |= (unsigned)(s[j] >> b & 1) << j;
-            block[8 * word_of[label] + b / 8] ^= (byte)(1U << b % 8);
-        }
+    for (unsigned b = 0; b < 64; b++) {
+        unsigned label = 0;
+        for (unsigned j = 0; j < 9; j++)
+            label |= (unsigned)(s[j] >> b & 1) << j;
+        block[8 * word_of[label] + b / 8] ^= (byte)((p >> b & 1) << b % 8);
+    }
     return p != 0;
 }
 
 struct shape { unsigned k, m, depth; };
 
-struct tag { struct shape full; unsigned kind, t; uint64_t id, number; };
+struct tag { struct shape full; unsigned t; uint64_t id, number; };
 
 static struct shape shape_of(struct shape full, uint64_t t) /* sheet.md, section 2: a sheet of t data blocks */
 {
@@ -344,46 +327,45 @@ static bool read_tag(const byte *block, struct tag *tag) /* false when it breaks
     const byte *at = block + TAG;
     struct shape full = { at[6], at[7], (unsigned)get(at + 28, 2) };
     tag->full = full;
-    tag->kind = at[5];
     tag->id = get(at + 8, 8);
     tag->number = get(at + 16, 8);
     tag->t = (unsigned)get(at + 24, 4);
     uint64_t sheet_blocks = (uint64_t)full.depth * (full.k + full.m);
     if (memcmp(at, "FIRN\1", 5) != 0 || full.k < 1 || full.depth < 1 || full.depth > 4096) return false;
     if (full.m != 0 && (full.m < 4 || full.m > 128 || (full.m & (full.m - 1)) != 0)) return false;
-    if (full.k + full.m > 256 || sheet_blocks > 65536 || tag->t < 1 || tag->t > full.k * full.depth)
-        return false;
+    if (full.k + full.m > 256 || sheet_blocks > 65536 || tag->t < 1 || tag->t > full.k * full.depth) return false;
     struct shape shape = shape_of(full, tag->t);
     uint64_t index = tag->number % sheet_blocks;
-    if (index < tag->t) return tag->kind == DATA_BLOCK;
-    return tag->kind == RESERVE_BLOCK && index < tag->t + (uint64_t)shape.m * shape.depth;
+    if (index < tag->t) return at[5] == DATA_BLOCK;
+    return at[5] == RESERVE_BLOCK && index < tag->t + (uint64_t)shape.m * shape.depth;
 }
 
 /* ---- the file, and what is known of it ------------------------------------------------------------------------- */
 
-struct ref { uint64_t key, at; uint32_t bytes, raw; }; /* a body in the stream, and what it is found by */
+enum { TITLE = 1, SPEC = 2, READER = 3, BATCH = 4, SEGMENT = 5, SUMS = 6, INDEX = 7, COLOPHON = 8 }; /* records */
+enum { BODY_MAX = 1 << 24, RAW_MAX = 1 << 20 };
 
-struct list { struct ref *refs; size_t count, room; };
+struct ref { uint64_t key, at; unsigned type; uint32_t bytes, raw; }; /* a body in the stream, found by its key */
 
 struct container {
     FILE *file;
-    uint64_t blocks;                        /* that begin in the file */
-    struct tag known;                       /* of the first sound block */
-    uint64_t sheet_blocks, sheet_data;      /* of a full sheet */
+    uint64_t blocks;                   /* that begin in the file, the title page not counted */
+    struct tag known;                  /* of the first sound block */
+    uint64_t sheet_blocks, sheet_data; /* of a full sheet */
     uint64_t stream_bytes;
-    uint64_t sheet;                         /* the one at hand */
+    uint64_t sheet;                    /* the one at hand */
     unsigned t;
     struct shape shape;
-    byte **rebuilt;                         /* of the sheet at hand, by index: a payload, or `gone` */
-    uint64_t payload_of;                    /* the data block whose payload is at hand */
+    byte *rebuilt[65536];              /* of the sheet at hand, by index: a payload, or `gone` */
+    uint64_t payload_of;               /* the data block whose payload is at hand */
     byte payload[PAYLOAD];
-    bool payload_there;
-    struct list batches, segments, sums, texts; /* by first item; by place of content; by first item; by type */
-    uint64_t items_told;                    /* by the colophon */
-    bool colophon_there, damaged;
-    const struct ref *segment, *sum;        /* those at hand */
-    bool segment_good;
-    byte *raw, *body, *sum_body;
+    bool payload_there, colophon_there, damaged;
+    struct ref *refs;                  /* in the order of types, keys, places */
+    size_t count, room;
+    uint64_t items_told;               /* by the colophon */
+    const struct ref *segment, *sums;  /* those at hand */
+    bool segment_good, sums_good;
+    byte *body, *sums_body;
 };
 
 static byte gone[1]; /* stands for a payload that cannot be rebuilt */
@@ -391,28 +373,25 @@ static byte gone[1]; /* stands for a payload that cannot be rebuilt */
 /* Standard C tells places in a long, which may be too short; then it takes several steps. */
 static bool read_at(struct container *c, uint64_t at, byte *to, size_t bytes)
 {
-    uint64_t step = lesser(at, LONG_MAX);
-    bool there = fseek(c->file, (long)step, SEEK_SET) == 0;
-    for (at -= step; there && at > 0; at -= step) {
-        step = lesser(at, LONG_MAX);
-        there = fseek(c->file, (long)step, SEEK_CUR) == 0;
-    }
-    return there && fread(to, 1, bytes, c->file) == bytes;
+    int from = SEEK_SET;
+    do {
+        uint64_t step = lesser(at, LONG_MAX);
+        if (fseek(c->file, (long)step, from) != 0) return false;
+        from = SEEK_CUR;
+        at -= step;
+    } while (at > 0);
+    return fread(to, 1, bytes, c->file) == bytes;
 }
 
 /* block.md, section 4. True when the block of this number was read sound or mended, and belongs here. */
 static bool read_block(struct container *c, uint64_t number, byte *block, struct tag *tag)
 {
-    bool mended = false;
     if (number >= c->blocks || !read_at(c, BLOCK * (number + 1), block, BLOCK)) return false;
-    if (!hash_is(block + HASH, block, HASHED)) {
-        mended = mend_lanes(block);
-        if (!mended || !hash_is(block + HASH, block, HASHED)) return false;
-    }
+    bool sound = hash_is(block + HASH, block, HASHED);
+    bool mended = !sound && mend_lanes(block) && hash_is(block + HASH, block, HASHED);
     const struct shape *full = &c->known.full;
-    if (!read_tag(block, tag) || tag->number != number ||
-        (full->k != 0 && (tag->id != c->known.id || memcmp(&tag->full, full, sizeof *full) != 0)))
-        return false;
+    if (!(sound || mended) || !read_tag(block, tag) || tag->number != number) return false;
+    if (full->k != 0 && (tag->id != c->known.id || memcmp(&tag->full, full, sizeof *full) != 0)) return false;
     c->damaged |= mended;
     return true;
 }
@@ -448,22 +427,22 @@ static void row_value(byte *const there[256], const byte *lost, unsigned count, 
     for (unsigned i = 0; i < count; i++)
         below = lost[i] == at ? below : gf_times(below, at ^ lost[i]);
     memset(payload, 0, bytes);
-    for (unsigned s = 0; s < 256; s++)
-        if (there[s] != NULL) {
-            unsigned factor = gf_inverse(gf_times(below, at ^ s));
-            for (unsigned i = 0; i < count; i++)
-                factor = gf_times(factor, s ^ lost[i]);
-            byte times[256];
-            for (unsigned v = 0; v < 256; v++)
-                times[v] = (byte)gf_times(factor, v);
-            for (size_t b = 0; b < bytes; b++)
-                payload[b] ^= times[there[s][b]];
-        }
+    for (unsigned s = 0; s < 256; s++) {
+        if (there[s] == NULL) continue;
+        unsigned factor = gf_inverse(gf_times(below, at ^ s));
+        for (unsigned i = 0; i < count; i++)
+            factor = gf_times(factor, s ^ lost[i]);
+        byte times[256];
+        for (unsigned v = 0; v < 256; v++)
+            times[v] = (byte)gf_times(factor, v);
+        for (size_t b = 0; b < bytes; b++)
+            payload[b] ^= times[there[s][b]];
+    }
 }
 
 static void leave_sheet(struct container *c)
 {
-    for (uint64_t i = 0; i < c->sheet_data; i++) {
+    for (size_t i = 0; i < sizeof c->rebuilt / sizeof c->rebuilt[0]; i++) {
         if (c->rebuilt[i] != gone)
             free(c->rebuilt[i]);
         c->rebuilt[i] = NULL;
@@ -473,54 +452,40 @@ static void leave_sheet(struct container *c)
 /* Makes a sheet the one at hand; any of its blocks tells t. False when it has no sound block. */
 static bool enter_sheet(struct container *c, uint64_t sheet)
 {
+    byte block[BLOCK];
+    struct tag tag;
     if (sheet == c->sheet) return c->t > 0;
     leave_sheet(c);
     c->sheet = sheet;
     c->t = 0;
-    for (uint64_t i = 0; i < c->sheet_blocks && c->t == 0; i++) {
-        byte block[BLOCK];
-        struct tag tag;
+    for (uint64_t i = 0; i < c->sheet_blocks && c->t == 0; i++)
         if (read_block(c, sheet * c->sheet_blocks + i, block, &tag))
             c->t = tag.t;
-    }
     c->shape = shape_of(c->known.full, c->t);
     return c->t > 0;
 }
 
-/* The index in the sheet of point `point` of a row; false when the row has no such block. */
-static bool index_of(const struct container *c, uint64_t row, unsigned point, uint64_t *index)
-{
-    uint64_t depth = c->shape.depth;
-    if (point >= c->shape.m) { /* data column point - m */
-        *index = (point - c->shape.m) * depth + row;
-        return point - c->shape.m < c->shape.k && *index < c->t;
-    }
-    *index = c->t + (row + depth - c->t % depth) % depth + point * depth;
-    return true;
-}
-
-/* Rebuilds what is lost of a row of the sheet at hand, as far as it can. */
+/* Rebuilds what is lost of a row of the sheet at hand, as far as it can. Its blocks are `depth` apart. */
 static void rebuild_row(struct container *c, uint64_t row)
 {
-    byte *there[256] = { NULL }, lost[256], *blocks = room(NULL, 256 * (uint64_t)BLOCK);
-    unsigned count = 0;
-    uint64_t index;
+    static byte blocks[256][BLOCK];
+    byte *there[256] = { NULL }, lost[256];
+    unsigned count = 0, m = c->shape.m, depth = c->shape.depth;
     struct tag tag;
-    for (unsigned point = 0; point < 256; point++)
-        if (index_of(c, row, point, &index)) {
-            byte *block = blocks + (size_t)point * BLOCK;
-            if (read_block(c, c->sheet * c->sheet_blocks + index, block, &tag) && tag.t == c->t)
-                there[point] = block;
-            else
-                lost[count++] = (byte)point;
-        }
-    for (unsigned i = 0; i < count; i++)
-        if (lost[i] >= c->shape.m && index_of(c, row, lost[i], &index)) {
-            c->rebuilt[index] = count > c->shape.m ? gone : room(NULL, PAYLOAD);
-            if (count <= c->shape.m)
-                row_value(there, lost, count, lost[i], c->rebuilt[index], PAYLOAD);
-        }
-    free(blocks);
+    for (uint64_t index = row; index < c->t + (uint64_t)m * depth; index += depth) {
+        uint64_t point = index < c->t ? m + index / depth : (index - c->t) / depth;
+        if (read_block(c, c->sheet * c->sheet_blocks + index, blocks[point], &tag) && tag.t == c->t)
+            there[point] = blocks[point];
+        else
+            lost[count++] = (byte)point;
+    }
+    for (unsigned i = 0; i < count; i++) {
+        if (lost[i] < m) continue;
+        byte *payload = count > m ? gone : room(NULL, PAYLOAD);
+        if (count <= m)
+            row_value(there, lost, count, lost[i], payload, PAYLOAD);
+        c->rebuilt[(uint64_t)(lost[i] - m) * depth + row] = payload;
+    }
 }
 
 /* ---- stream.md: the stream ------------------------------------------------------------------------------------- */
@@ -529,21 +494,20 @@ static void rebuild_row(struct container *c, uint64_t row)
 static bool fetch(struct container *c, uint64_t data_block)
 {
     uint64_t index = data_block % c->sheet_data;
-    byte block[BLOCK];
+    byte block[BLOCK], *payload = block;
     struct tag tag;
     if (data_block == c->payload_of) return c->payload_there;
     c->payload_of = data_block;
     c->payload_there = false;
     if (!enter_sheet(c, data_block / c->sheet_data) || index >= c->t) return false;
-    if (c->rebuilt[index] == NULL && read_block(c, c->sheet * c->sheet_blocks + index, block, &tag) && tag.t == c->t) {
-        memcpy(c->payload, block, PAYLOAD);
-        return c->payload_there = true;
+    if (c->rebuilt[index] != NULL || !read_block(c, c->sheet * c->sheet_blocks + index, block, &tag) || tag.t != c->t) {
+        c->damaged = true;
+        if (c->rebuilt[index] == NULL)
+            rebuild_row(c, index % c->shape.depth);
+        payload = c->rebuilt[index];
+        if (payload == NULL || payload == gone) return false;
     }
-    c->damaged = true;
-    if (c->rebuilt[index] == NULL)
-        rebuild_row(c, index % c->shape.depth);
-    if (c->rebuilt[index] == NULL || c->rebuilt[index] == gone) return false;
-    memcpy(c->payload, c->rebuilt[index], PAYLOAD);
+    memcpy(c->payload, payload, PAYLOAD);
     return c->payload_there = true;
 }
 
@@ -552,98 +516,76 @@ static bool read_stream(struct container *c, uint64_t at, byte *to, uint64_t byt
 {
     bool whole = at <= c->stream_bytes && bytes <= c->stream_bytes - at;
     memset(to, 0, (size_t)bytes);
-    while (bytes > 0 && at < c->stream_bytes) {
-        uint64_t from = at % PAYLOAD, step = lesser(bytes, PAYLOAD - from);
+    for (uint64_t step; bytes > 0 && at < c->stream_bytes; at += step, to += step, bytes -= step) {
+        step = lesser(bytes, PAYLOAD - at % PAYLOAD);
         if (fetch(c, at / PAYLOAD))
-            memcpy(to, c->payload + from, (size_t)step);
+            memcpy(to, c->payload + at % PAYLOAD, (size_t)step);
         else
             whole = false;
-        at += step;
-        to += step;
-        bytes -= step;
     }
     return whole;
 }
 
-/* ---- segment.md: numbers, bits, codes -------------------------------------------------------------------------- */
+/* ---- segment.md: bits, numbers, codes -------------------------------------------------------------------------- */
 
-struct bytes { const byte *from; size_t left; bool bad; };       /* of a segment, from the front */
-struct bits { const byte *from; size_t bytes, used; bool bad; }; /* a bit string; used: bits */
+struct bits { const byte *from; size_t bytes, at; bool bad; }; /* a bit string; at: bits used; bad: it broke a rule */
 
-static unsigned one_byte(struct bytes *in)
+static uint32_t peek(const struct bits *b, unsigned n) /* the next n bits, at most 32; zeros behind the end */
 {
-    if (in->left == 0) {
-        in->bad = true;
-        return 0;
-    }
-    in->left--;
-    return *in->from++;
+    uint64_t word = 0;
+    for (size_t i = b->at / 8; i < b->at / 8 + 5; i++)
+        word = word << 8 | (i < b->bytes ? b->from[i] : 0);
+    return (uint32_t)(word >> (40 - b->at % 8 - n) & ((UINT64_C(1) << n) - 1));
 }
 
-static unsigned number(struct bytes *in)
+static uint32_t take(struct bits *b, unsigned n)
 {
-    unsigned value = 0, group = 0x80, i;
-    for (i = 0; i < 3 && group >= 0x80; i++) {
-        group = one_byte(in);
-        value |= (group & 0x7F) << 7 * i;
-    }
-    in->bad |= group >= 0x80 || (i > 1 && group == 0);
+    uint32_t value = peek(b, n);
+    b->at += n;
+    b->bad |= b->at > 8 * b->bytes;
     return value;
 }
 
-static struct bits cut_bits(struct bytes *in, size_t bytes) /* a bit string of so many bytes, off the front */
+static void align(struct bits *b) /* bits up to the byte boundary are zero */
 {
-    in->bad |= bytes > in->left;
-    struct bits b = { in->from, bytes > in->left ? in->left : bytes, 0, false };
-    in->from += b.bytes;
-    in->left -= b.bytes;
-    return b;
+    if (take(b, (unsigned)(8 - b->at % 8) % 8) != 0)
+        b->bad = true;
 }
 
-static uint32_t peek(const struct bits *b, unsigned n) /* the next n bits, at most 25; zeros behind the end */
-{
-    uint32_t word = 0;
-    for (size_t i = b->used / 8; i < b->used / 8 + 4; i++)
-        word = word << 8 | (i < b->bytes ? b->from[i] : 0);
-    return n == 0 ? 0 : (uint32_t)(word << b->used % 8) >> (32 - n);
-}
+static size_t left(const struct bits *b) { return b->at / 8 < b->bytes ? b->bytes - b->at / 8 : 0; }
 
-static void use(struct bits *b, unsigned n)
+static struct bits cut(struct bits *b, size_t bytes) /* the next so many bytes, as a string of their own */
 {
-    b->used += n;
-    b->bad |= b->used > 8 * b->bytes;
-}
-
-static uint32_t take(struct bits *b, unsigned n) /* the next n bits, at most 32 */
-{
-    uint32_t high = n > 16 ? take(b, n - 16) : 0, low = peek(b, n > 16 ? 16 : n);
-    use(b, n > 16 ? 16 : n);
-    return n > 16 ? high << 16 | low : low;
-}
-
-/* Ends a bit string that was begun with all that was left, for nobody told its length: what is behind it comes back. */
-static void end_bits(struct bytes *in, struct bits *b)
-{
-    size_t bytes = (b->used + 7) / 8;
-    in->bad |= b->bad || peek(b, (unsigned)(8 * bytes - b->used)) != 0;
-    if (!in->bad) {
-        in->from -= b->bytes - bytes;
-        in->left += b->bytes - bytes;
-    }
+    struct bits part = { b->from + (b->bytes - left(b)), (size_t)lesser(bytes, left(b)), 0, false };
+    b->bad |= bytes > left(b);
+    b->at += 8 * part.bytes;
+    return part;
 }
 
 static bool used_up(struct bits *b) /* all but less than eight zero bits */
 {
-    return !b->bad && 8 * b->bytes - b->used < 8 && peek(b, 8) == 0;
+    align(b);
+    return !b->bad && left(b) == 0;
+}
+
+static unsigned number(struct bits *b)
+{
+    unsigned value = 0, group = 0x80, i;
+    for (i = 0; i < 3 && group >= 0x80; i++) {
+        group = take(b, 8);
+        value |= (group & 0x7F) << 7 * i;
+    }
+    b->bad |= group >= 0x80 || (i > 1 && group == 0);
+    return value;
 }
 
 static unsigned gamma_word(struct bits *b)
 {
     unsigned zeros = 0;
-    for (; zeros < 10 && peek(b, 1) == 0; zeros++)
-        use(b, 1);
+    while (zeros < 10 && peek(b, zeros + 1) == 0)
+        zeros++;
     b->bad |= zeros == 10;
-    return take(b, zeros + 1);
+    return take(b, 2 * zeros + 1);
 }
 
 enum { WORD_BITS = 11, WORDS = 1 << WORD_BITS, CODES = 16, CONTEXTS = 512, SYMBOLS = 512, TOKENS = 14 };
@@ -669,41 +611,35 @@ static unsigned assign(struct code *code, const byte *lengths, unsigned symbols)
 
 static unsigned decode(struct bits *b, const struct code *code)
 {
-    unsigned next = peek(b, WORD_BITS);
-    b->bad |= code->length[next] == 0;
-    use(b, code->length[next]);
+    unsigned next = peek(b, WORD_BITS), length = code->length[next];
+    take(b, length);
+    b->bad |= length == 0;
     return code->symbol[next];
 }
 
 static void read_token_code(struct bits *b, struct code *code, unsigned tokens) /* full, or one word of one bit */
 {
     byte lengths[CODES + 1] = { 0 };
-    unsigned used = 0;
-    for (unsigned i = 0; i < tokens; i++) {
+    for (unsigned i = 0; i < tokens; i++)
         lengths[i] = (byte)take(b, 3);
-        used += lengths[i] > 0;
-    }
-    unsigned full = assign(code, lengths, tokens);
-    b->bad |= full != WORDS && !(used == 1 && full == WORDS / 2);
+    unsigned filled = assign(code, lengths, tokens);
+    b->bad |= filled != WORDS && !(filled == WORDS / 2 && code->length[0] == 1);
 }
 
 static void read_table(struct bits *b, const struct code *tokens, struct code *code, unsigned symbols)
 {
     byte lengths[SYMBOLS] = { 0 };
-    unsigned symbol = 0, before = 0, full = 0;
-    while (!b->bad && full < WORDS) {
+    unsigned symbol = 0, before = 0, filled = 0;
+    while (!b->bad && filled < WORDS) {
         unsigned token = decode(b, tokens), times = token < 12 ? 1 : gamma_word(b) + 1;
         before = token < 12 ? token : token == 12 ? 0 : before;
-        if (b->bad || (token == 13 && before == 0) || times > symbols - symbol) {
-            b->bad = true;
-            return;
-        }
-        for (; times > 0; times--) {
+        b->bad |= (token == 13 && before == 0) || times > symbols - symbol;
+        for (; times > 0 && !b->bad; times--) {
             lengths[symbol++] = (byte)before;
-            full += before > 0 ? (unsigned)WORDS >> before : 0;
+            filled += before > 0 ? (unsigned)WORDS >> before : 0;
         }
     }
-    b->bad |= full != WORDS || assign(code, lengths, symbols) != WORDS;
+    b->bad |= filled != WORDS || assign(code, lengths, symbols) != WORDS;
 }
 
 struct codes { byte of[CONTEXTS]; unsigned count; struct code code[CODES]; };
@@ -735,14 +671,13 @@ static unsigned decode_in(struct bits *b, const struct codes *codes, unsigned co
 
 /* ---- segment.md: stretches ------------------------------------------------------------------------------------- */
 
-static bool prefix_stretch(struct bytes *in, unsigned streams, bool last, byte *raw, size_t n)
+static void prefix_stretch(struct bits *in, unsigned streams, bool last, byte *raw, size_t n)
 {
     static struct code tokens, code;
-    struct bits table = cut_bits(in, in->left);
     size_t sizes[6] = { 0 };
-    read_token_code(&table, &tokens, TOKENS);
-    read_table(&table, &tokens, &code, 256);
-    end_bits(in, &table);
+    read_token_code(in, &tokens, TOKENS);
+    read_table(in, &tokens, &code, 256);
+    align(in);
     for (unsigned i = 0; i < (last ? streams - 1 : streams); i++) {
         sizes[i] = number(in);
         if (i > 0) /* a difference, folded; should it lead below 0, the sum is too large for any stream */
@@ -750,52 +685,54 @@ static bool prefix_stretch(struct bytes *in, unsigned streams, bool last, byte *
     }
     for (unsigned i = 0; i < streams && !in->bad; i++) {
         size_t share = i == streams - 1 ? n - i * (n / streams) : n / streams;
-        struct bits stream = cut_bits(in, last && i == streams - 1 ? in->left : sizes[i]);
+        struct bits stream = cut(in, last && i == streams - 1 ? left(in) : sizes[i]);
         for (; share > 0 && !stream.bad; share--)
             *raw++ = (byte)decode(&stream, &code);
         in->bad |= !used_up(&stream);
     }
-    return !in->bad;
 }
 
-static bool stretches(struct bytes *in, byte *raw, size_t n)
+static bool stretches(struct bits *in, byte *raw, size_t n)
 {
-    for (bool last = false; !last;) {
-        unsigned kind = one_byte(in), method = kind & 3;
+    for (bool last = false; !last && !in->bad;) {
+        unsigned kind = take(in, 8), method = kind & 3, six = kind & 4;
         last = (kind & 8) != 0;
         size_t length = last ? n : number(in);
-        if (in->bad || kind > 15 || method == 3 || ((kind & 4) != 0 && (method != 2 || length < 6)) ||
+        if (in->bad || kind > 15 || method == 3 || (six != 0 && (method != 2 || length < 6)) ||
             (!last && (length < 256 || length >= n)))
             return false;
-        if (method == 2 && !prefix_stretch(in, (kind & 4) != 0 ? 6 : 1, last, raw, length)) return false;
-        if (method == 1)
-            memset(raw, (int)one_byte(in), length);
-        for (size_t i = 0; method == 0 && i < length; i++)
-            raw[i] = (byte)one_byte(in);
+        if (method == 2)
+            prefix_stretch(in, six != 0 ? 6 : 1, last, raw, length);
+        else if (method == 1)
+            memset(raw, (int)take(in, 8), length);
+        else
+            for (size_t i = 0; i < length && !in->bad; i++)
+                raw[i] = (byte)take(in, 8);
         raw += length;
         n -= length;
     }
-    return !in->bad && in->left == 0;
+    return used_up(in);
 }
 
 /* ---- segment.md: matched --------------------------------------------------------------------------------------- */
 
-static const struct { unsigned base, extra; } runs[16] = {
-    { 0, 0 }, { 1, 0 }, { 2, 0 }, { 3, 0 }, { 4, 0 }, { 5, 0 }, { 6, 1 }, { 8, 1 }, { 10, 2 }, { 14, 3 }, { 22, 4 },
-    { 38, 5 }, { 70, 6 }, { 134, 9 }, { 646, 13 }, { 8838, 20 }
-}, copies[32] = {
-    { 2, 0 }, { 3, 0 }, { 4, 0 }, { 5, 0 }, { 6, 0 }, { 7, 0 }, { 8, 0 }, { 9, 0 }, { 10, 0 }, { 11, 0 }, { 12, 0 },
-    { 13, 0 }, { 14, 0 }, { 15, 0 }, { 16, 0 }, { 17, 0 }, { 18, 1 }, { 20, 1 }, { 22, 2 }, { 26, 2 }, { 30, 3 },
-    { 38, 3 }, { 46, 4 }, { 62, 4 }, { 78, 5 }, { 110, 5 }, { 142, 6 }, { 206, 7 }, { 334, 8 }, { 590, 10 },
-    { 1614, 13 }, { 9806, 20 }
-};
+/* Extra bits of run codes and length codes. The base of a code is where the values of the one before end. */
+static const byte run_extra[16] = { 0, 0, 0, 0, 0, 0, 1, 1, 2, 3, 4, 5, 6, 9, 13, 20 };
+static const byte copy_extra[32] = { 0, 0, 0, 0, 0, 0, 0, 0, 0, 0, 0, 0, 0,  0,  0, 0,
+                                     1, 1, 2, 2, 3, 3, 4, 4, 5, 5, 6, 7, 8, 10, 13, 20 };
+
+static size_t value_of_code(struct bits *b, const byte *extra, unsigned code, size_t base)
+{
+    for (unsigned before = 0; before < code; before++)
+        base += (size_t)1 << extra[before];
+    return base + take(b, extra[code]);
+}
 
 /* A distance; it becomes the first of the recent ones. */
-static uint32_t distance_of(struct bits *b, const struct codes *codes, unsigned context, unsigned fine,
-                            uint32_t recent[4])
+static size_t distance_of(struct bits *b, const struct codes *codes, unsigned context, unsigned fine, size_t recent[4])
 {
     unsigned symbol = decode_in(b, codes, context), place = symbol < 4 ? symbol : 3;
-    uint32_t distance = recent[place];
+    size_t distance = recent[place];
     if (symbol >= 4) {
         unsigned low = (symbol - 4) & ((1U << fine) - 1), q = (symbol - 4) >> fine;
         distance = ((((2 + q % 2) << q / 2) + take(b, q / 2) - 2) << fine) + low + 1;
@@ -804,36 +741,36 @@ static uint32_t distance_of(struct bits *b, const struct codes *codes, unsigned 
     return recent[0] = distance;
 }
 
-static bool matched(struct bytes *in, byte *raw, size_t n)
+static bool matched(struct bits *in, byte *raw, size_t n)
 {
     static struct codes commands, distances, literals;
-    struct bits tables = cut_bits(in, in->left), b[3];
-    unsigned fine = take(&tables, 2);
-    read_codes(&tables, &commands, 4, 512, 4);
-    read_codes(&tables, &distances, 8, 4 + 2 * (20 - fine) * (1U << fine), 8);
-    read_codes(&tables, &literals, 512, 256, 16);
-    end_bits(in, &tables);
-    size_t sizes[2] = { number(in), 0 }, made = 0, length = 0;
-    sizes[1] = number(in);
-    for (unsigned i = 0; i < 3; i++)
-        b[i] = cut_bits(in, i < 2 ? sizes[i] : in->left);
-    uint32_t recent[4] = { 1, 2, 4, 8 };
+    unsigned fine = take(in, 2);
+    read_codes(in, &commands, 4, 512, 4);
+    read_codes(in, &distances, 8, 4 + 2 * (20 - fine) * (1U << fine), 8);
+    read_codes(in, &literals, 512, 256, 16);
+    align(in);
+    size_t commands_bytes = number(in), distances_bytes = number(in), made = 0, length = 0;
+    struct bits of_commands = cut(in, commands_bytes), of_distances = cut(in, distances_bytes);
+    struct bits of_literals = cut(in, left(in));
+    size_t recent[4] = { 1, 2, 4, 8 };
     while (made < n && !in->bad) {
-        unsigned command = decode_in(&b[0], &commands, length < 4 ? 0 : length < 7 ? 1 : length < 16 ? 2 : 3);
-        size_t literal_count = runs[command / 32].base + take(&b[0], runs[command / 32].extra);
-        if (b[0].bad || literal_count > n - made) return false;
-        for (size_t i = 0; i < literal_count; i++, made++)
-            raw[made] = (byte)decode_in(&b[2], &literals, i > 0 ? raw[made - 1]
-                                        : recent[0] <= made ? 256U + raw[made - recent[0]] : 256);
+        unsigned context = length < 4 ? 0 : length < 7 ? 1 : length < 16 ? 2 : 3;
+        unsigned command = decode_in(&of_commands, &commands, context);
+        size_t literal_count = value_of_code(&of_commands, run_extra, command / 32, 0);
+        if (of_commands.bad || literal_count > n - made) return false;
+        for (size_t i = 0; i < literal_count; i++, made++) {
+            context = i > 0 ? raw[made - 1] : recent[0] <= made ? 256U + raw[made - recent[0]] : 256;
+            raw[made] = (byte)decode_in(&of_literals, &literals, context);
+        }
         if (made == n) break;
-        length = copies[command % 32].base + take(&b[0], copies[command % 32].extra);
-        unsigned context = (unsigned)lesser(length - 2, 3) + (literal_count == 0 ? 4 : 0);
-        if (b[0].bad || length > n - made || distance_of(&b[1], &distances, context, fine, recent) > made)
-            return false;
+        length = value_of_code(&of_commands, copy_extra, command % 32, 2);
+        context = (unsigned)lesser(length - 2, 3) + (literal_count == 0 ? 4 : 0);
+        size_t distance = distance_of(&of_distances, &distances, context, fine, recent);
+        if (of_commands.bad || length > n - made || of_distances.bad || distance > made) return false;
         for (size_t i = 0; i < length; i++, made++)
-            raw[made] = raw[made - recent[0]];
+            raw[made] = raw[made - distance];
     }
-    return !in->bad && used_up(&b[0]) && used_up(&b[1]) && used_up(&b[2]);
+    return !in->bad && used_up(&of_commands) && used_up(&of_distances) && used_up(&of_literals);
 }
 
 /* ---- segment.md: branches -------------------------------------------------------------------------------------- */
@@ -846,19 +783,19 @@ static bool is_field(const byte *at, size_t free) /* `free` bytes before it belo
 
 static void turn_branches_back(byte *raw, size_t n)
 {
-    size_t from = 0;
-    for (size_t a = 1; a + 4 <= n; a++) {
+    for (size_t a = 1, from = 0; a + 4 <= n; a++) {
         if (!is_field(raw + a, a - from)) continue;
         if (raw[a + 3] == 0x00 || raw[a + 3] == 0xFF) {
-            uint32_t value = (uint32_t)(get(raw + a, 4) - a) & 0x1FFFFFF;
+            uint64_t value = (get(raw + a, 4) - a) & 0x1FFFFFF;
             put(raw + a, (value & 0x1000000) != 0 ? value | 0xFE000000 : value, 4);
         }
-        from = a + 4;
-        a += 4;
+        from = a += 4;
     }
 }
 
 /* ---- segment.md: samples --------------------------------------------------------------------------------------- */
+
+enum { ROW_MAX = 32768 };
 
 struct grid {
     unsigned width, predictor, channels, row;
@@ -867,20 +804,64 @@ struct grid {
     uint32_t *x; /* residuals, then numbers */
 };
 
-static int64_t signed_of(uint32_t value, unsigned bits)
+/* One part of numbers of a byte: line after line, within a line channel after channel. */
+static void part_of_bytes(struct bits *b, const struct codes *codes, const struct grid *g, uint32_t *r, size_t pixels)
 {
-    uint32_t top = (uint32_t)1 << (bits - 1);
+    static const byte steps[15] = { 1, 2, 3, 4, 6, 8, 11, 15, 20, 27, 36, 50, 70, 100, 150 };
+    static byte sizes[3][8][ROW_MAX + 4]; /* of three lines, with two zeros on either side */
+    byte level[256] = { 0 };
+    for (unsigned k = 0; k < 256; k++)
+        for (unsigned i = 0; i < 15; i++)
+            level[k] = (byte)(level[k] + (steps[i] <= k));
+    memset(sizes, 0, sizeof sizes);
+    size_t line = g->row > 0 ? g->row / g->channels : 512, length;
+    for (size_t y = 0, done = 0; done < pixels && !b->bad; y++, done += length) {
+        length = (size_t)lesser(line, pixels - done);
+        for (unsigned ch = 0; ch < g->channels; ch++) {
+            byte *own = sizes[y % 3][ch] + 2;
+            const byte *A = sizes[(y + 2) % 3][ch] + 2, *AA = sizes[(y + 1) % 3][ch] + 2;
+            const byte *L = ch > 0 ? sizes[y % 3][ch - 1] + 2 : NULL;
+            for (int x = 0; x < (int)length; x++) {
+                int n = 2 * A[x] + A[x - 1] + A[x + 1];
+                int m = ch > 0 ? 2 * L[x] + L[x - 1] + L[x + 1] : 2 * AA[x] + A[x - 2] + A[x + 2];
+                uint32_t value = decode_in(b, codes, 16U * level[n] + level[m] + (ch > 0 ? 256 : 0));
+                r[(done + (size_t)x) * g->channels + ch] = value;
+                own[x] = (byte)lesser(lesser(value, 256 - value), 60);
+            }
+            own[length] = 0; /* the last line may be shorter than the ones before */
+        }
+    }
+}
+
+/* One part of wider numbers, in their order. */
+static void part_of_wide(struct bits *b, const struct codes *codes, const struct grid *g, uint32_t *r, size_t pixels)
+{
+    static byte tokens[RAW_MAX];
+    unsigned mean[8] = { 0 };
+    for (size_t i = 0; i < pixels * g->channels && !b->bad; i++) {
+        unsigned ch = (unsigned)(i % g->channels), context = mean[ch] / 8;
+        if (g->row > 0)
+            context = (context + (i >= g->row ? tokens[i - g->row] : 0)) / 2;
+        uint32_t token = decode_in(b, codes, context + (ch > 0 ? 128 : 0)), z = token;
+        if (token >= 16)
+            z = ((4 + token % 4) << (token / 4 - 2)) + take(b, token / 4 - 2);
+        r[i] = z % 2 == 0 ? z / 2 : ~(z / 2);
+        tokens[i] = (byte)token;
+        mean[ch] = mean[ch] - mean[ch] / 8 + token;
+    }
+}
+
+static int64_t signed_of(uint64_t value, unsigned bits) /* the low bits of a value, the topmost being the sign */
+{
+    uint64_t top = UINT64_C(1) << (bits - 1);
     return (int64_t)(value & (top - 1)) - (int64_t)(value & top);
 }
+
+static int64_t wrap(int64_t value) { return signed_of((uint64_t)value, 32); }
 
 static int64_t number_at(const struct grid *g, size_t i) /* as it counts in predictions */
 {
     return g->width == 1 ? (int64_t)g->x[i] : signed_of(g->x[i], 8 * g->width);
-}
-
-static int64_t wrap(int64_t value) /* round at 32 bits, with sign */
-{
-    return signed_of((uint32_t)((uint64_t)value & LOW32), 32);
 }
 
 static int64_t floor_of(int64_t value, int64_t by) { return value >= 0 ? value / by : -((by - 1 - value) / by); }
@@ -905,60 +886,6 @@ static int64_t prediction(const struct grid *g, size_t i)
     }
 }
 
-static unsigned level(unsigned k)
-{
-    static const byte steps[15] = { 1, 2, 3, 4, 6, 8, 11, 15, 20, 27, 36, 50, 70, 100, 150 };
-    unsigned i = 0;
-    while (i < 15 && steps[i] <= k)
-        i++;
-    return i;
-}
-
-/* The size of a residual of a part of bytes; x may be -2 .. line + 1, and the line above the first one. */
-static unsigned size_at(const struct grid *g, const uint32_t *r, size_t pixels, size_t line, long y, long x,
-                        unsigned channel)
-{
-    size_t at = (size_t)y * line + (size_t)x;
-    if (y < 0 || x < 0 || (size_t)x >= line || at >= pixels) return 0;
-    uint32_t value = r[at * g->channels + channel];
-    return (unsigned)lesser(lesser(value, 256 - value), 60);
-}
-
-/* One part of numbers of a byte: line after line, within a line channel after channel. */
-static void part_of_bytes(struct bits *b, const struct codes *codes, const struct grid *g, uint32_t *r, size_t pixels)
-{
-    size_t line = g->row > 0 ? g->row / g->channels : 512;
-#define SIZE(y, x, channel) size_at(g, r, pixels, line, y, x, channel)
-    for (long y = 0; (size_t)y * line < pixels; y++)
-        for (unsigned ch = 0; ch < g->channels; ch++)
-            for (long x = 0; (size_t)x < line && (size_t)y * line + (size_t)x < pixels && !b->bad; x++) {
-                unsigned n = 2 * SIZE(y - 1, x, ch) + SIZE(y - 1, x - 1, ch) + SIZE(y - 1, x + 1, ch);
-                unsigned m = ch == 0 ? 2 * SIZE(y - 2, x, 0) + SIZE(y - 1, x - 2, 0) + SIZE(y - 1, x + 2, 0)
-                                     : 2 * SIZE(y, x, ch - 1) + SIZE(y, x - 1, ch - 1) + SIZE(y, x + 1, ch - 1);
-                r[((size_t)y * line + (size_t)x) * g->channels + ch]
-                    = decode_in(b, codes, 16 * level(n) + level(m) + (ch > 0 ? 256 : 0));
-            }
-#undef SIZE
-}
-
-/* One part of wider numbers, in their order. */
-static void part_of_wide(struct bits *b, const struct codes *codes, const struct grid *g, uint32_t *r, size_t pixels,
-                         byte *tokens)
-{
-    unsigned mean[8] = { 0 };
-    for (size_t i = 0; i < pixels * g->channels && !b->bad; i++) {
-        unsigned ch = (unsigned)(i % g->channels), context = mean[ch] / 8;
-        if (g->row > 0)
-            context = (context + (i >= g->row ? tokens[i - g->row] : 0)) / 2;
-        uint32_t token = decode_in(b, codes, context + (ch > 0 ? 128 : 0)), z = token;
-        if (token >= 16)
-            z = ((4 + token % 4) << (token / 4 - 2)) + take(b, token / 4 - 2);
-        r[i] = z % 2 == 0 ? z / 2 : ~(z / 2);
-        tokens[i] = (byte)token;
-        mean[ch] = mean[ch] - mean[ch] / 8 + token;
-    }
-}
-
 static void numbers_from(struct grid *g, byte *to) /* residuals become numbers, numbers become bytes */
 {
     uint32_t mask = 0xFFFFFFFF >> (32 - 8 * g->width), residual = 0;
@@ -970,9 +897,9 @@ static void numbers_from(struct grid *g, byte *to) /* residuals become numbers, 
     }
 }
 
-static bool read_grid(struct bytes *in, struct grid *g, size_t n)
+static bool read_grid(struct bits *in, struct grid *g, size_t n)
 {
-    unsigned kind = one_byte(in), more = one_byte(in);
+    unsigned kind = take(in, 8), more = take(in, 8);
     g->width = (kind & 3) + 1;
     g->big_endian = (kind & 4) != 0;
     g->floats = (kind & 8) != 0;
@@ -983,57 +910,49 @@ static bool read_grid(struct bytes *in, struct grid *g, size_t n)
     g->row = number(in);
     if (in->bad || kind > 31 || more > 127 || g->predictor > 8 || g->head > 16383 || g->head > n ||
         (g->floats && g->width != 4) || (g->leaning && g->channels == 1) ||
-        (g->row > 0 && (g->row % g->channels != 0 || g->row <= g->channels || g->row > 32768)) ||
+        (g->row > 0 && (g->row % g->channels != 0 || g->row <= g->channels || g->row > ROW_MAX)) ||
         (g->row == 0 && g->predictor >= 1 && g->predictor <= 5))
         return false;
     g->pixels = (n - g->head) / (g->channels * g->width);
     return g->pixels >= 4;
 }
 
-static bool samples(struct bytes *in, byte *raw, size_t n)
+static bool samples(struct bits *in, byte *raw, size_t n)
 {
     static struct codes codes;
-    struct grid g;
+    static uint32_t numbers[RAW_MAX];
+    struct grid g = { .x = numbers };
+    size_t sizes[3];
     if (!read_grid(in, &g, n)) return false;
-    size_t quarter = g.pixels / 4, sizes[3];
-    for (size_t i = 0; i < n; i++)
+    for (size_t i = 0; i < n && !in->bad; i++)
         if (i < g.head || i >= g.head + g.pixels * g.channels * g.width)
-            raw[i] = (byte)one_byte(in);
-    struct bits tables = cut_bits(in, in->left);
-    read_codes(&tables, &codes, CONTEXTS, 256, CODES);
-    end_bits(in, &tables);
+            raw[i] = (byte)take(in, 8);
+    read_codes(in, &codes, CONTEXTS, 256, CODES);
+    align(in);
     for (unsigned i = 0; i < 3; i++)
         sizes[i] = number(in);
-    for (unsigned i = 0; i < codes.count && g.width > 1 && !in->bad; i++)
-        for (unsigned j = 0; j < WORDS; j++)
-            in->bad |= codes.code[i].symbol[j] >= 128;
-    g.x = room(NULL, g.pixels * g.channels * sizeof g.x[0]);
-    byte *tokens = room(NULL, g.pixels * g.channels);
+    for (unsigned i = 0; i < codes.count * WORDS && g.width > 1 && !in->bad; i++)
+        in->bad |= codes.code[i / WORDS].symbol[i % WORDS] >= 32 * g.width;
     for (unsigned i = 0; i < 4 && !in->bad; i++) {
-        size_t part = i < 3 ? quarter : g.pixels - 3 * quarter;
-        struct bits b = cut_bits(in, i < 3 ? sizes[i] : in->left);
-        if (g.width == 1)
-            part_of_bytes(&b, &codes, &g, g.x + i * quarter * g.channels, part);
-        else
-            part_of_wide(&b, &codes, &g, g.x + i * quarter * g.channels, part, tokens);
+        size_t first = i * (g.pixels / 4), pixels = i < 3 ? g.pixels / 4 : g.pixels - first;
+        struct bits b = cut(in, i < 3 ? sizes[i] : left(in));
+        (g.width == 1 ? part_of_bytes : part_of_wide)(&b, &codes, &g, g.x + first * g.channels, pixels);
         in->bad |= !used_up(&b);
     }
     if (!in->bad)
         numbers_from(&g, raw + g.head);
-    free(g.x);
-    free(tokens);
     return !in->bad;
 }
 
-static bool decode_segment(const byte *coded, size_t bytes, byte *raw, size_t n)
+static bool decode_segment(const byte *coded, size_t bytes, byte *raw, size_t n) /* n: at most RAW_MAX */
 {
-    struct bytes in = { coded, bytes, false };
-    unsigned method = one_byte(&in), transform = one_byte(&in);
-    if (in.bad || transform > 1 || (transform == 1 && method != 3)) return false;
-    if (method == 0 && in.left == n)
-        memcpy(raw, in.from, n);
-    else if (method == 1 && in.left == 1)
-        memset(raw, *in.from, n);
+    struct bits in = { coded, bytes, 0, false };
+    unsigned method = take(&in, 8), transform = take(&in, 8);
+    if (in.bad || transform > (method == 3 ? 1 : 0)) return false;
+    if (method == 0 && left(&in) == n)
+        memcpy(raw, coded + 2, n);
+    else if (method == 1 && left(&in) == 1)
+        memset(raw, coded[2], n);
     else if (method == 2)
         return stretches(&in, raw, n);
     else if (method == 3 && matched(&in, raw, n)) {
@@ -1046,119 +965,107 @@ static bool decode_segment(const byte *coded, size_t bytes, byte *raw, size_t n)
 
 /* ---- stream.md and catalogue.md: which records there are ------------------------------------------------------- */
 
-enum { TITLE = 1, SPEC = 2, READER = 3, BATCH = 4, SEGMENT = 5, SUMS = 6, INDEX = 7, COLOPHON = 8, BODY_MAX = 1 << 24 };
-
-static void add(struct list *list, uint64_t key, uint64_t at, uint64_t bytes, uint64_t raw)
+static void add(struct container *c, unsigned type, uint64_t key, uint64_t at, uint64_t bytes, uint64_t raw)
 {
-    struct ref ref = { key, at, (uint32_t)bytes, (uint32_t)raw };
-    if (bytes > BODY_MAX || raw > 1 << 20) return;
-    if (list->count == list->room) {
-        list->room = 2 * list->room + 64;
-        list->refs = room(list->refs, list->room * sizeof ref);
-    }
-    list->refs[list->count++] = ref;
+    struct ref ref = { key, at, type, (uint32_t)bytes, (uint32_t)raw };
+    if (bytes > BODY_MAX || raw > RAW_MAX) return;
+    if (c->count == c->room)
+        c->refs = room(c->refs, (c->room = 2 * c->room + 64) * (uint64_t)sizeof ref);
+    c->refs[c->count++] = ref;
 }
 
-static int by_key(const void *one, const void *other)
+static int in_order(const void *one, const void *other)
 {
     const struct ref *a = one, *b = other;
-    return a->key != b->key ? (a->key < b->key ? -1 : 1) : a->at != b->at ? (a->at < b->at ? -1 : 1) : 0;
+    if (a->type != b->type) return a->type < b->type ? -1 : 1;
+    if (a->key != b->key) return a->key < b->key ? -1 : 1;
+    return a->at < b->at ? -1 : a->at > b->at;
 }
 
-static void put_in_order(struct list *list) /* each ref once */
+/* The last ref of a type with no greater key; NULL if there is none. *next: the key of the one behind it. */
+static const struct ref *find(const struct container *c, unsigned type, uint64_t key, uint64_t *next)
 {
-    size_t kept = 0;
-    if (list->count > 0)
-        qsort(list->refs, list->count, sizeof list->refs[0], by_key);
-    for (size_t i = 0; i < list->count; i++)
-        if (kept == 0 || by_key(&list->refs[kept - 1], &list->refs[i]) != 0)
-            list->refs[kept++] = list->refs[i];
-    list->count = kept;
-}
-
-static size_t refs_up_to(const struct list *list, uint64_t key) /* how many have no greater key */
-{
-    size_t low = 0, high = list->count;
+    struct ref wanted = { key, UINT64_MAX, type, 0, 0 };
+    size_t low = 0, high = c->count;
     while (low < high) {
         size_t middle = low + (high - low) / 2;
-        if (list->refs[middle].key <= key)
+        if (in_order(&c->refs[middle], &wanted) <= 0)
             low = middle + 1;
         else
             high = middle;
     }
-    return low;
+    *next = low < c->count && c->refs[low].type == type ? c->refs[low].key : UINT64_MAX;
+    return low > 0 && c->refs[low - 1].type == type ? &c->refs[low - 1] : NULL;
+}
+
+/* Reads a body that begins with the hash of the rest of it. True when it is whole. */
+static bool read_hashed(struct container *c, uint64_t at, uint64_t bytes, byte **body)
+{
+    *body = room(*body, bytes);
+    return read_stream(c, at, *body, bytes) && bytes >= 16 && hash_is(*body, *body + 16, (size_t)bytes - 16);
 }
 
 /* An INDEX holds a BATCH again, which has a hash of its own, and tells where segments and sums are. */
 static void note_index(struct container *c, uint64_t at, uint64_t bytes)
 {
-    byte *body = room(NULL, bytes), first[8];
-    read_stream(c, at, body, bytes);
+    bool good = read_hashed(c, at, bytes, &c->body);
+    const byte *body = c->body;
     uint64_t batch = get(body + 40, 4), segments = get(body + 44, 4), sums_at = get(body + 48, 8);
     if (batch >= 40 && batch <= bytes - 80)
-        add(&c->batches, get(body + 96, 8), at + 80, batch, 0);
-    if (80 + batch + 24 * segments == bytes && hash_is(body, body + 16, (size_t)bytes - 16)) {
-        for (const byte *place = body + 80 + batch; place < body + bytes; place += 24)
-            add(&c->segments, get(place, 8), get(place + 8, 8) + 32, get(place + 20, 4), get(place + 16, 4));
-        if (sums_at != 0 && read_stream(c, sums_at + 32 + 24, first, 8))
-            add(&c->sums, get(first, 8), sums_at + 32, get(body + 56, 4), 0);
-    }
-    free(body);
+        add(c, BATCH, get(body + 96, 8), at + 80, batch, 0);
+    if (!good || 80 + batch + 24 * segments != bytes) return;
+    for (const byte *place = body + 80 + batch; place < body + bytes; place += 24)
+        add(c, SEGMENT, get(place, 8), get(place + 8, 8) + 32, get(place + 20, 4), get(place + 16, 4));
+    byte first[8];
+    if (sums_at != 0 && read_stream(c, sums_at + 32 + 24, first, 8))
+        add(c, SUMS, get(first, 8), sums_at + 32, get(body + 56, 4), 0);
 }
 
-static void note_colophon(struct container *c, uint64_t at, uint64_t bytes)
-{
-    char text[2049] = "";
-    c->colophon_there = read_stream(c, at, (byte *)text, lesser(bytes, 2048));
-    const char *items = strstr(text, "\nitems: ");
-    c->items_told = items == NULL ? 0 : strtoull(items + 8, NULL, 10);
-}
-
+/* Texts are found by their type, batches and sums by their first item, segments by their place in content space. */
 static void note_record(struct container *c, unsigned type, uint64_t at, uint64_t bytes)
 {
-    byte head[32];
-    if (bytes < 32 || bytes > BODY_MAX || (type == INDEX && bytes < 80)) return;
-    if (type == TITLE || type == SPEC || type == READER)
-        add(&c->texts, type, at, bytes, 0);
-    else if (type == BATCH && bytes >= 40 && read_stream(c, at, head, 32))
-        add(&c->batches, get(head + 16, 8), at, bytes, 0);
-    else if (type == SEGMENT && read_stream(c, at, head, 32))
-        add(&c->segments, get(head + 8, 8), at, bytes, get(head, 4));
-    else if (type == SUMS && read_stream(c, at, head, 32))
-        add(&c->sums, get(head + 24, 8), at, bytes, 0);
-    else if (type == INDEX)
+    char text[2049] = "";
+    const byte *head = (const byte *)text;
+    bool there = read_stream(c, at, (byte *)text, lesser(bytes, type == COLOPHON ? 2048 : 32));
+    if (type >= TITLE && type <= READER)
+        add(c, type, 0, at, bytes, 0);
+    else if (type == BATCH && there)
+        add(c, type, get(head + 16, 8), at, bytes, 0);
+    else if (type == SEGMENT && there)
+        add(c, type, get(head + 8, 8), at, bytes, get(head, 4));
+    else if (type == SUMS && there)
+        add(c, type, get(head + 24, 8), at, bytes, 0);
+    else if (type == INDEX && bytes >= 80 && bytes <= BODY_MAX)
         note_index(c, at, bytes);
-    else if (type == COLOPHON)
-        note_colophon(c, at, bytes);
+    else if (type == COLOPHON) {
+        const char *items = strstr(text, "\nitems: ");
+        c->colophon_there = there;
+        c->items_told = items == NULL ? 0 : strtoull(items + 8, NULL, 10);
+    }
 }
 
 static void walk(struct container *c)
 {
-    uint64_t at = 0;
     byte head[32];
-    while (at + 32 <= c->stream_bytes && !c->colophon_there) {
+    for (uint64_t at = 0; at + 32 <= c->stream_bytes && !c->colophon_there;) {
         bool there = read_stream(c, at, head, 32);
-        uint64_t bytes = get(head + 8, 8), left = c->stream_bytes - at - 32;
+        uint64_t bytes = get(head + 8, 8);
         if (there && memcmp(head, "FREC", 4) == 0 && get(head + 16, 8) == at &&
-            get(head + 24, 8) == hash_of(head, 24).low && bytes <= left) {
+            get(head + 24, 8) == hash_of(head, 24).low && bytes <= c->stream_bytes - at - 32) {
             note_record(c, (unsigned)get(head + 4, 2), at + 32, bytes);
             at += (bytes + 31) / 32 * 32;
         }
         at = there ? at + 32 : (at / PAYLOAD + 1) * PAYLOAD; /* a lost block: go on behind it */
     }
-    put_in_order(&c->batches);
-    put_in_order(&c->segments);
-    put_in_order(&c->sums);
-    put_in_order(&c->texts);
+    if (c->count > 0)
+        qsort(c->refs, c->count, sizeof c->refs[0], in_order);
 }
 
 static uint64_t count_blocks(struct container *c) /* that begin in the file; the title page is none of them */
 {
-    uint64_t there = 0, step = 1;
+    uint64_t there = 0;
     byte any[1];
-    while (step < UINT64_C(1) << 48 && read_at(c, BLOCK * step, any, 1))
-        step *= 2;
-    for (; step > 0; step /= 2)
+    for (uint64_t step = UINT64_C(1) << 48; step > 0; step /= 2)
         if (read_at(c, BLOCK * (there + step), any, 1))
             there += step;
     return there;
@@ -1172,7 +1079,6 @@ static bool open_container(struct container *c, FILE *file)
     memset(c, 0, sizeof *c);
     c->file = file;
     c->sheet = c->payload_of = UINT64_MAX;
-    c->raw = room(NULL, 1 << 20);
     c->blocks = count_blocks(c);
     uint64_t number = 0;
     while (number < c->blocks && !read_block(c, number, block, &tag))
@@ -1181,9 +1087,6 @@ static bool open_container(struct container *c, FILE *file)
     c->known = tag;
     c->sheet_data = (uint64_t)tag.full.k * tag.full.depth;
     c->sheet_blocks = c->sheet_data + (uint64_t)tag.full.m * tag.full.depth;
-    c->rebuilt = room(NULL, c->sheet_data * sizeof c->rebuilt[0]);
-    for (uint64_t i = 0; i < c->sheet_data; i++)
-        c->rebuilt[i] = NULL;
     uint64_t sheet = (c->blocks - 1) / c->sheet_blocks;
     while (!enter_sheet(c, sheet) && sheet > 0) /* what is behind the last sound block does not count */
         sheet--;
@@ -1195,30 +1098,23 @@ static bool open_container(struct container *c, FILE *file)
 
 static void close_container(struct container *c)
 {
-    if (c->rebuilt != NULL)
-        leave_sheet(c);
-    free(c->rebuilt);
-    free(c->batches.refs);
-    free(c->segments.refs);
-    free(c->sums.refs);
-    free(c->texts.refs);
-    free(c->raw);
+    leave_sheet(c);
+    free(c->refs);
     free(c->body);
-    free(c->sum_body);
+    free(c->sums_body);
 }
 
 /* ---- catalogue.md: items --------------------------------------------------------------------------------------- */
 
+struct text { const char *from; size_t bytes; }; /* not ended by a zero */
+
 struct item {
-    uint64_t number, content_at, size;
-    const byte *pax, *extents; /* of these 16 bytes each */
+    uint64_t number, content_at, stored, size;
+    const byte *pax, *ustar, *extents; /* of these 16 bytes each */
     uint32_t pax_bytes, extent_count;
     bool has_content, listed, in_front;
     char ustar_path[257], ustar_link[101];
-    const char *path, *link; /* not ended by a zero */
-    size_t path_bytes, link_bytes;
-    char type;
-    unsigned mode;
+    struct text path, link;
     int64_t seconds; /* of the last change, since 1970 */
 };
 
@@ -1230,89 +1126,6 @@ static uint64_t octal(const byte *field, unsigned bytes)
     return value;
 }
 
-static int64_t seconds_of(const char *text, size_t bytes) /* a time such as -12.25, rounded down */
-{
-    size_t i = bytes > 0 && *text == '-';
-    int64_t seconds = 0;
-    bool minus = i > 0, fraction = false;
-    for (; i < bytes && text[i] >= '0' && text[i] <= '9' && seconds < INT64_C(1) << 50; i++)
-        seconds = 10 * seconds + (text[i] - '0');
-    for (; i < bytes; i++)
-        fraction |= text[i] >= '1' && text[i] <= '9';
-    return minus ? -seconds - fraction : seconds;
-}
-
-static bool is_key(const char *from, const char *to, const char *key)
-{
-    return (size_t)(to - from) == strlen(key) && memcmp(from, key, strlen(key)) == 0;
-}
-
-/* Records of an extended header: "LENGTH KEYWORD=VALUE\n", LENGTH counting all of it. */
-static void read_extended(struct item *item, const char *at, size_t left)
-{
-    while (left > 0) {
-        size_t length = 0, digits = 0;
-        for (; digits < left && digits < 8 && at[digits] >= '0' && at[digits] <= '9'; digits++)
-            length = 10 * length + (size_t)(at[digits] - '0');
-        const char *key = at + digits + 1;
-        if (digits == 0 || length > left || length < digits + 3) return;
-        const char *equals = memchr(key, '=', length - digits - 2), *end = at + length - 1;
-        if (equals == NULL) return;
-        const char *value = equals + 1;
-        if (is_key(key, equals, "path")) {
-            item->path = value;
-            item->path_bytes = (size_t)(end - value);
-        } else if (is_key(key, equals, "linkpath")) {
-            item->link = value;
-            item->link_bytes = (size_t)(end - value);
-        } else if (is_key(key, equals, "mtime")) {
-            item->seconds = seconds_of(value, (size_t)(end - value));
-        }
-        at += length;
-        left -= length;
-    }
-}
-
-/* POSIX.1-2001, pax interchange format: an extended header where one is needed, then the ustar header. */
-static bool read_pax(struct item *item)
-{
-    const byte *ustar = item->pax;
-    uint64_t left = item->pax_bytes, extended = 0, padded = 0;
-    if (left >= 512 && ustar[156] == 'x') {
-        extended = lesser(octal(ustar + 124, 12), left);
-        padded = 512 + (extended + 511) / 512 * 512;
-    }
-    if (left < padded + 512) return false;
-    ustar += padded;
-    memcpy(item->ustar_link, ustar + 157, 100);
-    memcpy(item->ustar_path, ustar + 345, 155);
-    item->ustar_link[100] = item->ustar_path[155] = '\0';
-    strcat(item->ustar_path, item->ustar_path[0] != '\0' ? "/" : "");
-    strncat(item->ustar_path, (const char *)ustar, 100);
-    item->path = item->ustar_path;
-    item->path_bytes = strlen(item->path);
-    item->link = item->ustar_link;
-    item->link_bytes = strlen(item->link);
-    item->type = (char)ustar[156];
-    item->mode = (unsigned)octal(ustar + 100, 8) & 07777;
-    item->seconds = (int64_t)octal(ustar + 136, 12);
-    if (extended > 0)
-        read_extended(item, (const char *)item->pax + 512, (size_t)extended);
-    return true;
-}
-
-static uint64_t extent_at(const struct item *item, uint32_t i)
-{
-    return item->listed ? get(item->extents + 16 * (size_t)i, 8) : 0;
-}
-
-static uint64_t extent_bytes(const struct item *item, uint32_t i)
-{
-    return item->listed ? get(item->extents + 16 * (size_t)i + 8, 8) : item->size;
-}
-
-static uint64_t largest_holes = UINT64_C(1) << 43;
-
 static void put_octal(byte *field, unsigned digits, uint64_t value)
 {
     for (; digits > 0; value >>= 3)
@@ -1323,17 +1136,84 @@ static void put_sum(byte *header) /* over all bytes, those of the sum taken as s
 {
     unsigned sum = 8 * ' ';
     for (unsigned i = 0; i < 512; i++)
-        sum += i < 148 || i >= 156 ? header[i] : 0u;
+        sum += i < 148 || i >= 156 ? header[i] : 0U;
     put_octal(header + 148, 6, sum);
 }
 
-/*
- * Table 2. The entry at the front of `left` bytes: how long it is; 0 if it breaks a rule. *stored: content it takes.
- * Digits that are left out of its headers are put back.
- */
-static size_t read_entry(byte *entry, size_t left, struct item *item, uint64_t *stored)
+static int64_t seconds_of(struct text value) /* a time such as -12.25, rounded down; 0 if it is out of all reason */
 {
-    if (left < 24) return 0;
+    char digits[24] = "", *end;
+    memcpy(digits, value.from, (size_t)lesser(value.bytes, sizeof digits - 1));
+    int64_t seconds = strtoll(digits, &end, 10), limit = INT64_C(1) << 50;
+    bool fraction = *end == '.' && end[strspn(end, ".0")] != '\0';
+    return seconds < -limit || seconds > limit ? 0 : digits[0] == '-' && fraction ? seconds - 1 : seconds;
+}
+
+/* Records of an extended header: "LENGTH KEYWORD=VALUE\n", LENGTH counting all of it. */
+static void read_extended(struct item *item, const char *at, size_t bytes)
+{
+    for (size_t length, digits; bytes > 0; at += length, bytes -= length) {
+        length = digits = 0;
+        for (; digits < bytes && digits < 8 && at[digits] >= '0' && at[digits] <= '9'; digits++)
+            length = 10 * length + (size_t)(at[digits] - '0');
+        if (digits == 0 || length > bytes || length < digits + 3) return;
+        const char *keyword = at + digits + 1, *end = at + length - 1;
+        const char *equals = memchr(keyword, '=', (size_t)(end - keyword));
+        if (equals == NULL) return;
+        struct text value = { equals + 1, (size_t)(end - equals) - 1 };
+        size_t letters = (size_t)(equals - keyword);
+        if (letters == 4 && memcmp(keyword, "path", 4) == 0)
+            item->path = value;
+        else if (letters == 8 && memcmp(keyword, "linkpath", 8) == 0)
+            item->link = value;
+        else if (letters == 5 && memcmp(keyword, "mtime", 5) == 0)
+            item->seconds = seconds_of(value);
+    }
+}
+
+/* POSIX.1-2001, pax interchange format: an extended header where one is needed, then the ustar header. */
+static bool read_pax(struct item *item)
+{
+    uint64_t extended = 0, padded = 0;
+    if (item->pax_bytes >= 512 && item->pax[156] == 'x') {
+        extended = lesser(octal(item->pax + 124, 12), item->pax_bytes);
+        padded = 512 + (extended + 511) / 512 * 512;
+    }
+    if (item->pax_bytes < padded + 512) return false;
+    const byte *ustar = item->ustar = item->pax + padded;
+    bool prefix = ustar[345] != '\0';
+    memset(item->ustar_link, 0, sizeof item->ustar_link);
+    memcpy(item->ustar_link, ustar + 157, 100);
+    snprintf(item->ustar_path, sizeof item->ustar_path, "%.155s%s%.100s", prefix ? (const char *)ustar + 345 : "",
+             prefix ? "/" : "", (const char *)ustar);
+    item->path = (struct text){ item->ustar_path, strlen(item->ustar_path) };
+    item->link = (struct text){ item->ustar_link, strlen(item->ustar_link) };
+    item->seconds = (int64_t)octal(ustar + 136, 12);
+    read_extended(item, (const char *)item->pax + 512, (size_t)extended);
+    return true;
+}
+
+struct extent { uint64_t at, bytes; };
+
+static struct extent extent_of(const struct item *item, uint32_t i)
+{
+    struct extent extent = { 0, item->size };
+    if (item->listed) {
+        extent.at = get(item->extents + 16 * (size_t)i, 8);
+        extent.bytes = get(item->extents + 16 * (size_t)i + 8, 8);
+    }
+    return extent;
+}
+
+static uint64_t largest_holes = UINT64_C(1) << 43;
+
+/*
+ * Table 2. The entry at the front of so many bytes: how long it is; 0 if it breaks a rule. Digits that are left out of
+ * its headers are put back.
+ */
+static size_t read_entry(byte *entry, size_t bytes_left, struct item *item)
+{
+    if (bytes_left < 24) return 0;
     uint64_t bytes = get(entry, 4), end = 0;
     unsigned flags = (unsigned)get(entry + 12, 4);
     item->pax_bytes = (uint32_t)get(entry + 4, 4);
@@ -1342,82 +1222,81 @@ static size_t read_entry(byte *entry, size_t left, struct item *item, uint64_t *
     item->has_content = (flags & 1) != 0;
     item->listed = (flags & 2) != 0;
     item->in_front = (flags & 8) != 0;
-    if (bytes > left || bytes > 2097152 || item->extent_count > 65536 || (!item->listed && item->extent_count > 0) ||
+    if (bytes > bytes_left || bytes > 2097152 || item->extent_count > 65536 ||
+        (!item->listed && item->extent_count > 0) ||
         24 + 16 * (uint64_t)item->extent_count + item->pax_bytes != bytes)
         return 0;
+    byte *pax = entry + 24 + 16 * item->extent_count;
     if ((flags & 4) != 0 && item->pax_bytes >= 512) {
         byte *last = entry + bytes - 512;
         put_octal(last + 124, 11, item->size);
         put_sum(last);
-        put_sum(entry + 24 + 16 * item->extent_count);
+        put_sum(pax);
     }
     item->extents = entry + 24;
-    item->pax = entry + 24 + 16 * item->extent_count;
-    item->extent_count = item->listed ? item->extent_count : item->has_content && item->size > 0;
-    *stored = 0;
+    item->pax = pax;
+    if (!item->listed)
+        item->extent_count = item->has_content && item->size > 0;
+    item->stored = 0;
     for (uint32_t i = 0; i < item->extent_count; i++) {
-        uint64_t at = extent_at(item, i), length = extent_bytes(item, i);
-        if (length == 0 || at < end || at > item->size || length > item->size - at) return 0;
-        end = at + length;
-        *stored += length;
+        struct extent extent = extent_of(item, i);
+        if (extent.bytes == 0 || extent.at < end || extent.at > item->size || extent.bytes > item->size - extent.at)
+            return 0;
+        end = extent.at + extent.bytes;
+        item->stored += extent.bytes;
     }
-    return (item->listed && item->size - *stored > largest_holes) || !read_pax(item) ? 0 : (size_t)bytes;
+    return (item->listed && item->size - item->stored > largest_holes) || !read_pax(item) ? 0 : (size_t)bytes;
 }
 
-/* Table 1. The entries of a batch, decoded; NULL when this copy of it is lost. */
-static byte *read_batch(struct container *c, const struct ref *ref, uint64_t *items, uint64_t *place, size_t *bytes)
+struct batch { uint64_t place, items; size_t bytes; byte *entries; };
+
+/* Table 1. The entries of a batch, decoded; false when this copy of it is lost. */
+static bool read_batch(struct container *c, const struct ref *ref, struct batch *batch)
 {
-    const byte *body = c->body = room(c->body, ref->bytes);
-    c->segment = NULL;
-    if (ref->bytes < 40 || !read_stream(c, ref->at, c->body, ref->bytes) || !hash_is(body, body + 16, ref->bytes - 16))
-        return NULL;
-    *place = get(body + 24, 8);
-    *items = get(body + 32, 4);
-    *bytes = (size_t)lesser(get(body + 36, 4), 8388608);
-    byte *entries = room(NULL, *bytes);
-    const byte *at = body + 40, *end = body + ref->bytes;
-    for (uint64_t done = 0; done < *bytes; done += 1048576) {
+    if (!read_hashed(c, ref->at, ref->bytes, &c->body) || ref->bytes < 40) return false;
+    const byte *at = c->body + 40, *end = c->body + ref->bytes;
+    batch->place = get(c->body + 24, 8);
+    batch->items = get(c->body + 32, 4);
+    batch->bytes = (size_t)lesser(get(c->body + 36, 4), 8388608);
+    batch->entries = room(NULL, batch->bytes);
+    for (size_t done = 0, raw; done < batch->bytes; done += raw) {
         uint64_t coded = end - at >= 4 ? get(at, 4) : UINT64_MAX;
-        if (coded > (uint64_t)(end - at) - 4 ||
-            !decode_segment(at + 4, (size_t)coded, entries + done, (size_t)lesser(*bytes - done, 1048576))) {
-            free(entries);
-            return NULL;
+        raw = (size_t)lesser(batch->bytes - done, RAW_MAX);
+        if (coded > (uint64_t)(end - at) - 4 || !decode_segment(at + 4, (size_t)coded, batch->entries + done, raw)) {
+            free(batch->entries);
+            return false;
         }
         at += 4 + coded;
     }
-    return entries;
+    return true;
 }
 
 /* Table 3. The digest of an item; false when there is none, or it is lost. */
 static bool sum_of(struct container *c, uint64_t number, byte sum[32])
 {
-    size_t count = refs_up_to(&c->sums, number);
-    const struct ref *ref = count == 0 ? NULL : &c->sums.refs[count - 1];
+    uint64_t next;
+    const struct ref *ref = find(c, SUMS, number, &next);
     if (ref == NULL || ref->bytes < 32) return false;
-    if (c->sum != ref) {
-        c->sum = ref;
-        c->sum_body = room(c->sum_body, ref->bytes);
-        if (!read_stream(c, ref->at, c->sum_body, ref->bytes) ||
-            !hash_is(c->sum_body, c->sum_body + 16, ref->bytes - 16) ||
-            32 + 34 * get(c->sum_body + 16, 4) != ref->bytes)
-            memset(c->sum_body, 0, 32);
+    if (c->sums != ref) {
+        c->sums = ref;
+        c->sums_good = read_hashed(c, ref->at, ref->bytes, &c->sums_body) &&
+                       32 + 34 * get(c->sums_body + 16, 4) == ref->bytes;
     }
-    uint64_t n = get(c->sum_body + 16, 4), item = get(c->sum_body + 24, 8), i = 0;
-    for (; i < n; i++) {
-        item += get(c->sum_body + 32 + 2 * i, 2);
-        if (item >= number) break;
-    }
-    if (i == n || item != number) return false;
-    memcpy(sum, c->sum_body + 32 + 2 * n + 32 * i, 32);
+    if (!c->sums_good) return false;
+    const byte *body = c->sums_body, *steps = body + 32;
+    uint64_t n = get(body + 16, 4), item = get(body + 24, 8), i;
+    for (i = 0; i < n && item + get(steps + 2 * i, 2) <= number; i++)
+        item += get(steps + 2 * i, 2);
+    if (i == 0 || item != number) return false;
+    memcpy(sum, steps + 2 * n + 32 * (i - 1), 32);
     return true;
 }
 
 /* The good bytes of content space from `at` on; NULL when they are lost. *until: how far that goes. */
 static const byte *content_at(struct container *c, uint64_t at, uint64_t *until)
 {
-    size_t count = refs_up_to(&c->segments, at);
-    const struct ref *ref = count == 0 ? NULL : &c->segments.refs[count - 1];
-    *until = count < c->segments.count ? c->segments.refs[count].key : UINT64_MAX;
+    static byte raw[RAW_MAX];
+    const struct ref *ref = find(c, SEGMENT, at, until);
     if (ref == NULL || at - ref->key >= ref->raw) return NULL;
     *until = ref->key + ref->raw;
     if (c->segment != ref) {
@@ -1425,26 +1304,30 @@ static const byte *content_at(struct container *c, uint64_t at, uint64_t *until)
         c->segment = ref;
         c->segment_good = ref->bytes > 32 && read_stream(c, ref->at, body, ref->bytes) && get(body, 4) == ref->raw &&
                           get(body + 8, 8) == ref->key &&
-                          decode_segment(body + 32, ref->bytes - 32, c->raw, ref->raw) &&
-                          hash_is(body + 16, c->raw, ref->raw);
+                          decode_segment(body + 32, ref->bytes - 32, raw, ref->raw) &&
+                          hash_is(body + 16, raw, ref->raw);
     }
-    return c->segment_good ? c->raw + (at - ref->key) : NULL;
+    return c->segment_good ? raw + (at - ref->key) : NULL;
 }
 
 /* ---- giving back ----------------------------------------------------------------------------------------------- */
 
-struct task { char mode; const char *path; FILE *out; uint64_t items, lost, unknown; bool failed; };
+struct task { char mode; FILE *out; uint64_t items, lost, unknown; bool failed; };
 
-/* Bytes of an item; zeros when from is NULL. Nobody compares the digest of an item that has lost bytes. */
-static void give(struct task *task, FILE *out, struct sha *sha, const byte *from, uint64_t bytes)
+static void give(struct task *task, FILE *out, const byte *from, uint64_t bytes)
+{
+    task->failed |= out != NULL && fwrite(from, 1, (size_t)bytes, out) != bytes;
+}
+
+/* Bytes of an item; zeros when from is NULL. Nobody asks for the digest of an item that has lost bytes. */
+static void give_bytes(struct task *task, FILE *out, struct sha *sha, const byte *from, uint64_t bytes)
 {
     static const byte zeros[BLOCK];
-    while (bytes > 0 && !task->failed && (out != NULL || sha != NULL)) {
-        size_t step = (size_t)lesser(bytes, from == NULL ? sizeof zeros : bytes);
+    for (uint64_t step; bytes > 0 && !task->failed && (out != NULL || sha != NULL); bytes -= step) {
+        step = from == NULL ? lesser(bytes, sizeof zeros) : bytes;
         if (sha != NULL)
             sha_add(sha, from == NULL ? zeros : from, step);
-        task->failed |= out != NULL && fwrite(from == NULL ? zeros : from, 1, step, out) != step;
-        bytes -= step;
+        give(task, out, from == NULL ? zeros : from, step);
     }
 }
 
@@ -1453,36 +1336,32 @@ static bool give_content(struct container *c, struct task *task, const struct it
 {
     uint64_t at = 0, place = item->content_at, until;
     byte digest[32], sum[32];
-    struct sha sum_so_far, *sha = &sum_so_far;
-    sha_start(sha);
+    struct sha whole = sha_empty, *sha = &whole;
     for (uint32_t i = 0; i < item->extent_count; i++) {
-        uint64_t end = extent_at(item, i) + extent_bytes(item, i);
-        give(task, out, sha, NULL, extent_at(item, i) - at);
-        for (at = extent_at(item, i); at < end && !task->failed;) {
+        struct extent extent = extent_of(item, i);
+        give_bytes(task, out, sha, NULL, extent.at - at);
+        at = extent.at;
+        for (uint64_t end = at + extent.bytes, step; at < end && !task->failed; at += step, place += step) {
             const byte *bytes = content_at(c, place, &until);
-            uint64_t step = lesser(end - at, until - place);
-            if (bytes == NULL) {
+            step = lesser(end - at, until - place);
+            if (bytes == NULL && out == NULL)
                 printf("    lost: bytes %" PRIu64 " to %" PRIu64 "\n", at, at + step - 1);
-                sha = NULL;
-            }
-            give(task, out, sha, bytes, step);
-            at += step;
-            place += step;
+            sha = bytes == NULL ? NULL : sha;
+            give_bytes(task, out, sha, bytes, step);
         }
     }
-    give(task, out, sha, NULL, item->size - at);
-    if (sha == NULL) {
-        if (!sum_of(c, item->number, sum))
-            printf("    it has no SHA-256 either: perhaps its source failed while the container was made\n");
-        return false;
-    }
-    sha_end(sha, digest);
-    bool known = sum_of(c, item->number, sum), good = !known || memcmp(digest, sum, 32) == 0;
-    if (!known)
+    give_bytes(task, out, sha, NULL, item->size - at);
+    bool known = sum_of(c, item->number, sum);
+    if (sha != NULL)
+        sha_end(sha, digest);
+    bool wrong = sha != NULL && known && memcmp(digest, sum, 32) != 0;
+    if (out == NULL && !known && sha == NULL)
+        printf("    it has no SHA-256 either: perhaps its source failed while the container was made\n");
+    if (out == NULL && !known && sha != NULL)
         printf("    its SHA-256 is lost; each of its bytes satisfies the hash of a segment\n");
-    if (!good)
+    if (out == NULL && wrong)
         printf("    LOST: its SHA-256 is not the one in the catalogue\n");
-    return good;
+    return sha != NULL && !wrong;
 }
 
 static void put_date(int64_t seconds) /* in the Gregorian calendar, UTC */
@@ -1502,194 +1381,132 @@ static void put_date(int64_t seconds) /* in the Gregorian calendar, UTC */
 }
 
 /* A name for people: what a terminal could take for a command is written as \ and three octal digits. */
-static void put_name(const char *name, size_t bytes)
+static void put_name(const char *before, struct text name)
 {
-    for (; bytes > 0; bytes--, name++)
-        if ((byte)*name < 0x20 || *name == 0x7F || *name == '\\')
-            printf("\\%03o", (unsigned)(byte)*name);
+    fputs(before, stdout);
+    for (const char *at = name.from; at < name.from + name.bytes; at++)
+        if ((byte)*at < 0x20 || *at == 0x7F || *at == '\\')
+            printf("\\%03o", (unsigned)(byte)*at);
         else
-            putchar(*name);
+            putchar(*at);
 }
 
 static void list_item(const struct item *item)
 {
-    putchar(item->type >= '0' && item->type <= '6' ? "-hlcbdp"[item->type - '0'] : '-');
+    unsigned type = item->ustar[156], mode = (unsigned)octal(item->ustar + 100, 8);
+    putchar(type >= '0' && type <= '6' ? "-hlcbdp"[type - '0'] : '-');
     for (unsigned i = 0; i < 9; i++)
-        putchar((item->mode >> (8 - i) & 1) != 0 ? "rwx"[i % 3] : '-');
+        putchar((mode >> (8 - i) & 1) != 0 ? "rwx"[i % 3] : '-');
     printf("  ");
     put_date(item->seconds);
-    printf("  %12" PRIu64 "  ", item->has_content ? item->size : 0);
-    put_name(item->path, item->path_bytes);
-    if (item->link_bytes > 0) {
-        printf(" -> ");
-        put_name(item->link, item->link_bytes);
-    }
+    printf("  %12" PRIu64, item->has_content ? item->size : 0);
+    put_name("  ", item->path);
+    if (item->link.bytes > 0)
+        put_name(" -> ", item->link);
     putchar('\n');
 }
 
-static bool leads_down(const char *name, size_t bytes) /* and nowhere else */
+static bool leads_down(struct text name) /* and nowhere else */
 {
-    if (bytes == 0 || *name == '/' || memchr(name, '\0', bytes) != NULL) return false;
-    for (size_t i = 0, from = 0; i <= bytes; i++)
-        if (i == bytes || name[i] == '/') {
-            if (i - from == 2 && memcmp(name + from, "..", 2) == 0) return false;
-            from = i + 1;
+    bool down = name.bytes > 0 && *name.from != '/' && memchr(name.from, '\0', name.bytes) == NULL;
+    for (size_t i = 0, part = 0; i <= name.bytes && down; i++)
+        if (i == name.bytes || name.from[i] == '/') {
+            down = i - part != 2 || memcmp(name.from + part, "..", 2) != 0;
+            part = i + 1;
         }
-    return true;
+    return down;
 }
 
-static FILE *new_file(struct task *task, const char *path) /* never over one that is there */
-{
-    FILE *file = fopen(path, "rb");
-    bool there = file != NULL;
-    if (there)
-        fclose(file);
-    file = there ? NULL : fopen(path, "wb");
-    if (file == NULL)
-        fprintf(stderr, "reader: cannot write %s: %s\n", path, there ? "it is there already" : "is its folder there?");
-    task->failed |= file == NULL;
-    return file;
-}
-
-static void end_file(struct task *task, FILE *file)
-{
-    if (fclose(file) != 0)
-        task->failed = true;
-    if (task->failed)
-        fprintf(stderr, "reader: writing failed: is there room?\n");
-}
-
-/* A file in the folder: number and last part of the name, but for characters that some system could object to. */
-static void give_file(struct container *c, struct task *task, const struct item *item)
-{
-    char path[4096], damaged[4200];
-    size_t from = item->path_bytes;
-    while (from > 0 && item->path_bytes - from < 60 && item->path[from - 1] != '/')
-        from--;
-    int at = snprintf(path, sizeof path - 80, "%s/%06" PRIu64 "-", task->path, item->number);
-    if (at < 0 || (size_t)at >= sizeof path - 80) {
-        task->failed = true;
-        return;
-    }
-    for (; from < item->path_bytes; from++) {
-        char letter = item->path[from];
-        bool plain = (letter >= 'a' && letter <= 'z') || (letter >= 'A' && letter <= 'Z') ||
-                     (letter >= '0' && letter <= '9') || letter == '.' || letter == '-';
-        path[at++] = plain ? letter : '_';
-    }
-    path[at] = '\0';
-    FILE *file = new_file(task, path);
-    if (file == NULL) return;
-    bool good = give_content(c, task, item, file);
-    end_file(task, file);
-    snprintf(damaged, sizeof damaged, "%s.damaged", path);
-    if (!good && rename(path, damaged) != 0)
-        fprintf(stderr, "reader: %s IS DAMAGED, and could not be given another name\n", path);
-    printf("    is %s\n", good ? path : damaged);
-    task->lost += !good;
-}
-
-/* A pax archive is headers and contents, each padded to 512. An item that is not whole is left out. */
+/*
+ * A pax archive is headers and contents, each padded to 512. One has the items that are whole, another what is left of
+ * the others.
+ */
 static void give_member(struct container *c, struct task *task, const struct item *item)
 {
     static const byte zeros[512];
-    bool down = leads_down(item->path, item->path_bytes) &&
-                (item->type != '1' || leads_down(item->link, item->link_bytes));
-    if (!down || (item->has_content && !give_content(c, task, item, NULL))) {
-        printf("    left out: %s\n", down ? "it is not whole" : "its name leads out of the folder");
-        task->lost++;
-        return;
-    }
-    task->failed |= fwrite(item->pax, 1, item->pax_bytes, task->out) != item->pax_bytes;
-    if (item->has_content) {
-        size_t padding = (size_t)((512 - item->size % 512) % 512);
-        task->lost += !give_content(c, task, item, task->out);
-        task->failed |= fwrite(zeros, 1, padding, task->out) != padding;
-    }
-}
-
-static void do_item(struct container *c, struct task *task, const struct item *item)
-{
-    task->items++;
-    list_item(item);
-    if (task->mode == 't')
-        give_member(c, task, item);
-    else if (task->mode == 'x' && item->has_content)
-        give_file(c, task, item);
-    else if (task->mode == 'c' && item->has_content)
-        task->lost += !give_content(c, task, item, NULL);
+    bool down = leads_down(item->path) && (item->ustar[156] != '1' || leads_down(item->link));
+    bool whole = !item->has_content || give_content(c, task, item, NULL);
+    if (down && whole == (task->mode == 't')) {
+        give(task, task->out, item->pax, item->pax_bytes);
+        if (item->has_content) {
+            whole &= give_content(c, task, item, task->out);
+            give(task, task->out, zeros, (512 - item->size % 512) % 512);
+        }
+    } else if (task->mode == 't')
+        printf("    left out: %s\n", down ? "it is not whole; -d takes it" : "its name leads out of the folder");
+    task->lost += !whole || !down;
 }
 
 static void miss(struct task *task, uint64_t from, uint64_t to)
 {
-    if (from < to)
-        printf("LOST from the catalogue: items %" PRIu64 " to %" PRIu64 "\n", from, to - 1);
-    task->unknown += from < to ? to - from : 0;
+    if (from >= to) return;
+    printf("LOST from the catalogue: items %" PRIu64 " to %" PRIu64 "\n", from, to - 1);
+    task->unknown += to - from;
 }
 
-/* How much of a batch's content lies in front of the rest. */
-static uint64_t front_of(byte *entries, size_t bytes, uint64_t items)
+/* The items of a batch, from number `next` on; the contents of those in front come first. */
+static uint64_t do_batch(struct container *c, struct task *task, const struct batch *batch, uint64_t next)
 {
-    uint64_t front = 0, stored;
-    struct item item;
-    for (size_t at = 0, step; items > 0; items--, at += step) {
-        step = read_entry(entries + at, bytes - at, &item, &stored);
-        if (step == 0) break;
-        front += item.in_front ? stored : 0;
-    }
-    return front;
+    uint64_t front = batch->place, place = batch->place;
+    for (unsigned round = 0; round < 2; round++)
+        for (uint64_t i = 0, at = 0, step; i < batch->items && !task->failed; i++, at += step) {
+            struct item item = { .number = next };
+            step = read_entry(batch->entries + at, batch->bytes - (size_t)at, &item);
+            if (step == 0) break;
+            if (round == 0) {
+                place += item.in_front ? item.stored : 0;
+                continue;
+            }
+            item.content_at = item.in_front ? front : place;
+            *(item.in_front ? &front : &place) += item.stored;
+            list_item(&item);
+            if (task->out != NULL)
+                give_member(c, task, &item);
+            else if (task->mode == 'c' && item.has_content)
+                task->lost += !give_content(c, task, &item, NULL);
+            task->items++;
+            next++;
+        }
+    return next;
 }
 
 /* Items in the order of their numbers, each from the first copy of its batch that is whole. */
 static void do_items(struct container *c, struct task *task)
 {
-    uint64_t next = 0, items, place, front, stored;
-    size_t bytes, step;
-    for (size_t r = 0; r < c->batches.count && !task->failed; r++) {
-        const struct ref *ref = &c->batches.refs[r];
-        byte *entries = ref->key < next ? NULL : read_batch(c, ref, &items, &place, &bytes);
-        if (entries == NULL) continue;
+    uint64_t next = 0;
+    for (size_t r = 0; r < c->count && !task->failed; r++) {
+        const struct ref *ref = &c->refs[r];
+        struct batch batch;
+        if (ref->type != BATCH || ref->key < next || !read_batch(c, ref, &batch)) continue;
         miss(task, next, ref->key);
-        next = ref->key;
-        front = place;
-        place += front_of(entries, bytes, items);
-        for (size_t at = 0; items > 0 && !task->failed; items--, at += step) {
-            struct item item = { .number = next };
-            step = read_entry(entries + at, bytes - at, &item, &stored);
-            if (step == 0) break;
-            item.content_at = item.in_front ? front : place;
-            *(item.in_front ? &front : &place) += stored;
-            do_item(c, task, &item);
-            next++;
-        }
-        free(entries);
+        next = do_batch(c, task, &batch, ref->key);
+        free(batch.entries);
     }
     if (!task->failed)
         miss(task, next, c->items_told);
 }
 
-/* The title page, the specification, the source of this program: into the folder, or only read. */
+/* The title page, the specification, the source of this program: all are read, and one may be asked for by its type. */
 static void do_texts(struct container *c, struct task *task)
 {
-    for (size_t i = 0; i < c->texts.count && !task->failed; i++) {
-        const struct ref *ref = &c->texts.refs[i];
-        char path[4096];
-        snprintf(path, sizeof path, "%s/%s", task->path == NULL ? "" : task->path,
-                 ref->key == TITLE ? "title.txt" : ref->key == SPEC ? "specification.txt" : "reader.c");
-        byte *text = room(NULL, ref->bytes);
+    static const char *const names[] = { "", "title page", "specification", "source of the reader" };
+    for (unsigned type = TITLE; type <= READER; type++) {
+        uint64_t next;
+        const struct ref *ref = find(c, type, 0, &next);
+        bool asked = task->mode == (char)('0' + type);
+        if (asked && ref == NULL)
+            fprintf(stderr, "reader: the %s is not there\n", names[type]);
+        task->lost += asked && ref == NULL;
+        if (ref == NULL || !(asked || task->mode == 'c')) continue;
+        byte page[BLOCK], *text = room(NULL, ref->bytes);
         bool whole = read_stream(c, ref->at, text, ref->bytes);
-        FILE *file = task->mode == 'x' ? new_file(task, path) : NULL;
-        if (file != NULL) {
-            task->failed |= fwrite(text, 1, ref->bytes, file) != ref->bytes;
-            end_file(task, file);
-        }
-        if (file != NULL || !whole)
-            printf("%s%s\n", path, whole ? "" : " HAS GAPS");
+        if (!whole)
+            fprintf(asked ? stderr : stdout, "the %s HAS GAPS\n", names[type]);
         task->lost += !whole;
-        byte page[BLOCK];
-        if (ref->key == TITLE && whole && ref->bytes == BLOCK &&
+        give(task, asked ? stdout : NULL, text, ref->bytes);
+        if (type == TITLE && whole && ref->bytes == BLOCK &&
             (!read_at(c, 0, page, BLOCK) || memcmp(page, text, BLOCK) != 0)) {
-            printf("the title page is damaged; -x writes it as it was\n");
+            fprintf(asked ? stderr : stdout, "the title page is damaged; -1 prints it as it was\n");
             c->damaged = true;
         }
         free(text);
@@ -1699,36 +1516,52 @@ static void do_texts(struct container *c, struct task *task)
 static int run(struct container *c, struct task *task)
 {
     static const byte zeros[1024];
-    do_items(c, task);
-    if (task->mode == 'x' || task->mode == 'c')
-        do_texts(c, task);
-    if (task->mode == 't') {
-        task->failed |= fwrite(zeros, 1, sizeof zeros, task->out) != sizeof zeros;
-        end_file(task, task->out);
-    }
+    bool text_only = task->mode >= '1' && task->mode <= '3';
+    if (!text_only)
+        do_items(c, task);
+    do_texts(c, task);
+    give(task, task->out, zeros, sizeof zeros); /* the end of an archive */
     bool whole = task->lost + task->unknown == 0 && c->colophon_there;
-    printf("%" PRIu64 " items", task->items);
-    if (task->lost > 0)
-        printf("; %" PRIu64 " ARE NOT WHOLE", task->lost);
-    if (task->unknown > 0)
-        printf("; %" PRIu64 " ARE LOST FROM THE CATALOGUE", task->unknown);
-    if (!c->colophon_there)
-        printf("; the end is lost, so THERE MAY HAVE BEEN MORE");
-    if (c->damaged)
-        printf("; damaged blocks were met%s", whole ? " and mended" : "");
-    printf("\n");
-    if (task->failed) return CANNOT_CREATE;
-    return !whole ? LOSS : c->damaged ? SAFE : 0;
+    if (!text_only) {
+        printf("%" PRIu64 " items", task->items);
+        if (task->lost > 0)
+            printf("; %" PRIu64 " ARE NOT WHOLE", task->lost);
+        if (task->unknown > 0)
+            printf("; %" PRIu64 " ARE LOST FROM THE CATALOGUE", task->unknown);
+        if (!c->colophon_there)
+            printf("; the end is lost, so THERE MAY HAVE BEEN MORE");
+        if (c->damaged)
+            printf("; damaged blocks were met%s", whole ? " and mended" : "");
+        printf("\n");
+    }
+    if (task->out != NULL && fclose(task->out) != 0)
+        task->failed = true;
+    if (task->failed)
+        fprintf(stderr, "reader: writing failed: is there room?\n");
+    return task->failed ? CANNOT_CREATE : !whole ? LOSS : c->damaged ? SAFE : 0;
+}
+
+static FILE *new_file(const char *path) /* never over one that is there */
+{
+    FILE *file = fopen(path, "rb");
+    bool there = file != NULL;
+    if (there)
+        fclose(file);
+    file = there ? NULL : fopen(path, "wb");
+    if (file == NULL)
+        fprintf(stderr, "reader: cannot write %s: %s\n", path, there ? "it is there already" : "is its folder there?");
+    return file;
 }
 
 int main(int count, char **words)
 {
-    struct task task = { .mode = 'l', .path = count > 3 ? words[3] : NULL };
-    if (count > 2 && words[2][0] == '-')
+    static struct container c;
+    struct task task = { .mode = 'l' };
+    if (count > 2 && words[2][0] == '-' && strlen(words[2]) == 2)
         task.mode = words[2][1];
-    if (count < 2 || strchr("lctx", task.mode) == NULL || (count > 2 && strlen(words[2]) != 2) ||
-        count != (task.mode == 'l' ? 2 : task.mode == 'c' ? 3 : 4)) {
-        fprintf(stderr, "usage: reader FILE [-c | -t ARCHIVE | -x FOLDER]\n");
+    bool archive = task.mode == 't' || task.mode == 'd';
+    if (strchr("lctd123", task.mode) == NULL || count != (task.mode == 'l' ? 2 : archive ? 4 : 3)) {
+        fprintf(stderr, "usage: reader FILE [-c | -t ARCHIVE | -d ARCHIVE | -1 | -2 | -3]\n");
         return USAGE;
     }
     FILE *file = fopen(words[1], "rb");
@@ -1736,11 +1569,10 @@ int main(int count, char **words)
         fprintf(stderr, "reader: cannot open %s\n", words[1]);
         return NO_INPUT;
     }
-    static struct container c;
     int status = BAD_DATA;
     if (!open_container(&c, file))
         fprintf(stderr, "reader: %s holds no sound block of format 1\n", words[1]);
-    else if (task.mode == 't' && (task.out = new_file(&task, task.path)) == NULL)
+    else if (archive && (task.out = new_file(words[3])) == NULL)
         status = CANNOT_CREATE;
     else
         status = run(&c, &task);

@@ -40,18 +40,22 @@ static void as_segment(const uint8_t *data, size_t size)
 static void as_entry(const uint8_t *data, size_t size)
 {
     struct item item = { 0 };
-    uint64_t stored;
+    uint8_t *copy = malloc(size > 0 ? size : 1); /* digits are put back into it */
 
-    if (read_entry(data, size, &item, &stored) > size)
+    if (copy == NULL)
+        abort();
+    memcpy(copy, data, size);
+    if (read_entry(copy, size, &item) > size)
         abort();
     if (size >= 512) {
-        item.pax = data;
+        item.pax = copy;
         item.pax_bytes = (uint32_t)size;
         if (read_pax(&item)) {
             list_item(&item);
-            (void)leads_down(item.path, item.path_bytes);
+            (void)leads_down(item.path);
         }
     }
+    free(copy);
 }
 
 int LLVMFuzzerTestOneInput(const uint8_t *data, size_t size)
