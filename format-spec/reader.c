@@ -28,32 +28,25 @@ typedef unsigned char byte;
 
 enum { SAFE = 1, LOSS = 2, USAGE = 64, BAD_DATA = 65, NO_INPUT = 66, CANNOT_CREATE = 73 };
 
-static uint64_t get(const byte *from, unsigned bytes) /* numbers in a container are little-endian */
-{
+static uint64_t get(const byte *from, unsigned bytes) { /* numbers in a container are little-endian */
     uint64_t value = 0;
-    while (bytes-- > 0)
-        value = value << 8 | from[bytes];
+    while (bytes-- > 0) value = value << 8 | from[bytes];
     return value;
 }
 
-static void put(byte *to, uint64_t value, unsigned bytes)
-{
-    for (; bytes-- > 0; value >>= 8)
-        *to++ = (byte)(value & 0xFF);
+static void put(byte *to, uint64_t value, unsigned bytes) {
+    for (; bytes-- > 0; value >>= 8) *to++ = (byte)(value & 0xFF);
 }
 
-static uint64_t swap(uint64_t value, unsigned bytes) /* its bytes in the opposite order */
-{
+static uint64_t swap(uint64_t value, unsigned bytes) { /* its bytes in the opposite order */
     uint64_t swapped = 0;
-    for (; bytes > 0; bytes--, value >>= 8)
-        swapped = swapped << 8 | (value & 0xFF);
+    for (; bytes > 0; bytes--, value >>= 8) swapped = swapped << 8 | (value & 0xFF);
     return swapped;
 }
 
 static uint64_t lesser(uint64_t a, uint64_t b) { return a < b ? a : b; }
 
-static void *room(void *old, uint64_t bytes) /* memory, or the end of the program */
-{
+static void *room(void *old, uint64_t bytes) { /* memory, or the end of the program */
     void *memory = bytes > (size_t)-1 / 2 ? NULL : realloc(old, bytes > 0 ? (size_t)bytes : 1);
     if (memory == NULL) {
         fprintf(stderr, "reader: not enough memory for %" PRIu64 " bytes\n", bytes);
@@ -82,29 +75,24 @@ static const byte S[193] =
 
 struct pair { uint64_t low, high; };
 
-static struct pair multiply(uint64_t a, uint64_t b) /* all 128 bits of the product */
-{
+static struct pair multiply(uint64_t a, uint64_t b) { /* all 128 bits of the product */
     uint64_t ll = (a & LOW32) * (b & LOW32), lh = (a & LOW32) * (b >> 32);
     uint64_t hl = (a >> 32) * (b & LOW32), hh = (a >> 32) * (b >> 32);
     uint64_t middle = (ll >> 32) + (lh & LOW32) + hl;
-    struct pair product = { middle << 32 | (ll & LOW32), hh + (lh >> 32) + (middle >> 32) };
-    return product;
+    return (struct pair){ middle << 32 | (ll & LOW32), hh + (lh >> 32) + (middle >> 32) };
 }
 
-static uint64_t fold(uint64_t a, uint64_t b)
-{
+static uint64_t fold(uint64_t a, uint64_t b) {
     struct pair product = multiply(a, b);
     return product.low ^ product.high;
 }
 
-static uint64_t mix(uint64_t h)
-{
+static uint64_t mix(uint64_t h) {
     h = (h ^ h >> 37) * M1;
     return h ^ h >> 32;
 }
 
-static uint64_t mix64(uint64_t h)
-{
+static uint64_t mix64(uint64_t h) {
     h = (h ^ h >> 33) * P2;
     h = (h ^ h >> 29) * P3;
     return h ^ h >> 32;
@@ -114,69 +102,50 @@ static uint64_t s64(unsigned at) { return get(S + at, 8); }
 
 static uint64_t pair_of(const byte *x, unsigned s) { return fold(get(x, 8) ^ s64(s), get(x + 8, 8) ^ s64(s + 8)); }
 
-static struct pair hash_short(const byte *x, size_t n) /* sections 3 to 6: up to 16 bytes */
-{
-    struct pair h, product;
-    uint64_t a, b;
-    if (n == 0) {
-        h.low = mix64(s64(64) ^ s64(72));
-        h.high = mix64(s64(80) ^ s64(88));
-    } else if (n <= 3) {
-        a = (uint64_t)x[n / 2] << 24 | (uint64_t)x[0] << 16 | (uint64_t)n << 8 | x[n - 1];
-        b = swap(a, 4);
+static struct pair hash_short(const byte *x, size_t n) { /* sections 3 to 6: up to 16 bytes */
+    if (n == 0) return (struct pair){ mix64(s64(64) ^ s64(72)), mix64(s64(80) ^ s64(88)) };
+    if (n <= 3) {
+        uint64_t a = (uint64_t)x[n / 2] << 24 | (uint64_t)x[0] << 16 | (uint64_t)n << 8 | x[n - 1], b = swap(a, 4);
         b = (b << 13 | b >> 19) & LOW32;
-        h.low = mix64(a ^ get(S, 4) ^ get(S + 4, 4));
-        h.high = mix64(b ^ get(S + 8, 4) ^ get(S + 12, 4));
-    } else if (n <= 8) {
-        a = (get(x, 4) | get(x + n - 4, 4) << 32) ^ s64(16) ^ s64(24);
-        product = multiply(a, P1 + 4 * n);
-        product.high += 2 * product.low;
-        product.low ^= product.high >> 3;
-        product.low = (product.low ^ product.low >> 35) * M2;
-        h.low = product.low ^ product.low >> 28;
-        h.high = mix(product.high);
-    } else {
-        a = get(x, 8);
-        b = get(x + n - 8, 8);
-        product = multiply(a ^ b ^ s64(32) ^ s64(40), P1);
-        product.low += (uint64_t)(n - 1) << 54;
-        b ^= s64(48) ^ s64(56);
-        product.high += b + (b & LOW32) * (Q2 - 1);
-        h = multiply(product.low ^ swap(product.high, 8), P2);
-        h.low = mix(h.low);
-        h.high = mix(h.high + product.high * P2);
+        return (struct pair){ mix64(a ^ get(S, 4) ^ get(S + 4, 4)), mix64(b ^ get(S + 8, 4) ^ get(S + 12, 4)) };
     }
-    return h;
+    if (n <= 8) {
+        struct pair p = multiply((get(x, 4) | get(x + n - 4, 4) << 32) ^ s64(16) ^ s64(24), P1 + 4 * n);
+        p.high += 2 * p.low;
+        p.low ^= p.high >> 3;
+        p.low = (p.low ^ p.low >> 35) * M2;
+        return (struct pair){ p.low ^ p.low >> 28, mix(p.high) };
+    }
+    uint64_t a = get(x, 8), b = get(x + n - 8, 8);
+    struct pair p = multiply(a ^ b ^ s64(32) ^ s64(40), P1);
+    b ^= s64(48) ^ s64(56);
+    p.low += (uint64_t)(n - 1) << 54;
+    p.high += b + (b & LOW32) * (Q2 - 1);
+    struct pair p2 = multiply(p.low ^ swap(p.high, 8), P2);
+    return (struct pair){ mix(p2.low), mix(p2.high + p.high * P2) };
 }
 
-static void take_two(uint64_t *a, uint64_t *b, const byte *x, size_t i, size_t j, unsigned s)
-{
+static void take_two(uint64_t *a, uint64_t *b, const byte *x, size_t i, size_t j, unsigned s) {
     *a = (*a + pair_of(x + i, s)) ^ (get(x + j, 8) + get(x + j + 8, 8));
     *b = (*b + pair_of(x + j, s + 16)) ^ (get(x + i, 8) + get(x + i + 8, 8));
 }
 
-static struct pair hash_middle(const byte *x, size_t n) /* section 7: 17 to 240 bytes */
-{
+static struct pair hash_middle(const byte *x, size_t n) { /* section 7: 17 to 240 bytes */
     uint64_t a = n * P1, b = 0;
     unsigned i;
     if (n <= 128) {
-        for (i = (unsigned)(n - 1) / 32 + 1; i-- > 0;)
-            take_two(&a, &b, x, 16 * i, n - 16 * i - 16, 32 * i);
+        for (i = (unsigned)(n - 1) / 32 + 1; i-- > 0;) take_two(&a, &b, x, 16 * i, n - 16 * i - 16, 32 * i);
     } else {
-        for (i = 0; i < 4; i++)
-            take_two(&a, &b, x, 32 * i, 32 * i + 16, 32 * i);
+        for (i = 0; i < 4; i++) take_two(&a, &b, x, 32 * i, 32 * i + 16, 32 * i);
         a = mix(a);
         b = mix(b);
-        for (; i < n / 32; i++)
-            take_two(&a, &b, x, 32 * i, 32 * i + 16, 32 * i - 125);
+        for (; i < n / 32; i++) take_two(&a, &b, x, 32 * i, 32 * i + 16, 32 * i - 125);
         take_two(&a, &b, x, n - 16, n - 32, 103);
     }
-    struct pair h = { mix(a + b), 0 - mix(a * P1 + b * P4 + n * P2) };
-    return h;
+    return (struct pair){ mix(a + b), 0 - mix(a * P1 + b * P4 + n * P2) };
 }
 
-static void stripe(uint64_t A[8], const byte *x, unsigned s)
-{
+static void stripe(uint64_t A[8], const byte *x, unsigned s) {
     for (unsigned e = 0; e < 8; e++) {
         uint64_t v = get(x + 8 * e, 8), key = v ^ s64(s + 8 * e);
         A[e ^ 1] += v;
@@ -184,29 +153,23 @@ static void stripe(uint64_t A[8], const byte *x, unsigned s)
     }
 }
 
-static uint64_t merge(const uint64_t A[8], unsigned s, uint64_t t)
-{
-    for (unsigned e = 0; e < 8; e += 2)
-        t += fold(A[e] ^ s64(s + 8 * e), A[e + 1] ^ s64(s + 8 * e + 8));
+static uint64_t merge(const uint64_t A[8], unsigned s, uint64_t t) {
+    for (unsigned e = 0; e < 8; e += 2) t += fold(A[e] ^ s64(s + 8 * e), A[e + 1] ^ s64(s + 8 * e + 8));
     return mix(t);
 }
 
-static struct pair hash_of(const byte *x, size_t n)
-{
+static struct pair hash_of(const byte *x, size_t n) {
     if (n <= 240) return n <= 16 ? hash_short(x, n) : hash_middle(x, n);
     uint64_t A[8] = { Q3, P1, P2, P3, P4, Q2, P5, Q1 }; /* section 8 */
     for (size_t j = 0; j < (n - 1) / 64; j++) {
         stripe(A, x + 64 * j, 8 * (unsigned)(j % 16));
-        for (unsigned e = 0; e < 8 && j % 16 == 15; e++)
-            A[e] = (A[e] ^ A[e] >> 47 ^ s64(128 + 8 * e)) * Q1;
+        for (unsigned e = 0; e < 8 && j % 16 == 15; e++) A[e] = (A[e] ^ A[e] >> 47 ^ s64(128 + 8 * e)) * Q1;
     }
     stripe(A, x + n - 64, 121);
-    struct pair h = { merge(A, 11, n * P1), merge(A, 117, ~(n * P2)) };
-    return h;
+    return (struct pair){ merge(A, 11, n * P1), merge(A, 117, ~(n * P2)) };
 }
 
-static bool hash_is(const byte *stored, const byte *x, size_t n)
-{
+static bool hash_is(const byte *stored, const byte *x, size_t n) {
     struct pair h = hash_of(x, n);
     return get(stored, 8) == h.low && get(stored + 8, 8) == h.high;
 }
@@ -230,13 +193,9 @@ static const uint32_t sha_k[64] = {
     0xc67178f2
 };
 
-static uint32_t turn(uint32_t x, unsigned by) /* rotates to the right */
-{
-    return (uint32_t)(x >> by | x << (32 - by));
-}
+static uint32_t turn(uint32_t x, unsigned by) { return (uint32_t)(x >> by | x << (32 - by)); } /* to the right */
 
-static void sha_block(struct sha *sha)
-{
+static void sha_block(struct sha *sha) {
     uint32_t w[64], v[8];
     memcpy(v, sha->h, sizeof v);
     for (unsigned i = 0; i < 64; i++) {
@@ -253,49 +212,40 @@ static void sha_block(struct sha *sha)
         v[4] += t1;
         v[0] = t1 + t2;
     }
-    for (unsigned i = 0; i < 8; i++)
-        sha->h[i] += v[i];
+    for (unsigned i = 0; i < 8; i++) sha->h[i] += v[i];
 }
 
-static void sha_add(struct sha *sha, const byte *x, uint64_t n)
-{
+static void sha_add(struct sha *sha, const byte *x, uint64_t n) {
     for (; n > 0; n--) {
         sha->block[sha->bytes++ % 64] = *x++;
-        if (sha->bytes % 64 == 0)
-            sha_block(sha);
+        if (sha->bytes % 64 == 0) sha_block(sha);
     }
 }
 
-static void sha_end(struct sha *sha, byte digest[32])
-{
+static void sha_end(struct sha *sha, byte digest[32]) {
     byte tail[72] = { 0x80 };
     uint64_t zeros = (119 - sha->bytes % 64) % 64;
     put(tail + 1 + zeros, swap(8 * sha->bytes, 8), 8);
     sha_add(sha, tail, 1 + zeros + 8);
-    for (unsigned i = 0; i < 8; i++)
-        put(digest + 4 * i, swap(sha->h[i], 4), 4);
+    for (unsigned i = 0; i < 8; i++) put(digest + 4 * i, swap(sha->h[i], 4), 4);
 }
 
 /* ---- block.md: lanes, tag -------------------------------------------------------------------------------------- */
 
 enum { BLOCK = 4096, PAYLOAD = 3968, TAG = 3968, HASH = 4000, HASHED = 4000, DATA_BLOCK = 1, RESERVE_BLOCK = 2 };
 
-static bool mend_lanes(byte *block) /* flips what the lanes propose; true when they propose anything */
-{
+static bool mend_lanes(byte *block) { /* flips what the lanes propose; true when they propose anything */
     unsigned word_of[512] = { 511 }, w = 0, guard = 502; /* label to word */
     uint64_t s[9] = { 0 }, p = 0;
     for (unsigned label = 0; label < 512; label++) {
-        if (label > 0)
-            word_of[label] = (label & (label - 1)) == 0 ? guard++ : w++;
+        if (label > 0) word_of[label] = (label & (label - 1)) == 0 ? guard++ : w++;
         uint64_t word = get(block + 8 * word_of[label], 8);
         p ^= word;
-        for (unsigned j = 0; j < 9; j++)
-            s[j] ^= (label >> j & 1) != 0 ? word : 0;
+        for (unsigned j = 0; j < 9; j++) s[j] ^= (label >> j & 1) != 0 ? word : 0;
     }
     for (unsigned b = 0; b < 64; b++) {
         unsigned label = 0;
-        for (unsigned j = 0; j < 9; j++)
-            label |= (unsigned)(s[j] >> b & 1) << j;
+        for (unsigned j = 0; j < 9; j++) label |= (unsigned)(s[j] >> b & 1) << j;
         block[8 * word_of[label] + b / 8] ^= (byte)((p >> b & 1) << b % 8);
     }
     return p != 0;
@@ -305,8 +255,7 @@ struct shape { unsigned k, m, depth; };
 
 struct tag { struct shape full; unsigned t; uint64_t id, number; };
 
-static struct shape shape_of(struct shape full, uint64_t t) /* sheet.md, section 2: a sheet of t data blocks */
-{
+static struct shape shape_of(struct shape full, uint64_t t) { /* sheet.md, section 2: a sheet of t data blocks */
     struct shape shape = full;
     if (t == (uint64_t)full.k * full.depth || t == 0) return shape;
     if (full.m == 0) {
@@ -314,16 +263,14 @@ static struct shape shape_of(struct shape full, uint64_t t) /* sheet.md, section
     } else {
         uint64_t w = (t * full.m + full.k - 1) / full.k;
         w = w < 4 ? 4 : w;
-        while (shape.m > 4 && shape.m * ((w + shape.m - 1) / shape.m) > w + w / 4)
-            shape.m /= 2;
+        while (shape.m > 4 && shape.m * ((w + shape.m - 1) / shape.m) > w + w / 4) shape.m /= 2;
         shape.depth = (unsigned)((w + shape.m - 1) / shape.m);
     }
     shape.k = (unsigned)((t + shape.depth - 1) / shape.depth);
     return shape;
 }
 
-static bool read_tag(const byte *block, struct tag *tag) /* false when it breaks a rule of format 1 */
-{
+static bool read_tag(const byte *block, struct tag *tag) { /* false when it breaks a rule of format 1 */
     const byte *at = block + TAG;
     struct shape full = { at[6], at[7], (unsigned)get(at + 28, 2) };
     tag->full = full;
@@ -356,7 +303,6 @@ struct container {
     uint64_t sheet;                    /* the one at hand */
     unsigned t;
     struct shape shape;
-    byte *rebuilt[65536];              /* of the sheet at hand, by index: a payload, or `gone` */
     uint64_t payload_of;               /* the data block whose payload is at hand */
     byte payload[PAYLOAD];
     bool payload_there, colophon_there, damaged;
@@ -368,11 +314,8 @@ struct container {
     byte *body, *sums_body;
 };
 
-static byte gone[1]; /* stands for a payload that cannot be rebuilt */
-
 /* Standard C tells places in a long, which may be too short; then it takes several steps. */
-static bool read_at(struct container *c, uint64_t at, byte *to, size_t bytes)
-{
+static bool read_at(struct container *c, uint64_t at, byte *to, size_t bytes) {
     int from = SEEK_SET;
     do {
         uint64_t step = lesser(at, LONG_MAX);
@@ -384,8 +327,7 @@ static bool read_at(struct container *c, uint64_t at, byte *to, size_t bytes)
 }
 
 /* block.md, section 4. True when the block of this number was read sound or mended, and belongs here. */
-static bool read_block(struct container *c, uint64_t number, byte *block, struct tag *tag)
-{
+static bool read_block(struct container *c, uint64_t number, byte *block, struct tag *tag) {
     if (number >= c->blocks || !read_at(c, BLOCK * (number + 1), block, BLOCK)) return false;
     bool sound = hash_is(block + HASH, block, HASHED);
     bool mended = !sound && mend_lanes(block) && hash_is(block + HASH, block, HASHED);
@@ -398,8 +340,7 @@ static bool read_block(struct container *c, uint64_t number, byte *block, struct
 
 /* ---- sheet.md: rows and the code ------------------------------------------------------------------------------- */
 
-static unsigned gf_times(unsigned a, unsigned b)
-{
+static unsigned gf_times(unsigned a, unsigned b) {
     unsigned product = 0;
     for (; b != 0; b >>= 1) {
         product ^= (b & 1) != 0 ? a : 0;
@@ -408,12 +349,10 @@ static unsigned gf_times(unsigned a, unsigned b)
     return product;
 }
 
-static unsigned gf_inverse(unsigned a) /* a^254 */
-{
-    unsigned power = 1;
-    for (unsigned i = 0; i < 254; i++)
-        power = gf_times(power, a);
-    return power;
+static unsigned gf_inverse(unsigned a) { /* a^254, the product of a^2, a^4, a^8 ... a^128 */
+    unsigned product = 1;
+    for (unsigned i = 0; i < 7; i++) product = gf_times(product, a = gf_times(a, a));
+    return product;
 }
 
 /*
@@ -424,96 +363,69 @@ static void row_value(byte *const there[256], const byte *lost, unsigned count, 
                       size_t bytes)
 {
     unsigned below = 1; /* L'(at) */
-    for (unsigned i = 0; i < count; i++)
-        below = lost[i] == at ? below : gf_times(below, at ^ lost[i]);
+    for (unsigned i = 0; i < count; i++) below = lost[i] == at ? below : gf_times(below, at ^ lost[i]);
     memset(payload, 0, bytes);
     for (unsigned s = 0; s < 256; s++) {
         if (there[s] == NULL) continue;
         unsigned factor = gf_inverse(gf_times(below, at ^ s));
-        for (unsigned i = 0; i < count; i++)
-            factor = gf_times(factor, s ^ lost[i]);
+        for (unsigned i = 0; i < count; i++) factor = gf_times(factor, s ^ lost[i]);
         byte times[256];
-        for (unsigned v = 0; v < 256; v++)
-            times[v] = (byte)gf_times(factor, v);
-        for (size_t b = 0; b < bytes; b++)
-            payload[b] ^= times[there[s][b]];
-    }
-}
-
-static void leave_sheet(struct container *c)
-{
-    for (size_t i = 0; i < sizeof c->rebuilt / sizeof c->rebuilt[0]; i++) {
-        if (c->rebuilt[i] != gone)
-            free(c->rebuilt[i]);
-        c->rebuilt[i] = NULL;
+        for (unsigned v = 0; v < 256; v++) times[v] = (byte)gf_times(factor, v);
+        for (size_t b = 0; b < bytes; b++) payload[b] ^= times[there[s][b]];
     }
 }
 
 /* Makes a sheet the one at hand; any of its blocks tells t. False when it has no sound block. */
-static bool enter_sheet(struct container *c, uint64_t sheet)
-{
+static bool enter_sheet(struct container *c, uint64_t sheet) {
     byte block[BLOCK];
     struct tag tag;
     if (sheet == c->sheet) return c->t > 0;
-    leave_sheet(c);
     c->sheet = sheet;
     c->t = 0;
     for (uint64_t i = 0; i < c->sheet_blocks && c->t == 0; i++)
-        if (read_block(c, sheet * c->sheet_blocks + i, block, &tag))
-            c->t = tag.t;
+        if (read_block(c, sheet * c->sheet_blocks + i, block, &tag)) c->t = tag.t;
     c->shape = shape_of(c->known.full, c->t);
     return c->t > 0;
 }
 
-/* Rebuilds what is lost of a row of the sheet at hand, as far as it can. Its blocks are `depth` apart. */
-static void rebuild_row(struct container *c, uint64_t row)
-{
+/* Rebuilds the payload of a data block of the sheet at hand from its row, whose blocks are `depth` apart. */
+static bool rebuild(struct container *c, uint64_t lost_index, byte *payload) {
     static byte blocks[256][BLOCK];
     byte *there[256] = { NULL }, lost[256];
     unsigned count = 0, m = c->shape.m, depth = c->shape.depth;
     struct tag tag;
-    for (uint64_t index = row; index < c->t + (uint64_t)m * depth; index += depth) {
+    for (uint64_t index = lost_index % depth; index < c->t + (uint64_t)m * depth; index += depth) {
         uint64_t point = index < c->t ? m + index / depth : (index - c->t) / depth;
-        if (read_block(c, c->sheet * c->sheet_blocks + index, blocks[point], &tag) && tag.t == c->t)
+        bool read = index != lost_index && read_block(c, c->sheet * c->sheet_blocks + index, blocks[point], &tag);
+        if (read && tag.t == c->t)
             there[point] = blocks[point];
         else
             lost[count++] = (byte)point;
     }
-    for (unsigned i = 0; i < count; i++) {
-        if (lost[i] < m) continue;
-        byte *payload = count > m ? gone : room(NULL, PAYLOAD);
-        if (count <= m)
-            row_value(there, lost, count, lost[i], payload, PAYLOAD);
-        c->rebuilt[(uint64_t)(lost[i] - m) * depth + row] = payload;
-    }
+    if (count <= m) row_value(there, lost, count, m + (unsigned)lost_index / depth, payload, PAYLOAD);
+    return count <= m;
 }
 
 /* ---- stream.md: the stream ------------------------------------------------------------------------------------- */
 
 /* Makes the payload of a data block the one at hand; data blocks count from 0 over the container. */
-static bool fetch(struct container *c, uint64_t data_block)
-{
+static bool fetch(struct container *c, uint64_t data_block) {
     uint64_t index = data_block % c->sheet_data;
-    byte block[BLOCK], *payload = block;
+    byte block[BLOCK];
     struct tag tag;
     if (data_block == c->payload_of) return c->payload_there;
     c->payload_of = data_block;
-    c->payload_there = false;
-    if (!enter_sheet(c, data_block / c->sheet_data) || index >= c->t) return false;
-    if (c->rebuilt[index] != NULL || !read_block(c, c->sheet * c->sheet_blocks + index, block, &tag) || tag.t != c->t) {
-        c->damaged = true;
-        if (c->rebuilt[index] == NULL)
-            rebuild_row(c, index % c->shape.depth);
-        payload = c->rebuilt[index];
-        if (payload == NULL || payload == gone) return false;
+    if (!enter_sheet(c, data_block / c->sheet_data) || index >= c->t) return c->payload_there = false;
+    if (read_block(c, c->sheet * c->sheet_blocks + index, block, &tag) && tag.t == c->t) {
+        memcpy(c->payload, block, PAYLOAD);
+        return c->payload_there = true;
     }
-    memcpy(c->payload, payload, PAYLOAD);
-    return c->payload_there = true;
+    c->damaged = true;
+    return c->payload_there = rebuild(c, index, c->payload);
 }
 
 /* Copies bytes of the stream; what is lost comes as zeros. True when nothing is lost. */
-static bool read_stream(struct container *c, uint64_t at, byte *to, uint64_t bytes)
-{
+static bool read_stream(struct container *c, uint64_t at, byte *to, uint64_t bytes) {
     bool whole = at <= c->stream_bytes && bytes <= c->stream_bytes - at;
     memset(to, 0, (size_t)bytes);
     for (uint64_t step; bytes > 0 && at < c->stream_bytes; at += step, to += step, bytes -= step) {
@@ -530,46 +442,39 @@ static bool read_stream(struct container *c, uint64_t at, byte *to, uint64_t byt
 
 struct bits { const byte *from; size_t bytes, at; bool bad; }; /* a bit string; at: bits used; bad: it broke a rule */
 
-static uint32_t peek(const struct bits *b, unsigned n) /* the next n bits, at most 32; zeros behind the end */
-{
-    uint64_t word = 0;
-    for (size_t i = b->at / 8; i < b->at / 8 + 5; i++)
-        word = word << 8 | (i < b->bytes ? b->from[i] : 0);
-    return (uint32_t)(word >> (40 - b->at % 8 - n) & ((UINT64_C(1) << n) - 1));
+static unsigned bit(struct bits *b) {
+    b->bad |= b->at >= 8 * b->bytes;
+    if (b->bad) return 0;
+    unsigned shift = 7 - (unsigned)(b->at % 8);
+    return b->from[b->at++ / 8] >> shift & 1U;
 }
 
-static uint32_t take(struct bits *b, unsigned n)
-{
-    uint32_t value = peek(b, n);
-    b->at += n;
-    b->bad |= b->at > 8 * b->bytes;
+static uint32_t take(struct bits *b, unsigned n) { /* the next n bits, at most 32 */
+    uint32_t value = 0;
+    while (n-- > 0) value = value << 1 | bit(b);
     return value;
 }
 
-static void align(struct bits *b) /* bits up to the byte boundary are zero */
-{
-    if (take(b, (unsigned)(8 - b->at % 8) % 8) != 0)
-        b->bad = true;
+static void align(struct bits *b) { /* bits up to the byte boundary are zero */
+    uint32_t rest = take(b, (unsigned)(8 - b->at % 8) % 8);
+    b->bad |= rest != 0;
 }
 
-static size_t left(const struct bits *b) { return b->at / 8 < b->bytes ? b->bytes - b->at / 8 : 0; }
+static size_t left(const struct bits *b) { return b->bytes - b->at / 8; }
 
-static struct bits cut(struct bits *b, size_t bytes) /* the next so many bytes, as a string of their own */
-{
+static struct bits cut(struct bits *b, size_t bytes) { /* the next so many bytes, as a string of their own */
     struct bits part = { b->from + (b->bytes - left(b)), (size_t)lesser(bytes, left(b)), 0, false };
     b->bad |= bytes > left(b);
     b->at += 8 * part.bytes;
     return part;
 }
 
-static bool used_up(struct bits *b) /* all but less than eight zero bits */
-{
+static bool used_up(struct bits *b) { /* all but less than eight zero bits */
     align(b);
     return !b->bad && left(b) == 0;
 }
 
-static unsigned number(struct bits *b)
-{
+static unsigned number(struct bits *b) {
     unsigned value = 0, group = 0x80, i;
     for (i = 0; i < 3 && group >= 0x80; i++) {
         group = take(b, 8);
@@ -579,73 +484,68 @@ static unsigned number(struct bits *b)
     return value;
 }
 
-static unsigned gamma_word(struct bits *b)
-{
+static unsigned gamma_word(struct bits *b) {
     unsigned zeros = 0;
-    while (zeros < 10 && peek(b, zeros + 1) == 0)
-        zeros++;
+    while (zeros < 10 && bit(b) == 0) zeros++;
     b->bad |= zeros == 10;
-    return take(b, 2 * zeros + 1);
+    return 1U << zeros | take(b, zeros);
 }
 
-enum { WORD_BITS = 11, WORDS = 1 << WORD_BITS, CODES = 16, CONTEXTS = 512, SYMBOLS = 512, TOKENS = 14 };
+enum { WORD_BITS = 11, FULL = 1 << WORD_BITS, CODES = 16, CONTEXTS = 512, SYMBOLS = 512, TOKENS = 14 };
 
-struct code { unsigned short symbol[WORDS]; byte length[WORDS]; }; /* by the next 11 bits; length 0: no word */
+struct code { unsigned count[WORD_BITS + 1], symbol[SYMBOLS]; }; /* of each length; in the order of their words */
 
-/* Gives out the words by the canonical rule. How much of the code they fill: WORDS is full, more is over-full. */
-static unsigned assign(struct code *code, const byte *lengths, unsigned symbols)
-{
-    unsigned at = 0;
-    memset(code->length, 0, sizeof code->length);
+/* Gives out the words by the canonical rule. How much of the code they fill: FULL is full, more is over-full. */
+static unsigned assign(struct code *code, const byte *lengths, unsigned symbols) {
+    unsigned at = 0, filled = 0;
+    memset(code->count, 0, sizeof code->count);
     for (unsigned length = 1; length <= WORD_BITS; length++)
-        for (unsigned symbol = 0; symbol < symbols; symbol++) {
-            if (lengths[symbol] != length) continue;
-            if (at + (WORDS >> length) > WORDS) return WORDS + 1;
-            for (unsigned i = 0; i < (unsigned)WORDS >> length; i++, at++) {
-                code->symbol[at] = (unsigned short)symbol;
-                code->length[at] = (byte)length;
+        for (unsigned symbol = 0; symbol < symbols; symbol++)
+            if (lengths[symbol] == length) {
+                code->symbol[at++] = symbol;
+                code->count[length]++;
+                filled += (unsigned)FULL >> length;
             }
-        }
-    return at;
+    return filled;
 }
 
-static unsigned decode(struct bits *b, const struct code *code)
-{
-    unsigned next = peek(b, WORD_BITS), length = code->length[next];
-    take(b, length);
-    b->bad |= length == 0;
-    return code->symbol[next];
+static unsigned decode(struct bits *b, const struct code *code) {
+    unsigned word = 0, first = 0, before = 0; /* the first word of a length; symbols with shorter ones */
+    for (unsigned length = 1; length <= WORD_BITS; length++) {
+        word = 2 * word + bit(b);
+        first = 2 * (first + code->count[length - 1]);
+        if (word < first + code->count[length]) return code->symbol[before + word - first];
+        before += code->count[length];
+    }
+    b->bad = true;
+    return 0;
 }
 
-static void read_token_code(struct bits *b, struct code *code, unsigned tokens) /* full, or one word of one bit */
-{
+static void read_token_code(struct bits *b, struct code *code, unsigned tokens) { /* full, or one word of one bit */
     byte lengths[CODES + 1] = { 0 };
-    for (unsigned i = 0; i < tokens; i++)
-        lengths[i] = (byte)take(b, 3);
+    for (unsigned i = 0; i < tokens; i++) lengths[i] = (byte)take(b, 3);
     unsigned filled = assign(code, lengths, tokens);
-    b->bad |= filled != WORDS && !(filled == WORDS / 2 && code->length[0] == 1);
+    b->bad |= filled != FULL && !(filled == FULL / 2 && code->count[1] == 1);
 }
 
-static void read_table(struct bits *b, const struct code *tokens, struct code *code, unsigned symbols)
-{
+static void read_table(struct bits *b, const struct code *tokens, struct code *code, unsigned symbols) {
     byte lengths[SYMBOLS] = { 0 };
     unsigned symbol = 0, before = 0, filled = 0;
-    while (!b->bad && filled < WORDS) {
+    while (!b->bad && filled < FULL) {
         unsigned token = decode(b, tokens), times = token < 12 ? 1 : gamma_word(b) + 1;
         before = token < 12 ? token : token == 12 ? 0 : before;
         b->bad |= (token == 13 && before == 0) || times > symbols - symbol;
         for (; times > 0 && !b->bad; times--) {
             lengths[symbol++] = (byte)before;
-            filled += before > 0 ? (unsigned)WORDS >> before : 0;
+            filled += before > 0 ? (unsigned)FULL >> before : 0;
         }
     }
-    b->bad |= filled != WORDS || assign(code, lengths, symbols) != WORDS;
+    b->bad |= assign(code, lengths, symbols) != FULL;
 }
 
 struct codes { byte of[CONTEXTS]; unsigned count; struct code code[CODES]; };
 
-static void read_codes(struct bits *b, struct codes *codes, unsigned contexts, unsigned symbols, unsigned most)
-{
+static void read_codes(struct bits *b, struct codes *codes, unsigned contexts, unsigned symbols, unsigned most) {
     static struct code tokens;
     memset(codes->of, 0, sizeof codes->of);
     codes->count = take(b, 4) + 1;
@@ -660,19 +560,16 @@ static void read_codes(struct bits *b, struct codes *codes, unsigned contexts, u
         }
     }
     read_token_code(b, &tokens, TOKENS); /* once for all tables */
-    for (unsigned i = 0; i < codes->count && !b->bad; i++)
-        read_table(b, &tokens, &codes->code[i], symbols);
+    for (unsigned i = 0; i < codes->count && !b->bad; i++) read_table(b, &tokens, &codes->code[i], symbols);
 }
 
-static unsigned decode_in(struct bits *b, const struct codes *codes, unsigned context)
-{
+static unsigned decode_in(struct bits *b, const struct codes *codes, unsigned context) {
     return decode(b, &codes->code[codes->of[context]]);
 }
 
 /* ---- segment.md: stretches ------------------------------------------------------------------------------------- */
 
-static void prefix_stretch(struct bits *in, unsigned streams, bool last, byte *raw, size_t n)
-{
+static void prefix_stretch(struct bits *in, unsigned streams, bool last, byte *raw, size_t n) {
     static struct code tokens, code;
     size_t sizes[6] = { 0 };
     read_token_code(in, &tokens, TOKENS);
@@ -686,14 +583,12 @@ static void prefix_stretch(struct bits *in, unsigned streams, bool last, byte *r
     for (unsigned i = 0; i < streams && !in->bad; i++) {
         size_t share = i == streams - 1 ? n - i * (n / streams) : n / streams;
         struct bits stream = cut(in, last && i == streams - 1 ? left(in) : sizes[i]);
-        for (; share > 0 && !stream.bad; share--)
-            *raw++ = (byte)decode(&stream, &code);
+        for (; share > 0 && !stream.bad; share--) *raw++ = (byte)decode(&stream, &code);
         in->bad |= !used_up(&stream);
     }
 }
 
-static bool stretches(struct bits *in, byte *raw, size_t n)
-{
+static bool stretches(struct bits *in, byte *raw, size_t n) {
     for (bool last = false; !last && !in->bad;) {
         unsigned kind = take(in, 8), method = kind & 3, six = kind & 4;
         last = (kind & 8) != 0;
@@ -706,8 +601,7 @@ static bool stretches(struct bits *in, byte *raw, size_t n)
         else if (method == 1)
             memset(raw, (int)take(in, 8), length);
         else
-            for (size_t i = 0; i < length && !in->bad; i++)
-                raw[i] = (byte)take(in, 8);
+            for (size_t i = 0; i < length && !in->bad; i++) raw[i] = (byte)take(in, 8);
         raw += length;
         n -= length;
     }
@@ -721,10 +615,8 @@ static const byte run_extra[16] = { 0, 0, 0, 0, 0, 0, 1, 1, 2, 3, 4, 5, 6, 9, 13
 static const byte copy_extra[32] = { 0, 0, 0, 0, 0, 0, 0, 0, 0, 0, 0, 0, 0,  0,  0, 0,
                                      1, 1, 2, 2, 3, 3, 4, 4, 5, 5, 6, 7, 8, 10, 13, 20 };
 
-static size_t value_of_code(struct bits *b, const byte *extra, unsigned code, size_t base)
-{
-    for (unsigned before = 0; before < code; before++)
-        base += (size_t)1 << extra[before];
+static size_t value_of_code(struct bits *b, const byte *extra, unsigned code, size_t base) {
+    for (unsigned before = 0; before < code; before++) base += (size_t)1 << extra[before];
     return base + take(b, extra[code]);
 }
 
@@ -741,8 +633,7 @@ static size_t distance_of(struct bits *b, const struct codes *codes, unsigned co
     return recent[0] = distance;
 }
 
-static bool matched(struct bits *in, byte *raw, size_t n)
-{
+static bool matched(struct bits *in, byte *raw, size_t n) {
     static struct codes commands, distances, literals;
     unsigned fine = take(in, 2);
     read_codes(in, &commands, 4, 512, 4);
@@ -767,22 +658,19 @@ static bool matched(struct bits *in, byte *raw, size_t n)
         context = (unsigned)lesser(length - 2, 3) + (literal_count == 0 ? 4 : 0);
         size_t distance = distance_of(&of_distances, &distances, context, fine, recent);
         if (of_commands.bad || length > n - made || of_distances.bad || distance > made) return false;
-        for (size_t i = 0; i < length; i++, made++)
-            raw[made] = raw[made - distance];
+        for (size_t i = 0; i < length; i++, made++) raw[made] = raw[made - distance];
     }
     return !in->bad && used_up(&of_commands) && used_up(&of_distances) && used_up(&of_literals);
 }
 
 /* ---- segment.md: branches -------------------------------------------------------------------------------------- */
 
-static bool is_field(const byte *at, size_t free) /* `free` bytes before it belong to no other field */
-{
+static bool is_field(const byte *at, size_t free) { /* `free` bytes before it belong to no other field */
     return at[-1] == 0xE8 || at[-1] == 0xE9 || (free >= 2 && at[-2] == 0x0F && (at[-1] & 0xF0) == 0x80) ||
            (free >= 3 && (at[-1] & 0xC7) == 0x05 && (at[-2] == 0x8B || at[-2] == 0x8D) && (at[-3] & 0xF8) == 0x48);
 }
 
-static void turn_branches_back(byte *raw, size_t n)
-{
+static void turn_branches_back(byte *raw, size_t n) {
     for (size_t a = 1, from = 0; a + 4 <= n; a++) {
         if (!is_field(raw + a, a - from)) continue;
         if (raw[a + 3] == 0x00 || raw[a + 3] == 0xFF) {
@@ -797,22 +685,15 @@ static void turn_branches_back(byte *raw, size_t n)
 
 enum { ROW_MAX = 32768 };
 
-struct grid {
-    unsigned width, predictor, channels, row;
-    bool big_endian, floats, leaning;
-    size_t head, pixels;
-    uint32_t *x; /* residuals, then numbers */
-};
+struct grid { unsigned width, predictor, channels, row; size_t pixels; uint32_t *x; }; /* x: residuals, then numbers */
 
 /* One part of numbers of a byte: line after line, within a line channel after channel. */
-static void part_of_bytes(struct bits *b, const struct codes *codes, const struct grid *g, uint32_t *r, size_t pixels)
-{
+static void part_of_bytes(struct bits *b, const struct codes *codes, const struct grid *g, uint32_t *r, size_t pixels) {
     static const byte steps[15] = { 1, 2, 3, 4, 6, 8, 11, 15, 20, 27, 36, 50, 70, 100, 150 };
     static byte sizes[3][8][ROW_MAX + 4]; /* of three lines, with two zeros on either side */
     byte level[256] = { 0 };
     for (unsigned k = 0; k < 256; k++)
-        for (unsigned i = 0; i < 15; i++)
-            level[k] = (byte)(level[k] + (steps[i] <= k));
+        for (unsigned i = 0; i < 15; i++) level[k] = (byte)(level[k] + (steps[i] <= k));
     memset(sizes, 0, sizeof sizes);
     size_t line = g->row > 0 ? g->row / g->channels : 512, length;
     for (size_t y = 0, done = 0; done < pixels && !b->bad; y++, done += length) {
@@ -834,148 +715,113 @@ static void part_of_bytes(struct bits *b, const struct codes *codes, const struc
 }
 
 /* One part of wider numbers, in their order. */
-static void part_of_wide(struct bits *b, const struct codes *codes, const struct grid *g, uint32_t *r, size_t pixels)
-{
+static void part_of_wide(struct bits *b, const struct codes *codes, const struct grid *g, uint32_t *r, size_t pixels) {
     static byte tokens[RAW_MAX];
     unsigned mean[8] = { 0 };
     for (size_t i = 0; i < pixels * g->channels && !b->bad; i++) {
         unsigned ch = (unsigned)(i % g->channels), context = mean[ch] / 8;
-        if (g->row > 0)
-            context = (context + (i >= g->row ? tokens[i - g->row] : 0)) / 2;
+        if (g->row > 0) context = (context + (i >= g->row ? tokens[i - g->row] : 0)) / 2;
         uint32_t token = decode_in(b, codes, context + (ch > 0 ? 128 : 0)), z = token;
-        if (token >= 16)
-            z = ((4 + token % 4) << (token / 4 - 2)) + take(b, token / 4 - 2);
+        if (token >= 16) z = ((4 + token % 4) << (token / 4 - 2)) + take(b, token / 4 - 2);
         r[i] = z % 2 == 0 ? z / 2 : ~(z / 2);
         tokens[i] = (byte)token;
         mean[ch] = mean[ch] - mean[ch] / 8 + token;
     }
 }
 
-static int64_t signed_of(uint64_t value, unsigned bits) /* the low bits of a value, the topmost being the sign */
-{
+static int64_t signed_of(uint64_t value, unsigned bits) { /* the low bits of a value, the topmost being the sign */
     uint64_t top = UINT64_C(1) << (bits - 1);
     return (int64_t)(value & (top - 1)) - (int64_t)(value & top);
 }
 
-static int64_t wrap(int64_t value) { return signed_of((uint64_t)value, 32); }
-
-static int64_t number_at(const struct grid *g, size_t i) /* as it counts in predictions */
-{
+static int64_t number_at(const struct grid *g, size_t i) { /* as it counts in predictions */
     return g->width == 1 ? (int64_t)g->x[i] : signed_of(g->x[i], 8 * g->width);
 }
 
 static int64_t floor_of(int64_t value, int64_t by) { return value >= 0 ? value / by : -((by - 1 - value) / by); }
 
-static int64_t prediction(const struct grid *g, size_t i)
-{
+static int64_t prediction(const struct grid *g, size_t i) { /* not wrapped yet, where that makes no difference */
     size_t c = g->channels;
-    if (i < c || g->predictor == 8) return 0;
+    unsigned predictor = g->predictor;
+    if (i < c || predictor == 8) return 0;
     int64_t W = number_at(g, i - c);
-    if (g->predictor == 6 && i >= 2 * c) return wrap(2 * W - number_at(g, i - 2 * c));
-    if (g->predictor == 7 && i >= 3 * c)
-        return wrap(3 * W - 3 * number_at(g, i - 2 * c) + number_at(g, i - 3 * c));
-    if (g->predictor == 0 || g->predictor > 5 || i < g->row + c) return W;
-    int64_t N = number_at(g, i - g->row), NW = number_at(g, i - g->row - c), plane = wrap(W + N - NW);
-    int64_t low = W < N ? W : N, high = W < N ? N : W;
-    switch (g->predictor) {
-    case 1:  return N;
-    case 2:  return plane;
-    case 3:  return plane < low ? low : plane > high ? high : plane;
-    case 4:  return floor_of(W + N, 2);
-    default: return floor_of(3 * W + 3 * N - 2 * NW, 4);
-    }
+    if (predictor == 6 && i >= 2 * c) return 2 * W - number_at(g, i - 2 * c);
+    if (predictor == 7 && i >= 3 * c) return 3 * W - 3 * number_at(g, i - 2 * c) + number_at(g, i - 3 * c);
+    if (predictor == 0 || predictor > 5 || i < g->row + c) return W;
+    int64_t N = number_at(g, i - g->row), NW = number_at(g, i - g->row - c);
+    if (predictor == 1) return N;
+    if (predictor == 4) return floor_of(W + N, 2);
+    if (predictor == 5) return floor_of(3 * W + 3 * N - 2 * NW, 4);
+    int64_t plane = signed_of((uint64_t)(W + N - NW), 32), low = W < N ? W : N, high = W < N ? N : W;
+    return predictor == 2 ? plane : plane < low ? low : plane > high ? high : plane;
 }
 
-static void numbers_from(struct grid *g, byte *to) /* residuals become numbers, numbers become bytes */
-{
+/* Residuals become numbers, numbers become bytes. */
+static void numbers_from(struct grid *g, bool leaning, bool floats, bool big_endian, byte *to) {
     uint32_t mask = 0xFFFFFFFF >> (32 - 8 * g->width), residual = 0;
     for (size_t i = 0; i < g->pixels * g->channels; i++, to += g->width) {
-        residual = g->leaning && i % g->channels != 0 ? residual + g->x[i] : g->x[i];
+        residual = leaning && i % g->channels != 0 ? residual + g->x[i] : g->x[i];
         uint32_t value = g->x[i] = (residual + (uint32_t)((uint64_t)prediction(g, i) & LOW32)) & mask;
-        value = g->floats && (value & 0x80000000) != 0 ? value ^ 0x7FFFFFFF : value;
-        put(to, g->big_endian ? swap(value, g->width) : value, g->width);
+        value = floats && (value & 0x80000000) != 0 ? value ^ 0x7FFFFFFF : value;
+        put(to, big_endian ? swap(value, g->width) : value, g->width);
     }
 }
 
-static bool read_grid(struct bits *in, struct grid *g, size_t n)
-{
-    unsigned kind = take(in, 8), more = take(in, 8);
-    g->width = (kind & 3) + 1;
-    g->big_endian = (kind & 4) != 0;
-    g->floats = (kind & 8) != 0;
-    g->leaning = (kind & 16) != 0;
-    g->predictor = more & 15;
-    g->channels = (more >> 4 & 7) + 1;
-    g->head = number(in);
-    g->row = number(in);
-    if (in->bad || kind > 31 || more > 127 || g->predictor > 8 || g->head > 16383 || g->head > n ||
-        (g->floats && g->width != 4) || (g->leaning && g->channels == 1) ||
-        (g->row > 0 && (g->row % g->channels != 0 || g->row <= g->channels || g->row > ROW_MAX)) ||
-        (g->row == 0 && g->predictor >= 1 && g->predictor <= 5))
-        return false;
-    g->pixels = (n - g->head) / (g->channels * g->width);
-    return g->pixels >= 4;
-}
-
-static bool samples(struct bits *in, byte *raw, size_t n)
-{
+static bool samples(struct bits *in, byte *raw, size_t n) {
     static struct codes codes;
     static uint32_t numbers[RAW_MAX];
-    struct grid g = { .x = numbers };
-    size_t sizes[3];
-    if (!read_grid(in, &g, n)) return false;
+    unsigned kind = take(in, 8), more = take(in, 8);
+    struct grid g = { .width = (kind & 3) + 1, .predictor = more & 15, .channels = (more >> 4 & 7) + 1, .x = numbers };
+    bool floats = (kind & 8) != 0, leaning = (kind & 16) != 0;
+    size_t head = number(in), sizes[3];
+    g.row = number(in);
+    if (in->bad || kind > 31 || more > 127 || g.predictor > 8 || head > 16383 || head > n ||
+        (floats && g.width != 4) || (leaning && g.channels == 1) ||
+        (g.row > 0 && (g.row % g.channels != 0 || g.row <= g.channels || g.row > ROW_MAX)) ||
+        (g.row == 0 && g.predictor >= 1 && g.predictor <= 5) || (n - head) / (g.channels * g.width) < 4)
+        return false;
+    g.pixels = (n - head) / (g.channels * g.width);
     for (size_t i = 0; i < n && !in->bad; i++)
-        if (i < g.head || i >= g.head + g.pixels * g.channels * g.width)
-            raw[i] = (byte)take(in, 8);
-    read_codes(in, &codes, CONTEXTS, 256, CODES);
+        if (i < head || i >= head + g.pixels * g.channels * g.width) raw[i] = (byte)take(in, 8);
+    read_codes(in, &codes, CONTEXTS, g.width == 1 ? 256 : 32 * g.width, CODES);
     align(in);
-    for (unsigned i = 0; i < 3; i++)
-        sizes[i] = number(in);
-    for (unsigned i = 0; i < codes.count * WORDS && g.width > 1 && !in->bad; i++)
-        in->bad |= codes.code[i / WORDS].symbol[i % WORDS] >= 32 * g.width;
+    for (unsigned i = 0; i < 3; i++) sizes[i] = number(in);
     for (unsigned i = 0; i < 4 && !in->bad; i++) {
         size_t first = i * (g.pixels / 4), pixels = i < 3 ? g.pixels / 4 : g.pixels - first;
         struct bits b = cut(in, i < 3 ? sizes[i] : left(in));
         (g.width == 1 ? part_of_bytes : part_of_wide)(&b, &codes, &g, g.x + first * g.channels, pixels);
         in->bad |= !used_up(&b);
     }
-    if (!in->bad)
-        numbers_from(&g, raw + g.head);
+    if (!in->bad) numbers_from(&g, leaning, floats, (kind & 4) != 0, raw + head);
     return !in->bad;
 }
 
-static bool decode_segment(const byte *coded, size_t bytes, byte *raw, size_t n) /* n: at most RAW_MAX */
-{
+static bool decode_segment(const byte *coded, size_t bytes, byte *raw, size_t n) { /* n: at most RAW_MAX */
     struct bits in = { coded, bytes, 0, false };
     unsigned method = take(&in, 8), transform = take(&in, 8);
     if (in.bad || transform > (method == 3 ? 1 : 0)) return false;
+    if (method == 2) return stretches(&in, raw, n);
+    if (method == 4) return samples(&in, raw, n);
     if (method == 0 && left(&in) == n)
         memcpy(raw, coded + 2, n);
     else if (method == 1 && left(&in) == 1)
         memset(raw, coded[2], n);
-    else if (method == 2)
-        return stretches(&in, raw, n);
-    else if (method == 3 && matched(&in, raw, n)) {
-        if (transform == 1)
-            turn_branches_back(raw, n);
-    } else
-        return method == 4 && samples(&in, raw, n);
+    else if (method != 3 || !matched(&in, raw, n))
+        return false;
+    if (transform == 1) turn_branches_back(raw, n);
     return true;
 }
 
 /* ---- stream.md and catalogue.md: which records there are ------------------------------------------------------- */
 
-static void add(struct container *c, unsigned type, uint64_t key, uint64_t at, uint64_t bytes, uint64_t raw)
-{
+static void add(struct container *c, unsigned type, uint64_t key, uint64_t at, uint64_t bytes, uint64_t raw) {
     struct ref ref = { key, at, type, (uint32_t)bytes, (uint32_t)raw };
     if (bytes > BODY_MAX || raw > RAW_MAX) return;
-    if (c->count == c->room)
-        c->refs = room(c->refs, (c->room = 2 * c->room + 64) * (uint64_t)sizeof ref);
+    if (c->count == c->room) c->refs = room(c->refs, (c->room = 2 * c->room + 64) * (uint64_t)sizeof ref);
     c->refs[c->count++] = ref;
 }
 
-static int in_order(const void *one, const void *other)
-{
+static int in_order(const void *one, const void *other) {
     const struct ref *a = one, *b = other;
     if (a->type != b->type) return a->type < b->type ? -1 : 1;
     if (a->key != b->key) return a->key < b->key ? -1 : 1;
@@ -983,47 +829,34 @@ static int in_order(const void *one, const void *other)
 }
 
 /* The last ref of a type with no greater key; NULL if there is none. *next: the key of the one behind it. */
-static const struct ref *find(const struct container *c, unsigned type, uint64_t key, uint64_t *next)
-{
+static const struct ref *find(const struct container *c, unsigned type, uint64_t key, uint64_t *next) {
     struct ref wanted = { key, UINT64_MAX, type, 0, 0 };
-    size_t low = 0, high = c->count;
-    while (low < high) {
-        size_t middle = low + (high - low) / 2;
-        if (in_order(&c->refs[middle], &wanted) <= 0)
-            low = middle + 1;
-        else
-            high = middle;
-    }
-    *next = low < c->count && c->refs[low].type == type ? c->refs[low].key : UINT64_MAX;
-    return low > 0 && c->refs[low - 1].type == type ? &c->refs[low - 1] : NULL;
+    size_t at = 0; /* how many refs are not behind it */
+    for (size_t step = (size_t)1 << 24; step > 0; step /= 2)
+        while (at + step <= c->count && in_order(&c->refs[at + step - 1], &wanted) <= 0) at += step;
+    *next = at < c->count && c->refs[at].type == type ? c->refs[at].key : UINT64_MAX;
+    return at > 0 && c->refs[at - 1].type == type ? &c->refs[at - 1] : NULL;
 }
 
 /* Reads a body that begins with the hash of the rest of it. True when it is whole. */
-static bool read_hashed(struct container *c, uint64_t at, uint64_t bytes, byte **body)
-{
+static bool read_hashed(struct container *c, uint64_t at, uint64_t bytes, byte **body) {
     *body = room(*body, bytes);
     return read_stream(c, at, *body, bytes) && bytes >= 16 && hash_is(*body, *body + 16, (size_t)bytes - 16);
 }
 
-/* An INDEX holds a BATCH again, which has a hash of its own, and tells where segments and sums are. */
-static void note_index(struct container *c, uint64_t at, uint64_t bytes)
-{
+/* An INDEX holds a BATCH again, which has a hash of its own, and tells where segments are. */
+static void note_index(struct container *c, uint64_t at, uint64_t bytes) {
     bool good = read_hashed(c, at, bytes, &c->body);
     const byte *body = c->body;
-    uint64_t batch = get(body + 40, 4), segments = get(body + 44, 4), sums_at = get(body + 48, 8);
-    if (batch >= 40 && batch <= bytes - 80)
-        add(c, BATCH, get(body + 96, 8), at + 80, batch, 0);
+    uint64_t batch = get(body + 40, 4), segments = get(body + 44, 4);
+    if (batch >= 40 && batch <= bytes - 80) add(c, BATCH, get(body + 96, 8), at + 80, batch, 0);
     if (!good || 80 + batch + 24 * segments != bytes) return;
     for (const byte *place = body + 80 + batch; place < body + bytes; place += 24)
         add(c, SEGMENT, get(place, 8), get(place + 8, 8) + 32, get(place + 20, 4), get(place + 16, 4));
-    byte first[8];
-    if (sums_at != 0 && read_stream(c, sums_at + 32 + 24, first, 8))
-        add(c, SUMS, get(first, 8), sums_at + 32, get(body + 56, 4), 0);
 }
 
 /* Texts are found by their type, batches and sums by their first item, segments by their place in content space. */
-static void note_record(struct container *c, unsigned type, uint64_t at, uint64_t bytes)
-{
+static void note_record(struct container *c, unsigned type, uint64_t at, uint64_t bytes) {
     char text[2049] = "";
     const byte *head = (const byte *)text;
     bool there = read_stream(c, at, (byte *)text, lesser(bytes, type == COLOPHON ? 2048 : 32));
@@ -1044,8 +877,7 @@ static void note_record(struct container *c, unsigned type, uint64_t at, uint64_
     }
 }
 
-static void walk(struct container *c)
-{
+static void walk(struct container *c) {
     byte head[32];
     for (uint64_t at = 0; at + 32 <= c->stream_bytes && !c->colophon_there;) {
         bool there = read_stream(c, at, head, 32);
@@ -1057,23 +889,19 @@ static void walk(struct container *c)
         }
         at = there ? at + 32 : (at / PAYLOAD + 1) * PAYLOAD; /* a lost block: go on behind it */
     }
-    if (c->count > 0)
-        qsort(c->refs, c->count, sizeof c->refs[0], in_order);
+    if (c->count > 0) qsort(c->refs, c->count, sizeof c->refs[0], in_order);
 }
 
-static uint64_t count_blocks(struct container *c) /* that begin in the file; the title page is none of them */
-{
+static uint64_t count_blocks(struct container *c) { /* that begin in the file; the title page is none of them */
     uint64_t there = 0;
     byte any[1];
     for (uint64_t step = UINT64_C(1) << 48; step > 0; step /= 2)
-        if (read_at(c, BLOCK * (there + step), any, 1))
-            there += step;
+        if (read_at(c, BLOCK * (there + step), any, 1)) there += step;
     return there;
 }
 
 /* Finds the layout and all records. False when there is not one sound block. */
-static bool open_container(struct container *c, FILE *file)
-{
+static bool open_container(struct container *c, FILE *file) {
     byte block[BLOCK];
     struct tag tag;
     memset(c, 0, sizeof *c);
@@ -1081,8 +909,7 @@ static bool open_container(struct container *c, FILE *file)
     c->sheet = c->payload_of = UINT64_MAX;
     c->blocks = count_blocks(c);
     uint64_t number = 0;
-    while (number < c->blocks && !read_block(c, number, block, &tag))
-        number++;
+    while (number < c->blocks && !read_block(c, number, block, &tag)) number++;
     if (number == c->blocks) return false;
     c->known = tag;
     c->sheet_data = (uint64_t)tag.full.k * tag.full.depth;
@@ -1096,84 +923,65 @@ static bool open_container(struct container *c, FILE *file)
     return true;
 }
 
-static void close_container(struct container *c)
-{
-    leave_sheet(c);
-    free(c->refs);
-    free(c->body);
-    free(c->sums_body);
-}
-
 /* ---- catalogue.md: items --------------------------------------------------------------------------------------- */
 
 struct text { const char *from; size_t bytes; }; /* not ended by a zero */
 
 struct item {
     uint64_t number, content_at, stored, size;
-    const byte *pax, *ustar, *extents; /* of these 16 bytes each */
+    const byte *pax, *ustar, *extents; /* extents: pairs of numbers of eight bytes */
     uint32_t pax_bytes, extent_count;
-    bool has_content, listed, in_front;
-    char ustar_path[257], ustar_link[101];
+    bool has_content, in_front;
+    byte whole[16];                    /* the extent of a file without holes */
+    char ustar_path[257];
     struct text path, link;
     int64_t seconds; /* of the last change, since 1970 */
 };
 
-static uint64_t octal(const byte *field, unsigned bytes)
-{
+static uint64_t octal(const byte *field, unsigned bytes) {
     uint64_t value = 0;
     for (unsigned i = 0; i < bytes; i++)
         value = field[i] >= '0' && field[i] <= '7' ? value << 3 | (field[i] - '0') : value;
     return value;
 }
 
-static void put_octal(byte *field, unsigned digits, uint64_t value)
-{
-    for (; digits > 0; value >>= 3)
-        field[--digits] = (byte)('0' + (value & 7));
+static void put_octal(byte *field, unsigned digits, uint64_t value) {
+    for (; digits > 0; value >>= 3) field[--digits] = (byte)('0' + (value & 7));
 }
 
-static void put_sum(byte *header) /* over all bytes, those of the sum taken as spaces */
-{
+static void put_sum(byte *header) { /* over all bytes, those of the sum taken as spaces */
     unsigned sum = 8 * ' ';
-    for (unsigned i = 0; i < 512; i++)
-        sum += i < 148 || i >= 156 ? header[i] : 0U;
+    for (unsigned i = 0; i < 512; i++) sum += i < 148 || i >= 156 ? header[i] : 0U;
     put_octal(header + 148, 6, sum);
 }
 
-static int64_t seconds_of(struct text value) /* a time such as -12.25, rounded down; 0 if it is out of all reason */
-{
-    char digits[24] = "", *end;
-    memcpy(digits, value.from, (size_t)lesser(value.bytes, sizeof digits - 1));
-    int64_t seconds = strtoll(digits, &end, 10), limit = INT64_C(1) << 50;
-    bool fraction = *end == '.' && end[strspn(end, ".0")] != '\0';
-    return seconds < -limit || seconds > limit ? 0 : digits[0] == '-' && fraction ? seconds - 1 : seconds;
+static int64_t seconds_of(const char *time) { /* such as -12.25, rounded down; 0 if it is out of all reason */
+    char *end;
+    int64_t seconds = strtoll(time, &end, 10), limit = INT64_C(1) << 50;
+    bool fraction = *end == '.' && end[strspn(end, ".0")] > '0';
+    return seconds < -limit || seconds > limit ? 0 : *time == '-' && fraction ? seconds - 1 : seconds;
 }
 
 /* Records of an extended header: "LENGTH KEYWORD=VALUE\n", LENGTH counting all of it. */
-static void read_extended(struct item *item, const char *at, size_t bytes)
-{
-    for (size_t length, digits; bytes > 0; at += length, bytes -= length) {
-        length = digits = 0;
-        for (; digits < bytes && digits < 8 && at[digits] >= '0' && at[digits] <= '9'; digits++)
-            length = 10 * length + (size_t)(at[digits] - '0');
-        if (digits == 0 || length > bytes || length < digits + 3) return;
-        const char *keyword = at + digits + 1, *end = at + length - 1;
-        const char *equals = memchr(keyword, '=', (size_t)(end - keyword));
+static void read_extended(struct item *item, const char *at, const char *end) {
+    for (size_t length; at < end; at += length) {
+        char *keyword;
+        length = strtoul(at, &keyword, 10);
+        if (length > (size_t)(end - at) || keyword >= at + length) return;
+        const char *equals = memchr(keyword, '=', (size_t)(at + length - 1 - keyword));
         if (equals == NULL) return;
-        struct text value = { equals + 1, (size_t)(end - equals) - 1 };
-        size_t letters = (size_t)(equals - keyword);
-        if (letters == 4 && memcmp(keyword, "path", 4) == 0)
+        struct text value = { equals + 1, (size_t)(at + length - equals) - 2 };
+        if (strncmp(keyword, " path=", 6) == 0)
             item->path = value;
-        else if (letters == 8 && memcmp(keyword, "linkpath", 8) == 0)
+        else if (strncmp(keyword, " linkpath=", 10) == 0)
             item->link = value;
-        else if (letters == 5 && memcmp(keyword, "mtime", 5) == 0)
-            item->seconds = seconds_of(value);
+        else if (strncmp(keyword, " mtime=", 7) == 0)
+            item->seconds = seconds_of(value.from);
     }
 }
 
 /* POSIX.1-2001, pax interchange format: an extended header where one is needed, then the ustar header. */
-static bool read_pax(struct item *item)
-{
+static bool read_pax(struct item *item) {
     uint64_t extended = 0, padded = 0;
     if (item->pax_bytes >= 512 && item->pax[156] == 'x') {
         extended = lesser(octal(item->pax + 124, 12), item->pax_bytes);
@@ -1182,83 +990,66 @@ static bool read_pax(struct item *item)
     if (item->pax_bytes < padded + 512) return false;
     const byte *ustar = item->ustar = item->pax + padded;
     bool prefix = ustar[345] != '\0';
-    memset(item->ustar_link, 0, sizeof item->ustar_link);
-    memcpy(item->ustar_link, ustar + 157, 100);
     snprintf(item->ustar_path, sizeof item->ustar_path, "%.155s%s%.100s", prefix ? (const char *)ustar + 345 : "",
              prefix ? "/" : "", (const char *)ustar);
     item->path = (struct text){ item->ustar_path, strlen(item->ustar_path) };
-    item->link = (struct text){ item->ustar_link, strlen(item->ustar_link) };
+    item->link = (struct text){ (const char *)ustar + 157, 0 };
+    while (item->link.bytes < 100 && item->link.from[item->link.bytes] != '\0') item->link.bytes++;
     item->seconds = (int64_t)octal(ustar + 136, 12);
-    read_extended(item, (const char *)item->pax + 512, (size_t)extended);
+    read_extended(item, (const char *)item->pax + 512, (const char *)item->pax + 512 + extended);
     return true;
-}
-
-struct extent { uint64_t at, bytes; };
-
-static struct extent extent_of(const struct item *item, uint32_t i)
-{
-    struct extent extent = { 0, item->size };
-    if (item->listed) {
-        extent.at = get(item->extents + 16 * (size_t)i, 8);
-        extent.bytes = get(item->extents + 16 * (size_t)i + 8, 8);
-    }
-    return extent;
 }
 
 static uint64_t largest_holes = UINT64_C(1) << 43;
 
 /*
  * Table 2. The entry at the front of so many bytes: how long it is; 0 if it breaks a rule. Digits that are left out of
- * its headers are put back.
+ * its headers are put back. Behind the last entry there is a zero, which ends all texts.
  */
-static size_t read_entry(byte *entry, size_t bytes_left, struct item *item)
-{
+static size_t read_entry(byte *entry, size_t bytes_left, struct item *item) {
     if (bytes_left < 24) return 0;
-    uint64_t bytes = get(entry, 4), end = 0;
+    uint64_t bytes = get(entry, 4), end = 0, listed = get(entry + 8, 4);
     unsigned flags = (unsigned)get(entry + 12, 4);
     item->pax_bytes = (uint32_t)get(entry + 4, 4);
-    item->extent_count = (uint32_t)get(entry + 8, 4);
     item->size = get(entry + 16, 8);
     item->has_content = (flags & 1) != 0;
-    item->listed = (flags & 2) != 0;
     item->in_front = (flags & 8) != 0;
-    if (bytes > bytes_left || bytes > 2097152 || item->extent_count > 65536 ||
-        (!item->listed && item->extent_count > 0) ||
-        24 + 16 * (uint64_t)item->extent_count + item->pax_bytes != bytes)
+    if (bytes > bytes_left || bytes > 2097152 || listed > 65536 || ((flags & 2) == 0 && listed > 0) ||
+        24 + 16 * listed + item->pax_bytes != bytes)
         return 0;
-    byte *pax = entry + 24 + 16 * item->extent_count;
+    byte *pax = entry + 24 + 16 * listed;
     if ((flags & 4) != 0 && item->pax_bytes >= 512) {
         byte *last = entry + bytes - 512;
         put_octal(last + 124, 11, item->size);
         put_sum(last);
         put_sum(pax);
     }
-    item->extents = entry + 24;
     item->pax = pax;
-    if (!item->listed)
-        item->extent_count = item->has_content && item->size > 0;
+    put(item->whole + 8, item->size, 8);
+    item->extents = (flags & 2) != 0 ? entry + 24 : item->whole;
+    item->extent_count = (flags & 2) != 0 ? (uint32_t)listed : item->has_content && item->size > 0;
     item->stored = 0;
     for (uint32_t i = 0; i < item->extent_count; i++) {
-        struct extent extent = extent_of(item, i);
-        if (extent.bytes == 0 || extent.at < end || extent.at > item->size || extent.bytes > item->size - extent.at)
-            return 0;
-        end = extent.at + extent.bytes;
-        item->stored += extent.bytes;
+        uint64_t at = get(item->extents + 16 * (size_t)i, 8), length = get(item->extents + 16 * (size_t)i + 8, 8);
+        if (length == 0 || at < end || at > item->size || length > item->size - at) return 0;
+        end = at + length;
+        item->stored += length;
     }
-    return (item->listed && item->size - item->stored > largest_holes) || !read_pax(item) ? 0 : (size_t)bytes;
+    if ((flags & 2) != 0 && item->size - item->stored > largest_holes) return 0;
+    return read_pax(item) ? (size_t)bytes : 0;
 }
 
 struct batch { uint64_t place, items; size_t bytes; byte *entries; };
 
 /* Table 1. The entries of a batch, decoded; false when this copy of it is lost. */
-static bool read_batch(struct container *c, const struct ref *ref, struct batch *batch)
-{
+static bool read_batch(struct container *c, const struct ref *ref, struct batch *batch) {
     if (!read_hashed(c, ref->at, ref->bytes, &c->body) || ref->bytes < 40) return false;
     const byte *at = c->body + 40, *end = c->body + ref->bytes;
     batch->place = get(c->body + 24, 8);
     batch->items = get(c->body + 32, 4);
     batch->bytes = (size_t)lesser(get(c->body + 36, 4), 8388608);
-    batch->entries = room(NULL, batch->bytes);
+    batch->entries = room(NULL, batch->bytes + 1);
+    batch->entries[batch->bytes] = '\0';
     for (size_t done = 0, raw; done < batch->bytes; done += raw) {
         uint64_t coded = end - at >= 4 ? get(at, 4) : UINT64_MAX;
         raw = (size_t)lesser(batch->bytes - done, RAW_MAX);
@@ -1272,8 +1063,7 @@ static bool read_batch(struct container *c, const struct ref *ref, struct batch 
 }
 
 /* Table 3. The digest of an item; false when there is none, or it is lost. */
-static bool sum_of(struct container *c, uint64_t number, byte sum[32])
-{
+static bool sum_of(struct container *c, uint64_t number, byte sum[32]) {
     uint64_t next;
     const struct ref *ref = find(c, SUMS, number, &next);
     if (ref == NULL || ref->bytes < 32) return false;
@@ -1285,16 +1075,14 @@ static bool sum_of(struct container *c, uint64_t number, byte sum[32])
     if (!c->sums_good) return false;
     const byte *body = c->sums_body, *steps = body + 32;
     uint64_t n = get(body + 16, 4), item = get(body + 24, 8), i;
-    for (i = 0; i < n && item + get(steps + 2 * i, 2) <= number; i++)
-        item += get(steps + 2 * i, 2);
+    for (i = 0; i < n && item + get(steps + 2 * i, 2) <= number; i++) item += get(steps + 2 * i, 2);
     if (i == 0 || item != number) return false;
     memcpy(sum, steps + 2 * n + 32 * (i - 1), 32);
     return true;
 }
 
 /* The good bytes of content space from `at` on; NULL when they are lost. *until: how far that goes. */
-static const byte *content_at(struct container *c, uint64_t at, uint64_t *until)
-{
+static const byte *content_at(struct container *c, uint64_t at, uint64_t *until) {
     static byte raw[RAW_MAX];
     const struct ref *ref = find(c, SEGMENT, at, until);
     if (ref == NULL || at - ref->key >= ref->raw) return NULL;
@@ -1312,77 +1100,67 @@ static const byte *content_at(struct container *c, uint64_t at, uint64_t *until)
 
 /* ---- giving back ----------------------------------------------------------------------------------------------- */
 
-struct task { char mode; FILE *out; uint64_t items, lost, unknown; bool failed; };
+struct task { char mode; FILE *out; uint64_t items, texts, lost, unknown; bool failed; };
 
-static void give(struct task *task, FILE *out, const byte *from, uint64_t bytes)
-{
-    task->failed |= out != NULL && fwrite(from, 1, (size_t)bytes, out) != bytes;
-}
-
-/* Bytes of an item; zeros when from is NULL. Nobody asks for the digest of an item that has lost bytes. */
-static void give_bytes(struct task *task, FILE *out, struct sha *sha, const byte *from, uint64_t bytes)
-{
+/* Bytes of an item, zeros when from is NULL: to out, if that is not NULL, and to sha, while nothing of it is lost. */
+static void give(struct task *task, FILE *out, struct sha *sha, const byte *from, uint64_t bytes) {
     static const byte zeros[BLOCK];
     for (uint64_t step; bytes > 0 && !task->failed && (out != NULL || sha != NULL); bytes -= step) {
+        const byte *at = from == NULL ? zeros : from;
         step = from == NULL ? lesser(bytes, sizeof zeros) : bytes;
-        if (sha != NULL)
-            sha_add(sha, from == NULL ? zeros : from, step);
-        give(task, out, from == NULL ? zeros : from, step);
+        if (sha != NULL) sha_add(sha, at, step);
+        task->failed |= out != NULL && fwrite(at, 1, (size_t)step, out) != step;
     }
 }
 
 /* The content of an item, to out if that is not NULL. True when every byte is there and the digest is right. */
-static bool give_content(struct container *c, struct task *task, const struct item *item, FILE *out)
-{
+static bool give_content(struct container *c, struct task *task, const struct item *item, FILE *out) {
     uint64_t at = 0, place = item->content_at, until;
     byte digest[32], sum[32];
     struct sha whole = sha_empty, *sha = &whole;
-    for (uint32_t i = 0; i < item->extent_count; i++) {
-        struct extent extent = extent_of(item, i);
-        give_bytes(task, out, sha, NULL, extent.at - at);
-        at = extent.at;
-        for (uint64_t end = at + extent.bytes, step; at < end && !task->failed; at += step, place += step) {
+    for (const byte *extent = item->extents; extent < item->extents + 16 * (size_t)item->extent_count; extent += 16) {
+        give(task, out, sha, NULL, get(extent, 8) - at);
+        at = get(extent, 8);
+        for (uint64_t end = at + get(extent + 8, 8), step; at < end && !task->failed; at += step, place += step) {
             const byte *bytes = content_at(c, place, &until);
             step = lesser(end - at, until - place);
             if (bytes == NULL && out == NULL)
                 printf("    lost: bytes %" PRIu64 " to %" PRIu64 "\n", at, at + step - 1);
             sha = bytes == NULL ? NULL : sha;
-            give_bytes(task, out, sha, bytes, step);
+            give(task, out, sha, bytes, step);
         }
     }
-    give_bytes(task, out, sha, NULL, item->size - at);
-    bool known = sum_of(c, item->number, sum);
-    if (sha != NULL)
+    give(task, out, sha, NULL, item->size - at);
+    bool known = sum_of(c, item->number, sum), good = sha != NULL;
+    if (good && known) {
         sha_end(sha, digest);
-    bool wrong = sha != NULL && known && memcmp(digest, sum, 32) != 0;
-    if (out == NULL && !known && sha == NULL)
-        printf("    it has no SHA-256 either: perhaps its source failed while the container was made\n");
-    if (out == NULL && !known && sha != NULL)
-        printf("    its SHA-256 is lost; each of its bytes satisfies the hash of a segment\n");
-    if (out == NULL && wrong)
+        good = memcmp(digest, sum, 32) == 0;
+    }
+    if (out == NULL && !known)
+        printf("    its SHA-256 is lost, or its source failed while the container was made\n");
+    if (out == NULL && sha != NULL && !good)
         printf("    LOST: its SHA-256 is not the one in the catalogue\n");
-    return sha != NULL && !wrong;
+    return good;
 }
 
-static void put_date(int64_t seconds) /* in the Gregorian calendar, UTC */
+static int64_t days_before(int64_t year) /* from 1 March of year 0 to 1 March of that year, in the Gregorian calendar */
 {
-    static const int lengths[12] = { 31, 28, 31, 30, 31, 30, 31, 31, 30, 31, 30, 31 };
-    int64_t day = floor_of(seconds, 86400), cycles = floor_of(day, 146097), year = 1970 + 400 * cycles;
-    int second = (int)(seconds - 86400 * day), month = 0, leap;
-    for (day -= 146097 * cycles;; year++) {
-        leap = (year % 4 == 0 && year % 100 != 0) || year % 400 == 0;
-        if (day < 365 + leap) break;
-        day -= 365 + leap;
-    }
-    for (; day >= lengths[month] + (month == 1 && leap); month++)
-        day -= lengths[month] + (month == 1 && leap);
-    printf("%04" PRId64 "-%02d-%02dT%02d:%02d:%02dZ", year, month + 1, (int)day + 1, second / 3600, second / 60 % 60,
-           second % 60);
+    return 365 * year + floor_of(year, 4) - floor_of(year, 100) + floor_of(year, 400);
+}
+
+static void put_date(int64_t seconds) { /* UTC; years are taken to begin in March, so that the leap day is their last */
+    int64_t day = floor_of(seconds, 86400) + 719468, year = floor_of(10000 * day, 3652425);
+    int second = (int)(seconds - 86400 * (day - 719468));
+    year += days_before(year + 1) <= day ? 1 : days_before(year) > day ? -1 : 0;
+    day -= days_before(year);
+    int month = (int)(5 * day + 2) / 153; /* five of them in turn have 31, 30, 31, 30, 31 days */
+    day -= (153 * month + 2) / 5;
+    printf("%04" PRId64 "-%02d-%02dT%02d:%02d:%02dZ", year + month / 10, (month + 2) % 12 + 1, (int)day + 1,
+           second / 3600, second / 60 % 60, second % 60);
 }
 
 /* A name for people: what a terminal could take for a command is written as \ and three octal digits. */
-static void put_name(const char *before, struct text name)
-{
+static void put_name(const char *before, struct text name) {
     fputs(before, stdout);
     for (const char *at = name.from; at < name.from + name.bytes; at++)
         if ((byte)*at < 0x20 || *at == 0x7F || *at == '\\')
@@ -1391,23 +1169,19 @@ static void put_name(const char *before, struct text name)
             putchar(*at);
 }
 
-static void list_item(const struct item *item)
-{
+static void list_item(const struct item *item) {
     unsigned type = item->ustar[156], mode = (unsigned)octal(item->ustar + 100, 8);
     putchar(type >= '0' && type <= '6' ? "-hlcbdp"[type - '0'] : '-');
-    for (unsigned i = 0; i < 9; i++)
-        putchar((mode >> (8 - i) & 1) != 0 ? "rwx"[i % 3] : '-');
+    for (unsigned i = 0; i < 9; i++) putchar((mode >> (8 - i) & 1) != 0 ? "rwx"[i % 3] : '-');
     printf("  ");
     put_date(item->seconds);
     printf("  %12" PRIu64, item->has_content ? item->size : 0);
     put_name("  ", item->path);
-    if (item->link.bytes > 0)
-        put_name(" -> ", item->link);
+    if (item->link.bytes > 0) put_name(" -> ", item->link);
     putchar('\n');
 }
 
-static bool leads_down(struct text name) /* and nowhere else */
-{
+static bool leads_down(struct text name) { /* and nowhere else */
     bool down = name.bytes > 0 && *name.from != '/' && memchr(name.from, '\0', name.bytes) == NULL;
     for (size_t i = 0, part = 0; i <= name.bytes && down; i++)
         if (i == name.bytes || name.from[i] == '/') {
@@ -1421,32 +1195,25 @@ static bool leads_down(struct text name) /* and nowhere else */
  * A pax archive is headers and contents, each padded to 512. One has the items that are whole, another what is left of
  * the others.
  */
-static void give_member(struct container *c, struct task *task, const struct item *item)
-{
-    static const byte zeros[512];
+static void give_member(struct container *c, struct task *task, const struct item *item) {
     bool down = leads_down(item->path) && (item->ustar[156] != '1' || leads_down(item->link));
     bool whole = !item->has_content || give_content(c, task, item, NULL);
     if (down && whole == (task->mode == 't')) {
-        give(task, task->out, item->pax, item->pax_bytes);
-        if (item->has_content) {
-            whole &= give_content(c, task, item, task->out);
-            give(task, task->out, zeros, (512 - item->size % 512) % 512);
-        }
+        give(task, task->out, NULL, item->pax, item->pax_bytes);
+        whole &= !item->has_content || give_content(c, task, item, task->out);
+        give(task, task->out, NULL, NULL, item->has_content ? (512 - item->size % 512) % 512 : 0);
     } else if (task->mode == 't')
         printf("    left out: %s\n", down ? "it is not whole; -d takes it" : "its name leads out of the folder");
     task->lost += !whole || !down;
 }
 
-static void miss(struct task *task, uint64_t from, uint64_t to)
-{
-    if (from >= to) return;
-    printf("LOST from the catalogue: items %" PRIu64 " to %" PRIu64 "\n", from, to - 1);
-    task->unknown += to - from;
+static void miss(struct task *task, uint64_t from, uint64_t to) {
+    if (from < to) printf("LOST from the catalogue: items %" PRIu64 " to %" PRIu64 "\n", from, to - 1);
+    task->unknown += from < to ? to - from : 0;
 }
 
 /* The items of a batch, from number `next` on; the contents of those in front come first. */
-static uint64_t do_batch(struct container *c, struct task *task, const struct batch *batch, uint64_t next)
-{
+static uint64_t do_batch(struct container *c, struct task *task, const struct batch *batch, uint64_t next) {
     uint64_t front = batch->place, place = batch->place;
     for (unsigned round = 0; round < 2; round++)
         for (uint64_t i = 0, at = 0, step; i < batch->items && !task->failed; i++, at += step) {
@@ -1471,8 +1238,7 @@ static uint64_t do_batch(struct container *c, struct task *task, const struct ba
 }
 
 /* Items in the order of their numbers, each from the first copy of its batch that is whole. */
-static void do_items(struct container *c, struct task *task)
-{
+static void do_items(struct container *c, struct task *task) {
     uint64_t next = 0;
     for (size_t r = 0; r < c->count && !task->failed; r++) {
         const struct ref *ref = &c->refs[r];
@@ -1482,83 +1248,55 @@ static void do_items(struct container *c, struct task *task)
         next = do_batch(c, task, &batch, ref->key);
         free(batch.entries);
     }
-    if (!task->failed)
-        miss(task, next, c->items_told);
+    if (!task->failed) miss(task, next, c->items_told);
 }
 
-/* The title page, the specification, the source of this program: all are read, and one may be asked for by its type. */
-static void do_texts(struct container *c, struct task *task)
-{
-    static const char *const names[] = { "", "title page", "specification", "source of the reader" };
-    for (unsigned type = TITLE; type <= READER; type++) {
-        uint64_t next;
-        const struct ref *ref = find(c, type, 0, &next);
-        bool asked = task->mode == (char)('0' + type);
-        if (asked && ref == NULL)
-            fprintf(stderr, "reader: the %s is not there\n", names[type]);
-        task->lost += asked && ref == NULL;
-        if (ref == NULL || !(asked || task->mode == 'c')) continue;
-        byte page[BLOCK], *text = room(NULL, ref->bytes);
-        bool whole = read_stream(c, ref->at, text, ref->bytes);
-        if (!whole)
-            fprintf(asked ? stderr : stdout, "the %s HAS GAPS\n", names[type]);
-        task->lost += !whole;
-        give(task, asked ? stdout : NULL, text, ref->bytes);
-        if (type == TITLE && whole && ref->bytes == BLOCK &&
-            (!read_at(c, 0, page, BLOCK) || memcmp(page, text, BLOCK) != 0)) {
-            fprintf(asked ? stderr : stdout, "the title page is damaged; -1 prints it as it was\n");
-            c->damaged = true;
-        }
-        free(text);
+/* The title page, the specification or the source of this program: to out, if that is not NULL. */
+static void do_text(struct container *c, struct task *task, unsigned type, FILE *out) {
+    uint64_t next;
+    const struct ref *ref = find(c, type, 0, &next);
+    if (ref == NULL) return;
+    byte page[BLOCK], *text = c->body = room(c->body, ref->bytes);
+    bool whole = read_stream(c, ref->at, text, ref->bytes);
+    give(task, out, NULL, text, ref->bytes);
+    task->texts++;
+    task->lost += !whole;
+    if (!whole)
+        fprintf(stderr, "reader: text %u HAS GAPS\n", type);
+    else if (type == TITLE && (!read_at(c, 0, page, BLOCK) || ref->bytes != BLOCK || memcmp(page, text, BLOCK) != 0)) {
+        fprintf(stderr, "reader: the title page in front is damaged; -1 prints it as it was\n");
+        c->damaged = true;
     }
 }
 
-static int run(struct container *c, struct task *task)
-{
-    static const byte zeros[1024];
-    bool text_only = task->mode >= '1' && task->mode <= '3';
-    if (!text_only)
+static int run(struct container *c, struct task *task) {
+    bool whole;
+    if (task->mode >= '1' && task->mode <= '3') {
+        do_text(c, task, (unsigned)(task->mode - '0'), stdout);
+        whole = task->texts == 1 && task->lost == 0 && c->colophon_there;
+    } else {
         do_items(c, task);
-    do_texts(c, task);
-    give(task, task->out, zeros, sizeof zeros); /* the end of an archive */
-    bool whole = task->lost + task->unknown == 0 && c->colophon_there;
-    if (!text_only) {
+        for (unsigned type = TITLE; type <= READER && task->mode == 'c'; type++)
+            do_text(c, task, type, NULL);
+        whole = task->lost + task->unknown == 0 && c->colophon_there;
         printf("%" PRIu64 " items", task->items);
-        if (task->lost > 0)
-            printf("; %" PRIu64 " ARE NOT WHOLE", task->lost);
-        if (task->unknown > 0)
-            printf("; %" PRIu64 " ARE LOST FROM THE CATALOGUE", task->unknown);
-        if (!c->colophon_there)
-            printf("; the end is lost, so THERE MAY HAVE BEEN MORE");
-        if (c->damaged)
-            printf("; damaged blocks were met%s", whole ? " and mended" : "");
-        printf("\n");
+        if (task->lost > 0) printf("; %" PRIu64 " ARE NOT WHOLE", task->lost);
+        if (task->unknown > 0) printf("; %" PRIu64 " ARE LOST FROM THE CATALOGUE", task->unknown);
+        if (!c->colophon_there) printf("; the end is lost, so THERE MAY HAVE BEEN MORE");
+        printf("%s%s\n", c->damaged ? "; damaged blocks were met" : "", c->damaged && whole ? " and mended" : "");
     }
-    if (task->out != NULL && fclose(task->out) != 0)
-        task->failed = true;
-    if (task->failed)
+    give(task, task->out, NULL, NULL, 1024); /* the end of an archive */
+    if (task->failed || (task->out != NULL && fclose(task->out) != 0)) {
         fprintf(stderr, "reader: writing failed: is there room?\n");
-    return task->failed ? CANNOT_CREATE : !whole ? LOSS : c->damaged ? SAFE : 0;
+        return CANNOT_CREATE;
+    }
+    return !whole ? LOSS : c->damaged ? SAFE : 0;
 }
 
-static FILE *new_file(const char *path) /* never over one that is there */
-{
-    FILE *file = fopen(path, "rb");
-    bool there = file != NULL;
-    if (there)
-        fclose(file);
-    file = there ? NULL : fopen(path, "wb");
-    if (file == NULL)
-        fprintf(stderr, "reader: cannot write %s: %s\n", path, there ? "it is there already" : "is its folder there?");
-    return file;
-}
-
-int main(int count, char **words)
-{
+int main(int count, char **words) {
     static struct container c;
     struct task task = { .mode = 'l' };
-    if (count > 2 && words[2][0] == '-' && strlen(words[2]) == 2)
-        task.mode = words[2][1];
+    if (count > 2 && words[2][0] == '-' && strlen(words[2]) == 2) task.mode = words[2][1];
     bool archive = task.mode == 't' || task.mode == 'd';
     if (strchr("lctd123", task.mode) == NULL || count != (task.mode == 'l' ? 2 : archive ? 4 : 3)) {
         fprintf(stderr, "usage: reader FILE [-c | -t ARCHIVE | -d ARCHIVE | -1 | -2 | -3]\n");
@@ -1569,14 +1307,14 @@ int main(int count, char **words)
         fprintf(stderr, "reader: cannot open %s\n", words[1]);
         return NO_INPUT;
     }
-    int status = BAD_DATA;
-    if (!open_container(&c, file))
+    if (!open_container(&c, file)) {
         fprintf(stderr, "reader: %s holds no sound block of format 1\n", words[1]);
-    else if (archive && (task.out = new_file(words[3])) == NULL)
-        status = CANNOT_CREATE;
-    else
-        status = run(&c, &task);
-    close_container(&c);
-    fclose(file);
-    return status;
+        return BAD_DATA;
+    }
+    FILE *there = archive ? fopen(words[3], "rb") : NULL; /* never over a file that is there */
+    if (archive && (there != NULL || (task.out = fopen(words[3], "wb")) == NULL)) {
+        fprintf(stderr, "reader: cannot write %s: is it there already, or its folder not?\n", words[3]);
+        return CANNOT_CREATE;
+    }
+    return run(&c, &task);
 }

@@ -23,7 +23,9 @@ static void as_container(const uint8_t *data, size_t size)
     largest_holes = 1 << 20;
     if (open_container(&c, file))
         (void)run(&c, &task);
-    close_container(&c);
+    free(c.refs);
+    free(c.body);
+    free(c.sums_body);
     fclose(file);
 }
 
@@ -40,11 +42,12 @@ static void as_segment(const uint8_t *data, size_t size)
 static void as_entry(const uint8_t *data, size_t size)
 {
     struct item item = { 0 };
-    uint8_t *copy = malloc(size > 0 ? size : 1); /* digits are put back into it */
+    uint8_t *copy = malloc(size + 1); /* digits are put back into it, and a zero stands behind it */
 
     if (copy == NULL)
         abort();
     memcpy(copy, data, size);
+    copy[size] = 0;
     if (read_entry(copy, size, &item) > size)
         abort();
     if (size >= 512) {
