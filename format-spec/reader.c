@@ -46,12 +46,14 @@ static uint64_t swap(uint64_t value, unsigned bytes) { /* its bytes in the oppos
 
 static uint64_t lesser(uint64_t a, uint64_t b) { return a < b ? a : b; }
 
+static int complain(int status, const char *what, const char *name) {
+    fprintf(stderr, "reader: %s %s\n", what, name);
+    return status;
+}
+
 static void *room(void *old, uint64_t bytes) { /* memory, or the end of the program */
     void *memory = bytes > (size_t)-1 / 2 ? NULL : realloc(old, bytes > 0 ? (size_t)bytes : 1);
-    if (memory == NULL) {
-        fprintf(stderr, "reader: not enough memory for %" PRIu64 " bytes\n", bytes);
-        exit(BAD_DATA);
-    }
+    if (memory == NULL) exit(complain(BAD_DATA, "there is not enough memory for", "what it holds"));
     return memory;
 }
 
@@ -99,7 +101,6 @@ static uint64_t mix64(uint64_t h) {
 }
 
 static uint64_t s64(unsigned at) { return get(S + at, 8); }
-
 static uint64_t pair_of(const byte *x, unsigned s) { return fold(get(x, 8) ^ s64(s), get(x + 8, 8) ^ s64(s + 8)); }
 
 static struct pair hash_short(const byte *x, size_t n) { /* sections 3 to 6: up to 16 bytes */
@@ -252,21 +253,18 @@ static bool mend_lanes(byte *block) { /* flips what the lanes propose; true when
 }
 
 struct shape { unsigned k, m, depth; };
-
 struct tag { struct shape full; unsigned t; uint64_t id, number; };
 
-static struct shape shape_of(struct shape full, uint64_t t) { /* sheet.md, section 2: a sheet of t data blocks */
-    struct shape shape = full;
-    if (t == (uint64_t)full.k * full.depth || t == 0) return shape;
-    if (full.m == 0) {
-        shape.depth = (unsigned)((t + full.k - 1) / full.k);
-    } else {
-        uint64_t w = (t * full.m + full.k - 1) / full.k;
-        w = w < 4 ? 4 : w;
-        while (shape.m > 4 && shape.m * ((w + shape.m - 1) / shape.m) > w + w / 4) shape.m /= 2;
-        shape.depth = (unsigned)((w + shape.m - 1) / shape.m);
-    }
-    shape.k = (unsigned)((t + shape.depth - 1) / shape.depth);
+static uint64_t ceil_of(uint64_t value, uint64_t by) { return (value + by - 1) / by; }
+
+/* sheet.md, section 2: the shape of a sheet of t data blocks, from that of a full one. */
+static struct shape shape_of(struct shape shape, uint64_t t) {
+    if (t == (uint64_t)shape.k * shape.depth || t == 0) return shape;
+    uint64_t w = ceil_of(t * shape.m, shape.k);
+    w = w < 4 ? 4 : w;
+    while (shape.m > 4 && shape.m * ceil_of(w, shape.m) > w + w / 4) shape.m /= 2;
+    shape.depth = (unsigned)(shape.m == 0 ? ceil_of(t, shape.k) : ceil_of(w, shape.m));
+    shape.k = (unsigned)ceil_of(t, shape.depth);
     return shape;
 }
 
@@ -290,7 +288,7 @@ static bool read_tag(const byte *block, struct tag *tag) { /* false when it brea
 /* ---- the file, and what is known of it ------------------------------------------------------------------------- */
 
 enum { TITLE = 1, SPEC = 2, READER = 3, BATCH = 4, SEGMENT = 5, SUMS = 6, INDEX = 7, COLOPHON = 8 }; /* records */
-enum { BODY_MAX = 1 << 24, RAW_MAX = 1 << 20 };
+enum { BODY_MAX = 1 << 24, RAW_MAX = 1 << 20, ROW_MAX = 32768 };
 
 struct ref { uint64_t key, at; unsigned type; uint32_t bytes, raw; }; /* a body in the stream, found by its key */
 
@@ -621,8 +619,7 @@ static size_t value_of_code(struct bits *b, const byte *extra, unsigned code, si
 }
 
 /* A distance; it becomes the first of the recent ones. */
-static size_t distance_of(struct bits *b, const struct codes *codes, unsigned context, unsigned fine, size_t recent[4])
-{
+static size_t distance_of(struct bits *b, const struct codes *codes, unsigned context, unsigned fine, size_t *recent) {
     unsigned symbol = decode_in(b, codes, context), place = symbol < 4 ? symbol : 3;
     size_t distance = recent[place];
     if (symbol >= 4) {
@@ -682,8 +679,6 @@ static void turn_branches_back(byte *raw, size_t n) {
 }
 
 /* ---- segment.md: samples --------------------------------------------------------------------------------------- */
-
-enum { ROW_MAX = 32768 };
 
 struct grid { unsigned width, predictor, channels, row; size_t pixels; uint32_t *x; }; /* x: residuals, then numbers */
 
@@ -857,20 +852,17 @@ static void note_index(struct container *c, uint64_t at, uint64_t bytes) {
 
 /* Texts are found by their type, batches and sums by their first item, segments by their place in content space. */
 static void note_record(struct container *c, unsigned type, uint64_t at, uint64_t bytes) {
+    static const byte key_at[] = { [BATCH] = 16, [SEGMENT] = 8, [SUMS] = 24 };
     char text[2049] = "";
     const byte *head = (const byte *)text;
     bool there = read_stream(c, at, (byte *)text, lesser(bytes, type == COLOPHON ? 2048 : 32));
-    if (type >= TITLE && type <= READER)
+    if (type >= TITLE && type <= READER) {
         add(c, type, 0, at, bytes, 0);
-    else if (type == BATCH && there)
-        add(c, type, get(head + 16, 8), at, bytes, 0);
-    else if (type == SEGMENT && there)
-        add(c, type, get(head + 8, 8), at, bytes, get(head, 4));
-    else if (type == SUMS && there)
-        add(c, type, get(head + 24, 8), at, bytes, 0);
-    else if (type == INDEX && bytes >= 80 && bytes <= BODY_MAX)
+    } else if (type >= BATCH && type <= SUMS && there) {
+        add(c, type, get(head + key_at[type], 8), at, bytes, type == SEGMENT ? get(head, 4) : 0);
+    } else if (type == INDEX && bytes >= 80 && bytes <= BODY_MAX) {
         note_index(c, at, bytes);
-    else if (type == COLOPHON) {
+    } else if (type == COLOPHON) {
         const char *items = strstr(text, "\nitems: ");
         c->colophon_there = there;
         c->items_told = items == NULL ? 0 : strtoull(items + 8, NULL, 10);
@@ -1074,11 +1066,13 @@ static bool sum_of(struct container *c, uint64_t number, byte sum[32]) {
     }
     if (!c->sums_good) return false;
     const byte *body = c->sums_body, *steps = body + 32;
-    uint64_t n = get(body + 16, 4), item = get(body + 24, 8), i;
-    for (i = 0; i < n && item + get(steps + 2 * i, 2) <= number; i++) item += get(steps + 2 * i, 2);
-    if (i == 0 || item != number) return false;
-    memcpy(sum, steps + 2 * n + 32 * (i - 1), 32);
-    return true;
+    uint64_t n = get(body + 16, 4), item = get(body + 24, 8);
+    for (uint64_t i = 0; i < n; i++) {
+        item += get(steps + 2 * i, 2);
+        if (item == number) memcpy(sum, steps + 2 * n + 32 * i, 32);
+        if (item >= number) return item == number;
+    }
+    return false;
 }
 
 /* The good bytes of content space from `at` on; NULL when they are lost. *until: how far that goes. */
@@ -1100,7 +1094,7 @@ static const byte *content_at(struct container *c, uint64_t at, uint64_t *until)
 
 /* ---- giving back ----------------------------------------------------------------------------------------------- */
 
-struct task { char mode; FILE *out; uint64_t items, texts, lost, unknown; bool failed; };
+struct task { char mode; FILE *out; uint64_t items, lost, unknown; bool failed; };
 
 /* Bytes of an item, zeros when from is NULL: to out, if that is not NULL, and to sha, while nothing of it is lost. */
 static void give(struct task *task, FILE *out, struct sha *sha, const byte *from, uint64_t bytes) {
@@ -1138,13 +1132,11 @@ static bool give_content(struct container *c, struct task *task, const struct it
     }
     if (out == NULL && !known)
         printf("    its SHA-256 is lost, or its source failed while the container was made\n");
-    if (out == NULL && sha != NULL && !good)
-        printf("    LOST: its SHA-256 is not the one in the catalogue\n");
+    if (out == NULL && sha != NULL && !good) printf("    LOST: its SHA-256 is not the one in the catalogue\n");
     return good;
 }
 
-static int64_t days_before(int64_t year) /* from 1 March of year 0 to 1 March of that year, in the Gregorian calendar */
-{
+static int64_t days_before(int64_t year) { /* from 1 March of year 0, in the Gregorian calendar */
     return 365 * year + floor_of(year, 4) - floor_of(year, 100) + floor_of(year, 400);
 }
 
@@ -1191,10 +1183,7 @@ static bool leads_down(struct text name) { /* and nowhere else */
     return down;
 }
 
-/*
- * A pax archive is headers and contents, each padded to 512. One has the items that are whole, another what is left of
- * the others.
- */
+/* A pax archive is headers and contents, padded to 512. Mode t takes the items that are whole, d the other ones. */
 static void give_member(struct container *c, struct task *task, const struct item *item) {
     bool down = leads_down(item->path) && (item->ustar[156] != '1' || leads_down(item->link));
     bool whole = !item->has_content || give_content(c, task, item, NULL);
@@ -1251,34 +1240,34 @@ static void do_items(struct container *c, struct task *task) {
     if (!task->failed) miss(task, next, c->items_told);
 }
 
-/* The title page, the specification or the source of this program: to out, if that is not NULL. */
+static const char *const text_names[] = { "", "the title page", "the specification", "the source of the reader" };
+
+/* One of the three texts: to out, if that is not NULL. */
 static void do_text(struct container *c, struct task *task, unsigned type, FILE *out) {
+    byte page[BLOCK];
     uint64_t next;
     const struct ref *ref = find(c, type, 0, &next);
-    if (ref == NULL) return;
-    byte page[BLOCK], *text = c->body = room(c->body, ref->bytes);
-    bool whole = read_stream(c, ref->at, text, ref->bytes);
-    give(task, out, NULL, text, ref->bytes);
-    task->texts++;
+    if (ref == NULL) {
+        task->lost += out != NULL;
+        return;
+    }
+    c->body = room(c->body, ref->bytes);
+    bool whole = read_stream(c, ref->at, c->body, ref->bytes);
+    give(task, out, NULL, c->body, ref->bytes);
     task->lost += !whole;
     if (!whole)
-        fprintf(stderr, "reader: text %u HAS GAPS\n", type);
-    else if (type == TITLE && (!read_at(c, 0, page, BLOCK) || ref->bytes != BLOCK || memcmp(page, text, BLOCK) != 0)) {
-        fprintf(stderr, "reader: the title page in front is damaged; -1 prints it as it was\n");
-        c->damaged = true;
-    }
+        complain(LOSS, "there are GAPS in", text_names[type]);
+    else if (type == TITLE && (!read_at(c, 0, page, BLOCK) || ref->bytes != BLOCK || memcmp(page, c->body, BLOCK) != 0))
+        c->damaged = complain(SAFE, "-1 prints what is damaged in front of the blocks,", text_names[type]);
 }
 
 static int run(struct container *c, struct task *task) {
-    bool whole;
-    if (task->mode >= '1' && task->mode <= '3') {
-        do_text(c, task, (unsigned)(task->mode - '0'), stdout);
-        whole = task->texts == 1 && task->lost == 0 && c->colophon_there;
-    } else {
-        do_items(c, task);
-        for (unsigned type = TITLE; type <= READER && task->mode == 'c'; type++)
-            do_text(c, task, type, NULL);
-        whole = task->lost + task->unknown == 0 && c->colophon_there;
+    bool text = task->mode >= '1' && task->mode <= '3';
+    if (!text) do_items(c, task);
+    for (unsigned type = TITLE; type <= READER; type++)
+        if (task->mode == 'c' || task->mode == (char)('0' + type)) do_text(c, task, type, text ? stdout : NULL);
+    bool whole = task->lost + task->unknown == 0 && c->colophon_there;
+    if (!text) {
         printf("%" PRIu64 " items", task->items);
         if (task->lost > 0) printf("; %" PRIu64 " ARE NOT WHOLE", task->lost);
         if (task->unknown > 0) printf("; %" PRIu64 " ARE LOST FROM THE CATALOGUE", task->unknown);
@@ -1286,10 +1275,8 @@ static int run(struct container *c, struct task *task) {
         printf("%s%s\n", c->damaged ? "; damaged blocks were met" : "", c->damaged && whole ? " and mended" : "");
     }
     give(task, task->out, NULL, NULL, 1024); /* the end of an archive */
-    if (task->failed || (task->out != NULL && fclose(task->out) != 0)) {
-        fprintf(stderr, "reader: writing failed: is there room?\n");
-        return CANNOT_CREATE;
-    }
+    if (task->failed || (task->out != NULL && fclose(task->out) != 0))
+        return complain(CANNOT_CREATE, "writing failed, is there room for", text ? "the text" : "the archive");
     return !whole ? LOSS : c->damaged ? SAFE : 0;
 }
 
@@ -1298,23 +1285,13 @@ int main(int count, char **words) {
     struct task task = { .mode = 'l' };
     if (count > 2 && words[2][0] == '-' && strlen(words[2]) == 2) task.mode = words[2][1];
     bool archive = task.mode == 't' || task.mode == 'd';
-    if (strchr("lctd123", task.mode) == NULL || count != (task.mode == 'l' ? 2 : archive ? 4 : 3)) {
-        fprintf(stderr, "usage: reader FILE [-c | -t ARCHIVE | -d ARCHIVE | -1 | -2 | -3]\n");
-        return USAGE;
-    }
-    FILE *file = fopen(words[1], "rb");
-    if (file == NULL) {
-        fprintf(stderr, "reader: cannot open %s\n", words[1]);
-        return NO_INPUT;
-    }
-    if (!open_container(&c, file)) {
-        fprintf(stderr, "reader: %s holds no sound block of format 1\n", words[1]);
-        return BAD_DATA;
-    }
-    FILE *there = archive ? fopen(words[3], "rb") : NULL; /* never over a file that is there */
-    if (archive && (there != NULL || (task.out = fopen(words[3], "wb")) == NULL)) {
-        fprintf(stderr, "reader: cannot write %s: is it there already, or its folder not?\n", words[3]);
-        return CANNOT_CREATE;
-    }
+    if (strchr("lctd123", task.mode) == NULL || count != (task.mode == 'l' ? 2 : archive ? 4 : 3))
+        return complain(USAGE, "use it like this:", "reader FILE [-c | -t ARCHIVE | -d ARCHIVE | -1 | -2 | -3]");
+    FILE *file = fopen(words[1], "rb"), *there = archive ? fopen(words[3], "rb") : NULL;
+    if (file == NULL) return complain(NO_INPUT, "cannot open", words[1]);
+    if (!open_container(&c, file)) return complain(BAD_DATA, "there is no sound block of format 1 in", words[1]);
+    if (there != NULL) return complain(CANNOT_CREATE, "never writes over what is there:", words[3]);
+    if (archive) task.out = fopen(words[3], "wb");
+    if (archive && task.out == NULL) return complain(CANNOT_CREATE, "cannot write", words[3]);
     return run(&c, &task);
 }

@@ -1,5 +1,8 @@
 /* tests/fuzz/fuzz_reader.c - any bytes for the carried reader: a container file, a coded segment, a catalogue entry */
 /* SPDX-License-Identifier: BSD-2-Clause */
+#include <stdio.h>
+#undef stderr
+#define stderr stdout /* nobody reads what it says of millions of inputs */
 int carried_main(int count, char **words);
 #define main carried_main
 #include "../../format-spec/reader.c"
