@@ -357,19 +357,17 @@ static unsigned gf_inverse(unsigned a) { /* a^254, the product of a^2, a^4, a^8 
  * Lagrange's formula: the payload at point `at` from the others. there[s] is the payload at point s, NULL where it is
  * zero or lost; lost[] are the `count` points in E.
  */
-static void row_value(byte *const there[256], const byte *lost, unsigned count, unsigned at, byte *payload,
-                      size_t bytes)
-{
+static void row_value(byte *const there[256], const byte *lost, unsigned count, unsigned at, byte *to, size_t bytes) {
     unsigned below = 1; /* L'(at) */
     for (unsigned i = 0; i < count; i++) below = lost[i] == at ? below : gf_times(below, at ^ lost[i]);
-    memset(payload, 0, bytes);
+    memset(to, 0, bytes);
     for (unsigned s = 0; s < 256; s++) {
         if (there[s] == NULL) continue;
         unsigned factor = gf_inverse(gf_times(below, at ^ s));
         for (unsigned i = 0; i < count; i++) factor = gf_times(factor, s ^ lost[i]);
         byte times[256];
         for (unsigned v = 0; v < 256; v++) times[v] = (byte)gf_times(factor, v);
-        for (size_t b = 0; b < bytes; b++) payload[b] ^= times[there[s][b]];
+        for (size_t b = 0; b < bytes; b++) to[b] ^= times[there[s][b]];
     }
 }
 
@@ -646,7 +644,7 @@ static bool matched(struct bits *in, byte *raw, size_t n) {
         unsigned command = decode_in(&of_commands, &commands, context);
         size_t literal_count = value_of_code(&of_commands, run_extra, command / 32, 0);
         if (of_commands.bad || literal_count > n - made) return false;
-        for (size_t i = 0; i < literal_count; i++, made++) {
+        for (size_t i = 0; i < literal_count && !of_literals.bad; i++, made++) {
             context = i > 0 ? raw[made - 1] : recent[0] <= made ? 256U + raw[made - recent[0]] : 256;
             raw[made] = (byte)decode_in(&of_literals, &literals, context);
         }
@@ -654,7 +652,8 @@ static bool matched(struct bits *in, byte *raw, size_t n) {
         length = value_of_code(&of_commands, copy_extra, command % 32, 2);
         context = (unsigned)lesser(length - 2, 3) + (literal_count == 0 ? 4 : 0);
         size_t distance = distance_of(&of_distances, &distances, context, fine, recent);
-        if (of_commands.bad || length > n - made || of_distances.bad || distance > made) return false;
+        if (of_commands.bad || of_literals.bad || of_distances.bad) return false;
+        if (length > n - made || distance > made) return false;
         for (size_t i = 0; i < length; i++, made++) raw[made] = raw[made - distance];
     }
     return !in->bad && used_up(&of_commands) && used_up(&of_distances) && used_up(&of_literals);
@@ -1147,7 +1146,7 @@ static void put_date(int64_t seconds) { /* UTC; years are taken to begin in Marc
     day -= days_before(year);
     int month = (int)(5 * day + 2) / 153; /* five of them in turn have 31, 30, 31, 30, 31 days */
     day -= (153 * month + 2) / 5;
-    printf("%04" PRId64 "-%02d-%02dT%02d:%02d:%02dZ", year + month / 10, (month + 2) % 12 + 1, (int)day + 1,
+    printf("  %04" PRId64 "-%02d-%02dT%02d:%02d:%02dZ", year + month / 10, (month + 2) % 12 + 1, (int)day + 1,
            second / 3600, second / 60 % 60, second % 60);
 }
 
@@ -1165,7 +1164,6 @@ static void list_item(const struct item *item) {
     unsigned type = item->ustar[156], mode = (unsigned)octal(item->ustar + 100, 8);
     putchar(type >= '0' && type <= '6' ? "-hlcbdp"[type - '0'] : '-');
     for (unsigned i = 0; i < 9; i++) putchar((mode >> (8 - i) & 1) != 0 ? "rwx"[i % 3] : '-');
-    printf("  ");
     put_date(item->seconds);
     printf("  %12" PRIu64, item->has_content ? item->size : 0);
     put_name("  ", item->path);
@@ -1255,10 +1253,11 @@ static void do_text(struct container *c, struct task *task, unsigned type, FILE 
     bool whole = read_stream(c, ref->at, c->body, ref->bytes);
     give(task, out, NULL, c->body, ref->bytes);
     task->lost += !whole;
-    if (!whole)
-        complain(LOSS, "there are GAPS in", text_names[type]);
-    else if (type == TITLE && (!read_at(c, 0, page, BLOCK) || ref->bytes != BLOCK || memcmp(page, c->body, BLOCK) != 0))
-        c->damaged = complain(SAFE, "-1 prints what is damaged in front of the blocks,", text_names[type]);
+    if (!whole) complain(LOSS, "there are GAPS in", text_names[type]);
+    if (type != TITLE || !whole) return;
+    if (ref->bytes == BLOCK && read_at(c, 0, page, BLOCK) && memcmp(page, c->body, BLOCK) == 0) return;
+    complain(SAFE, "page 0 is damaged; -1 prints", text_names[TITLE]);
+    c->damaged = true;
 }
 
 static int run(struct container *c, struct task *task) {
