@@ -200,8 +200,7 @@ static void sha_block(struct sha *sha) {
     uint32_t w[64], v[8];
     memcpy(v, sha->h, sizeof v);
     for (unsigned i = 0; i < 64; i++) {
-        if (i < 16)
-            w[i] = (uint32_t)swap(get(sha->block + 4 * i, 4), 4);
+        if (i < 16) w[i] = (uint32_t)swap(get(sha->block + 4 * i, 4), 4);
         else
             w[i] = (turn(w[i - 2], 17) ^ turn(w[i - 2], 19) ^ w[i - 2] >> 10) + w[i - 7]
                    + (turn(w[i - 15], 7) ^ turn(w[i - 15], 18) ^ w[i - 15] >> 3) + w[i - 16];
@@ -393,10 +392,8 @@ static bool rebuild(struct container *c, uint64_t lost_index, byte *payload) {
     for (uint64_t index = lost_index % depth; index < c->t + (uint64_t)m * depth; index += depth) {
         uint64_t point = index < c->t ? m + index / depth : (index - c->t) / depth;
         bool read = index != lost_index && read_block(c, c->sheet * c->sheet_blocks + index, blocks[point], &tag);
-        if (read && tag.t == c->t)
-            there[point] = blocks[point];
-        else
-            lost[count++] = (byte)point;
+        if (read && tag.t == c->t) there[point] = blocks[point];
+        else lost[count++] = (byte)point;
     }
     if (count <= m) row_value(there, lost, count, m + (unsigned)lost_index / depth, payload, PAYLOAD);
     return count <= m;
@@ -426,10 +423,8 @@ static bool read_stream(struct container *c, uint64_t at, byte *to, uint64_t byt
     memset(to, 0, (size_t)bytes);
     for (uint64_t step; bytes > 0 && at < c->stream_bytes; at += step, to += step, bytes -= step) {
         step = lesser(bytes, PAYLOAD - at % PAYLOAD);
-        if (fetch(c, at / PAYLOAD))
-            memcpy(to, c->payload + at % PAYLOAD, (size_t)step);
-        else
-            whole = false;
+        if (fetch(c, at / PAYLOAD)) memcpy(to, c->payload + at % PAYLOAD, (size_t)step);
+        else whole = false;
     }
     return whole;
 }
@@ -592,10 +587,8 @@ static bool stretches(struct bits *in, byte *raw, size_t n) {
         if (in->bad || kind > 15 || method == 3 || (six != 0 && (method != 2 || length < 6)) ||
             (!last && (length < 256 || length >= n)))
             return false;
-        if (method == 2)
-            prefix_stretch(in, six != 0 ? 6 : 1, last, raw, length);
-        else if (method == 1)
-            memset(raw, (int)take(in, 8), length);
+        if (method == 2) prefix_stretch(in, six != 0 ? 6 : 1, last, raw, length);
+        else if (method == 1) memset(raw, (int)take(in, 8), length);
         else
             for (size_t i = 0; i < length && !in->bad; i++) raw[i] = (byte)take(in, 8);
         raw += length;
@@ -796,12 +789,9 @@ static bool decode_segment(const byte *coded, size_t bytes, byte *raw, size_t n)
     if (in.bad || transform > (method == 3 ? 1 : 0)) return false;
     if (method == 2) return stretches(&in, raw, n);
     if (method == 4) return samples(&in, raw, n);
-    if (method == 0 && left(&in) == n)
-        memcpy(raw, coded + 2, n);
-    else if (method == 1 && left(&in) == 1)
-        memset(raw, coded[2], n);
-    else if (method != 3 || !matched(&in, raw, n))
-        return false;
+    if (method == 0 && left(&in) == n) memcpy(raw, coded + 2, n);
+    else if (method == 1 && left(&in) == 1) memset(raw, coded[2], n);
+    else if (method != 3 || !matched(&in, raw, n)) return false;
     if (transform == 1) turn_branches_back(raw, n);
     return true;
 }
@@ -962,12 +952,9 @@ static void read_extended(struct item *item, const char *at, const char *end) {
         const char *equals = memchr(keyword, '=', (size_t)(at + length - 1 - keyword));
         if (equals == NULL) return;
         struct text value = { equals + 1, (size_t)(at + length - equals) - 2 };
-        if (strncmp(keyword, " path=", 6) == 0)
-            item->path = value;
-        else if (strncmp(keyword, " linkpath=", 10) == 0)
-            item->link = value;
-        else if (strncmp(keyword, " mtime=", 7) == 0)
-            item->seconds = seconds_of(value.from);
+        if (strncmp(keyword, " path=", 6) == 0) item->path = value;
+        else if (strncmp(keyword, " linkpath=", 10) == 0) item->link = value;
+        else if (strncmp(keyword, " mtime=", 7) == 0) item->seconds = seconds_of(value.from);
     }
 }
 
@@ -1154,10 +1141,8 @@ static void put_date(int64_t seconds) { /* UTC; years are taken to begin in Marc
 static void put_name(const char *before, struct text name) {
     fputs(before, stdout);
     for (const char *at = name.from; at < name.from + name.bytes; at++)
-        if ((byte)*at < 0x20 || *at == 0x7F || *at == '\\')
-            printf("\\%03o", (unsigned)(byte)*at);
-        else
-            putchar(*at);
+        if ((byte)*at < 0x20 || *at == 0x7F || *at == '\\') printf("\\%03o", (unsigned)(byte)*at);
+        else putchar(*at);
 }
 
 static void list_item(const struct item *item) {
@@ -1214,10 +1199,8 @@ static uint64_t do_batch(struct container *c, struct task *task, const struct ba
             item.content_at = item.in_front ? front : place;
             *(item.in_front ? &front : &place) += item.stored;
             list_item(&item);
-            if (task->out != NULL)
-                give_member(c, task, &item);
-            else if (task->mode == 'c' && item.has_content)
-                task->lost += !give_content(c, task, &item, NULL);
+            if (task->out != NULL) give_member(c, task, &item);
+            else if (task->mode == 'c' && item.has_content) task->lost += !give_content(c, task, &item, NULL);
             task->items++;
             next++;
         }
