@@ -1228,10 +1228,9 @@ static void do_text(struct container *c, struct task *task, unsigned type, FILE 
     byte page[BLOCK];
     uint64_t next;
     const struct ref *ref = find(c, type, 0, &next);
-    if (ref == NULL) {
-        task->lost += out != NULL;
-        return;
-    }
+    if (ref == NULL && out != NULL) complain(LOSS, "nothing is left, if there ever was one, of", text_names[type]);
+    task->lost += ref == NULL && out != NULL;
+    if (ref == NULL) return;
     c->body = room(c->body, ref->bytes);
     bool whole = read_stream(c, ref->at, c->body, ref->bytes);
     give(task, out, NULL, c->body, ref->bytes);
