@@ -137,6 +137,11 @@ static void take(void *self, const char *path)
         return;
     c->fault = (struct firn_fault){ 0 };
     status = firn_opening_store(c->view, path, c->options.memory, &store, &c->fault);
+    if (firn_interrupt_asked(NULL)) {      /* told of when all comes to its end */
+        if (status == FIRN_OK)
+            store.close(store.self);
+        return;
+    }
     if (status != FIRN_OK) {
         (void)firn_trouble_tell(c->view, path, status, &c->fault);
         c->trouble = true;
