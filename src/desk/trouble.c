@@ -66,6 +66,8 @@ int firn_trouble_tell(struct firn_view *view, const char *path, enum firn_status
         advice = "it is no file or device that can be searched; copy it to a file";
     if (status == FIRN_IO && fault != NULL && (fault->os_error == ENOSPC || fault->os_error == EDQUOT))
         advice = "make room and run it again";
+    if (fault != NULL && fault->os_error == EMFILE)
+        advice = "allow it more open files (ulimit -n)";
     firn_text_start(&text, words, sizeof words);
     if (path != NULL && what[0] != '\0' && strcmp(path, what) != 0)
         firn_text_add(&text, "%s: ", what);
