@@ -22,6 +22,7 @@ struct check {
     const struct firn_manifest_check_options *options;
     struct firn_manifest_check_report *report;
     struct firn_roll roll;
+    struct firn_names *ways;              /* folders that lead to chosen items, items themselves or not */
     struct firn_intake_walk *walk;
     struct firn_digest *digest;
     uint8_t *portion;                     /* PORTION_BYTES */
@@ -174,6 +175,32 @@ static enum firn_status go_into(struct check *check, int descriptor)
     return FIRN_OK;
 }
 
+/* What is packed as srv/intake/quay comes back below srv and srv/intake, which need not be items. */
+static enum firn_status enter_ways(struct check *check)
+{
+    enum firn_status status = FIRN_OK;
+
+    for (size_t i = 0; i < firn_names_count(check->roll.items) && status == FIRN_OK; i++) {
+        const char *name;
+        const struct firn_roll_item *item = firn_names_at(check->roll.items, i, &name);
+        bool fresh = item->chosen;
+
+        for (size_t bytes = strlen(name); bytes > 0 && fresh && status == FIRN_OK;) {
+            void *record;
+
+            bytes--;
+            if (name[bytes] == '/')
+                status = firn_names_add(check->ways, name, bytes, &record, &fresh);
+        }
+    }
+    return status;
+}
+
+static bool is_way(const struct check *check, const struct stat *facts)
+{
+    return S_ISDIR(facts->st_mode) && firn_names_find(check->ways, check->name, check->name_bytes) != NULL;
+}
+
 static bool wanted(const struct check *check)
 {
     struct firn_pattern *patterns = check->options->choice.patterns;
@@ -193,7 +220,7 @@ static enum firn_status take(struct check *check, int folder, const char *name)
     }
     if (item != NULL && item->chosen)
         status = compare(check, folder, name, &facts, item);
-    else if (item == NULL && wanted(check))
+    else if (item == NULL && wanted(check) && !is_way(check, &facts))
         tell_here(check, FIRN_MANIFEST_EXTRA, 0, "");
     if (status == FIRN_OK && S_ISDIR(facts.st_mode))
         status = go_into(check, firn_quietly_open(folder, name, O_RDONLY | O_DIRECTORY));
@@ -262,6 +289,10 @@ static enum firn_status start(struct check *check)
     if (status == FIRN_OK && check->portion == NULL)
         status = FIRN_NO_MEMORY;
     if (status == FIRN_OK)
+        status = firn_names_make(memory, 1, &check->ways);
+    if (status == FIRN_OK)
+        status = enter_ways(check);
+    if (status == FIRN_OK)
         status = firn_intake_walk_make(memory, &check->walk);
     return status;
 }
@@ -305,6 +336,7 @@ enum firn_status firn_manifest_check(struct firn_reader *reader, const struct fi
     firn_intake_walk_free(check->walk);
     options->memory->put(options->memory->self, check->portion);
     firn_digest_free(check->digest);
+    firn_names_free(check->ways);
     firn_roll_end(&check->roll);
     options->memory->put(options->memory->self, check);
     return status;
