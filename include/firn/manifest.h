@@ -102,8 +102,9 @@ struct firn_manifest_check_report {
 
 /*
  * Holds a folder against a container, without restoring: names, types, sizes, the SHA-256 of files, the targets of
- * symbolic links. Owners, modes, times and attributes are not compared. Links in the folder are not followed, and
- * nothing is written. Findings come in the order of the folder's names, then what is missing in that of the catalogue.
+ * symbolic links. Owners, modes, times and attributes are not compared. A folder that is no item is not extra if items
+ * lie below it: restoring makes it. Links in the folder are not followed, and nothing is written. Findings come in the
+ * order of the folder's names, then what is missing in that of the catalogue.
  *
  * FIRN_OK also when they differ; FIRN_NO_INPUT: no such folder; FIRN_NO_MEMORY; FIRN_STOPPED; FIRN_BAD_ARGUMENT.
  */

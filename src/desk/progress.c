@@ -68,7 +68,7 @@ void firn_progress_step(struct firn_progress *progress, uint64_t items, uint64_t
     firn_text_start(&text, words, sizeof words);
     firn_text_add(&text, "%s: ", progress->doing);
     if (items > 0)
-        firn_text_add(&text, "%s items, ", firn_text_count(items, count));
+        firn_text_add(&text, items == 1 ? "%s item, " : "%s items, ", firn_text_count(items, count));
     firn_text_add(&text, "%s", firn_text_size(bytes, size));
     if (progress->goal_bytes > 0)
         firn_text_add(&text, " of %s", firn_text_size(progress->goal_bytes, size));

@@ -1,6 +1,6 @@
-/* examples/check_blocks.c - says of every block of a container what it is: a small program over the public headers */
+/* examples/api/check_blocks.c - says of every block of a container what it is: over the public headers alone */
 /* SPDX-License-Identifier: BSD-2-Clause */
-#include "firn/block.h"
+#include <firn/block.h>
 
 #include <inttypes.h>
 #include <stdio.h>
