@@ -62,11 +62,24 @@ FIRN_API enum firn_status firn_store_pipe(int descriptor, const struct firn_memo
 FIRN_API enum firn_status firn_store_temporary(const char *folder, const struct firn_memory *memory,
                                                struct firn_store *store, struct firn_fault *fault);
 
+/* What a call that may take long tells, and by what it may be stopped; each function may be NULL. */
+struct firn_store_watch {
+    void *self;
+    void (*progress)(void *self, uint64_t at, uint64_t bytes);
+    bool (*stop)(void *self);
+};
+
 /*
  * Copies a descriptor to its end into a temporary file, so that it can be searched. A file at its start is not copied,
- * but used as it is. The descriptor stays the caller's. FIRN_OK, FIRN_IO, FIRN_CANNOT_CREATE, FIRN_NO_MEMORY.
+ * but used as it is. The descriptor stays the caller's.
+ *
+ * watch  may be NULL. Asked to stop before each read, and when a signal has interrupted one: a pipe may be silent for
+ *        long. Progress has 0 for the bytes that there are to copy, since nobody knows.
+ *
+ * FIRN_OK, FIRN_IO, FIRN_CANNOT_CREATE, FIRN_NO_MEMORY, FIRN_STOPPED.
  */
-FIRN_API enum firn_status firn_store_spool(int descriptor, const struct firn_memory *memory, struct firn_store *store,
+FIRN_API enum firn_status firn_store_spool(int descriptor, const struct firn_store_watch *watch,
+                                           const struct firn_memory *memory, struct firn_store *store,
                                            struct firn_fault *fault);
 
 /* `capacity` bytes lent by the caller, holding `used`; writing grows used up to capacity, then fails with ENOSPC. */
@@ -87,13 +100,6 @@ FIRN_API enum firn_status firn_store_patient(struct firn_store *inner, unsigned 
 
 /* How many blocks read right only when they were read again; 0 for a store of another kind. */
 FIRN_API uint64_t firn_store_patient_gained(const struct firn_store *store);
-
-/* What a call that may take long tells, and by what it may be stopped; each function may be NULL. */
-struct firn_store_watch {
-    void *self;
-    void (*progress)(void *self, uint64_t at, uint64_t bytes);
-    bool (*stop)(void *self);
-};
 
 /*
  * Looks for the blocks of a container that are not where they belong, because the head of the file is missing, or bytes

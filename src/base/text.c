@@ -182,6 +182,26 @@ size_t firn_text_utf8(const char *bytes, size_t count)
     return value >= 0xD800 && value <= 0xDFFF ? 0 : length;
 }
 
+/* Characters of valid UTF-8 that end a line or change its direction; nobody would see them. */
+static bool bends_lines(const uint8_t *at, size_t length)
+{
+    static const struct { uint32_t first, last; } ranges[] = {
+        { 0x80, 0x9F },                /* C1 control characters */
+        { 0x61C, 0x61C },              /* Arabic letter mark */
+        { 0x200E, 0x200F },            /* left-to-right and right-to-left mark */
+        { 0x2028, 0x202E },            /* separators of lines and paragraphs, embeddings and overrides */
+        { 0x2066, 0x2069 },            /* isolates */
+    };
+    uint32_t value = length < 2 ? at[0] : at[0] & (0x7FU >> length);
+
+    for (size_t i = 1; i < length; i++)
+        value = value << 6 | (at[i] & 0x3FU);
+    for (size_t i = 0; i < sizeof ranges / sizeof ranges[0]; i++)
+        if (value >= ranges[i].first && value <= ranges[i].last)
+            return true;
+    return false;
+}
+
 void firn_text_add_name(struct firn_text *text, const char *name)
 {
     size_t left = strlen(name);
@@ -196,7 +216,7 @@ void firn_text_add_name(struct firn_text *text, const char *name)
             firn_text_add(text, "\\t");
         else if (byte == '\\')
             firn_text_add(text, "\\\\");
-        else if (length == 0 || byte < 0x20 || byte == 0x7F || (byte == 0xC2 && (uint8_t)name[1] < 0xA0))
+        else if (length == 0 || byte < 0x20 || byte == 0x7F || bends_lines((const uint8_t *)name, length))
             for (size_t i = 0; i < (length == 0 ? 1 : length); i++)
                 firn_text_add(text, "\\x%02X", (unsigned)(uint8_t)name[i]);
         else

@@ -53,7 +53,8 @@ size_t firn_text_utf8(const char *bytes, size_t count);
 
 /*
  * A file name for a terminal: control characters, backslashes and bytes that are no UTF-8 as \n, \t, \\ or \xHH, so
- * that a name can neither move the cursor nor break a line.
+ * that a name can neither move the cursor nor break a line. Nor can it turn round what is read: marks that change the
+ * direction of writing (Unicode's Bidi_Control) are shown as \xHH, too.
  */
 void firn_text_add_name(struct firn_text *text, const char *name);
 

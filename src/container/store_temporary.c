@@ -68,12 +68,17 @@ enum firn_status firn_store_temporary(const char *folder, const struct firn_memo
     return FIRN_OK;
 }
 
-/* One portion. FIRN_OK with *got 0 at the end, or FIRN_IO. */
-static enum firn_status read_portion(int descriptor, uint8_t *bytes, size_t *got)
+/* One portion. FIRN_OK with *got 0 at the end, FIRN_IO with errno, FIRN_STOPPED. */
+static enum firn_status read_portion(int descriptor, const struct firn_store_watch *watch, uint8_t *bytes, size_t *got)
 {
     for (;;) {
-        ssize_t done = read(descriptor, bytes, PORTION_BYTES);
+        ssize_t done;
 
+        if (watch != NULL && watch->stop != NULL && watch->stop(watch->self)) {
+            errno = 0;
+            return FIRN_STOPPED;
+        }
+        done = read(descriptor, bytes, PORTION_BYTES);
         if (done >= 0) {
             *got = (size_t)done;
             return FIRN_OK;
@@ -85,8 +90,8 @@ static enum firn_status read_portion(int descriptor, uint8_t *bytes, size_t *got
     }
 }
 
-static enum firn_status copy_in(int descriptor, const struct firn_memory *memory, struct firn_store *store,
-                                struct firn_fault *fault)
+static enum firn_status copy_in(int descriptor, const struct firn_store_watch *watch, const struct firn_memory *memory,
+                                struct firn_store *store, struct firn_fault *fault)
 {
     uint8_t *bytes = memory->get(memory->self, PORTION_BYTES);
     enum firn_status status = FIRN_OK;
@@ -97,12 +102,15 @@ static enum firn_status copy_in(int descriptor, const struct firn_memory *memory
     if (bytes == NULL)
         return firn_fault_tell(fault, FIRN_NO_MEMORY, 0, 0, "");
     while (status == FIRN_OK && got > 0) {
-        status = read_portion(descriptor, bytes, &got);
+        status = read_portion(descriptor, watch, bytes, &got);
         if (status != FIRN_OK)
-            (void)firn_fault_tell(fault, status, errno, at, "the input that cannot be searched");
+            (void)firn_fault_tell(fault, status, errno, at,
+                                  status == FIRN_STOPPED ? "" : "the input that cannot be searched");
         else if ((status = store->write_at(store->self, at, bytes, got, &why)) != FIRN_OK)
             (void)firn_fault_tell(fault, status, why, at, "the temporary copy of the input");
         at += got;
+        if (status == FIRN_OK && watch != NULL && watch->progress != NULL)
+            watch->progress(watch->self, at, 0);
     }
     memory->put(memory->self, bytes);
     return status;
@@ -117,8 +125,8 @@ static bool searchable(int descriptor)
         && lseek(descriptor, 0, SEEK_CUR) == 0;
 }
 
-enum firn_status firn_store_spool(int descriptor, const struct firn_memory *memory, struct firn_store *store,
-                                  struct firn_fault *fault)
+enum firn_status firn_store_spool(int descriptor, const struct firn_store_watch *watch,
+                                  const struct firn_memory *memory, struct firn_store *store, struct firn_fault *fault)
 {
     enum firn_status status;
 
@@ -135,7 +143,7 @@ enum firn_status firn_store_spool(int descriptor, const struct firn_memory *memo
     status = firn_store_temporary(NULL, memory, store, fault);
     if (status != FIRN_OK)
         return status;
-    status = copy_in(descriptor, memory, store, fault);
+    status = copy_in(descriptor, watch, memory, store, fault);
     if (status != FIRN_OK)
         store->close(store->self);
     return status;

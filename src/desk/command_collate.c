@@ -13,6 +13,7 @@
 #include <errno.h>
 #include <inttypes.h>
 #include <string.h>
+#include <sys/resource.h>
 #include <sys/stat.h>
 #include <unistd.h>
 
@@ -28,6 +29,8 @@ static const struct firn_args_option options[] = {
 };
 
 enum { ID_BYTES = 8 };
+
+_Static_assert(FIRN_COLLATE_CONTAINERS_MAX == 128, "what --help and a finding say");
 
 struct collating {
     const struct firn_args *args;
@@ -137,6 +140,11 @@ static void take(void *self, const char *path)
         return;
     c->fault = (struct firn_fault){ 0 };
     status = firn_opening_store(c->view, path, c->options.memory, &store, &c->fault);
+    if (firn_interrupt_asked(NULL)) {      /* told of when all comes to its end */
+        if (status == FIRN_OK)
+            store.close(store.self);
+        return;
+    }
     if (status != FIRN_OK) {
         (void)firn_trouble_tell(c->view, path, status, &c->fault);
         c->trouble = true;
@@ -313,6 +321,12 @@ static int tell_end(struct collating *c)
                           "not written: no block of a container is in any source; try other copies");
         return c->trouble ? FIRN_EXIT_NO_INPUT : FIRN_EXIT_BAD_DATA;
     }
+    if (c->status == FIRN_OVER_LIMIT) {
+        firn_view_finding(c->view, "over-limit", c->options.output,
+                          "not written: more than 128 containers are in these sources; take fewer sources at a time, "
+                          "or a part of an image, or choose one with --id");
+        return firn_trouble_exit(c->status);
+    }
     if (c->status != FIRN_OK)
         return firn_trouble_tell(c->view, NULL, c->status, &c->fault);
     if (c->lost)
@@ -338,6 +352,17 @@ static void take_all(struct collating *c)
     }
 }
 
+/* Every container that is found has files open to the end: as many as the system lets us have without asking. */
+static void allow_files(void)
+{
+    struct rlimit files;
+
+    if (getrlimit(RLIMIT_NOFILE, &files) == 0 && files.rlim_cur < files.rlim_max) {
+        files.rlim_cur = files.rlim_max;
+        (void)setrlimit(RLIMIT_NOFILE, &files);
+    }
+}
+
 static int run(const struct firn_args *args, struct firn_view *view)
 {
     struct collating c = { .args = args, .view = view };
@@ -353,6 +378,7 @@ static int run(const struct firn_args *args, struct firn_view *view)
     exit = firn_lines_open(&c.events, args->values[EVENTS], view);
     if (exit != FIRN_EXIT_SOUND)
         return exit;
+    allow_files();
     c.status = make_folder(&c);
     if (c.status != FIRN_OK)
         return firn_lines_close(&c.events, firn_trouble_tell(view, c.options.output, c.status, &c.fault));
@@ -382,7 +408,7 @@ const struct firn_command firn_command_collate = {
              "it was written, or as much of it as exists: what is lost stays lost, and a later\n"
              "scrub or restore says so.\n\n"
              "Several containers are told apart by their identity. -o FILE takes one; when there\n"
-             "are more, name a folder: each goes into it as IDENTITY.firn.\n\n"
+             "are more, name a folder: each goes into it as IDENTITY.firn, up to 128 at a time.\n\n"
              "Sources are only read, and once but for --reread. Temporary files take eight\n"
              "bytes for each block and 4 KiB for each damaged one. Work on images of a failing\n"
              "medium, not on the medium: each reading may be its last.\n\n"

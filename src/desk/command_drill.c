@@ -283,6 +283,10 @@ static int run(const struct firn_args *args, struct firn_view *view)
         show_sum(&d, &report);
     if (status == FIRN_BAD_ARGUMENT)
         return firn_trouble_usage(view, fault.what, "cannot be done to this container");
+    if (status == FIRN_BAD_DATA) {
+        firn_view_finding(view, "not-sound", d.drill.path, "is not sound itself; scrub it first, then rehearse");
+        return FIRN_EXIT_BAD_DATA;
+    }
     if (status != FIRN_OK)
         return firn_trouble_tell(view, d.drill.path, status, &fault);
     return report.whole < report.trials ? FIRN_EXIT_LOST : FIRN_EXIT_SOUND;

@@ -71,6 +71,20 @@ static void list_words(const struct listing *l, const struct firn_item *item, co
     putchar('\n');
 }
 
+/* A decimal number: half a second before 1970 is stored as second -1 and half a second on from there. */
+static void put_mtime(struct firn_view *view, const struct firn_about_facts *facts)
+{
+    int64_t seconds = facts->mtime_seconds;
+    uint32_t nanoseconds = facts->mtime_nanoseconds;
+    bool back = seconds < 0 && nanoseconds > 0;
+
+    if (back) {
+        seconds = -(seconds + 1);
+        nanoseconds = 1000000000 - nanoseconds;
+    }
+    fprintf(view->out, ",\"mtime\":%s%" PRId64 ".%09" PRIu32, back ? "-" : "", seconds, nanoseconds);
+}
+
 static void list_json(const struct listing *l, const struct firn_item *item, const struct firn_about_facts *facts)
 {
     const char type[2] = { facts->type == '-' ? 'f' : facts->type, '\0' };
@@ -85,7 +99,7 @@ static void list_json(const struct listing *l, const struct firn_item *item, con
     firn_view_count(view, "gid", NULL, facts->gid);
     firn_view_words(view, "user", NULL, facts->user);
     firn_view_words(view, "group", NULL, facts->group);
-    fprintf(view->out, ",\"mtime\":%" PRId64 ".%09" PRIu32, facts->mtime_seconds, facts->mtime_nanoseconds);
+    put_mtime(view, facts);
     if (facts->link[0] != '\0')
         firn_view_words(view, "link", NULL, facts->link);
     if (item->has_content) {
@@ -136,6 +150,8 @@ static int list(struct listing *l, struct firn_opening *opening)
     char words[100];
     struct firn_text text;
 
+    if (status == FIRN_IO && ferror(stdout))
+        return FIRN_EXIT_IO;           /* nothing is wrong with the container; main tells of the output */
     if (status != FIRN_OK)
         return firn_trouble_tell(l->view, container, status, &fault);
     for (size_t i = 0; i + 1 < l->args->operand_count; i++)

@@ -406,6 +406,6 @@ const struct firn_command firn_command_label = {
              "up to 9 apart. Blanks and - . / : _ do not count. Which marks you give is for your\n"
              "institution's rules to say. check exits 65 when a mark is wrong.\n",
     .example = "  firn label new 'MQ 1931/7' --container quay-1931.firn --svg label.svg\n"
-               "  firn label check 'MQ 1913/7-S'\n",
+               "  firn label check 'MQ 1913/7-2'\n",
     .options = options, .option_count = sizeof options / sizeof options[0], .run = run
 };

@@ -4,6 +4,7 @@
 
 #include "desk/events.h"
 #include "desk/interrupt.h"
+#include "desk/own_file.h"
 #include "desk/pack_bags.h"
 #include "desk/pack_words.h"
 #include "desk/progress.h"
@@ -79,9 +80,23 @@ struct packing {
     struct firn_writer_totals totals;
     bool read_back;
     struct firn_lines events;
+    bool nothing;                  /* was there to store, so no container comes of it */
 };
 
 /* --- words --- */
+
+/* Sources are never changed, so none of them may give way to the container, whatever --replace allows. */
+static const char *source_in_the_way(const struct packing *p)
+{
+    const char *archive = p->args->values[FROM_ARCHIVE];
+
+    if (archive != NULL)
+        return firn_own_file_same(archive, p->output) ? archive : NULL;
+    for (size_t i = 0; i < p->args->operand_count; i++)
+        if (firn_own_file_same(p->args->operands[i], p->output))
+            return p->args->operands[i];
+    return NULL;
+}
 
 static int read_words(struct packing *p)
 {
@@ -92,6 +107,9 @@ static int read_words(struct packing *p)
         return firn_trouble_usage(p->view, "--output", "is missing: say where to write the container");
     if ((p->args->operand_count == 0) == (values[FROM_ARCHIVE] == NULL))
         return firn_trouble_usage(p->view, "PATH", "name what to pack: paths, or one archive with --from-archive");
+    if (source_in_the_way(p) != NULL)
+        return firn_trouble_usage(p->view, source_in_the_way(p), "is what the container would be written over: name "
+                                                                 "another file with --output");
     p->writing.carry_reader = !p->args->given[NO_READER];
     p->writing.title.accession = values[ACCESSION];
     p->writing.title.title = values[TITLE];
@@ -298,6 +316,9 @@ static enum firn_status pack(struct packing *p)
         status = p->bags.status;
     if (status == FIRN_OK && !as_expected(p))
         return FIRN_MISMATCH;
+    p->nothing = status == FIRN_OK && p->report.items == 0;
+    if (p->nothing)
+        return FIRN_NO_INPUT;
     if (status == FIRN_OK)
         status = firn_writer_finish(p->writer, &p->totals);
     if (status == FIRN_OK)
@@ -466,6 +487,10 @@ static int run(const struct firn_args *args, struct firn_view *view)
         record_expectation(&p);
         record_bags(&p);
         record(&p, FIRN_EVENTS_PACKING, false, NULL, words);
+    } else if (p.nothing) {
+        exit = intake_exit(&p.report) != FIRN_EXIT_SOUND ? intake_exit(&p.report) : FIRN_EXIT_NO_INPUT;
+        firn_view_finding(view, "nothing", p.output, "not written: there was nothing to store; check the sources");
+        record(&p, FIRN_EVENTS_PACKING, false, NULL, "there was nothing to store; nothing was written");
     } else {
         record(&p, FIRN_EVENTS_PACKING, false, NULL, firn_status_text(status));
         exit = firn_trouble_tell(view, p.fault.what[0] != '\0' ? NULL : p.output, status, &p.fault);

@@ -6,6 +6,7 @@
 #include "desk/interrupt.h"
 #include "desk/loss.h"
 #include "desk/opening.h"
+#include "desk/own_file.h"
 #include "desk/progress.h"
 #include "desk/trouble.h"
 #include "firn/outlet.h"
@@ -50,12 +51,16 @@ static int read_words(struct restoring *r)
 {
     const char *incomplete = r->args->values[INCOMPLETE], *owner = r->args->values[OWNER];
     const char *reread = r->args->values[REREAD];
+    const char *const outputs[] = { r->args->values[TO_TAR], r->args->values[REPORT] };
     uint64_t readings = 0;
 
     if (r->args->operand_count == 0)
         return firn_trouble_usage(r->view, "FILE", "is missing: name the container");
     if (r->args->values[DIRECTORY] != NULL && r->args->values[TO_TAR] != NULL)
         return firn_trouble_usage(r->view, "--to-tar", "and --directory exclude each other");
+    for (size_t i = 0; i < sizeof outputs / sizeof outputs[0]; i++)
+        if (outputs[i] != NULL && firn_own_file_same(r->args->operands[0], outputs[i]))
+            return firn_trouble_usage(r->view, outputs[i], "is the container itself: name another file");
     if (incomplete != NULL && strcmp(incomplete, "keep") != 0 && strcmp(incomplete, "skip") != 0)
         return firn_trouble_usage(r->view, incomplete, "is neither keep nor skip");
     r->outlet.keep_incomplete = incomplete != NULL && strcmp(incomplete, "keep") == 0;

@@ -6,6 +6,7 @@
 #include "desk/gentle.h"
 #include "desk/interrupt.h"
 #include "desk/lines.h"
+#include "desk/own_file.h"
 #include "desk/scrub_events.h"
 #include "desk/scrub_json.h"
 #include "desk/scrub_metrics.h"
@@ -304,6 +305,10 @@ static int run(const struct firn_args *args, struct firn_view *view)
     exit = read_words(s);
     if (exit == FIRN_EXIT_SOUND)
         exit = find_state(s);
+    if (exit == FIRN_EXIT_SOUND)
+        exit = firn_own_file_check(view, args->values[HTML], "<!DOCTYPE html>", "a page");
+    if (exit == FIRN_EXIT_SOUND)
+        exit = firn_own_file_check(view, args->values[METRICS], "# TYPE firn_", "a file of our gauges");
     if (exit == FIRN_EXIT_SOUND)
         exit = firn_lines_open(&s->report, args->values[REPORT], view);
     if (exit == FIRN_EXIT_SOUND)

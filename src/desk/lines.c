@@ -3,6 +3,7 @@
 #include "desk/lines.h"
 
 #include "care/append.h"
+#include "desk/own_file.h"
 #include "desk/trouble.h"
 
 #include <stdlib.h>
@@ -23,6 +24,8 @@ int firn_lines_open(struct firn_lines *lines, const char *path, struct firn_view
     *lines = (struct firn_lines){ .descriptor = -1, .path = path, .view = view };
     if (path == NULL)
         return FIRN_EXIT_SOUND;
+    if (firn_own_file_check(view, path, "{", "a file of JSON Lines") != FIRN_EXIT_SOUND)
+        return FIRN_EXIT_CANNOT_CREATE;
     status = firn_append_open(path, &lines->descriptor, &fault);
     return status == FIRN_OK ? FIRN_EXIT_SOUND : firn_trouble_tell(view, path, status, &fault);
 }

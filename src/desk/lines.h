@@ -18,7 +18,10 @@ struct firn_lines {
     size_t count;
 };
 
-/* path NULL: nothing is opened, and lines go nowhere. Returns an exit status; what is wrong was told. */
+/*
+ * path NULL: nothing is opened, and lines go nowhere. A file that is there and does not begin as such files do is left
+ * alone. Returns an exit status; what is wrong was told.
+ */
 int firn_lines_open(struct firn_lines *lines, const char *path, struct firn_view *view);
 
 /* A stream for the next line, or NULL when lines go nowhere or memory is out, which was told. */

@@ -2,6 +2,9 @@
 /* SPDX-License-Identifier: BSD-2-Clause */
 #include "desk/opening_store.h"
 
+#include "desk/interrupt.h"
+#include "desk/progress.h"
+
 #include <errno.h>
 #include <fcntl.h>
 #include <stdlib.h>
@@ -25,11 +28,24 @@ static void tell_place(struct firn_view *view, const char *path, int descriptor)
     firn_view_note(view, "copied", strcmp(path, "-") == 0 ? "standard input" : path, words);
 }
 
+static void step(void *self, uint64_t at, uint64_t bytes)
+{
+    (void)bytes;
+    firn_progress_step(self, 0, at);
+}
+
 static enum firn_status spool(struct firn_view *view, const char *path, int descriptor,
                               const struct firn_memory *memory, struct firn_store *store, struct firn_fault *fault)
 {
+    struct firn_progress progress;
+    struct firn_store_watch watch = { .self = &progress, .progress = step, .stop = firn_interrupt_asked };
+    enum firn_status status;
+
     tell_place(view, path, descriptor);
-    return firn_store_spool(descriptor, memory, store, fault);
+    firn_progress_start(&progress, "copying", 0, view->quiet || view->json);
+    status = firn_store_spool(descriptor, &watch, memory, store, fault);
+    firn_progress_wipe(&progress);
+    return status;
 }
 
 enum firn_status firn_opening_store(struct firn_view *view, const char *path, const struct firn_memory *memory,

@@ -1,10 +1,13 @@
 /* desk/progress.c - how far it is, on a terminal only */
 /* SPDX-License-Identifier: BSD-2-Clause */
+#define _DEFAULT_SOURCE      /* TIOCGWINSZ */
 #include "desk/progress.h"
 
 #include "base/text.h"
 
 #include <stdio.h>
+#include <string.h>
+#include <sys/ioctl.h>
 #include <time.h>
 #include <unistd.h>
 
@@ -21,6 +24,19 @@ void firn_progress_start(struct firn_progress *progress, const char *doing, uint
     *progress = (struct firn_progress){ .doing = doing, .goal_bytes = goal_bytes };
     progress->shown = !quiet && isatty(STDERR_FILENO) == 1;
     progress->began = progress->last = now();
+}
+
+/* A line that wraps could not be wiped: it is cut to what the terminal shows, less the last column. ASCII alone. */
+static void fit(char *words)
+{
+#ifdef TIOCGWINSZ
+    struct winsize window;
+
+    if (ioctl(STDERR_FILENO, TIOCGWINSZ, &window) == 0 && window.ws_col > 1 && strlen(words) >= window.ws_col)
+        words[window.ws_col - 1] = '\0';
+#else
+    (void)words;
+#endif
 }
 
 static void add_time(struct firn_text *text, double seconds)
@@ -59,6 +75,7 @@ void firn_progress_step(struct firn_progress *progress, uint64_t items, uint64_t
     firn_text_add(&text, ", %s/s", firn_text_size((uint64_t)rate, size));
     if (progress->goal_bytes > bytes && bytes > 0 && spent > 1)
         add_time(&text, (double)(progress->goal_bytes - bytes) / rate);
+    fit(words);
     fprintf(stderr, "\r%s\033[K", words);
     fflush(stderr);
     progress->drawn = true;

@@ -2,6 +2,8 @@
 /* SPDX-License-Identifier: BSD-2-Clause */
 #include "desk/trouble.h"
 
+#include "desk/interrupt.h"
+
 #include <errno.h>
 #include <inttypes.h>
 #include <string.h>
@@ -50,19 +52,27 @@ int firn_trouble_exit(enum firn_status status)
 
 int firn_trouble_tell(struct firn_view *view, const char *path, enum firn_status status, const struct firn_fault *fault)
 {
-    const struct trouble *trouble = find(status);
-    const char *what = fault != NULL ? fault->what : "", *advice = trouble == NULL ? "please report this"
-                                                                                    : trouble->what_to_do;
+    const char *what = fault != NULL ? fault->what : "", *advice;
+    const struct trouble *trouble;
     char words[768];
     struct firn_text text;
 
+    /* what fails since somebody wants us to stop, such as opening a pipe that nobody writes to, does not fail */
+    if (fault != NULL && fault->os_error == EINTR && firn_interrupt_asked(NULL))
+        status = FIRN_STOPPED;
+    trouble = find(status);
+    advice = trouble == NULL ? "please report this" : trouble->what_to_do;
+    if (status == FIRN_NO_INPUT && fault != NULL && fault->os_error == ESPIPE)
+        advice = "it is no file or device that can be searched; copy it to a file";
     if (status == FIRN_IO && fault != NULL && (fault->os_error == ENOSPC || fault->os_error == EDQUOT))
         advice = "make room and run it again";
+    if (fault != NULL && fault->os_error == EMFILE)
+        advice = "allow it more open files (ulimit -n)";
     firn_text_start(&text, words, sizeof words);
     if (path != NULL && what[0] != '\0' && strcmp(path, what) != 0)
         firn_text_add(&text, "%s: ", what);
     firn_text_add(&text, "%s", firn_status_text(status));
-    if (fault != NULL && fault->os_error != 0)
+    if (fault != NULL && fault->os_error != 0 && status != FIRN_STOPPED)
         firn_text_add(&text, " (%s)", strerror(fault->os_error));
     if (fault != NULL && fault->at > 0)
         firn_text_add(&text, ", at %" PRIu64, fault->at);

@@ -16,6 +16,8 @@ enum { PORTION_BYTES = 1 << 18, ISO_MARK_AT = 32769, PEEK_BYTES = ISO_MARK_AT + 
 
 struct firn_archive_feed {
     const struct firn_memory *memory;
+    bool (*stop)(void *self);
+    void *stop_self;
     struct archive *archive;
     struct archive_entry *entry;
     bool ahead;                      /* an entry was read, but not handed out */
@@ -44,7 +46,7 @@ static ssize_t read_some(struct firn_archive_feed *feed, uint8_t *bytes, size_t 
     do
         got = feed->searchable ? pread(feed->descriptor, bytes, count, (off_t)(feed->base + feed->at))
                                : read(feed->descriptor, bytes, count);
-    while (got < 0 && errno == EINTR);
+    while (got < 0 && errno == EINTR && !(feed->stop != NULL && feed->stop(feed->stop_self)));
     return got;
 }
 
@@ -275,7 +277,8 @@ static enum firn_status open_input(struct firn_archive_feed *feed, const char *p
     return peek(feed, fault);
 }
 
-enum firn_status firn_archive_feed_open(const char *path, const struct firn_memory *memory, struct firn_fault *fault,
+enum firn_status firn_archive_feed_open(const char *path, bool (*stop)(void *self), void *self,
+                                        const struct firn_memory *memory, struct firn_fault *fault,
                                         struct firn_archive_feed **out)
 {
     struct firn_archive_feed *feed = firn_memory_get_zeroed(memory, 1, sizeof *feed);
@@ -285,6 +288,8 @@ enum firn_status firn_archive_feed_open(const char *path, const struct firn_memo
     if (feed == NULL)
         return firn_fault_tell(fault, FIRN_NO_MEMORY, 0, 0, path);
     feed->memory = memory;
+    feed->stop = stop;
+    feed->stop_self = self;
     feed->descriptor = -1;
     feed->bytes = newlocale(LC_CTYPE_MASK, "C", (locale_t)0);
     feed->unicode = newlocale(LC_CTYPE_MASK, "C.UTF-8", (locale_t)0);

@@ -23,9 +23,14 @@ struct firn_archive_feed;
 
 /*
  * Opens path (`-`: standard input).
+ *
+ * stop  may be NULL. Asked whenever a signal has interrupted a read, since a pipe may be silent for long; true makes
+ *       that read fail with EINTR.
+ *
  * FIRN_OK, FIRN_NO_INPUT, FIRN_NO_MEMORY, FIRN_IO, FIRN_CANNOT_CREATE (the temporary file), FIRN_BAD_DATA: no archive.
  */
-enum firn_status firn_archive_feed_open(const char *path, const struct firn_memory *memory, struct firn_fault *fault,
+enum firn_status firn_archive_feed_open(const char *path, bool (*stop)(void *self), void *self,
+                                        const struct firn_memory *memory, struct firn_fault *fault,
                                         struct firn_archive_feed **out);
 void firn_archive_feed_close(struct firn_archive_feed *feed);      /* takes NULL */
 

@@ -210,9 +210,11 @@ static enum firn_status give_up(struct job *job, const char *name, enum content 
                                 const char *why)
 {
     enum firn_intake_kind kind = content == CONTENT_REFUSED ? FIRN_INTAKE_UNREADABLE : FIRN_INTAKE_DAMAGED;
-    enum firn_status status = FIRN_OK;
+    enum firn_status status = firn_intake_run_go_on(&job->run);
     int os_error = firn_archive_feed_error(job->feed);
 
+    if (status != FIRN_OK)      /* it is cut short because we are asked to stop */
+        return status;
     if (archive_entry_is_encrypted(job->entry) > 0)
         kind = FIRN_INTAKE_ENCRYPTED;
     job->damaged = job->damaged || kind == FIRN_INTAKE_DAMAGED;
@@ -654,7 +656,9 @@ static enum firn_status take_all(struct job *job, const char *path)
             return FIRN_OK;
         }
         if (result <= ARCHIVE_FATAL || retries == RETRIES_MAX) {
-            tell_break(job, path);
+            status = firn_intake_run_go_on(&job->run);      /* or is it because we are asked to stop? */
+            if (status == FIRN_OK)
+                tell_break(job, path);
         } else if (result < ARCHIVE_WARN || result == ARCHIVE_RETRY) {
             retries++;
             firn_intake_run_tell(&job->run, FIRN_INTAKE_UNREADABLE, path, 0, words(job));
@@ -702,7 +706,10 @@ static enum firn_status start(struct job *job, const char *path)
         status = firn_names_make(memory, 0, &job->missing);
     if (status != FIRN_OK)
         return firn_fault_tell(job->run.fault, status, 0, 0, path);
-    status = firn_archive_feed_open(path, memory, job->run.fault, &job->feed);
+    status = firn_archive_feed_open(path, job->run.options->stop, job->run.options->self, memory, job->run.fault,
+                                    &job->feed);
+    if (status != FIRN_OK && firn_intake_run_go_on(&job->run) == FIRN_STOPPED)
+        return firn_fault_tell(job->run.fault, FIRN_STOPPED, 0, 0, path);
     if (status == FIRN_OK)
         job->archive = firn_archive_feed_archive(job->feed);
     return status;

@@ -22,7 +22,7 @@ struct check {
     const struct firn_manifest_check_options *options;
     struct firn_manifest_check_report *report;
     struct firn_roll roll;
-    struct firn_names *ways;              /* folders that are no items, but items lie below them; no records */
+    struct firn_names *ways;              /* folders that lead to chosen items, items themselves or not */
     struct firn_intake_walk *walk;
     struct firn_digest *digest;
     uint8_t *portion;                     /* PORTION_BYTES */
@@ -175,17 +175,37 @@ static enum firn_status go_into(struct check *check, int descriptor)
     return FIRN_OK;
 }
 
+/* What is packed as srv/intake/quay comes back below srv and srv/intake, which need not be items. */
+static enum firn_status enter_ways(struct check *check)
+{
+    enum firn_status status = FIRN_OK;
+
+    for (size_t i = 0; i < firn_names_count(check->roll.items) && status == FIRN_OK; i++) {
+        const char *name;
+        const struct firn_roll_item *item = firn_names_at(check->roll.items, i, &name);
+        bool fresh = item->chosen;
+
+        for (size_t bytes = strlen(name); bytes > 0 && fresh && status == FIRN_OK;) {
+            void *record;
+
+            bytes--;
+            if (name[bytes] == '/')
+                status = firn_names_add(check->ways, name, bytes, &record, &fresh);
+        }
+    }
+    return status;
+}
+
+static bool is_way(const struct check *check, const struct stat *facts)
+{
+    return S_ISDIR(facts->st_mode) && firn_names_find(check->ways, check->name, check->name_bytes) != NULL;
+}
+
 static bool wanted(const struct check *check)
 {
     struct firn_pattern *patterns = check->options->choice.patterns;
 
     return patterns == NULL || firn_pattern_match(patterns, check->name);
-}
-
-/* Packing srv/intake/quay stores neither srv nor srv/intake, but restoring makes them. */
-static bool is_way(const struct check *check, const struct stat *facts)
-{
-    return S_ISDIR(facts->st_mode) && firn_names_find(check->ways, check->name, check->name_bytes) != NULL;
 }
 
 static enum firn_status take(struct check *check, int folder, const char *name)
@@ -260,29 +280,6 @@ static void tell_missing(struct check *check)
     }
 }
 
-static enum firn_status gather_ways(struct check *check)
-{
-    enum firn_status status = firn_names_make(check->options->memory, 1, &check->ways);
-
-    for (size_t i = 0; status == FIRN_OK && i < firn_names_count(check->roll.items); i++) {
-        const char *name;
-        bool fresh = true;
-        size_t bytes;
-
-        (void)firn_names_at(check->roll.items, i, &name);
-        for (bytes = strlen(name); status == FIRN_OK && fresh && bytes > 0; bytes--) {
-            void *record;
-
-            if (name[bytes] != '/')
-                continue;
-            if (firn_names_find(check->roll.items, name, bytes) != NULL)
-                break;
-            status = firn_names_add(check->ways, name, bytes, &record, &fresh);
-        }
-    }
-    return status;
-}
-
 static enum firn_status start(struct check *check)
 {
     const struct firn_memory *memory = check->options->memory;
@@ -291,6 +288,10 @@ static enum firn_status start(struct check *check)
     check->portion = memory->get(memory->self, PORTION_BYTES);
     if (status == FIRN_OK && check->portion == NULL)
         status = FIRN_NO_MEMORY;
+    if (status == FIRN_OK)
+        status = firn_names_make(memory, 1, &check->ways);
+    if (status == FIRN_OK)
+        status = enter_ways(check);
     if (status == FIRN_OK)
         status = firn_intake_walk_make(memory, &check->walk);
     return status;
@@ -324,8 +325,6 @@ enum firn_status firn_manifest_check(struct firn_reader *reader, const struct fi
     status = firn_roll_make(reader, options->memory, &options->choice, fault, &check->roll);
     report->items_unknown = check->roll.items_unknown;
     report->cut_short = check->roll.cut_short;
-    if (status == FIRN_OK)
-        status = gather_ways(check);
     if (status == FIRN_OK)
         status = start(check);
     if (status == FIRN_OK)

@@ -795,7 +795,7 @@ static void spools_a_pipe(void **state)
     if (child == 0)
         _exit(feed(ends[1]));
     close(ends[1]);
-    assert_int_equal(firn_store_spool(ends[0], memory, &store, &fault), FIRN_OK);
+    assert_int_equal(firn_store_spool(ends[0], NULL, memory, &store, &fault), FIRN_OK);
     assert_int_equal(scratch_wait(child), 0);
     expect_spooled(&store);
     store.close(store.self);
@@ -816,16 +816,67 @@ static void spools_a_file(void **state)
     assert_true(descriptor >= 0);
     assert_int_equal(feed(descriptor), 0);
     assert_int_equal(lseek(descriptor, 0, SEEK_SET), 0);
-    assert_int_equal(firn_store_spool(descriptor, memory, &store, &fault), FIRN_OK);
+    assert_int_equal(firn_store_spool(descriptor, NULL, memory, &store, &fault), FIRN_OK);
     expect_spooled(&store);
     store.close(store.self);
 
     assert_int_equal(lseek(descriptor, 5, SEEK_SET), 5);      /* somebody has read the start: the rest is what counts */
-    assert_int_equal(firn_store_spool(descriptor, memory, &store, &fault), FIRN_OK);
+    assert_int_equal(firn_store_spool(descriptor, NULL, memory, &store, &fault), FIRN_OK);
     assert_int_equal(store.read_at(store.self, 0, &first, 1, &got, &why), FIRN_OK);
     assert_int_equal(first, 35);
     store.close(store.self);
     close(descriptor);
+}
+
+struct listening { unsigned asked, stop_at; uint64_t told; };
+
+static bool ask(void *self)
+{
+    struct listening *listening = self;
+
+    return ++listening->asked == listening->stop_at;
+}
+
+static void hear(void *self, uint64_t at, uint64_t bytes)
+{
+    struct listening *listening = self;
+
+    assert_int_equal(bytes, 0);
+    assert_true(at >= listening->told);
+    listening->told = at;
+}
+
+static void ring(int signal_number)
+{
+    (void)signal_number;
+}
+
+static void stops_a_spool(void **state)
+{
+    const struct sigaction ringing = { .sa_handler = ring };
+    struct listening first = { .stop_at = 1 }, later = { .stop_at = 3 }, never = { .asked = 0 };
+    struct firn_store_watch watch = { .self = &first, .progress = hear, .stop = ask };
+    struct firn_fault fault = { 0 };
+    struct firn_store store;
+    int ends[2];
+
+    (void)state;
+    assert_int_equal(pipe(ends), 0);      /* nothing comes out of it, so nothing may be read */
+    assert_int_equal(firn_store_spool(ends[0], &watch, memory, &store, &fault), FIRN_STOPPED);
+    assert_int_equal(first.asked, 1);
+    assert_int_equal(write(ends[1], "abc", 3), 3);
+    assert_int_equal(sigaction(SIGALRM, &ringing, NULL), 0);
+    assert_int_equal(alarm(1), 0);
+    watch.self = &later;                  /* asked for the third time when the signal ends its waiting */
+    assert_int_equal(firn_store_spool(ends[0], &watch, memory, &store, &fault), FIRN_STOPPED);
+    assert_int_equal(later.told, 3);
+    assert_int_equal(write(ends[1], "defg", 4), 4);
+    close(ends[1]);
+    watch.self = &never;
+    assert_int_equal(firn_store_spool(ends[0], &watch, memory, &store, &fault), FIRN_OK);
+    assert_int_equal(never.told, 4);
+    store.close(store.self);
+    close(ends[0]);
 }
 
 static void tells_a_spool_that_fails(void **state)
@@ -835,7 +886,7 @@ static void tells_a_spool_that_fails(void **state)
     struct firn_store store;
 
     (void)state;
-    assert_int_equal(firn_store_spool(folder, memory, &store, &fault), FIRN_IO);
+    assert_int_equal(firn_store_spool(folder, NULL, memory, &store, &fault), FIRN_IO);
     assert_int_equal(fault.os_error, EISDIR);
     close(folder);
 }
@@ -1026,7 +1077,7 @@ static void gives_back_all_when_memory_is_out(void **state)
         assert_int_equal(scarce.outstanding, 0);
         fault_memory_make(&scarce, nth);
         assert_int_equal(pipe(ends), 0);
-        assert_int_equal(firn_store_spool(ends[0], &scarce.memory, &store, &fault), FIRN_NO_MEMORY);
+        assert_int_equal(firn_store_spool(ends[0], NULL, &scarce.memory, &store, &fault), FIRN_NO_MEMORY);
         assert_int_equal(scarce.outstanding, 0);
         close(ends[0]);
         close(ends[1]);
@@ -1069,7 +1120,7 @@ int main(void)
         cmocka_unit_test(tells_when_full), cmocka_unit_test(writes_a_pipe_in_order), cmocka_unit_test(pours),
         cmocka_unit_test(tells_when_a_device_is_full), cmocka_unit_test(keeps_memory_within_bounds),
         cmocka_unit_test(has_temporary_files_without_names), cmocka_unit_test(spools_a_pipe),
-        cmocka_unit_test(spools_a_file), cmocka_unit_test(tells_a_spool_that_fails),
+        cmocka_unit_test(spools_a_file), cmocka_unit_test(stops_a_spool), cmocka_unit_test(tells_a_spool_that_fails),
         cmocka_unit_test(finds_its_place_through_links), cmocka_unit_test(believes_the_owner_of_the_container),
         cmocka_unit_test(tells_a_folder_that_cannot_be_written), cmocka_unit_test(removes),
         cmocka_unit_test(gives_back_all_when_memory_is_out),

@@ -31,6 +31,9 @@ gone() { if [ ! -e "$1" ] && [ ! -L "$1" ]; then ok; else bad "$1 is there"; fi;
 count_is() { if [ "$1" -eq "$2" ]; then ok; else bad "$3: $1, wanted $2"; fi; }
 one_line() { count_is "$(wc -l <"$1")" 1 "lines in $1 ($(head -c 300 "$1"))"; }
 
+# heedful COMMAND...: bash lets what it starts in the background ignore SIGINT; this one heeds it
+heedful() { exec env --default-signal=INT "$@"; }
+
 # facts FOLDER: all there is to know of a tree, in words
 facts() {
     (cd "$1" && find . -mindepth 1 \( -type f -printf '%P|%y|%m|%U:%G|%T@|%s|%n\n' -o -type l -printf '%P|%y|%U:%G|%T@|%l\n' \
