@@ -274,8 +274,7 @@ static int run(const struct firn_args *args, struct firn_view *view)
     }
     if (args->given[TABLES])
         more = show_tables(view, &opening, container);
-    firn_opening_close(&opening);
-    return more > exit ? more : exit;
+    return firn_opening_leave(&opening, more > exit ? more : exit);
 }
 
 const struct firn_command firn_command_describe = {

@@ -186,8 +186,7 @@ static int run(const struct firn_args *args, struct firn_view *view)
     exit = status == FIRN_OK ? list(&l, &opening) : firn_trouble_tell(view, args->operands[0], status, NULL);
     firn_pattern_free(l.patterns);
     firn_about_free(l.about);
-    firn_opening_close(&opening);
-    return exit;
+    return firn_opening_leave(&opening, exit);
 }
 
 const struct firn_command firn_command_inventory = {

@@ -178,8 +178,7 @@ static int read_container(struct labelling *l)
     put_fours(layout->id, l->page.id);
     if (layout->colophon_found)
         put_fours(layout->catalogue_sha256, l->page.digest);
-    firn_opening_close(&opening);
-    return exit;
+    return firn_opening_leave(&opening, exit);
 }
 
 /* --- new --- */

@@ -218,8 +218,7 @@ static int go(struct listing *l)
             exit = exit < FIRN_EXIT_LOST ? FIRN_EXIT_NO_INPUT : exit;
         }
     firn_pattern_free(l->choice.patterns);
-    firn_opening_close(&opening);
-    return exit;
+    return firn_opening_leave(&opening, exit);
 }
 
 static int run(const struct firn_args *args, struct firn_view *view)

@@ -138,6 +138,15 @@ void firn_opening_close(struct firn_opening *opening)
     *opening = (struct firn_opening){ .reader = NULL };
 }
 
+int firn_opening_leave(struct firn_opening *opening, int exit)
+{
+    struct firn_reader_damage damage;
+
+    firn_reader_damage_so_far(opening->reader, &damage);
+    firn_opening_close(opening);
+    return exit == FIRN_EXIT_SOUND && damage.mended + damage.rebuilt > 0 ? FIRN_EXIT_SAFE : exit;
+}
+
 uint64_t firn_opening_gained(const struct firn_opening *opening)
 {
     return opening->store_count == 0 ? 0 : firn_store_patient_gained(&opening->stores[opening->store_count - 1]);

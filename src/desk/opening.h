@@ -32,6 +32,9 @@ int firn_opening_make_patient(struct firn_opening *opening, const char *path, un
                               const struct firn_args *args, struct firn_view *view);
 void firn_opening_close(struct firn_opening *opening);
 
+/* Closes it. Returns exit; FIRN_EXIT_SAFE instead of sound when blocks that were read had to be mended or rebuilt. */
+int firn_opening_leave(struct firn_opening *opening, int exit);
+
 /* How many blocks came from another reading than the first. */
 uint64_t firn_opening_gained(const struct firn_opening *opening);
 
