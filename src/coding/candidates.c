@@ -18,7 +18,7 @@ enum {
     QUICK_TABLES = 6,                  /* of numbers */
     SHORT_BYTES = 1 << 16,             /* below, everything is tried */
     BRANCH_EVERY_BYTES = 200,          /* at least one turned in so many, and it is code */
-    TRIAL_BYTES = 1 << 16,             /* of what looks hopeless, so much is tried before the rest is */
+    TRIAL_BYTES = 1 << 16,             /* a piece that tells of the rest of a segment, if that is large */
     HOPELESS = 505,                    /* 1/64 bits a byte */
     REPEATED_LEAST = 64,               /* one byte in so many must lie in a repeat */
     LITTLE = 32                        /* one bit of so many bytes */

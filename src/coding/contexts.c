@@ -255,7 +255,7 @@ static void make_codes(size_t symbols, unsigned limit, struct firn_contexts *mad
 }
 
 /* Contexts that do not occur continue the run before them; tables are numbered as the map meets them. */
-static void tidy(size_t contexts, size_t symbols, struct firn_contexts *made, struct firn_contexts_work *w)
+static void tidy(size_t contexts, struct firn_contexts *made, struct firn_contexts_work *w)
 {
     uint8_t number[FIRN_CONTEXTS_TABLES_MAX], last = 0;
     unsigned known = 0;
@@ -274,7 +274,6 @@ static void tidy(size_t contexts, size_t symbols, struct firn_contexts *made, st
     }
     made->tables = known;
     sum_up(contexts, known, made, w);
-    (void)symbols;
 }
 
 static unsigned map_cost_bits(const struct firn_contexts *codes, size_t contexts);
@@ -301,11 +300,11 @@ uint64_t firn_contexts_make(const struct firn_cost_logs *logs, const uint32_t *c
             price_table(logs, work, t, symbols);
         assign(contexts, tables, made, work);
     }
-    tidy(contexts, symbols, made, work);
+    tidy(contexts, made, work);
     make_codes(symbols, limit, made, work);
     if (made->tables > 1) {            /* once more with the words' real lengths */
         assign(contexts, made->tables, made, work);
-        tidy(contexts, symbols, made, work);
+        tidy(contexts, made, work);
         make_codes(symbols, limit, made, work);
     }
     for (unsigned t = 0; t < made->tables; t++)
